@@ -1,0 +1,1 @@
+"""Seawhence's library: cruises in, checked and resolved tables out. It never loads Prefect."""

@@ -1,0 +1,48 @@
+"""What a check noticed: the mark it sets on rows, and the finding it tells in words."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from enum import StrEnum
+
+
+class Severity(StrEnum):
+    """How much a finding matters."""
+
+    NOTE = "note"  # worth knowing; changes nothing
+    DOUBT = "doubt"  # the value may be wrong
+    FAULT = "fault"  # the value is wrong or cannot be read
+
+
+@dataclass(frozen=True, slots=True)
+class Finding:
+    """One thing that a check noticed, in a sentence that can be sent back to the group.
+
+    A finding about a whole file or column has no station; one about a run of CTD levels has the
+    line of the first and their number in ``count``.
+    """
+
+    check: str
+    severity: Severity
+    message: str
+    variable: str | None = None
+    value: str | None = None
+    limit: str | None = None
+    file: str | None = None
+    line: int | None = None
+    station: str | None = None
+    cast: int | None = None
+    sample: str | None = None
+    count: int = 1
+
+
+@dataclass(frozen=True, slots=True)
+class Reject:
+    """A delivered row that cannot be used, with its text and why."""
+
+    file: str
+    line: int
+    raw: str
+    reason: str
+    message: str
+    expocode: str | None = field(default=None)

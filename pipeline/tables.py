@@ -1,0 +1,164 @@
+"""The archive's tables as lists of registry names, and the Arrow types and metadata that follow from them."""
+
+from __future__ import annotations
+
+from dataclasses import fields
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+import pyarrow as pa
+import pyarrow.compute as pc
+
+from pipeline.problems import BrokenPromise
+from pipeline.variables import REGISTRY, SEAWATER, TRACERS, Kind, Variable
+
+if TYPE_CHECKING:
+    from collections.abc import Iterable, Mapping, Sequence
+
+    from numpy.typing import NDArray
+
+    from pipeline.findings import Finding, Reject
+
+    FloatArray = NDArray[np.float64]
+
+ARROW_TYPES: dict[Kind, pa.DataType] = {
+    Kind.NUMBER: pa.float64(),
+    Kind.INTEGER: pa.int64(),
+    Kind.FLAG: pa.int16(),  # delivered flags outside the scheme are kept as they are
+    Kind.TEXT: pa.string(),
+    Kind.DATE: pa.date32(),
+    Kind.TIME: pa.timestamp("s", tz="UTC"),
+}
+
+KEY = ("expocode", "station", "cast", "sample")
+MIXING = (
+    "tag", "leading_source", "leading_share", "leading_share_uncertainty", "respiration",
+    "reduced_chi_square", "mixing_set", "mixing_status",
+)  # fmt: skip
+MIXTURES = (*KEY, "line", "mixing_set", "source", "share", "share_uncertainty")
+FINDINGS = (
+    "expocode", "file", "line", "station", "cast", "sample", "variable", "check", "severity", "count",
+    "value", "limit", "message",
+)  # fmt: skip
+REJECTS = ("expocode", "file", "line", "raw", "reason", "message")
+
+# Always there, in this order, whatever was delivered: a reader may rely on them.
+SAMPLES_CORE = (
+    "expocode", "section", "station", "cast", "sample", "bottle", "bottle_flag", "date", "time",
+    "latitude", "longitude", "bottom_depth", "file", "line",
+)  # fmt: skip
+CASTS_CORE = (
+    "expocode", "section", "station", "cast", "date", "time", "latitude", "longitude", "bottom_depth",
+    "file", "line",
+)  # fmt: skip
+
+TABLE_NAMES = ("samples", "casts", "mixtures", "findings", "rejects")
+
+
+def arrow_field(variable: Variable, extra: Mapping[str, str] | None = None) -> pa.Field:
+    """Return the Arrow field of a registry variable, with its metadata."""
+    metadata = {
+        "long_name": variable.long_name,
+        "units": variable.unit,
+        "standard_name": variable.standard_name or "",
+        "source": variable.source,
+        **(extra or {}),
+    }
+    return pa.field(
+        variable.name,
+        ARROW_TYPES[variable.kind],
+        metadata={key: text for key, text in metadata.items() if text},
+    )
+
+
+def registry_field(name: str) -> pa.Field:
+    """Return the Arrow field of the registry column ``name``."""
+    try:
+        return arrow_field(REGISTRY[name])
+    except KeyError as error:
+        raise BrokenPromise(f"the column '{name}' is written but is not in the registry") from error
+
+
+def floats(table: pa.Table, name: str) -> FloatArray:
+    """Return column ``name`` as float64, shape (n_row,), NaN where missing or no such column."""
+    if name not in table.column_names:
+        return np.full(table.num_rows, np.nan)
+    column = table.column(name).cast(pa.float64())
+    return np.asarray(pc.fill_null(column, np.nan).to_numpy(), dtype=np.float64)
+
+
+def texts(table: pa.Table, name: str) -> list[str | None]:
+    """Return column ``name`` as a list of text, None where missing or where there is no such column."""
+    if name not in table.column_names:
+        return [None] * table.num_rows
+    return [None if text is None else str(text) for text in table.column(name).to_pylist()]
+
+
+def with_columns(table: pa.Table, columns: Mapping[str, Any]) -> pa.Table:
+    """Return ``table`` with registry columns set, NaN stored as missing.
+
+    Parameters
+    ----------
+    table
+        Any table of n_row rows.
+    columns
+        From registry name to an array, list or Arrow array of n_row values.
+
+    """
+    named: dict[str, Any] = dict(zip(table.column_names, table.columns, strict=True))
+    listed = {f.name: f for f in table.schema}
+    for name, values in columns.items():
+        listed[name] = registry_field(name)
+        named[name] = as_arrow(values, listed[name].type)
+    return pa.table(list(named.values()), schema=pa.schema([listed[name] for name in named]))
+
+
+def as_arrow(values: Any, kind: pa.DataType) -> pa.Array | pa.ChunkedArray:
+    """Return ``values`` as an Arrow array of type ``kind``; NaN is missing."""
+    if isinstance(values, pa.Array | pa.ChunkedArray):
+        return values.cast(kind)
+    return pa.array(values, type=kind, from_pandas=True)
+
+
+def cast_groups(table: pa.Table) -> NDArray[np.int64]:
+    """Return a number per row, shape (n_row,), the same for the rows of one cast of one cruise.
+
+    Numbers follow the order of first appearance.
+    """
+    keys = [table.column(name).combine_chunks() for name in ("expocode", "station", "cast")]
+    joined = pc.binary_join_element_wise(*[pc.fill_null(k.cast(pa.string()), "") for k in keys], "\x1f")
+    codes = joined.dictionary_encode()
+    if isinstance(codes, pa.ChunkedArray):
+        codes = codes.combine_chunks()
+    return np.asarray(codes.indices.to_numpy(zero_copy_only=False), dtype=np.int64)
+
+
+def findings_table(expocode: str | None, findings: Sequence[Finding]) -> pa.Table:
+    """Return findings of one cruise as the table that the archive keeps."""
+    return _records_table(FINDINGS, expocode, findings)
+
+
+def rejects_table(expocode: str | None, rejects: Sequence[Reject]) -> pa.Table:
+    """Return rejects of one cruise as the table that the archive keeps."""
+    return _records_table(REJECTS, expocode, rejects)
+
+
+def empty(names: Iterable[str]) -> pa.Table:
+    """Return a table of no rows with the registry columns ``names``."""
+    return pa.schema([registry_field(name) for name in names]).empty_table()
+
+
+def _records_table(names: Sequence[str], expocode: str | None, records: Sequence[Any]) -> pa.Table:
+    known = {f.name for f in fields(records[0])} if records else set()
+    columns = {
+        name: [getattr(record, name) for record in records] if name in known - {"expocode"} else None
+        for name in names
+    }
+    columns["expocode"] = [expocode] * len(records)
+    schema = pa.schema([registry_field(name) for name in names])
+    return pa.table([pa.array(columns[f.name] or [], type=f.type) for f in schema], schema=schema)
+
+
+def core_columns(names: Iterable[str]) -> tuple[str, ...]:
+    """Return ``names`` followed by the seawater and tracer columns that every table of samples has."""
+    return (*names, *SEAWATER, *TRACERS)

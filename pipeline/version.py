@@ -1,0 +1,3 @@
+"""The version of the pipeline, written into every table it makes."""
+
+VERSION = "0.1.0"
