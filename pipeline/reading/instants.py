@@ -1,0 +1,103 @@
+"""Delivered dates and times of day to UTC instants, in all the spellings that files hold."""
+
+from __future__ import annotations
+
+import re
+from dataclasses import dataclass
+from datetime import date
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+if TYPE_CHECKING:
+    from collections.abc import Sequence
+
+    from numpy.typing import NDArray
+
+_COMPACT = re.compile(r"(\d{4})(\d{2})(\d{2})(\.0*)?$")
+_DASHED = re.compile(r"(\d{4})[-/](\d{1,2})[-/](\d{1,2})([T ].*)?$")
+_SLASHED = re.compile(r"(\d{1,2})[/.](\d{1,2})[/.](\d{2}|\d{4})$")
+_COLONS = re.compile(r"(\d{1,2}):(\d{2})(:\d{2}(\.\d*)?)?$")
+_DIGITS = re.compile(r"(\d{1,4})(\.0*)?$")
+_MISSING = re.compile(r"(|-9+(\.[09]*)?|nan|na|null)$", re.IGNORECASE)
+
+_CENTURY_TURN = 50  # two-digit years below are 20xx (common practice, no source)
+MINUTES_PER_DAY = 1440
+
+
+@dataclass(frozen=True, slots=True)
+class Instants:
+    """Dates and instants of rows, shape (n_row,) each, NaT where not known."""
+
+    dates: NDArray[np.datetime64]  # whole days
+    times: NDArray[np.datetime64]  # seconds; NaT where no time of day was given
+    impossible_dates: NDArray[np.int64]  # rows
+    impossible_times: NDArray[np.int64]  # rows
+    ambiguous: str | None  # a date that could be read month first or day first; month first was taken
+
+
+def read_instants(dates: Sequence[str], times: Sequence[str]) -> Instants:
+    """Read delivered dates and times of day.
+
+    Parameters
+    ----------
+    dates, times
+        Delivered text of n_row rows; blank or a missing code where not given.
+
+    """
+    days_of, ambiguous = _read_dates(set(dates))
+    minutes_of = {text: _minutes(text) for text in set(times)}
+    day = np.array([days_of[text] for text in dates], dtype="datetime64[D]")
+    minutes = np.array([minutes_of[text] for text in times], dtype=np.float64)
+    bad_date = np.array([np.isnat(days_of[text]) and not _MISSING.match(text) for text in dates], dtype=bool)
+    bad_time = np.array([np.isinf(minutes_of[text]) for text in times], dtype=bool)
+    known = np.isfinite(minutes)
+    seconds = np.where(known, minutes, 0.0).astype(np.int64) * 60
+    instant = day.astype("datetime64[s]") + seconds.astype("timedelta64[s]")
+    instant[~known] = np.datetime64("NaT")
+    return Instants(day, instant, np.flatnonzero(bad_date), np.flatnonzero(bad_time), ambiguous)
+
+
+def _read_dates(texts: set[str]) -> tuple[dict[str, np.datetime64], str | None]:
+    """Return the day of every spelling, and one that is ambiguous where nothing in the file decides."""
+    slashed = {text: m for text in texts if (m := _SLASHED.match(text))}
+    # one spelling is used throughout a file: a first number over 12 can only be a day
+    day_first = any(int(m[1]) > 12 for m in slashed.values()) and not any(
+        int(m[2]) > 12 for m in slashed.values()
+    )
+    decided = any(max(int(m[1]), int(m[2])) > 12 or m[1] == m[2] for m in slashed.values())
+    ambiguous = min(slashed) if slashed and not decided else None
+    return {text: _day(text, day_first=day_first) for text in texts}, ambiguous
+
+
+def _day(text: str, *, day_first: bool) -> np.datetime64:
+    if m := _COMPACT.match(text) or _DASHED.match(text):
+        year, month, day = int(m[1]), int(m[2]), int(m[3])
+    elif m := _SLASHED.match(text):
+        first, second, year = int(m[1]), int(m[2]), int(m[3])
+        month, day = (second, first) if day_first else (first, second)
+        if len(m[3]) == 2:
+            year += 2000 if year < _CENTURY_TURN else 1900
+    else:
+        return np.datetime64("NaT", "D")
+    try:
+        return np.datetime64(date(year, month, day), "D")
+    except ValueError:
+        return np.datetime64("NaT", "D")
+
+
+def _minutes(text: str) -> float:
+    """Return minutes after midnight; NaN where not given, infinity where impossible.
+
+    ``2400`` is legal and means the next day's midnight.
+    """
+    if _MISSING.match(text):
+        return np.nan
+    if m := _COLONS.match(text):
+        hours, minutes = int(m[1]), int(m[2])
+    elif m := _DIGITS.match(text):
+        hours, minutes = divmod(int(m[1]), 100)
+    else:
+        return np.inf
+    total = hours * 60 + minutes
+    return float(total) if minutes < 60 and total <= MINUTES_PER_DAY else np.inf

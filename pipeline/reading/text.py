@@ -1,0 +1,57 @@
+"""From delivered bytes to text of one encoding and one line end; nothing here knows a format."""
+
+from __future__ import annotations
+
+import codecs
+from dataclasses import dataclass
+from functools import cached_property
+
+from pipeline.problems import DeliveryProblem
+
+
+@dataclass(frozen=True)
+class DeliveredText:
+    """The lines of a delivered file, UTF-8 bytes with line-feed ends and no byte-order mark."""
+
+    name: str
+    data: bytes
+
+    @cached_property
+    def lines(self) -> list[bytes]:
+        """Every line, without its end. Costs a pass over the file: for odd files and rejects only."""
+        return self.data.split(b"\n")
+
+    def line(self, number: int) -> str:
+        """Return line ``number``, counted from 1, as text."""
+        return self.lines[number - 1].decode("utf-8", errors="replace")
+
+
+def delivered_text(name: str, data: bytes) -> DeliveredText:
+    """Return delivered bytes as text.
+
+    Raises
+    ------
+    DeliveryProblem
+        For an empty file, and for one that holds bytes no text has.
+
+    """
+    if not data.strip():
+        raise DeliveryProblem(
+            "empty-file", f"{name}: found an empty file; expected a cruise file; ask for it to be sent again."
+        )
+    if data.startswith((codecs.BOM_UTF16_LE, codecs.BOM_UTF16_BE)):
+        data = data.decode("utf-16", errors="replace").encode()
+    data = data.removeprefix(codecs.BOM_UTF8)
+    if b"\0" in data[:4096]:
+        raise DeliveryProblem(
+            "not-a-cruise-file",
+            f"{name}: found binary data; expected an exchange bottle or CTD file, or a zip of CTD files;"
+            " remove it from the inbox, or ask for the cruise in the exchange format.",
+        )
+    try:
+        data.decode("utf-8")
+    except UnicodeDecodeError:
+        data = data.decode("latin-1").encode("utf-8")
+    if b"\r" in data:
+        data = data.replace(b"\r\n", b"\n").replace(b"\r", b"\n")
+    return DeliveredText(name, data)
