@@ -1,0 +1,67 @@
+"""Checking: findings in words, and check flags beside the delivered ones. No delivered number is changed.
+
+Each check is a pure function from a table of samples or CTD levels to marks.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+from pipeline.checking.flags import (
+    all_flagged_bad,
+    flag_without_value,
+    unknown_flag,
+    value_under_missing_flag,
+)
+from pipeline.checking.keys import duplicate_sample, repeated_station
+from pipeline.checking.levels import duplicate_pressure, pressure_order
+from pipeline.checking.marks import check_flags, findings_of
+from pipeline.checking.ranges import gross_range
+from pipeline.checking.track import cast_time, station_speed
+from pipeline.variables import MEASURED
+
+if TYPE_CHECKING:
+    from collections.abc import Callable
+
+    import numpy as np
+    import pyarrow as pa
+    from numpy.typing import NDArray
+
+    from pipeline.checking.marks import Mark
+    from pipeline.findings import Finding
+    from pipeline.settings import Settings
+
+    Check = Callable[[pa.Table, Settings], list[Mark]]
+
+CHECKS: dict[str, Check] = {
+    "duplicate-sample": duplicate_sample,
+    "repeated-station": repeated_station,
+    "station-speed": station_speed,
+    "cast-time": cast_time,
+    "unknown-flag": unknown_flag,
+    "flag-without-value": flag_without_value,
+    "value-under-missing-flag": value_under_missing_flag,
+    "all-flagged-bad": all_flagged_bad,
+    "gross-range": gross_range,
+    "duplicate-pressure": duplicate_pressure,
+    "pressure-order": pressure_order,
+}
+
+
+@dataclass(frozen=True, slots=True)
+class Checked:
+    """Check flags by column name, shape (n_row,) each, and what was noticed in words."""
+
+    flags: dict[str, NDArray[np.int64]]
+    findings: tuple[Finding, ...]
+
+
+def check(table: pa.Table, settings: Settings) -> Checked:
+    """Run every check over a table of samples, or of CTD levels, as delivered."""
+    marks = [mark for one in CHECKS.values() for mark in one(table, settings)]
+    measured = [name for name in MEASURED if name in table.column_names]
+    per_cast = "sample" not in table.column_names
+    return Checked(
+        check_flags(table, measured, marks), tuple(findings_of(table, marks, per_cast=per_cast))
+    )  # fmt: skip

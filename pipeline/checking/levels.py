@@ -1,0 +1,57 @@
+"""The pressure levels of a cast."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from pipeline.checking.marks import Mark
+from pipeline.findings import Severity
+from pipeline.tables import cast_groups, floats
+
+if TYPE_CHECKING:
+    import pyarrow as pa
+
+    from pipeline.settings import Settings
+
+
+def duplicate_pressure(table: pa.Table, settings: Settings) -> list[Mark]:
+    """CTD levels whose pressure stands already in the cast. Bottles may share a pressure."""
+    if "sample" in table.column_names:
+        return []
+    pressure, casts = floats(table, "pressure"), cast_groups(table)
+    order = np.lexsort((np.arange(len(casts)), pressure, casts))
+    same = (np.diff(casts[order]) == 0) & (np.diff(pressure[order]) == 0)
+    rows = np.sort(order[1:][same])
+    if not len(rows):
+        return []
+    return [
+        Mark(
+            "duplicate-pressure", Severity.DOUBT, "pressure", rows, pressure[rows].tolist(),
+            "is {value} a second time in the cast", "each level once",
+        )
+    ]  # fmt: skip
+
+
+def pressure_order(table: pa.Table, settings: Settings) -> list[Mark]:
+    """CTD casts whose pressure does not go one way. The order is kept as delivered."""
+    if "sample" in table.column_names:
+        return []
+    pressure, casts = floats(table, "pressure"), cast_groups(table)
+    within = np.diff(casts) == 0
+    step = np.diff(pressure)
+    n_cast = int(casts.max()) + 1 if len(casts) else 0
+    up = np.bincount(casts[1:][within & (step < 0)], minlength=n_cast)
+    down = np.bincount(casts[1:][within & (step > 0)], minlength=n_cast)
+    mixed = np.flatnonzero((up > 0) & (down > 0))
+    if not len(mixed):
+        return []
+    turning = within & np.where(down[casts[1:]] >= up[casts[1:]], step < 0, step > 0)
+    rows = np.array([1 + np.flatnonzero(turning & (casts[1:] == cast))[0] for cast in mixed])
+    return [
+        Mark(
+            "pressure-order", Severity.NOTE, "pressure", rows, pressure[rows].tolist(),
+            "turns back at {value} dbar", "pressure that goes one way through a cast",
+        )
+    ]  # fmt: skip

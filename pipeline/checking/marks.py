@@ -1,0 +1,103 @@
+"""What a check returns, and how marks become check flags and findings in words."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from pipeline.findings import Finding, Severity
+from pipeline.tables import cast_groups, floats
+from pipeline.usable import CHECK_DOUBT, CHECK_FAULT, CHECK_GOOD, CHECK_MISSING
+from pipeline.variables import REGISTRY, check_name
+
+if TYPE_CHECKING:
+    from collections.abc import Iterable, Sequence
+
+    import pyarrow as pa
+    from numpy.typing import NDArray
+
+    IntArray = NDArray[np.int64]
+
+_FLAG_OF = {Severity.DOUBT: CHECK_DOUBT, Severity.FAULT: CHECK_FAULT}
+
+# Beyond this many rows of one check and variable, the rest is told in one sentence.
+MOST_ROWS_TOLD = 50
+
+
+@dataclass(frozen=True, slots=True)
+class Mark:
+    """What one check noticed about one variable.
+
+    ``words`` and ``limit`` complete the sentence "FILE, line N: NAME <words>; expected <limit>.";
+    ``values`` holds what was found in each of ``rows``. A doubt or a fault of a measured variable
+    sets its check flag in those rows.
+    """
+
+    check: str
+    severity: Severity
+    variable: str
+    rows: IntArray
+    values: Sequence[object]
+    words: str
+    limit: str
+
+
+def check_flags(table: pa.Table, measured: Iterable[str], marks: Iterable[Mark]) -> dict[str, IntArray]:
+    """Return our check flags (IODE primary flags) of measured columns, from column name to (n_row,)."""
+    flags = {
+        name: np.where(np.isnan(floats(table, name)), CHECK_MISSING, CHECK_GOOD).astype(np.int64)
+        for name in measured
+    }
+    for mark in marks:
+        flag = _FLAG_OF.get(mark.severity)
+        if flag is not None and mark.variable in flags:
+            column = flags[mark.variable]
+            present = mark.rows[column[mark.rows] != CHECK_MISSING]
+            column[present] = np.maximum(column[present], flag)
+    return {check_name(name): column for name, column in flags.items()}
+
+
+def findings_of(table: pa.Table, marks: Iterable[Mark], *, per_cast: bool) -> list[Finding]:
+    """Tell marks in words: each row by itself, or the rows of a cast together (for CTD levels)."""
+    casts = cast_groups(table) if per_cast else np.arange(table.num_rows)
+    findings = []
+    for mark in marks:
+        groups = _groups(casts[mark.rows])
+        told = groups[:MOST_ROWS_TOLD]
+        findings += [_finding(table, mark, members) for members in told]
+        if len(groups) > len(told):
+            rest = np.concatenate(groups[len(told) :])
+            findings.append(_finding(table, mark, rest, rest_of=True))
+    return findings
+
+
+def _groups(keys: IntArray) -> list[IntArray]:
+    """Return positions of equal keys together, in the order of first appearance."""
+    order = np.argsort(keys, kind="stable")
+    edges = np.flatnonzero(np.diff(keys[order])) + 1
+    return sorted(np.split(order, edges), key=lambda members: int(members[0])) if len(keys) else []
+
+
+def _finding(table: pa.Table, mark: Mark, members: IntArray, *, rest_of: bool = False) -> Finding:
+    first = int(members[0])
+    row = int(mark.rows[first])
+    count = len(members)
+    name = REGISTRY[mark.variable].exchange[0] if REGISTRY[mark.variable].exchange else mark.variable
+    file, line = table.column("file")[row].as_py(), table.column("line")[row].as_py()
+    value = _written(mark.values[first])
+    more = f" (and {count - 1} more rows)" if count > 1 else ""
+    return Finding(
+        mark.check, mark.severity,
+        f"{file}, line {line}: {name} {mark.words.format(value=value)}{more}; expected {mark.limit}.",
+        variable=mark.variable, value=value, limit=mark.limit, file=file, line=line,
+        station=None if rest_of else table.column("station")[row].as_py(),
+        cast=None if rest_of else table.column("cast")[row].as_py(),
+        sample=table.column("sample")[row].as_py() if "sample" in table.column_names and not rest_of else None,
+        count=count,
+    )  # fmt: skip
+
+
+def _written(value: object) -> str:
+    return f"{value:g}" if isinstance(value, float) else str(value)

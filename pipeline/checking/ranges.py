@@ -1,0 +1,47 @@
+"""Values that no ocean has."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from pipeline.checking.marks import Mark
+from pipeline.findings import Severity
+from pipeline.tables import floats
+from pipeline.usable import may_use
+from pipeline.variables import MEASURED, REGISTRY
+
+if TYPE_CHECKING:
+    import pyarrow as pa
+
+    from pipeline.settings import Settings
+
+
+def gross_range(table: pa.Table, settings: Settings) -> list[Mark]:
+    """Values outside the plausible range of the registry that their flags would let be used.
+
+    A value that the group itself flagged as bad is no news; it is not told again.
+    """
+    marks = []
+    for name in MEASURED:
+        plausible = REGISTRY[name].plausible
+        if name not in table.column_names or plausible is None:
+            continue
+        values = floats(table, name)
+        with np.errstate(invalid="ignore"):
+            outside = (values < plausible[0]) | (values > plausible[1])
+        rows = np.flatnonzero(outside & may_use(table, name, settings.use))
+        if len(rows):
+            marks.append(
+                Mark(
+                    "gross-range", Severity.FAULT, name, rows, values[rows].tolist(),
+                    "is {value}", f"{plausible[0]:g} to {plausible[1]:g} {_unit(name)}".rstrip(),
+                )
+            )  # fmt: skip
+    return marks
+
+
+def _unit(name: str) -> str:
+    unit = REGISTRY[name].unit
+    return "" if unit == "1" else unit
