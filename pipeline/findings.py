@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from enum import StrEnum
 
 
@@ -41,8 +41,8 @@ class Reject:
     """A delivered row that cannot be used, with its text and why."""
 
     file: str
-    line: int
+    line: int | None  # None for a member of a zip that was refused whole
     raw: str
     reason: str
     message: str
-    expocode: str | None = field(default=None)
+    expocode: str | None = None

@@ -10,7 +10,7 @@ import pyarrow as pa
 import pyarrow.compute as pc
 
 from pipeline.problems import BrokenPromise
-from pipeline.variables import REGISTRY, SEAWATER, TRACERS, Kind, Variable
+from pipeline.variables import REGISTRY, Kind, Variable
 
 if TYPE_CHECKING:
     from collections.abc import Iterable, Mapping, Sequence
@@ -51,6 +51,8 @@ CASTS_CORE = (
     "expocode", "section", "station", "cast", "date", "time", "latitude", "longitude", "bottom_depth",
     "file", "line",
 )  # fmt: skip
+
+_LEDGER = ("file", "line")
 
 TABLE_NAMES = ("samples", "casts", "mixtures", "findings", "rejects")
 
@@ -159,6 +161,12 @@ def _records_table(names: Sequence[str], expocode: str | None, records: Sequence
     return pa.table([pa.array(columns[f.name] or [], type=f.type) for f in schema], schema=schema)
 
 
-def core_columns(names: Iterable[str]) -> tuple[str, ...]:
-    """Return ``names`` followed by the seawater and tracer columns that every table of samples has."""
-    return (*names, *SEAWATER, *TRACERS)
+def arranged(table: pa.Table) -> pa.Table:
+    """Return the table with its registry columns in the registry's order, and all others behind them.
+
+    A measured value, its delivered flag and our check flag stand side by side.
+    """
+    named = set(table.column_names)
+    known = [name for name in REGISTRY if name in named and name not in _LEDGER]
+    others = [name for name in table.column_names if name not in REGISTRY]
+    return table.select([*known, *others, *(name for name in _LEDGER if name in named)])

@@ -26,7 +26,7 @@ def usable(table: pa.Table, name: str, use: UseSettings) -> NDArray[np.float64]:
     """
     values = floats(table, name)
     if name in MEASURED:
-        values[~may_use(table, name, use)] = np.nan
+        return np.where(may_use(table, name, use), values, np.nan)
     return values
 
 

@@ -321,6 +321,8 @@ BASE: tuple[Variable, ...] = (
 )  # fmt: skip
 
 MEASURED: tuple[str, ...] = tuple(v.name for v in (*_CTD, *_WATER))
+# Measured columns that carry flags of their own are checked; uncertainties that came with them are not.
+CHECKED: tuple[str, ...] = tuple(v.name for v in (*_CTD, *_WATER) if v.flags is not None)
 IDENTITY: tuple[str, ...] = tuple(v.name for v in _IDENTITY)
 SEAWATER: tuple[str, ...] = tuple(v.name for v in _SEAWATER)
 TRACERS: tuple[str, ...] = tuple(v.name for v in _TRACERS)
@@ -352,7 +354,7 @@ def _companions(variable: Variable) -> list[Variable]:
             Variable(flag_name(variable.name), f"{variable.long_name}: flag as delivered", "",
                      "quality_flag", Kind.FLAG, source=scheme)
         )  # fmt: skip
-    if variable.name in MEASURED:
+    if variable.name in CHECKED:
         beside.append(
             Variable(check_name(variable.name), f"{variable.long_name}: result of our checks", "",
                      "quality_flag", Kind.FLAG, source="IODE primary flags, IOC MG 54, vol. 3")

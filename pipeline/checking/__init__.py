@@ -19,7 +19,7 @@ from pipeline.checking.levels import duplicate_pressure, pressure_order
 from pipeline.checking.marks import check_flags, findings_of
 from pipeline.checking.ranges import gross_range
 from pipeline.checking.track import cast_time, station_speed
-from pipeline.variables import MEASURED
+from pipeline.variables import CHECKED
 
 if TYPE_CHECKING:
     from collections.abc import Callable
@@ -60,7 +60,7 @@ class Checked:
 def check(table: pa.Table, settings: Settings) -> Checked:
     """Run every check over a table of samples, or of CTD levels, as delivered."""
     marks = [mark for one in CHECKS.values() for mark in one(table, settings)]
-    measured = [name for name in MEASURED if name in table.column_names]
+    measured = [name for name in CHECKED if name in table.column_names]
     per_cast = "sample" not in table.column_names
     return Checked(
         check_flags(table, measured, marks), tuple(findings_of(table, marks, per_cast=per_cast))

@@ -64,6 +64,17 @@ def read_cells(sheet: Sheet, numeric: tuple[bool, ...]) -> Cells:
     return Cells(columns, lines[kept], tuple((int(lines[row]), found) for row, found in misfits))
 
 
+def column_texts(sheet: Sheet, position: int) -> set[str]:
+    """Return the different texts of one delivered column, trimmed; rows of a wrong width do not count."""
+    block, _ = _without_hollow_lines(sheet)
+    n_column = len(sheet.names)
+    padding = _padding(block, sheet.delimiter, n_column)
+    table, _ = _parse(
+        block.replace(b'"', b""), sheet.delimiter, n_column, padding, (False,) * n_column, [position]
+    )
+    return set(pc.unique(_trimmed(table.column(0).combine_chunks())).to_pylist())
+
+
 def _without_hollow_lines(sheet: Sheet) -> tuple[bytes, NDArray[np.int64]]:
     """Return the block without its hollow lines, and the line number of each line that is left."""
     block = sheet.block.rstrip(b" \t\n")
@@ -86,9 +97,14 @@ def _padding(block: bytes, delimiter: str, n_column: int) -> int:
 
 
 def _parse(
-    block: bytes, delimiter: str, n_column: int, padding: int, numeric: tuple[bool, ...]
+    block: bytes,
+    delimiter: str,
+    n_column: int,
+    padding: int,
+    numeric: tuple[bool, ...],
+    wanted: list[int] | None = None,
 ) -> tuple[pa.Table, list[tuple[int, int]]]:
-    """Return the rows of the right width, and (row, fields) of the others."""
+    """Return the ``wanted`` columns (all, if None) of the rows of the right width, and (row, fields) of the others."""
     names = [str(i) for i in range(n_column)] + [f"{_PADDING}{i}" for i in range(padding)]
     types = {name: pa.string() for name in names}
     types |= {str(i): pa.float64() for i in range(n_column) if numeric[i]}
@@ -118,6 +134,7 @@ def _parse(
         ),
         convert_options=csv.ConvertOptions(
             column_types=types,
+            include_columns=[str(i) for i in wanted] if wanted else None,
             strings_can_be_null=False,
             decimal_point="," if delimiter == ";" and b"." not in block else ".",
         ),

@@ -52,12 +52,14 @@ class Delivery:
         return tuple(pc.unique(self.table.column("expocode")).to_pylist())
 
     def of_cruise(self, expocode: str) -> Delivery:
-        """Return the part of the delivery that belongs to one cruise.
+        """Return the part of the delivery that belongs to one cruise, of no rows where it has none of it.
 
         Rejects and findings that name no cruise's row go with the first cruise of the file.
         """
         if self.cruises == (expocode,):
             return self
+        if expocode not in self.cruises:
+            return replace(self, table=self.table.slice(0, 0), rejects=(), findings=(), rows=0, refused_members=0)
         first = self.cruises[0] == expocode
         table = self.table.filter(pc.equal(self.table.column("expocode"), expocode))
         others = {

@@ -289,7 +289,7 @@ def _nothing_usable(sheet: Sheet, rejects: Sequence[Reject], rows: _Rows) -> Del
             " ask for the file to be sent again.",
             sheet.first_line,
         )
-    first = min(rejects, key=lambda reject: reject.line)
+    first = min(rejects, key=lambda reject: reject.line or 0)
     if first.reason == "no-expocode" and rows.n_row:
         return refuse_expocode(name, rows.text("expocode")[0].as_py(), int(rows.lines[0]))
     return DeliveryProblem(

@@ -19,8 +19,7 @@ from pipeline.reading.text import delivered_text
 if TYPE_CHECKING:
     from pipeline.settings import ReadingSettings
 
-_ZIP_MAGIC = b"PK\x03\x04"
-_EMPTY_ZIP_MAGIC = b"PK\x05\x06"
+ZIP_MAGICS = (b"PK\x03\x04", b"PK\x05\x06")  # the second is an empty zip's
 # What operating systems put into zips by themselves; nobody delivers it.
 _LITTER = re.compile(r"(^|/)(__MACOSX/|\.DS_Store$|\._|Thumbs\.db$)")
 _GIGABYTE = 1e9
@@ -45,7 +44,7 @@ def read_delivery(name: str, data: bytes, limits: ReadingSettings) -> Delivery:
 
     """
     sha256 = hashlib.sha256(data).hexdigest()
-    if data.startswith((_ZIP_MAGIC, _EMPTY_ZIP_MAGIC)):
+    if data.startswith(ZIP_MAGICS):
         return _read_zip(name, data, sha256, limits)
     sheet = find_sheet(delivered_text(name, data), limits.columns)
     read = read_sheet(sheet, limits)
@@ -89,7 +88,7 @@ def _read_zip(name: str, data: bytes, sha256: str, limits: ReadingSettings) -> D
         raise _no_cast(name, refused)
     rejects = [reject for cast in read for reject in cast.rejects]
     rejects += [
-        Reject(name, 0, member[: limits.raw_text], problem.reason, str(problem))
+        Reject(name, None, member[: limits.raw_text], problem.reason, str(problem))
         for member, problem in refused
     ]
     return Delivery(

@@ -1,0 +1,153 @@
+"""The command line: arguments to calls, results to stdout, messages to stderr, exceptions to exit status."""
+
+from __future__ import annotations
+
+import argparse
+import os
+import sys
+import traceback
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+from flows.records import ExitStatus
+from pipeline.problems import DeliveryProblem, Problem, UsageProblem
+from pipeline.version import VERSION
+
+if TYPE_CHECKING:
+    from collections.abc import Sequence
+
+DESCRIPTION = """\
+Turn what research cruises deliver, bottle and CTD files, into an archive of Parquet tables in which every
+sample is checked, converted to TEOS-10, given its tracers and resolved into the source waters it was mixed
+from. The tables inform scientific judgement; they are not for navigation or for decisions on safety at sea."""
+
+STATUSES = """\
+exit status: 0 every delivery was used; 1 some were refused (each is told why); 2 wrong usage; 3 a fault of ours"""
+
+RUN_EXAMPLE = """\
+example:
+  seawhence run deliveries --archive archive --sources sources.toml
+
+prints one line per cruise and where the tables are. Run it again after a new delivery: only what changed is
+made anew. """
+
+CHECK_EXAMPLE = """\
+example:
+  seawhence check deliveries/*.csv
+
+reads and checks the files and writes nothing. """
+
+SHOW_EXAMPLE = """\
+example:
+  seawhence show archive
+  seawhence show archive ZZV120090214
+
+lists the cruises of an archive, or tells of one cruise what it was made from and what its samples are. """
+
+
+def parser() -> argparse.ArgumentParser:
+    """Return the parser of the whole command."""
+    top = argparse.ArgumentParser(
+        "seawhence", description=DESCRIPTION, epilog=STATUSES, formatter_class=_Plain
+    )
+    top.add_argument("--version", action="version", version=f"seawhence {VERSION}")
+    commands = top.add_subparsers(dest="command", required=True, metavar="COMMAND")
+
+    run = commands.add_parser(
+        "run", help="bring an archive up to date with an inbox",
+        description="Bring an archive up to date with a directory of delivered files.",
+        epilog=RUN_EXAMPLE + "\n\n" + STATUSES, formatter_class=_Plain,
+    )  # fmt: skip
+    run.add_argument(
+        "inbox", type=Path, metavar="INBOX", help="directory of delivered files, with its folders"
+    )
+    run.add_argument(
+        "--archive", type=Path, required=True, metavar="DIR", help="the archive; made if there is none"
+    )
+    run.add_argument(
+        "--sources", type=Path, metavar="FILE.toml", help="source waters; without it nothing is resolved"
+    )
+    run.add_argument("--settings", type=Path, metavar="FILE.toml", help="settings; the defaults without it")
+    run.add_argument("--summary", type=Path, metavar="FILE.json", help="write the summary there as JSON too")
+    run.add_argument(
+        "--flow", action="store_true",
+        help="run as a Prefect flow; always so where PREFECT_API_URL names a server; the tables are the same",
+    )  # fmt: skip
+
+    check = commands.add_parser(
+        "check", help="read and check files, write nothing",
+        description="Read delivered files and tell what was understood and what is doubtful. Nothing is written.",
+        epilog=CHECK_EXAMPLE + "\n\n" + STATUSES, formatter_class=_Plain,
+    )  # fmt: skip
+    check.add_argument("files", type=Path, nargs="+", metavar="FILE", help="delivered file")
+    check.add_argument("--format", choices=("text", "json"), default="text", help="default: text")
+    check.add_argument("--settings", type=Path, metavar="FILE.toml", help="settings; the defaults without it")
+
+    show = commands.add_parser(
+        "show", help="tell what is in an archive",
+        description="Tell what is in an archive, or of one cruise: revision, provenance, rows, tags.",
+        epilog=SHOW_EXAMPLE, formatter_class=_Plain,
+    )  # fmt: skip
+    show.add_argument("archive", type=Path, metavar="ARCHIVE", help="the archive's directory")
+    show.add_argument("cruise", nargs="?", metavar="CRUISE", help="expocode of a cruise")
+    return top
+
+
+class _Plain(argparse.RawDescriptionHelpFormatter):
+    """Help as it is written."""
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Run the command and return its exit status."""
+    try:
+        chosen = parser().parse_args(arguments)
+    except SystemExit as stop:  # argparse has said what is wrong
+        return int(stop.code or 0)
+    try:
+        return int(_run(chosen))
+    except DeliveryProblem as problem:
+        return _refuse(problem, ExitStatus.REFUSED)
+    except Problem as problem:
+        return _refuse(problem, ExitStatus.USAGE)
+    except BrokenPipeError:  # the reader of our output has seen enough
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        return int(ExitStatus.GOOD)
+    except KeyboardInterrupt:
+        print(
+            "seawhence: stopped; the archive is whole, and the next run goes on from here.", file=sys.stderr
+        )
+        return 130
+    except Exception:  # noqa: BLE001 - the last place where a fault of ours can be told
+        traceback.print_exc()
+        print(
+            "seawhence: this is a fault of seawhence, not of your files; please report it.", file=sys.stderr
+        )
+        return int(ExitStatus.FAULT)
+
+
+def run_and_exit() -> None:
+    """Run the command as the process that it is."""
+    sys.exit(main())
+
+
+def _run(chosen: argparse.Namespace) -> int:
+    match chosen.command:
+        case "run":
+            from flows.running import run  # noqa: PLC0415 - the rooms take a second to load; help needs none
+
+            return run(chosen)
+        case "check":
+            from flows.looking import check  # noqa: PLC0415
+
+            return check(chosen)
+        case "show":
+            from flows.showing import show  # noqa: PLC0415
+
+            return show(chosen)
+    raise UsageProblem(f"there is no command '{chosen.command}'")
+
+
+def _refuse(problem: Problem, status: ExitStatus) -> int:
+    for sentence in str(problem).splitlines():
+        print(f"seawhence: {sentence}", file=sys.stderr)
+    return int(status)

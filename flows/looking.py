@@ -1,0 +1,138 @@
+"""The command ``seawhence check``: what a file holds and what is doubtful in it, with nothing written."""
+
+from __future__ import annotations
+
+import json
+from dataclasses import asdict, dataclass
+from typing import TYPE_CHECKING, Any
+
+from flows.records import ExitStatus, Refusal
+from pipeline.checking import check as check_table
+from pipeline.findings import Finding, Severity
+from pipeline.problems import DeliveryProblem
+from pipeline.reading import read_delivery
+from pipeline.settings import read_settings
+from pipeline.variables import MEASURED, REGISTRY
+
+if TYPE_CHECKING:
+    import argparse
+    from collections.abc import Iterable
+    from pathlib import Path
+
+    from pipeline.findings import Reject
+    from pipeline.reading import Delivery
+    from pipeline.settings import Settings
+
+_ORDER = {Severity.FAULT: 0, Severity.DOUBT: 1, Severity.NOTE: 2}
+_MOST_TOLD = 3  # of one check and variable; the JSON form tells all
+
+
+@dataclass(frozen=True, slots=True)
+class Look:
+    """What was understood of one file."""
+
+    delivery: Delivery
+    findings: tuple[Finding, ...]
+
+    @property
+    def refused_members(self) -> tuple[Reject, ...]:
+        """Members of a zip that were not used."""
+        return tuple(reject for reject in self.delivery.rejects if reject.line is None)
+
+
+def check(chosen: argparse.Namespace) -> int:
+    """Look at every file, print what was found, and return the exit status."""
+    settings = read_settings(chosen.settings)
+    looks: list[Look | Refusal] = [_look(path, settings) for path in chosen.files]
+    if chosen.format == "json":
+        print(json.dumps({"files": [_as_json(look) for look in looks]}, indent=2, ensure_ascii=False))
+    else:
+        for look in looks:
+            print("\n".join(_as_text(look)))
+    refused = any(isinstance(look, Refusal) or look.refused_members for look in looks)
+    return ExitStatus.REFUSED if refused else ExitStatus.GOOD
+
+
+def _look(path: Path, settings: Settings) -> Look | Refusal:
+    try:
+        delivery = read_delivery(path.name, path.read_bytes(), settings.reading)
+    except DeliveryProblem as problem:
+        return Refusal(str(path), problem.reason, str(problem))
+    except OSError as error:
+        return Refusal(
+            str(path), "unreadable", f"{path}: the file cannot be read ({error.strerror}); give another file."
+        )
+    return Look(delivery, (*delivery.findings, *check_table(delivery.table, settings).findings))
+
+
+def _as_json(look: Look | Refusal) -> dict[str, Any]:
+    if isinstance(look, Refusal):
+        return {"file": look.file, "used": False, "refused": asdict(look)}
+    delivery = look.delivery
+    return {
+        "file": delivery.name,
+        "used": True,
+        "kind": delivery.kind,
+        "sha256": delivery.sha256,
+        "cruises": list(delivery.cruises),
+        "rows": delivery.rows,
+        "kept": delivery.table.num_rows,
+        "rejected": len(delivery.rejects),
+        "quantities": _quantities(delivery),
+        "passed_through": _passed_through(delivery),
+        "rejects": [asdict(reject) for reject in delivery.rejects],
+        "findings": [asdict(finding) for finding in look.findings],
+    }
+
+
+def _as_text(look: Look | Refusal) -> list[str]:
+    if isinstance(look, Refusal):
+        return [f"refused: {look.message}"]
+    delivery = look.delivery
+    kind = "bottle" if delivery.kind == "bottle" else "CTD"
+    lines = [
+        (
+            f"{delivery.name}: {kind} file of {', '.join(delivery.cruises)}; {delivery.rows} rows,"
+            f" {delivery.table.num_rows} kept, {len(delivery.rejects)} rejected"
+        ),
+        f"  read: {', '.join(_quantities(delivery))}",
+    ]
+    if extra := _passed_through(delivery):
+        lines.append(f"  passed through: {', '.join(extra)}")
+    lines += [f"  rejected  {sentence}" for sentence in _first_of_each_reason(delivery.rejects)]
+    for severity, group in _grouped(look.findings):
+        lines += [f"  {severity:<8}  {finding.message}" for finding in group[:_MOST_TOLD]]
+        if left := sum(finding.count for finding in group[_MOST_TOLD:]):
+            lines.append(f"  {severity:<8}  ... and {left} more of {group[0].check} in {group[0].variable}")
+    if not delivery.rejects and not look.findings:
+        lines.append("  nothing doubtful was found")
+    return lines
+
+
+def _first_of_each_reason(rejects: Iterable[Reject]) -> list[str]:
+    """Return the first sentences of each reason, and how many more there are."""
+    by_reason: dict[str, list[Reject]] = {}
+    for reject in rejects:
+        by_reason.setdefault(reject.reason, []).append(reject)
+    sentences = []
+    for reason, group in by_reason.items():
+        sentences += [reject.message for reject in group[:_MOST_TOLD]]
+        if len(group) > _MOST_TOLD:
+            sentences.append(f"... and {len(group) - _MOST_TOLD} more rows for the reason {reason}")
+    return sentences
+
+
+def _grouped(findings: Iterable[Finding]) -> list[tuple[Severity, list[Finding]]]:
+    """Return findings of one check and variable together, the gravest first."""
+    groups: dict[tuple[Severity, str, str | None], list[Finding]] = {}
+    for finding in findings:
+        groups.setdefault((finding.severity, finding.check, finding.variable), []).append(finding)
+    return [(key[0], group) for key, group in sorted(groups.items(), key=lambda item: _ORDER[item[0][0]])]
+
+
+def _quantities(delivery: Delivery) -> list[str]:
+    return [name for name in MEASURED if name in delivery.table.column_names]
+
+
+def _passed_through(delivery: Delivery) -> list[str]:
+    return [name for name in delivery.table.column_names if name not in REGISTRY]

@@ -1,0 +1,169 @@
+"""What an inbox asks for: which cruises are new or changed, and from which files each is made."""
+
+from __future__ import annotations
+
+import hashlib
+import os
+from dataclasses import dataclass
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+from pipeline.archive import DeliveredFile, fingerprint
+from pipeline.problems import UsageProblem
+from pipeline.reading import survey_cruises
+
+if TYPE_CHECKING:
+    from collections.abc import Iterable
+
+    from pipeline.archive import Contents, CruiseContents
+    from pipeline.mixing import Catalogue
+    from pipeline.settings import Settings
+
+
+@dataclass(frozen=True, slots=True)
+class InboxFile:
+    """One file in the inbox. ``name`` is its path in the inbox, as sentences and tables call it."""
+
+    name: str
+    path: str
+    size: int
+    sha256: str
+
+
+@dataclass(frozen=True, slots=True)
+class Job:
+    """One cruise to be made: from these files of the inbox, and what the archive has beside them."""
+
+    expocode: str
+    files: tuple[InboxFile, ...]
+    archived: tuple[DeliveredFile, ...] = ()  # deliveries of earlier runs that are no longer in the inbox
+
+    @property
+    def size(self) -> int:
+        """Delivered bytes."""
+        return sum(file.size for file in self.files) + sum(file.size for file in self.archived)
+
+
+@dataclass(frozen=True, slots=True)
+class Plan:
+    """What a run has to do."""
+
+    jobs: tuple[Job, ...]
+    unchanged: tuple[str, ...]
+    unknown: tuple[InboxFile, ...]  # files in which no cruise was found
+    same_bytes: tuple[tuple[str, str], ...]
+
+
+def list_inbox(inbox: Path) -> list[InboxFile]:
+    """Return the files of an inbox and its folders, sorted by name; hidden files are not deliveries.
+
+    Raises
+    ------
+    UsageProblem
+        Where the inbox is no directory that can be read.
+
+    """
+    if not inbox.is_dir():
+        raise UsageProblem(f"{inbox}: there is no such directory; give the directory of the delivered files.")
+
+    def unreadable(error: OSError) -> None:
+        raise UsageProblem(f"{error.filename}: the inbox cannot be read ({error.strerror}).") from error
+
+    paths = [
+        Path(folder) / name
+        for folder, folders, names in os.walk(inbox, onerror=unreadable)
+        if not folders.sort()  # the walk takes them in this order
+        for name in names
+        if not name.startswith(".")
+    ]
+    files = []
+    for path in sorted(paths):
+        try:
+            with path.open("rb") as stream:
+                sha256 = hashlib.file_digest(stream, "sha256").hexdigest()
+            size = path.stat().st_size
+        except OSError:
+            sha256, size = "", 0  # why it cannot be read is told when it is its turn
+        files.append(InboxFile(path.relative_to(inbox).as_posix(), str(path), size, sha256))
+    return files
+
+
+def plan_run(
+    files: Iterable[InboxFile], contents: Contents, settings: Settings, catalogue: Catalogue | None
+) -> Plan:
+    """Decide what a run has to do, from the archive's own fingerprints.
+
+    Only files that the archive does not know are opened.
+    """
+    distinct, same_bytes = _without_doubles(files)
+    cruises: dict[str, list[InboxFile]] = {}
+    unknown = []
+    for file in distinct:
+        codes = contents.delivered_with(file.sha256) or _survey(file, settings)
+        for code in codes:
+            cruises.setdefault(code, []).append(file)
+        if not codes:
+            unknown.append(file)
+    jobs, unchanged = [], []
+    for expocode, delivered in sorted(cruises.items()):
+        archived = contents.cruises.get(expocode)
+        if archived is not None and _is_current(delivered, archived, settings, catalogue):
+            unchanged.append(expocode)
+        else:
+            jobs.append(Job(expocode, tuple(delivered), _beside(delivered, archived)))
+    return Plan(tuple(jobs), tuple(unchanged), tuple(unknown), tuple(same_bytes))
+
+
+def _without_doubles(files: Iterable[InboxFile]) -> tuple[list[InboxFile], list[tuple[str, str]]]:
+    first: dict[str, str] = {}
+    distinct, doubles = [], []
+    for file in files:
+        if file.sha256 and file.sha256 in first:
+            doubles.append((file.name, first[file.sha256]))
+        else:
+            first[file.sha256] = file.name
+            distinct.append(file)
+    return distinct, doubles
+
+
+def _survey(file: InboxFile, settings: Settings) -> tuple[str, ...]:
+    try:
+        data = Path(file.path).read_bytes()
+    except OSError:
+        return ()
+    return survey_cruises(file.name, data, settings.reading)
+
+
+def _is_current(
+    delivered: list[InboxFile], archived: CruiseContents, settings: Settings, catalogue: Catalogue | None
+) -> bool:
+    """Return whether the archive's tables were made from these files, and are what would be made now."""
+    if archived.provenance is None or not archived.is_whole:
+        return False
+    made_from = {(file.name, file.sha256) for file in archived.provenance.deliveries}
+    wanted = fingerprint(made_from, settings.sha256, catalogue.sha256 if catalogue else None)
+    return {(file.name, file.sha256) for file in delivered} <= made_from and wanted == archived.fingerprint
+
+
+def _beside(delivered: list[InboxFile], archived: CruiseContents | None) -> tuple[DeliveredFile, ...]:
+    """Return what the archive's cruise was made from and the inbox no longer holds."""
+    if archived is None or archived.provenance is None:
+        return ()
+    here = {file.sha256 for file in delivered}
+    return tuple(file for file in archived.provenance.deliveries if file.sha256 not in here)
+
+
+def pack(jobs: Iterable[Job], most_batches: int, least_bytes: int) -> list[tuple[Job, ...]]:
+    """Pack jobs, in their order, into at most ``most_batches`` batches of at least ``least_bytes``."""
+    jobs = tuple(jobs)
+    total = sum(job.size for job in jobs)
+    target = max(least_bytes, -(-total // most_batches))
+    batches: list[list[Job]] = []
+    filled = 0
+    for job in jobs:
+        if not batches or filled >= target:
+            batches.append([])
+            filled = 0
+        batches[-1].append(job)
+        filled += job.size
+    return [tuple(batch) for batch in batches]

@@ -1,0 +1,177 @@
+"""One cruise, or a batch of them, from the inbox into the archive: what every driver calls.
+
+Safe to run again: a cruise that is published already is published as it is.
+"""
+
+from __future__ import annotations
+
+import logging
+from dataclasses import dataclass
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+import pyarrow.compute as pc
+
+from flows.records import CruiseRecord, Refusal, State
+from pipeline.archive import DeliveredFile, Provenance, open_archive, publish, read_cruise, vault
+from pipeline.problems import ArchiveProblem, DeliveryProblem
+from pipeline.process import process_cruise, refuse_two_editions, shared_rows
+from pipeline.reading import read_delivery
+
+if TYPE_CHECKING:
+    from collections.abc import Iterable, Sequence
+
+    import pyarrow as pa
+
+    from flows.plan import InboxFile, Job
+    from pipeline.archive import Store
+    from pipeline.mixing import Catalogue
+    from pipeline.reading import Delivery
+    from pipeline.settings import Settings
+
+_log = logging.getLogger(__name__)
+
+
+@dataclass(frozen=True, slots=True)
+class RunConfig:
+    """What every job of a run shares."""
+
+    archive: str
+    settings: Settings
+    catalogue: Catalogue | None = None
+
+
+def run_batch(jobs: Iterable[Job], config: RunConfig) -> list[CruiseRecord]:
+    """Make the cruises of a batch, one after the other; none takes another down with it."""
+    return [run_job(job, config) for job in jobs]
+
+
+def run_job(job: Job, config: RunConfig) -> CruiseRecord:
+    """Make one cruise and publish it. Never raises: what went wrong is in the record."""
+    refusals: list[Refusal] = []
+    try:
+        return _make(job, config, refusals)
+    except DeliveryProblem as problem:
+        refusals.append(Refusal(", ".join(file.name for file in job.files), problem.reason, str(problem)))
+        return CruiseRecord(job.expocode, State.REFUSED, refusals=tuple(refusals), message=_first(refusals))
+    except ArchiveProblem as problem:
+        return CruiseRecord(job.expocode, State.FAILED, refusals=tuple(refusals), message=str(problem))
+    except Exception as error:  # noqa: BLE001 - the run goes on; the record and the log tell
+        _log.exception("cruise %s", job.expocode)
+        message = f"a fault of seawhence, not of the files: {type(error).__name__}: {error}"
+        return CruiseRecord(job.expocode, State.FAILED, refusals=tuple(refusals), message=message)
+
+
+def refuse_file(file: InboxFile, config: RunConfig) -> Refusal:
+    """Keep a file in which no cruise was found, and say why it is refused."""
+    try:
+        vault.keep(open_archive(config.archive), Path(file.path))
+        read_delivery(file.name, Path(file.path).read_bytes(), config.settings.reading)
+    except DeliveryProblem as problem:
+        return Refusal(file.name, problem.reason, str(problem))
+    except OSError as error:
+        return Refusal(file.name, "unreadable", _unreadable(file.name, error))
+    return Refusal(file.name, "no-cruise", f"{file.name}: no cruise was found in it; nothing was used.")
+
+
+def _make(job: Job, config: RunConfig, refusals: list[Refusal]) -> CruiseRecord:
+    store = open_archive(config.archive)
+    delivered = _read_inbox(job, config, store, refusals)
+    if not delivered:
+        return CruiseRecord(job.expocode, State.REFUSED, refusals=tuple(refusals), message=_first(refusals))
+    refuse_two_editions(delivered)
+    deliveries = [*delivered, *_read_archived(job, config, store, delivered)]
+    deliveries.sort(key=lambda delivery: (delivery.kind, delivery.name))
+    processed = process_cruise(job.expocode, deliveries, config.settings, config.catalogue)
+    before = read_cruise(store, job.expocode)
+    revision = publish(store, _provenance(job.expocode, deliveries, config), processed.tables)
+    known = before.provenance is not None or revision > 1
+    samples = processed.tables["samples"]
+    return CruiseRecord(
+        job.expocode,
+        State.REVISED if known else State.NEW,
+        revision,
+        files=tuple(delivery.name for delivery in deliveries),
+        rows=sum(delivery.rows for delivery in deliveries),
+        kept=sum(delivery.table.num_rows for delivery in deliveries),
+        rejected=sum(len(delivery.rejects) for delivery in deliveries),
+        findings=len(processed.findings),
+        samples=samples.num_rows,
+        tagged=tagged_samples(samples),
+        resolved=config.catalogue is not None,
+        refusals=tuple(refusals),
+    )
+
+
+def tagged_samples(samples: pa.Table) -> int:
+    """Return how many samples are tagged with a source, rather than with a reason why there is none."""
+    same = pc.equal(samples.column("tag"), samples.column("leading_source"))
+    return int(pc.sum(same).as_py() or 0)
+
+
+def _read_inbox(job: Job, config: RunConfig, store: Store, refusals: list[Refusal]) -> list[Delivery]:
+    """Keep and read the inbox's files of a cruise; one that is refused is told and left out."""
+    delivered = []
+    for file in job.files:
+        try:
+            data = Path(file.path).read_bytes()
+            vault.keep(store, data)
+            delivery = read_delivery(file.name, data, config.settings.reading)
+        except DeliveryProblem as problem:
+            refusals.append(Refusal(file.name, problem.reason, str(problem)))
+            continue
+        except OSError as error:
+            refusals.append(Refusal(file.name, "unreadable", _unreadable(file.name, error)))
+            continue
+        part = delivery.of_cruise(job.expocode)
+        refusals += [
+            Refusal(f"{file.name}:{r.raw}", r.reason, r.message) for r in part.rejects if r.line is None
+        ]
+        if part.rows:
+            delivered.append(part)
+    return delivered
+
+
+def _read_archived(
+    job: Job, config: RunConfig, store: Store, delivered: Sequence[Delivery]
+) -> list[Delivery]:
+    """Read what earlier runs delivered of the cruise and no file of the inbox replaces."""
+    standing = []
+    for file in job.archived:
+        data = vault.read(store, file.sha256)
+        delivery = read_delivery(file.name, data, config.settings.reading).of_cruise(job.expocode)
+        if not any(shared_rows(delivery, other) for other in delivered):
+            standing.append(delivery)
+    return standing
+
+
+def _provenance(expocode: str, deliveries: Sequence[Delivery], config: RunConfig) -> Provenance:
+    catalogue = config.catalogue
+    return Provenance(
+        expocode=expocode,
+        deliveries=tuple(
+            DeliveredFile(
+                name=d.name,
+                sha256=d.sha256,
+                size=d.size,
+                kind=d.kind.value,
+                rows=d.rows,
+                kept=d.table.num_rows,
+                rejected=len(d.rejects),
+            )
+            for d in deliveries
+        ),
+        settings_sha256=config.settings.sha256,
+        catalogue_sha256=catalogue.sha256 if catalogue else None,
+        catalogue_title=catalogue.title if catalogue else "",
+    )
+
+
+def _unreadable(name: str, error: OSError) -> str:
+    return (
+        f"{name}: the file cannot be read ({error.strerror}); check that it is still there and may be read."
+    )
+
+
+def _first(refusals: Sequence[Refusal]) -> str:
+    return refusals[0].message if refusals else "none of its files holds a row of it."
