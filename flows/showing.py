@@ -36,7 +36,7 @@ def show(chosen: argparse.Namespace) -> int:
 
 
 def _archive(contents: Contents) -> list[str]:
-    rows = [("cruise", "revision", *TABLE_NAMES, "source waters")]
+    rows: list[tuple[str, ...]] = [("cruise", "revision", *TABLE_NAMES, "source waters")]
     for cruise in contents.cruises.values():
         made = cruise.provenance
         rows.append(

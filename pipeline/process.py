@@ -37,6 +37,7 @@ if TYPE_CHECKING:
     from pipeline.findings import Finding
     from pipeline.mixing import Catalogue
     from pipeline.settings import Settings
+    from pipeline.tables import FloatArray
 
 _KEYS = {DeliveryKind.BOTTLE: ("station", "cast", "sample"), DeliveryKind.CTD: ("station", "cast")}
 _CORES = {DeliveryKind.BOTTLE: SAMPLES_CORE, DeliveryKind.CTD: CASTS_CORE}
@@ -103,7 +104,7 @@ def _described(
     return table, checked.findings
 
 
-def _usable(table: pa.Table, settings: Settings, name: str) -> object:
+def _usable(table: pa.Table, settings: Settings, name: str) -> FloatArray:
     return usable(table, name, settings.use)
 
 

@@ -12,10 +12,14 @@ import gsw
 import numpy as np
 import numpy.typing as npt
 
+from pipeline.tables import cast_groups
+
 if TYPE_CHECKING:
     from collections.abc import Callable
 
-Floats = npt.NDArray[np.float64]
+    import pyarrow as pa
+
+    from pipeline.tables import FloatArray
 
 
 @dataclass(frozen=True, slots=True)
@@ -25,7 +29,7 @@ class Domain:
     low: float
     high: float
 
-    def holds(self, values: Floats) -> npt.NDArray[np.bool_]:
+    def holds(self, values: FloatArray) -> npt.NDArray[np.bool_]:
         """Return where ``values`` lie inside, any shape; NaN does not."""
         return (values >= self.low) & (values <= self.high)
 
@@ -43,13 +47,53 @@ LATITUDE = Domain(-90.0, 90.0)
 # for an infinite longitude and crashes (gsw 3.6.23).
 LONGITUDE = Domain(-180.0, 360.0)
 
+REFERENCE_PRESSURES = {"sigma0": 0.0, "sigma2": 2000.0, "sigma4": 4000.0}  # dbar
+
+
+def columns(table: pa.Table, usable: Callable[[str], FloatArray]) -> dict[str, FloatArray]:
+    """Return the TEOS-10 columns of a table of samples or of CTD levels.
+
+    Parameters
+    ----------
+    table
+        n_row rows; its columns ``expocode``, ``station`` and ``cast`` say which rows are one cast.
+    usable
+        From a registry name to the values that may be used, (n_row,), NaN for the others. Asked for
+        ``practical_salinity``, ``temperature`` (ITS-90), ``pressure``, ``latitude`` and ``longitude``.
+
+    Returns
+    -------
+    dict
+        From registry name to values, each (n_row,), NaN where something that is needed is missing.
+
+    """
+    names = ("practical_salinity", "temperature", "pressure", "latitude", "longitude")
+    practical, temperature, pressure, latitude, longitude = (usable(name) for name in names)
+    salinity = absolute_salinity(practical, pressure, longitude, latitude)
+    heat = conservative_temperature(salinity, temperature, pressure)
+    return {
+        "absolute_salinity": salinity,
+        "preformed_salinity": preformed_salinity(practical, pressure, longitude, latitude),
+        "conservative_temperature": heat,
+        "potential_temperature": potential_temperature(salinity, temperature, pressure),
+        "depth": depth(pressure, latitude),
+        **{
+            name: potential_density_anomaly(salinity, heat, reference)
+            for name, reference in REFERENCE_PRESSURES.items()
+        },
+        "spiciness0": spiciness0(salinity, heat),
+        "buoyancy_frequency_squared": buoyancy_frequency_squared(
+            salinity, heat, pressure, latitude, cast_groups(table)
+        ),
+    }
+
 
 def absolute_salinity(
     practical_salinity: npt.ArrayLike,
     pressure: npt.ArrayLike,
     longitude: npt.ArrayLike,
     latitude: npt.ArrayLike,
-) -> Floats:
+) -> FloatArray:
     """Return Absolute Salinity, g/kg.
 
     Inputs broadcast: practical salinity (PSS-78), sea pressure (dbar), longitude (degrees east, -180 to 360),
@@ -69,7 +113,7 @@ def preformed_salinity(
     pressure: npt.ArrayLike,
     longitude: npt.ArrayLike,
     latitude: npt.ArrayLike,
-) -> Floats:
+) -> FloatArray:
     """Return Preformed Salinity, g/kg: what is conserved when waters mix and nutrients are respired.
 
     Inputs as for `absolute_salinity`. IOC, SCOR and IAPSO 2010, section A.4.
@@ -85,7 +129,7 @@ def preformed_salinity(
 
 def conservative_temperature(
     absolute_salinity: npt.ArrayLike, temperature: npt.ArrayLike, pressure: npt.ArrayLike
-) -> Floats:
+) -> FloatArray:
     """Return Conservative Temperature, degC.
 
     Inputs broadcast: Absolute Salinity (g/kg), in-situ temperature (ITS-90, degC), sea pressure (dbar).
@@ -101,7 +145,7 @@ def conservative_temperature(
 
 def potential_temperature(
     absolute_salinity: npt.ArrayLike, temperature: npt.ArrayLike, pressure: npt.ArrayLike
-) -> Floats:
+) -> FloatArray:
     """Return potential temperature referred to the surface, ITS-90, degC.
 
     Inputs as for `conservative_temperature`. IOC, SCOR and IAPSO 2010, section 3.1.
@@ -116,7 +160,7 @@ def potential_temperature(
 
 def potential_density_anomaly(
     absolute_salinity: npt.ArrayLike, conservative_temperature: npt.ArrayLike, reference: float
-) -> Floats:
+) -> FloatArray:
     """Return potential density less 1000, kg/m3, referred to ``reference`` (dbar).
 
     Inputs broadcast: Absolute Salinity (g/kg), Conservative Temperature (degC). 75-term equation of state,
@@ -131,7 +175,7 @@ def potential_density_anomaly(
     return density - 1000.0
 
 
-def spiciness0(absolute_salinity: npt.ArrayLike, conservative_temperature: npt.ArrayLike) -> Floats:
+def spiciness0(absolute_salinity: npt.ArrayLike, conservative_temperature: npt.ArrayLike) -> FloatArray:
     """Return spiciness referred to the surface, kg/m3.
 
     Inputs broadcast: Absolute Salinity (g/kg), Conservative Temperature (degC). McDougall and Krzysik 2015.
@@ -141,7 +185,7 @@ def spiciness0(absolute_salinity: npt.ArrayLike, conservative_temperature: npt.A
     )
 
 
-def depth(pressure: npt.ArrayLike, latitude: npt.ArrayLike) -> Floats:
+def depth(pressure: npt.ArrayLike, latitude: npt.ArrayLike) -> FloatArray:
     """Return depth below the surface of a standard ocean, m, positive down.
 
     Inputs broadcast: sea pressure (dbar), latitude (degrees north). IOC, SCOR and IAPSO 2010, section 3.32,
@@ -151,17 +195,17 @@ def depth(pressure: npt.ArrayLike, latitude: npt.ArrayLike) -> Floats:
 
 
 def buoyancy_frequency_squared(
-    absolute_salinity: Floats,
-    conservative_temperature: Floats,
-    pressure: Floats,
-    latitude: Floats,
+    absolute_salinity: FloatArray,
+    conservative_temperature: FloatArray,
+    pressure: FloatArray,
+    latitude: FloatArray,
     cast: npt.NDArray[np.integer],
-) -> Floats:
+) -> FloatArray:
     """Return N2 from each level to the next deeper one of its cast, s-2, in the order given.
 
     All inputs are (n,): Absolute Salinity (g/kg), Conservative Temperature (degC), sea pressure (dbar),
-    latitude (degrees north), and a number that is the same for all rows of a cast. Rows may come in any order.
-    NaN at the deepest level and between equal pressures. A row that lacks an input is no level: the
+    latitude (degrees north), and a number that is the same for all rows of a cast. Rows may come in any
+    order. NaN at the deepest level and between equal pressures. A row that lacks an input is no level: the
     interval runs past it. IOC, SCOR and IAPSO 2010, section 3.10, at mid-pressure.
     """
     columns = (absolute_salinity, conservative_temperature, pressure, latitude)
@@ -185,7 +229,7 @@ def buoyancy_frequency_squared(
     return found
 
 
-def _evaluate(function: Callable[..., Floats], *inputs: tuple[npt.ArrayLike, Domain]) -> Floats:
+def _evaluate(function: Callable[..., FloatArray], *inputs: tuple[npt.ArrayLike, Domain]) -> FloatArray:
     """Apply ``function`` where every input lies in its domain; NaN elsewhere. Inputs broadcast."""
     values = np.broadcast_arrays(*(np.asarray(value, dtype=np.float64) for value, _ in inputs))
     known = np.logical_and.reduce([d.holds(v) for v, (_, d) in zip(values, inputs, strict=True)])

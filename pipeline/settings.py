@@ -66,10 +66,12 @@ class CheckSettings(_Section):
 class TracerSettings(_Section):
     """Which published forms the tracers take."""
 
-    stoichiometry: str = Field("anderson_sarmiento_1994", description="ratios of respiration, by citation")
-    oxygen_solubility: str = Field(
-        "benson_krause_umol_kg", description="coefficients of Garcia and Gordon 1992"
-    )
+    stoichiometry: Literal[
+        "redfield_1963", "takahashi_1985", "anderson_sarmiento_1994", "anderson_1995", "kortzinger_2001"
+    ] = Field("anderson_sarmiento_1994", description="ratios of respiration, by citation")
+    oxygen_solubility: Literal[
+        "benson_krause_umol_kg", "combined_umol_kg", "benson_krause_ml_l", "combined_ml_l"
+    ] = Field("benson_krause_umol_kg", description="which coefficients of Garcia and Gordon 1992")
     n_star: Literal["deutsch_2001", "gruber_sarmiento_1997"] = Field(
         "deutsch_2001", description="form of N*, by citation"
     )

@@ -167,8 +167,9 @@ def density(at: DensityAt, salinity: FloatArray, temperature: FloatArray, pressu
     if at is DensityAt.LABORATORY:
         kg_m3 = gsw.rho_t_exact(reference, LABORATORY_TEMPERATURE, 0.0)
     else:
-        sane = np.where(np.abs(temperature) < 50.0, temperature, np.nan)
-        kg_m3 = gsw.pot_rho_t_exact(reference, sane, pressure, 0.0)
+        warmth = np.where(np.abs(temperature) < 50.0, temperature, np.nan)
+        level = np.where(np.abs(pressure) < 12_000.0, pressure, np.nan)
+        kg_m3 = gsw.pot_rho_t_exact(reference, warmth, level, 0.0)
     return np.asarray(kg_m3 / 1000.0, dtype=np.float64)
 
 

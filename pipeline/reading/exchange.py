@@ -275,7 +275,7 @@ def _found(rows: _Rows, reason: str, row: int) -> str:
     }.get(reason)
     if names is None:
         return "missing"
-    written = ", ".join(rows.text(name)[row].as_py() for name in names)
+    written = ", ".join(rows.text(name)[row].as_py() or "" for name in names)
     return f"'{written[:60]}'" if written.strip(", ") else "missing"
 
 

@@ -1,0 +1,162 @@
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+import numpy as np
+import pytest
+
+from pipeline.checking import CHECKS, check
+from pipeline.checking.track import nautical_miles
+from pipeline.findings import Severity
+from pipeline.settings import Settings
+from tests.invented import bottle_file, cast_file, read
+
+if TYPE_CHECKING:
+    from pipeline.checking import Checked
+    from pipeline.findings import Finding
+
+SETTINGS = Settings()
+
+
+def checked(*rows: dict[str, str], extra: dict[str, str] | None = None) -> Checked:
+    return check(read(bottle_file(*rows, extra=extra)).table, SETTINGS)
+
+
+def only(result: Checked) -> Finding:
+    (finding,) = result.findings
+    return finding
+
+
+def test_a_clean_cruise_raises_nothing() -> None:
+    result = checked({}, {}, {"NITRAT": "-999", "NITRAT_FLAG_W": "9"})
+    assert not result.findings
+    assert result.flags["nitrate_check"].tolist() == [1, 1, 9]
+
+
+# Each check on a row where it must speak: what changes, the check, the variable, its flag, and the sentence.
+SPEAKING = [
+    (
+        {"SALNTY": "12623", "SALNTY_FLAG_W": "2"}, "gross-range", "bottle_salinity", 4,
+        "cruise_hy1.csv, line 5: SALNTY is 12623; expected 0 to 42.",
+    ),
+    (
+        {"OXYGEN": "-7934", "OXYGEN_FLAG_W": "2"}, "gross-range", "bottle_oxygen", 4,
+        "cruise_hy1.csv, line 5: OXYGEN is -7934; expected 0 to 500 umol kg-1.",
+    ),
+    (
+        {"NITRAT": "-999", "NITRAT_FLAG_W": "2"}, "flag-without-value", "nitrate", 9,
+        "cruise_hy1.csv, line 5: NITRAT is missing under the good flag 2; expected a value, or flag 9 where none was"
+        " sampled.",
+    ),
+    (
+        {"NITRAT_FLAG_W": "9"}, "value-under-missing-flag", "nitrate", 3,
+        "cruise_hy1.csv, line 5: NITRAT is 30 under a flag that says there is no value; expected no value, or another"
+        " flag.",
+    ),
+    (
+        {"NITRAT_FLAG_W": "65"}, "unknown-flag", "nitrate", 3,
+        "cruise_hy1.csv, line 5: NITRAT has flag 65; expected a WHP water flag, 1 to 9.",
+    ),
+    (
+        {"SAMPNO": "1"}, "duplicate-sample", "sample", None,
+        "cruise_hy1.csv, line 5: SAMPNO 1 stands already in this cast; expected each sample number once in a cast.",
+    ),
+]  # fmt: skip
+
+
+@pytest.mark.parametrize(("changed", "name", "variable", "flag", "sentence"), SPEAKING)
+def test_where_a_check_must_speak(
+    changed: dict[str, str], name: str, variable: str, flag: int | None, sentence: str
+) -> None:
+    result = checked({}, changed)
+    finding = only(result)
+    assert (finding.check, finding.variable, finding.message) == (name, variable, sentence)
+    assert (finding.station, finding.line) == ("1", 5)
+    if flag is not None:
+        assert result.flags[f"{variable}_check"].tolist() == [1, flag]
+
+
+def test_garbage_that_the_group_flagged_itself_is_no_news() -> None:
+    assert not checked({}, {"SALNTY": "12623", "SALNTY_FLAG_W": "4"}).findings
+
+
+def test_flag_eight_is_a_water_flag_and_no_ctd_flag() -> None:
+    assert not checked({"NITRAT_FLAG_W": "8"}).findings
+    assert only(checked({"CTDSAL_FLAG_W": "8"})).check == "unknown-flag"
+
+
+def test_a_whole_parameter_flagged_bad_is_told_once() -> None:
+    finding = only(checked(*[{"NITRAT_FLAG_W": "4"}] * 12))
+    assert (finding.check, finding.severity) == ("all-flagged-bad", Severity.NOTE)
+    assert "has 12 values and none under a good flag (most have flag 4)" in finding.message
+
+
+def test_many_findings_of_one_kind_end_in_one_sentence() -> None:
+    findings = checked({}, *[{"NITRAT_FLAG_W": "65"}] * 70).findings
+    assert len(findings) == 51
+    assert sum(finding.count for finding in findings) == 70
+    assert "(and 19 more rows)" in findings[-1].message
+
+
+def test_a_station_name_used_at_two_places() -> None:
+    finding = only(checked({}, {"STNNBR": "1", "LATITUDE": "-36.5000", "CASTNO": "2", "DATE": "20090220"}))
+    assert (finding.check, finding.variable) == ("repeated-station", "station")
+    assert "is 60 nautical miles from where the same station was before" in finding.message
+
+
+def test_a_station_that_the_ship_could_not_reach() -> None:
+    near = {"STNNBR": "2", "LATITUDE": "-35.6000", "TIME": "1400"}
+    far = {"STNNBR": "3", "LATITUDE": "-45.6000", "TIME": "2000"}
+    assert not checked({}, near).findings
+    finding = only(checked({}, near, far))
+    assert (finding.check, finding.station) == ("station-speed", "3")
+    assert "lies 600 nautical miles from the cast before, 100 knots" in finding.message
+
+
+def test_the_date_line_is_no_distance() -> None:
+    east = {"STNNBR": "1", "LATITUDE": "0.0", "LONGITUDE": "179.9500"}
+    west = {"STNNBR": "2", "LATITUDE": "0.0", "LONGITUDE": "-179.9500", "TIME": "1203"}
+    assert not checked(east, west).findings
+
+
+def test_a_degree_of_latitude_is_sixty_miles() -> None:
+    zero = np.zeros(1)
+    assert nautical_miles(zero, zero, zero + 1, zero)[0] == pytest.approx(60.0)
+    assert nautical_miles(zero + 60, zero, zero + 60, zero + 2)[0] == pytest.approx(60.0, rel=1e-3)
+
+
+@pytest.mark.parametrize(
+    ("later", "severity"),
+    [({"TIME": "0110", "DATE": "20090215"}, Severity.NOTE), ({"DATE": "20090222"}, Severity.DOUBT)],
+)
+def test_time_that_changes_within_a_cast(later: dict[str, str], severity: Severity) -> None:
+    finding = only(checked({"TIME": "2350"}, later))
+    assert (finding.check, finding.severity) == ("cast-time", severity)
+
+
+def test_ctd_levels_that_stand_twice_or_turn_back() -> None:
+    levels = [f"{p:.1f},2,20.0,2,35.5,2" for p in (0, 10, 20, 20, 15, 30)]
+    result = check(read(cast_file(levels), "cast_ct1.csv").table, SETTINGS)
+    assert [finding.check for finding in result.findings] == ["duplicate-pressure", "pressure-order"]
+    assert result.flags["pressure_check"].tolist() == [1, 1, 1, 3, 1, 1]
+    assert "CTDPRS turns back at 15 dbar" in result.findings[1].message
+
+
+@pytest.mark.parametrize("order", [(0, 10, 20), (20, 10, 0)])
+def test_a_cast_that_goes_one_way_is_in_order(order: tuple[int, ...]) -> None:
+    levels = [f"{p:.1f},2,20.0,2,35.5,2" for p in order]
+    assert not check(read(cast_file(levels), "cast_ct1.csv").table, SETTINGS).findings
+
+
+def test_ctd_findings_of_one_cast_are_told_together() -> None:
+    levels = [f"{p:.1f},2,99.0,2,35.5,2" for p in range(0, 400, 10)]
+    finding = only(check(read(cast_file(levels), "cast_ct1.csv").table, SETTINGS))
+    assert (finding.check, finding.count) == ("gross-range", 40)
+    assert "(and 39 more rows)" in finding.message
+
+
+def test_every_check_is_tried_here() -> None:
+    tried = {name for _, name, *_ in SPEAKING} | {
+        "all-flagged-bad", "repeated-station", "station-speed", "cast-time", "duplicate-pressure", "pressure-order",
+    }  # fmt: skip
+    assert tried == set(CHECKS)

@@ -1,0 +1,1 @@
+"""Checks against the outside world: published numbers, each with its source beside it."""

@@ -1,0 +1,21 @@
+"""The one table of all checks."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+from . import casts, cruises, eos80, mixing, oxygen, scales, teos10, tracers
+
+if TYPE_CHECKING:
+    from .check import Check
+
+TABLE: tuple[Check, ...] = (
+    *eos80.ROWS,
+    *scales.ROWS,
+    *teos10.ROWS,
+    *casts.ROWS,
+    *cruises.ROWS,
+    *oxygen.ROWS,
+    *tracers.ROWS,
+    *mixing.ROWS,
+)
