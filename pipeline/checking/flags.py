@@ -26,6 +26,7 @@ SCHEMES = {
     FlagScheme.WATER: (1, 2, 3, 4, 5, 6, 7, 8, 9),
     FlagScheme.CTD: (1, 2, 3, 4, 5, 6, 7, 9),
 }
+_NAMES = {FlagScheme.BOTTLE: "bottle", FlagScheme.WATER: "water-sample", FlagScheme.CTD: "CTD"}
 _GOOD, _NOT_REPORTED, _NOT_SAMPLED = 2, 5, 9
 # A whole parameter is told of only where it is more than a handful of values.
 _FEWEST_FOR_A_WHOLE = 10
@@ -43,7 +44,7 @@ def unknown_flag(table: pa.Table, settings: Settings) -> list[Mark]:
         flags = floats(table, flag_name(name))
         rows = np.flatnonzero(~np.isnan(flags) & ~np.isin(flags, SCHEMES[scheme]))
         if len(rows):
-            limit = f"a WHP {scheme} flag, {SCHEMES[scheme][0]} to {SCHEMES[scheme][-1]}"
+            limit = f"a WHP {_NAMES[scheme]} flag, {SCHEMES[scheme][0]} to {SCHEMES[scheme][-1]}"
             marks.append(
                 Mark(
                     "unknown-flag",

@@ -59,7 +59,9 @@ class Delivery:
         if self.cruises == (expocode,):
             return self
         if expocode not in self.cruises:
-            return replace(self, table=self.table.slice(0, 0), rejects=(), findings=(), rows=0, refused_members=0)
+            return replace(
+                self, table=self.table.slice(0, 0), rejects=(), findings=(), rows=0, refused_members=0
+            )
         first = self.cruises[0] == expocode
         table = self.table.filter(pc.equal(self.table.column("expocode"), expocode))
         others = {

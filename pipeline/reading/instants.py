@@ -17,12 +17,12 @@ if TYPE_CHECKING:
 _COMPACT = re.compile(r"(\d{4})(\d{2})(\d{2})(\.0*)?$")
 _DASHED = re.compile(r"(\d{4})[-/](\d{1,2})[-/](\d{1,2})([T ].*)?$")
 _SLASHED = re.compile(r"(\d{1,2})[/.](\d{1,2})[/.](\d{2}|\d{4})$")
-_COLONS = re.compile(r"(\d{1,2}):(\d{2})(:\d{2}(\.\d*)?)?$")
+_COLONS = re.compile(r"(\d{1,2}):(\d{2})(?::(\d{2})(\.\d*)?)?$")
 _DIGITS = re.compile(r"(\d{1,4})(\.0*)?$")
 _MISSING = re.compile(r"(|-9+(\.[09]*)?|nan|na|null)$", re.IGNORECASE)
 
 _CENTURY_TURN = 50  # two-digit years below are 20xx (common practice, no source)
-MINUTES_PER_DAY = 1440
+SECONDS_PER_DAY = 86_400
 
 
 @dataclass(frozen=True, slots=True)
@@ -46,14 +46,13 @@ def read_instants(dates: Sequence[str], times: Sequence[str]) -> Instants:
 
     """
     days_of, ambiguous = _read_dates(set(dates))
-    minutes_of = {text: _minutes(text) for text in set(times)}
+    seconds_of = {text: _seconds(text) for text in set(times)}
     day = np.array([days_of[text] for text in dates], dtype="datetime64[D]")
-    minutes = np.array([minutes_of[text] for text in times], dtype=np.float64)
+    seconds = np.array([seconds_of[text] for text in times], dtype=np.float64)
     bad_date = np.array([np.isnat(days_of[text]) and not _MISSING.match(text) for text in dates], dtype=bool)
-    bad_time = np.array([np.isinf(minutes_of[text]) for text in times], dtype=bool)
-    known = np.isfinite(minutes)
-    seconds = np.where(known, minutes, 0.0).astype(np.int64) * 60
-    instant = day.astype("datetime64[s]") + seconds.astype("timedelta64[s]")
+    bad_time = np.array([np.isinf(seconds_of[text]) for text in times], dtype=bool)
+    known = np.isfinite(seconds)
+    instant = day.astype("datetime64[s]") + np.where(known, seconds, 0.0).astype("timedelta64[s]")
     instant[~known] = np.datetime64("NaT")
     return Instants(day, instant, np.flatnonzero(bad_date), np.flatnonzero(bad_time), ambiguous)
 
@@ -86,18 +85,18 @@ def _day(text: str, *, day_first: bool) -> np.datetime64:
         return np.datetime64("NaT", "D")
 
 
-def _minutes(text: str) -> float:
-    """Return minutes after midnight; NaN where not given, infinity where impossible.
+def _seconds(text: str) -> float:
+    """Return whole seconds after midnight; NaN where not given, infinity where impossible.
 
     ``2400`` is legal and means the next day's midnight.
     """
     if _MISSING.match(text):
         return np.nan
     if m := _COLONS.match(text):
-        hours, minutes = int(m[1]), int(m[2])
+        hours, minutes, seconds = int(m[1]), int(m[2]), int(m[3] or 0)
     elif m := _DIGITS.match(text):
-        hours, minutes = divmod(int(m[1]), 100)
+        hours, minutes, seconds = *divmod(int(m[1]), 100), 0
     else:
         return np.inf
-    total = hours * 60 + minutes
-    return float(total) if minutes < 60 and total <= MINUTES_PER_DAY else np.inf
+    total = (hours * 60 + minutes) * 60 + seconds
+    return float(total) if minutes < 60 and seconds < 60 and total <= SECONDS_PER_DAY else np.inf

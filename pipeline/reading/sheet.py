@@ -233,12 +233,13 @@ def _end_of_data(text: DeliveredText, start: int, findings: list[Finding]) -> in
     """Return where the data block ends, and note a missing or early end mark."""
     end = _END.search(text.data, start)
     if end is None:
+        last = text.data.rstrip().count(b"\n") + 1
         findings.append(
             Finding(
                 "no-end-mark", Severity.NOTE,
-                f"{text.name}: the END_DATA line is missing; every line to the end of the file was read, but the"
-                " file may have been cut short.",
-                file=text.name,
+                f"{text.name}, line {last}: the file ends here, without END_DATA; every line was read, but the file may"
+                " have been cut short.",
+                file=text.name, line=last,
             )
         )  # fmt: skip
         return len(text.data)

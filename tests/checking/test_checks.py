@@ -55,7 +55,7 @@ SPEAKING = [
     ),
     (
         {"NITRAT_FLAG_W": "65"}, "unknown-flag", "nitrate", 3,
-        "cruise_hy1.csv, line 5: NITRAT has flag 65; expected a WHP water flag, 1 to 9.",
+        "cruise_hy1.csv, line 5: NITRAT has flag 65; expected a WHP water-sample flag, 1 to 9.",
     ),
     (
         {"SAMPNO": "1"}, "duplicate-sample", "sample", None,

@@ -108,17 +108,17 @@ def test_a_trailing_comma_on_every_line_is_no_column() -> None:
 @pytest.mark.parametrize(
     ("changed", "day", "hour"),
     [
-        ({"DATE": "20131226.0", "TIME": "803"}, date(2013, 12, 26), "08:03"),
-        ({"DATE": "5/14/2007", "TIME": "26"}, date(2007, 5, 14), "00:26"),
-        ({"DATE": "14/5/07", "TIME": "8:14:04"}, date(2007, 5, 14), "08:14"),
-        ({"DATE": "2007-05-14", "TIME": "0"}, date(2007, 5, 14), "00:00"),
+        ({"DATE": "20131226.0", "TIME": "803"}, date(2013, 12, 26), "08:03:00"),
+        ({"DATE": "5/14/2007", "TIME": "26"}, date(2007, 5, 14), "00:26:00"),
+        ({"DATE": "14/5/07", "TIME": "8:14:04"}, date(2007, 5, 14), "08:14:04"),
+        ({"DATE": "2007-05-14", "TIME": "0"}, date(2007, 5, 14), "00:00:00"),
     ],
 )
 def test_dates_and_times_as_found(changed: dict[str, str], day: date, hour: str) -> None:
     delivery = read(bottle_file(changed))
     instant = one(delivery, "time")
     assert isinstance(instant, datetime)
-    assert (one(delivery, "date"), instant.strftime("%H:%M")) == (day, hour)
+    assert (one(delivery, "date"), instant.strftime("%H:%M:%S")) == (day, hour)
     assert not delivery.findings
 
 
