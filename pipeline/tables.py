@@ -85,8 +85,8 @@ def floats(table: pa.Table, name: str) -> FloatArray:
     """Return column ``name`` as float64, shape (n_row,), NaN where missing or no such column."""
     if name not in table.column_names:
         return np.full(table.num_rows, np.nan)
-    column = table.column(name).cast(pa.float64())
-    return np.asarray(pc.fill_null(column, np.nan).to_numpy(), dtype=np.float64)
+    # missing becomes NaN on the way; the array may be the table's own memory, so it is not to be written to
+    return np.asarray(table.column(name).to_numpy(), dtype=np.float64)
 
 
 def texts(table: pa.Table, name: str) -> list[str | None]:

@@ -231,7 +231,9 @@ def _cells(line: str, delimiter: str, most: int, name: str, number: int) -> list
 
 def _end_of_data(text: DeliveredText, start: int, findings: list[Finding]) -> int:
     """Return where the data block ends, and note a missing or early end mark."""
-    end = _END.search(text.data, start)
+    # the plain search is far faster, and hits in nearly every file
+    plain = text.data.find(b"\nEND_DATA", start - 1)
+    end = _END.match(text.data, plain + 1) if plain >= 0 else _END.search(text.data, start)
     if end is None:
         last = text.data.rstrip().count(b"\n") + 1
         findings.append(

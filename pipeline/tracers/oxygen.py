@@ -78,6 +78,7 @@ SOLUBILITY_FITS: Mapping[SolubilityName, SolubilityFit] = MappingProxyType(
 # memory); the lower bound leaves room for water that an ice shelf cooled below its surface freezing point.
 FIT_TEMPERATURE = Domain(-4.0, 40.0)  # degC
 FIT_SALINITY = Domain(0.0, 42.0)
+SURFACE_DENSITY_ANOMALY = Domain(-20.0, 60.0)  # kg/m3: wider than any water inside the fit has
 
 
 def oxygen_solubility_garcia_gordon_1992(
@@ -115,7 +116,8 @@ def oxygen_solubility(
     fitted = oxygen_solubility_garcia_gordon_1992(practical_salinity, theta68, fit)
     if fit.per_kilogram:
         return fitted
-    density = (1000.0 + sigma0) / 1000.0  # kg/l, at the surface: the sample equilibrated there
+    anomaly = np.where(SURFACE_DENSITY_ANOMALY.holds(np.asarray(sigma0)), sigma0, np.nan)
+    density = (1000.0 + anomaly) / 1000.0  # kg/l, at the surface: the sample equilibrated there
     return fitted * OXYGEN_UMOL_PER_ML / density
 
 

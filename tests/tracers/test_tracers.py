@@ -145,6 +145,12 @@ def test_a_missing_value_takes_with_it_what_is_made_of_it_and_nothing_else(
         assert not any(np.isnan(values[0]) for values in found.values())
 
 
+def test_an_infinite_density_gives_no_solubility() -> None:
+    row = {**WATER, "sigma0": np.inf, "oxygen": 0.0}
+    found = columns([row], TracerSettings(oxygen_solubility="benson_krause_ml_l"))
+    assert np.isnan(found["oxygen_solubility"]).all()
+
+
 @pytest.mark.parametrize("name", list(SolubilityName))
 @quick
 @given(rows=st.lists(st.fixed_dictionaries(dict.fromkeys(INPUTS, ANYTHING)), min_size=1, max_size=6))
@@ -169,8 +175,9 @@ def test_order_and_size_of_a_batch_change_no_answer(rows: list[dict[str, float]]
 
 def test_a_name_that_does_not_exist_is_refused_before_anything_is_computed() -> None:
     for field in ("stoichiometry", "oxygen_solubility"):
+        wrong = TracerSettings.model_construct(**{**TracerSettings().model_dump(), field: "mine"})
         with pytest.raises(SettingsProblem, match=f"tracers.{field}: found 'mine'"):
-            columns([WATER], TracerSettings.model_validate({field: "mine"}))
+            columns([WATER], wrong)
 
 
 def test_ratio_sets_cannot_be_changed() -> None:

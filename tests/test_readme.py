@@ -1,0 +1,53 @@
+"""What the README says is run as it stands there."""
+
+from __future__ import annotations
+
+import re
+from typing import TYPE_CHECKING
+
+import pytest
+
+from pipeline.tables import TABLE_NAMES
+from tests.flows.conftest import FIXTURES, ROOT, call
+
+if TYPE_CHECKING:
+    from pathlib import Path
+
+TEXT = (ROOT / "README.md").read_text(encoding="utf-8")
+EXAMPLES = re.findall(r"```python\n(.*?)```", TEXT, re.DOTALL)
+
+
+@pytest.fixture(scope="module")
+def where_the_readme_is_followed(tmp_path_factory: pytest.TempPathFactory) -> Path:
+    """Run the README's first command, less the set-up, in an empty folder."""
+    folder = tmp_path_factory.mktemp("readme")
+    command = re.search(r"seawhence (run fixtures/inbox .*)\n", TEXT)
+    assert command
+    arguments = command[1].replace("fixtures/", f"{FIXTURES}/").split()
+    with pytest.MonkeyPatch.context() as patch:
+        patch.chdir(folder)
+        assert call(*arguments).status == 0
+    return folder
+
+
+@pytest.mark.parametrize("example", EXAMPLES, ids=lambda text: text.split()[1].rstrip(","))
+def test_reading_examples(
+    example: str,
+    where_the_readme_is_followed: Path,
+    monkeypatch: pytest.MonkeyPatch,
+    capsys: pytest.CaptureFixture[str],
+) -> None:
+    monkeypatch.chdir(where_the_readme_is_followed)
+    exec(compile(example, "README.md", "exec"), {})  # noqa: S102 - the README's own words
+    said = capsys.readouterr().out
+    assert any(word in said for word in ("OVF", "ZZV120090306", "overflow", "umol kg-1"))
+
+
+def test_there_are_examples_for_each_reader() -> None:
+    assert [re.findall(r"import (pandas|polars|duckdb|pyarrow)", text)[0] for text in EXAMPLES] == [
+        "pandas", "polars", "duckdb", "pyarrow",
+    ]  # fmt: skip
+
+
+def test_every_table_is_described() -> None:
+    assert all(f"| `{name}` |" in TEXT for name in TABLE_NAMES)
