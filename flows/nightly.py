@@ -8,11 +8,11 @@ from typing import TYPE_CHECKING, Any
 from prefect import flow, task
 from prefect.artifacts import create_table_artifact
 from prefect.cache_policies import NO_CACHE
-from prefect.task_runners import ThreadPoolTaskRunner
+from prefect.runtime import task_run
+from prefect.task_runners import TaskRunner, ThreadPoolTaskRunner
 
 from flows.direct import summarise
 from flows.plan import list_inbox, pack, plan_run
-from flows.records import CruiseRecord, RunSummary, State
 from flows.work import RunConfig, run_batch
 from pipeline.archive import clean_staging, locked, open_archive, read_contents
 from pipeline.mixing import Catalogue
@@ -20,34 +20,34 @@ from pipeline.settings import Settings
 
 if TYPE_CHECKING:
     from flows.plan import Job
+    from flows.records import CruiseRecord, RunSummary
 
 # A task should be seconds of work, and the embedded server keeps few of many short ones.
 MOST_BATCHES = 40
 LEAST_BYTES = 20_000_000
 ARTIFACT_KEY = "seawhence-run"
 
+RUNNER: TaskRunner[Any] = ThreadPoolTaskRunner(max_workers=2)
+
+# Waits before a batch that met a fault of storage is tried again, seconds.
+WAITS: list[float] = [5, 30]
+
 
 class StorageFaultError(RuntimeError):
-    """A batch met a fault of storage or of ours; raised so that Prefect tries it again."""
+    """A batch met a fault of storage; raised so that Prefect tries it again."""
 
 
-@task(name="cruises", cache_policy=NO_CACHE, retries=2, retry_delay_seconds=[5, 30], log_prints=False)
-def cruise_batch(jobs: tuple[Job, ...], config: RunConfig, *, last_try: bool = False) -> list[CruiseRecord]:
-    """Make a batch of cruises. A cruise that is refused is a record; a fault makes the batch try again."""
+@task(name="cruises", cache_policy=NO_CACHE, retries=len(WAITS), retry_delay_seconds=WAITS)
+def cruise_batch(jobs: tuple[Job, ...], config: RunConfig) -> list[CruiseRecord]:
+    """Make a batch of cruises. A refused cruise is a record; a fault of storage makes the batch try again."""
     records = run_batch(jobs, config)
-    failed = [record for record in records if record.state is State.FAILED]
-    if failed and not last_try and _tries_left():
-        raise StorageFaultError("; ".join(f"{record.expocode}: {record.message}" for record in failed))
+    faults = [record for record in records if record.storage_fault]
+    if faults and (task_run.run_count or 1) <= len(WAITS):
+        raise StorageFaultError("; ".join(f"{record.expocode}: {record.message}" for record in faults))
     return records
 
 
-def _tries_left() -> bool:
-    from prefect.runtime import task_run  # noqa: PLC0415 - known inside a task run only
-
-    return int(task_run.run_count or 1) <= 2
-
-
-@flow(name="seawhence", task_runner=ThreadPoolTaskRunner(max_workers=2), validate_parameters=False)
+@flow(name="seawhence", task_runner=RUNNER, validate_parameters=False)
 def bring_up_to_date(
     inbox: str, archive: str, settings: dict[str, Any], catalogue: dict[str, Any] | None
 ) -> RunSummary:

@@ -55,6 +55,7 @@ class CruiseRecord:
     resolved: bool = False  # whether a source catalogue was there to resolve with
     refusals: tuple[Refusal, ...] = ()
     message: str = ""
+    storage_fault: bool = False  # worth trying again
 
     def line(self) -> str:
         """Return the cruise's one line of the summary."""

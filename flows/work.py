@@ -55,7 +55,9 @@ def run_job(job: Job, config: RunConfig) -> CruiseRecord:
         refusals.append(Refusal(", ".join(file.name for file in job.files), problem.reason, str(problem)))
         return CruiseRecord(job.expocode, State.REFUSED, refusals=tuple(refusals), message=_first(refusals))
     except ArchiveProblem as problem:
-        return CruiseRecord(job.expocode, State.FAILED, refusals=tuple(refusals), message=str(problem))
+        return CruiseRecord(
+            job.expocode, State.FAILED, refusals=tuple(refusals), message=str(problem), storage_fault=True
+        )
     except Exception as error:  # noqa: BLE001 - the run goes on; the record and the log tell
         _log.exception("cruise %s", job.expocode)
         message = f"a fault of seawhence, not of the files: {type(error).__name__}: {error}"
