@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from pathlib import Path
 from typing import TYPE_CHECKING
 
 from flows.plan import list_inbox, plan_run
@@ -11,7 +12,6 @@ from pipeline.archive import clean_staging, locked, open_archive, read_contents,
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Iterable
-    from pathlib import Path
 
     from flows.plan import Job, Plan
     from flows.work import RunConfig
@@ -38,7 +38,7 @@ def run_directly(inbox: Path, config: RunConfig, progress: Progress = iter) -> R
         Where the run cannot start: no such inbox, an archive that cannot be used or is busy.
 
     """
-    files = list_inbox(inbox)
+    files = list_inbox(inbox, Path(config.archive))
     store = open_archive(config.archive, create=True)
     with locked(store):
         clean_staging(store)

@@ -66,10 +66,11 @@ def bring_up_to_date(
         Settings.model_validate(settings),
         Catalogue.model_validate(catalogue) if catalogue is not None else None,
     )
+    files = list_inbox(Path(inbox), Path(archive))
     store = open_archive(archive, create=True)
     with locked(store):
         clean_staging(store)
-        plan = plan_run(list_inbox(Path(inbox)), read_contents(store), config.settings, config.catalogue)
+        plan = plan_run(files, read_contents(store), config.settings, config.catalogue)
         futures = [cruise_batch.submit(batch, config) for batch in pack(plan.jobs, MOST_BATCHES, LEAST_BYTES)]
         records = [record for future in futures for record in future.result()]
         summary = summarise(plan, records, config, store)

@@ -54,38 +54,47 @@ class Plan:
     same_bytes: tuple[tuple[str, str], ...]
 
 
-def list_inbox(inbox: Path) -> list[InboxFile]:
-    """Return the files of an inbox and its folders, sorted by name; hidden files are not deliveries.
+def list_inbox(inbox: Path, archive: Path) -> list[InboxFile]:
+    """Return the files of an inbox and its folders, sorted by name; hidden ones are not deliveries.
+
+    An archive inside the inbox is not looked into.
 
     Raises
     ------
     UsageProblem
-        Where the inbox is no directory that can be read.
+        Where the inbox is no directory that can be read, or lies in the archive.
 
     """
     if not inbox.is_dir():
         raise UsageProblem(f"{inbox}: there is no such directory; give the directory of the delivered files.")
+    kept_out = archive.resolve()
+    if inbox.resolve().is_relative_to(kept_out):
+        raise UsageProblem(
+            f"{inbox}: the inbox lies in the archive {archive}; give each a directory of its own."
+        )
 
     def unreadable(error: OSError) -> None:
         raise UsageProblem(f"{error.filename}: the inbox cannot be read ({error.strerror}).") from error
 
-    paths = [
-        Path(folder) / name
-        for folder, folders, names in os.walk(inbox, onerror=unreadable)
-        if not folders.sort()  # the walk takes them in this order
-        for name in names
-        if not name.startswith(".")
-    ]
-    files = []
-    for path in sorted(paths):
-        try:
+    paths: list[Path] = []
+    for folder, folders, names in os.walk(inbox, onerror=unreadable):
+        here = Path(folder)
+        folders[:] = [f for f in folders if not f.startswith(".") and (here / f).resolve() != kept_out]
+        paths += [here / name for name in names if not name.startswith(".")]
+    return [_inbox_file(path, inbox) for path in sorted(paths)]
+
+
+def _inbox_file(path: Path, inbox: Path) -> InboxFile:
+    """Return a file with its hash; "" for one that cannot be read, of which it is told when its turn comes."""
+    sha256, size = "", 0
+    try:
+        if path.is_file():  # a pipe would wait for ever
             with path.open("rb") as stream:
                 sha256 = hashlib.file_digest(stream, "sha256").hexdigest()
             size = path.stat().st_size
-        except OSError:
-            sha256, size = "", 0  # why it cannot be read is told when it is its turn
-        files.append(InboxFile(path.relative_to(inbox).as_posix(), str(path), size, sha256))
-    return files
+    except OSError:
+        pass
+    return InboxFile(path.relative_to(inbox).as_posix(), str(path), size, sha256)
 
 
 def plan_run(
@@ -127,6 +136,8 @@ def _without_doubles(files: Iterable[InboxFile]) -> tuple[list[InboxFile], list[
 
 
 def _survey(file: InboxFile, settings: Settings) -> tuple[str, ...]:
+    if not file.sha256:
+        return ()
     try:
         data = Path(file.path).read_bytes()
     except OSError:
@@ -140,9 +151,14 @@ def _is_current(
     """Return whether the archive's tables were made from these files, and are what would be made now."""
     if archived.provenance is None or not archived.is_whole:
         return False
-    made_from = {(file.name, file.sha256) for file in archived.provenance.deliveries}
-    wanted = fingerprint(made_from, settings.sha256, catalogue.sha256 if catalogue else None)
-    return {(file.name, file.sha256) for file in delivered} <= made_from and wanted == archived.fingerprint
+    made_from = archived.provenance.deliveries
+    wanted = fingerprint(
+        [(file.name, file.sha256) for file in made_from],
+        settings.sha256,
+        catalogue.sha256 if catalogue else None,
+    )
+    known = {file.sha256 for file in made_from}
+    return wanted == archived.fingerprint and all(file.sha256 in known for file in delivered)
 
 
 def _beside(delivered: list[InboxFile], archived: CruiseContents | None) -> tuple[DeliveredFile, ...]:

@@ -239,6 +239,37 @@ def test_an_archive_held_by_another_run_is_left_alone(inbox: Path, tmp_path: Pat
     assert ".lock: held by process" in done.stderr
 
 
+def test_an_archive_in_the_inbox_is_no_delivery(inbox: Path) -> None:
+    (inbox / "a_hy1.csv").write_bytes(bottle_file())
+    for _ in range(2):
+        outcome = call("run", inbox, "--archive", inbox / "archive")
+        assert outcome.status == 0
+    assert outcome.out.splitlines()[-1].startswith("Nothing was new")
+
+
+def test_an_inbox_in_the_archive_is_refused(inbox: Path) -> None:
+    outcome = call("run", inbox, "--archive", inbox.parent)
+    assert outcome.status == 2
+    assert "the inbox lies in the archive" in outcome.err
+
+
+def test_a_pipe_in_the_inbox_is_refused_and_nothing_waits_for_it(inbox: Path, tmp_path: Path) -> None:
+    (inbox / "a_hy1.csv").write_bytes(bottle_file())
+    os.mkfifo(inbox / "pipe.csv")
+    outcome = call("run", inbox, "--archive", tmp_path / "archive")
+    assert outcome.status == 1
+    assert "pipe.csv: found no regular file; deliver the cruise as a file." in outcome.out
+    assert f"{EXPOCODE}  new" in outcome.out
+
+
+def test_a_file_that_was_only_renamed_changes_nothing(inbox: Path, tmp_path: Path) -> None:
+    (inbox / "a_hy1.csv").write_bytes(bottle_file())
+    call("run", inbox, "--archive", tmp_path / "archive")
+    (inbox / "a_hy1.csv").rename(inbox / "b_hy1.csv")
+    outcome = call("run", inbox, "--archive", tmp_path / "archive")
+    assert outcome.out.splitlines()[-1].startswith("Nothing was new")
+
+
 def test_jobs_are_packed_by_bytes_in_their_order() -> None:
     from pipeline.archive import DeliveredFile  # noqa: PLC0415
 
