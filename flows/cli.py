@@ -29,20 +29,20 @@ example:
   seawhence run deliveries --archive archive --sources sources.toml
 
 prints one line per cruise and where the tables are. Run it again after a new delivery: only what changed is
-made anew. """
+made anew."""
 
 CHECK_EXAMPLE = """\
 example:
   seawhence check deliveries/*.csv
 
-reads and checks the files and writes nothing. """
+reads and checks the files and writes nothing."""
 
 SHOW_EXAMPLE = """\
 example:
   seawhence show archive
   seawhence show archive ZZV120090214
 
-lists the cruises of an archive, or tells of one cruise what it was made from and what its samples are. """
+lists the cruises of an archive, or tells of one cruise what it was made from and what its samples are."""
 
 
 def parser() -> argparse.ArgumentParser:

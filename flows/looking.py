@@ -62,7 +62,9 @@ def _look(path: Path, settings: Settings) -> Look | Refusal:
         return Refusal(
             str(path), "unreadable", f"{path}: the file cannot be read ({error.strerror}); give another file."
         )
-    return Look(delivery, (*delivery.findings, *check_table(delivery.table, settings).findings))
+    return Look(
+        delivery, (*delivery.findings, *check_table(delivery.table, settings, delivery.findings).findings)
+    )
 
 
 def _as_json(look: Look | Refusal) -> dict[str, Any]:

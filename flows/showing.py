@@ -36,7 +36,7 @@ def show(chosen: argparse.Namespace) -> int:
 
 
 def _archive(contents: Contents) -> list[str]:
-    rows: list[tuple[str, ...]] = [("cruise", "revision", *TABLE_NAMES, "source waters")]
+    rows: list[tuple[str, ...]] = [("cruise", "revision", *TABLE_NAMES, "sources")]
     for cruise in contents.cruises.values():
         made = cruise.provenance
         rows.append(
@@ -81,8 +81,12 @@ def _cruise(cruise: CruiseContents, store: Store) -> list[str]:
                 ),
             ]
         ),
-        f"  with seawhence {made.pipeline_version}, settings {made.settings_sha256[:16]}, source waters "
-        + (f"{made.catalogue_title} ({made.catalogue_sha256[:16]})" if made.catalogue_sha256 else "none"),
+        f"  with seawhence {made.pipeline_version}, settings {made.settings_sha256[:16]}, "
+        + (
+            f"sources '{made.catalogue_title}' {made.catalogue_sha256[:16]}"
+            if made.catalogue_sha256
+            else "no sources"
+        ),
         f"  fingerprint {made.fingerprint[:16]}",
         "",
         "rows",

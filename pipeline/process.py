@@ -94,9 +94,11 @@ def _described(
     deliveries: Sequence[Delivery], kind: DeliveryKind, settings: Settings
 ) -> tuple[pa.Table, tuple[Finding, ...]]:
     """Return the rows of one kind, checked and with every quantity computed from them."""
-    tables = [delivery.table for delivery in deliveries if delivery.kind is kind]
+    mine = [delivery for delivery in deliveries if delivery.kind is kind]
+    tables = [delivery.table for delivery in mine]
     table = stack(tables) if tables else empty((*_CORES[kind], "pressure"))
-    checked = check(table, settings) if tables else Checked({}, ())
+    told = [finding for delivery in mine for finding in delivery.findings]
+    checked = check(table, settings, told) if tables else Checked({}, ())
     table = with_columns(table, checked.flags)
     table = with_columns(table, working_columns(table, settings.use))
     table = with_columns(table, seawater.columns(table, partial(_usable, table, settings)))

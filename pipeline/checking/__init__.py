@@ -22,7 +22,7 @@ from pipeline.checking.track import cast_time, station_speed
 from pipeline.variables import CHECKED
 
 if TYPE_CHECKING:
-    from collections.abc import Callable
+    from collections.abc import Callable, Iterable
 
     import numpy as np
     import pyarrow as pa
@@ -57,11 +57,27 @@ class Checked:
     findings: tuple[Finding, ...]
 
 
-def check(table: pa.Table, settings: Settings) -> Checked:
-    """Run every check over a table of samples, or of CTD levels, as delivered."""
+def check(table: pa.Table, settings: Settings, told: Iterable[Finding] = ()) -> Checked:
+    """Run every check over a table of samples, or of CTD levels, as delivered.
+
+    Parameters
+    ----------
+    table
+        Rows as read.
+    settings
+        Limits, and which flags count as good.
+    told
+        What reading noticed: a cell that held no number is not told of again as a missing value.
+
+    """
+    unreadable = {(f.file, f.line, f.variable) for f in told if f.check == "not-a-number"}
     marks = [mark for one in CHECKS.values() for mark in one(table, settings)]
     measured = [name for name in CHECKED if name in table.column_names]
     per_cast = "sample" not in table.column_names
-    return Checked(
-        check_flags(table, measured, marks), tuple(findings_of(table, marks, per_cast=per_cast))
-    )  # fmt: skip
+    findings = findings_of(table, marks, per_cast=per_cast)
+    news = [
+        f
+        for f in findings
+        if f.check != "flag-without-value" or (f.file, f.line, f.variable) not in unreadable
+    ]
+    return Checked(check_flags(table, measured, marks), tuple(news))  # fmt: skip

@@ -85,6 +85,8 @@ def _finding(table: pa.Table, mark: Mark, members: IntArray, *, rest_of: bool = 
     row = int(mark.rows[first])
     count = len(members)
     name = REGISTRY[mark.variable].exchange[0] if REGISTRY[mark.variable].exchange else mark.variable
+    if mark.variable == "station":
+        name = f"{name} {table.column('station')[row].as_py()}"
     file, line = table.column("file")[row].as_py(), table.column("line")[row].as_py()
     value = _written(mark.values[first])
     more = f" (and {count - 1} more rows)" if count > 1 else ""

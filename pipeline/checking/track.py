@@ -76,14 +76,14 @@ def cast_time(table: pa.Table, settings: Settings) -> list[Mark]:
     spread = np.where(high >= low, high - low, 0.0)
     first = np.unique(casts, return_index=True)[1]
     marks = []
-    for severity, chosen in (
-        (Severity.DOUBT, spread > settings.checks.cast_time),
-        (Severity.NOTE, (spread > 0) & (spread <= settings.checks.cast_time)),
+    most = settings.checks.cast_time
+    for severity, chosen, limit in (
+        (Severity.DOUBT, spread > most, f"the times of one cast within {most:g} hours"),
+        (Severity.NOTE, (spread > 0) & (spread <= most), "one time for a cast"),
     ):
         if chosen.any():
             values = [f"{hour:.1f}" for hour in spread[chosen]]
             words = "changes within the cast by {value} hours"
-            limit = f"one time for a cast, or bottle times within {settings.checks.cast_time:g} hours"
             marks.append(Mark("cast-time", severity, "time", first[chosen], values, words, limit))
     return marks
 

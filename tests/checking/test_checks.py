@@ -76,6 +76,13 @@ def test_where_a_check_must_speak(
         assert result.flags[f"{variable}_check"].tolist() == [1, flag]
 
 
+def test_a_cell_that_held_no_number_is_told_of_once() -> None:
+    delivery = read(bottle_file({"NITRAT": "3o.1"}, {"NITRAT": "-999"}))
+    assert [finding.check for finding in delivery.findings] == ["not-a-number"]
+    (finding,) = check(delivery.table, SETTINGS, delivery.findings).findings
+    assert (finding.check, finding.line) == ("flag-without-value", 5)
+
+
 def test_garbage_that_the_group_flagged_itself_is_no_news() -> None:
     assert not checked({}, {"SALNTY": "12623", "SALNTY_FLAG_W": "4"}).findings
 
@@ -101,7 +108,7 @@ def test_many_findings_of_one_kind_end_in_one_sentence() -> None:
 def test_a_station_name_used_at_two_places() -> None:
     finding = only(checked({}, {"STNNBR": "1", "LATITUDE": "-36.5000", "CASTNO": "2", "DATE": "20090220"}))
     assert (finding.check, finding.variable) == ("repeated-station", "station")
-    assert "is 60 nautical miles from where the same station was before" in finding.message
+    assert "STNNBR 1 is 60 nautical miles from where the same station was before" in finding.message
 
 
 def test_a_station_that_the_ship_could_not_reach() -> None:
@@ -110,7 +117,7 @@ def test_a_station_that_the_ship_could_not_reach() -> None:
     assert not checked({}, near).findings
     finding = only(checked({}, near, far))
     assert (finding.check, finding.station) == ("station-speed", "3")
-    assert "lies 600 nautical miles from the cast before, 100 knots" in finding.message
+    assert "STNNBR 3 lies 600 nautical miles from the cast before, 100 knots" in finding.message
 
 
 def test_the_date_line_is_no_distance() -> None:
