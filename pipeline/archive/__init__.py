@@ -1,0 +1,48 @@
+"""The archive: five tables per cruise with their provenance, earlier revisions, and the delivered bytes.
+
+store = open_archive(place, create=True)
+with locked(store):
+    clean_staging(store)
+    sha256 = vault.keep(store, path)
+    judge(wanted, read_contents(store)).due
+    publish(store, provenance, tables)
+"""
+
+from __future__ import annotations
+
+from pipeline.archive import vault
+from pipeline.archive.contents import (
+    Contents,
+    CruiseContents,
+    read_contents,
+    read_cruise,
+    read_table,
+    revisions,
+)
+from pipeline.archive.currency import Currency, Reason, judge
+from pipeline.archive.lock import locked
+from pipeline.archive.provenance import DeliveredFile, Provenance, fingerprint
+from pipeline.archive.publishing import clean_staging, publish
+from pipeline.archive.storage import Disk, Store, open_archive
+
+__all__ = [
+    "Contents",
+    "CruiseContents",
+    "Currency",
+    "DeliveredFile",
+    "Disk",
+    "Provenance",
+    "Reason",
+    "Store",
+    "clean_staging",
+    "fingerprint",
+    "judge",
+    "locked",
+    "open_archive",
+    "publish",
+    "read_contents",
+    "read_cruise",
+    "read_table",
+    "revisions",
+    "vault",
+]
