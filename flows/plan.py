@@ -8,7 +8,7 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from pipeline.archive import DeliveredFile, fingerprint
+from pipeline.archive import DeliveredFile, fingerprint, judge
 from pipeline.problems import UsageProblem
 from pipeline.reading import survey_cruises
 
@@ -113,14 +113,16 @@ def plan_run(
             cruises.setdefault(code, []).append(file)
         if not codes:
             unknown.append(file)
-    jobs, unchanged = [], []
-    for expocode, delivered in sorted(cruises.items()):
-        archived = contents.cruises.get(expocode)
-        if archived is not None and _is_current(delivered, archived, settings, catalogue):
-            unchanged.append(expocode)
-        else:
-            jobs.append(Job(expocode, tuple(delivered), _beside(delivered, archived)))
-    return Plan(tuple(jobs), tuple(unchanged), tuple(unknown), tuple(same_bytes))
+    wanted = {
+        code: _wanted_fingerprint(delivered, contents.cruises.get(code), settings, catalogue)
+        for code, delivered in cruises.items()
+    }
+    currency = judge(wanted, contents)
+    jobs = tuple(
+        Job(code, tuple(cruises[code]), _beside(cruises[code], contents.cruises.get(code)))
+        for code in currency.due
+    )
+    return Plan(jobs, currency.current, tuple(unknown), tuple(same_bytes))
 
 
 def _without_doubles(files: Iterable[InboxFile]) -> tuple[list[InboxFile], list[tuple[str, str]]]:
@@ -145,20 +147,23 @@ def _survey(file: InboxFile, settings: Settings) -> tuple[str, ...]:
     return survey_cruises(file.name, data, settings.reading)
 
 
-def _is_current(
-    delivered: list[InboxFile], archived: CruiseContents, settings: Settings, catalogue: Catalogue | None
-) -> bool:
-    """Return whether the archive's tables were made from these files, and are what would be made now."""
-    if archived.provenance is None or not archived.is_whole:
-        return False
-    made_from = archived.provenance.deliveries
-    wanted = fingerprint(
-        [(file.name, file.sha256) for file in made_from],
-        settings.sha256,
-        catalogue.sha256 if catalogue else None,
-    )
-    known = {file.sha256 for file in made_from}
-    return wanted == archived.fingerprint and all(file.sha256 in known for file in delivered)
+def _wanted_fingerprint(
+    delivered: list[InboxFile],
+    archived: CruiseContents | None,
+    settings: Settings,
+    catalogue: Catalogue | None,
+) -> str:
+    """Return the fingerprint that the archive's tables have if they are what would be made now.
+
+    Where the inbox holds nothing that they were not made from, that is the fingerprint of all that they
+    were made from, under the names it came with.
+    """
+    files = [(file.name, file.sha256) for file in delivered]
+    if archived is not None and archived.provenance is not None:
+        made_from = [(file.name, file.sha256) for file in archived.provenance.deliveries]
+        if {sha256 for _, sha256 in files} <= {sha256 for _, sha256 in made_from}:
+            files = made_from
+    return fingerprint(files, settings.sha256, catalogue.sha256 if catalogue else None)
 
 
 def _beside(delivered: list[InboxFile], archived: CruiseContents | None) -> tuple[DeliveredFile, ...]:
