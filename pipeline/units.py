@@ -59,6 +59,9 @@ class Conversion:
 
 SAME = Conversion("")
 
+# A sensor's raw signal: known for what it is, but no quantity of the registry.
+RAW_SIGNALS = frozenset({"0-5VDC", "0-5V", "VOLTS", "VOLT", "V", "VDC"})
+
 _OXYGENS = frozenset({"ctd_oxygen", "bottle_oxygen"})
 _NITROGEN_PHOSPHORUS_SILICON = frozenset(
     {"silicate", "nitrate", "nitrite", "nitrate_plus_nitrite", "phosphate", "ammonium"}
@@ -73,7 +76,7 @@ _SPELLINGS = {
     "umol l-1": ("UMOL/L", "UM/L", "UM", "UMOLL-1", "MICROMOL/L", "UG-AT/L", "UGAT/L", "UMOL/LITER", "UMOL/LITRE"),
     "ml l-1": ("ML/L", "MLL-1", "ML/LITER", "ML/LITRE"),
     "mg l-1": ("MG/L", "MGL-1"),
-    "ITS-90": ("ITS-90", "ITS90", "ITS-1990", "DEGC(ITS-90)", "DEGCITS-90"),
+    "ITS-90": ("ITS-90", "ITS90", "ITS-1990", "DEGC(ITS-90)", "DEGCITS-90", "ITS-90DEGC"),
     "IPTS-68": ("IPTS-68", "IPTS68", "ITPS-68", "DEGC(IPTS-68)"),
     "degree_C": ("DEGC", "DEG_C", "DEGREEC", "DEGREE_C", "DEGREESC", "DEGREE_CELSIUS", "DEGREESCELSIUS", "C", "°C"),
     "dbar": ("DBAR", "DBARS", "DB", "DECIBAR", "DECIBARS"),
@@ -111,9 +114,9 @@ def conversion(variable: Variable, spelling: str) -> Conversion | None:
     return None
 
 
-def is_usual_spelling(variable: Variable, spelling: str) -> bool:
-    """Return whether ``spelling`` is just what the exchange format writes for this quantity."""
-    return spelling.strip() == variable.exchange_unit
+def is_raw_signal(spelling: str) -> bool:
+    """Return whether a unit is that of a sensor's raw signal."""
+    return _folded(spelling) in RAW_SIGNALS
 
 
 def _folded_spellings(unit: str) -> tuple[str, ...]:

@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING
 from pipeline.checking.flags import (
     all_flagged_bad,
     flag_without_value,
+    igoss_flag,
     unknown_flag,
     value_under_missing_flag,
 )
@@ -40,6 +41,7 @@ CHECKS: dict[str, Check] = {
     "station-speed": station_speed,
     "cast-time": cast_time,
     "unknown-flag": unknown_flag,
+    "igoss-flag": igoss_flag,
     "flag-without-value": flag_without_value,
     "value-under-missing-flag": value_under_missing_flag,
     "all-flagged-bad": all_flagged_bad,

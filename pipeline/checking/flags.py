@@ -5,15 +5,15 @@ from __future__ import annotations
 from typing import TYPE_CHECKING
 
 import numpy as np
+import pyarrow as pa
 
 from pipeline.checking.marks import Mark
 from pipeline.findings import Severity
 from pipeline.tables import floats
 from pipeline.usable import may_use
-from pipeline.variables import MEASURED, REGISTRY, FlagScheme, flag_name
+from pipeline.variables import CHECKED, EXCHANGE_NAMES, MEASURED, REGISTRY, FlagScheme, flag_name
 
 if TYPE_CHECKING:
-    import pyarrow as pa
     from numpy.typing import NDArray
 
     from pipeline.settings import Settings
@@ -26,6 +26,9 @@ SCHEMES = {
     FlagScheme.WATER: (1, 2, 3, 4, 5, 6, 7, 8, 9),
     FlagScheme.CTD: (1, 2, 3, 4, 5, 6, 7, 9),
 }
+# IGOSS flags stand in columns of another name, which pass through (from memory).
+_IGOSS_SUFFIX = "_FLAG_I"
+_IGOSS_BAD = ((4.0, Severity.FAULT, "erroneous"), (3.0, Severity.DOUBT, "doubtful"))
 _NAMES = {FlagScheme.BOTTLE: "bottle", FlagScheme.WATER: "water-sample", FlagScheme.CTD: "CTD"}
 _GOOD, _NOT_REPORTED, _NOT_SAMPLED = 2, 5, 9
 # A whole parameter is told of only where it is more than a handful of values.
@@ -56,6 +59,26 @@ def unknown_flag(table: pa.Table, settings: Settings) -> list[Mark]:
                     limit,
                 )
             )
+    return marks
+
+
+def igoss_flag(table: pa.Table, settings: Settings) -> list[Mark]:
+    """Values that an IGOSS flag column, which stands in place of a WHP one, calls doubtful or erroneous."""
+    marks = []
+    for column in table.column_names:
+        variable = EXCHANGE_NAMES.get(column.upper().removesuffix(_IGOSS_SUFFIX))
+        if not column.upper().endswith(_IGOSS_SUFFIX) or variable is None or variable.name not in CHECKED:
+            continue
+        flags = floats(table, column) if table.schema.field(column).type == pa.float64() else np.empty(0)
+        for flag, severity, word in _IGOSS_BAD:
+            rows = np.flatnonzero(flags == flag)
+            if len(rows) and variable.name in table.column_names:
+                marks.append(
+                    Mark(
+                        "igoss-flag", severity, variable.name, rows, flags[rows].tolist(),
+                        f"is {word} by its IGOSS flag {{value}}", "a good value",
+                    )
+                )  # fmt: skip
     return marks
 
 

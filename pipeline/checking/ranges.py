@@ -21,7 +21,9 @@ if TYPE_CHECKING:
 def gross_range(table: pa.Table, settings: Settings) -> list[Mark]:
     """Values outside the plausible range of the registry that their flags would let be used.
 
-    A value that the group itself flagged as bad is no news; it is not told again.
+    A value further out than the range is wide is a fault (garbage, another unit); a nearer one is a doubt,
+    for it may be an honest extreme such as a river plume. A value that the group itself flagged as bad is
+    no news; it is not told again.
     """
     marks = []
     for name in MEASURED:
@@ -31,14 +33,18 @@ def gross_range(table: pa.Table, settings: Settings) -> list[Mark]:
         values = floats(table, name)
         with np.errstate(invalid="ignore"):
             outside = (values < plausible[0]) | (values > plausible[1])
-        rows = np.flatnonzero(outside & may_use(table, name, settings.use))
-        if len(rows):
-            marks.append(
-                Mark(
-                    "gross-range", Severity.FAULT, name, rows, values[rows].tolist(),
-                    "is {value}", f"{plausible[0]:g} to {plausible[1]:g} {_unit(name)}".rstrip(),
+            width = plausible[1] - plausible[0]
+            far = (values < plausible[0] - width) | (values > plausible[1] + width)
+        if not outside.any():
+            continue
+        outside &= may_use(table, name, settings.use)
+        limit = f"{plausible[0]:g} to {plausible[1]:g} {_unit(name)}".rstrip()
+        for severity, found in ((Severity.FAULT, outside & far), (Severity.DOUBT, outside & ~far)):
+            rows = np.flatnonzero(found)
+            if len(rows):
+                marks.append(
+                    Mark("gross-range", severity, name, rows, values[rows].tolist(), "is {value}", limit)
                 )
-            )  # fmt: skip
     return marks
 
 

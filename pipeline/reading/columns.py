@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING
 
 from pipeline.findings import Finding, Severity
 from pipeline.problems import DeliveryProblem
-from pipeline.units import SAME, Conversion, conversion
+from pipeline.units import SAME, Conversion, conversion, is_raw_signal
 from pipeline.variables import EXCHANGE_NAMES, IDENTITY, REGISTRY, Kind, Variable, flag_name
 
 if TYPE_CHECKING:
@@ -108,7 +108,8 @@ def _known_columns(sheet: Sheet, findings: list[Finding]) -> dict[str, tuple[Var
             findings.append(_odd_spelling(sheet, delivered, variable))
         how = SAME if variable.name in IDENTITY else conversion(variable, unit)
         if how is None:
-            findings.append(_unknown_unit(sheet, delivered, unit, variable))
+            if not is_raw_signal(unit):
+                findings.append(_unknown_unit(sheet, delivered, unit, variable))
             continue
         if variable.name not in IDENTITY:
             _note_unit(sheet, delivered, unit, variable, how, findings)

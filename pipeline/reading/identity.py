@@ -21,7 +21,7 @@ if TYPE_CHECKING:
     BoolArray = NDArray[np.bool_]
 
 # ICES platform code and date, or the older styles with a leg behind '/' or '_'.
-_EXPOCODE = re.compile(r"[0-9A-Z][0-9A-Z_-]{2,30}(/[0-9A-Z]{1,4})?$")
+_EXPOCODE = re.compile(r"(?=.{3,40}$)[0-9A-Z][0-9A-Z_-]*(\.[0-9A-Z_-]+)*(/[0-9A-Z_-]{1,8})?$")
 _SPREADSHEET = re.compile(r"[+-]?\d+(\.\d+)?E[+-]?\d+$")
 _MISSING_TEXT = re.compile(r"(-9+(\.0*)?|NAN|NA|NULL|NONE)?$")
 

@@ -87,6 +87,21 @@ def test_garbage_that_the_group_flagged_itself_is_no_news() -> None:
     assert not checked({}, {"SALNTY": "12623", "SALNTY_FLAG_W": "4"}).findings
 
 
+def test_an_extreme_that_may_be_honest_is_a_doubt() -> None:
+    result = checked({"OXYGEN": "512.0"})
+    assert only(result).severity is Severity.DOUBT
+    assert result.flags["bottle_oxygen_check"].tolist() == [3]
+
+
+def test_flags_of_the_igoss_scheme_are_heeded() -> None:
+    extra = {"DOC": "UMOL/KG", "DOC_FLAG_I": ""}
+    result = checked(*[{"DOC": "45.0", "DOC_FLAG_I": flag} for flag in ("1", "3", "4")], extra=extra)
+    assert [(f.check, f.severity, f.line) for f in result.findings] == [
+        ("igoss-flag", Severity.FAULT, 6), ("igoss-flag", Severity.DOUBT, 5),
+    ]  # fmt: skip
+    assert result.flags["dissolved_organic_carbon_check"].tolist() == [1, 3, 4]
+
+
 def test_flag_eight_is_a_water_flag_and_no_ctd_flag() -> None:
     assert not checked({"NITRAT_FLAG_W": "8"}).findings
     assert only(checked({"CTDSAL_FLAG_W": "8"})).check == "unknown-flag"
@@ -164,6 +179,7 @@ def test_ctd_findings_of_one_cast_are_told_together() -> None:
 
 def test_every_check_is_tried_here() -> None:
     tried = {name for _, name, *_ in SPEAKING} | {
-        "all-flagged-bad", "repeated-station", "station-speed", "cast-time", "duplicate-pressure", "pressure-order",
+        "all-flagged-bad", "igoss-flag", "repeated-station", "station-speed", "cast-time", "duplicate-pressure",
+        "pressure-order",
     }  # fmt: skip
     assert tried == set(CHECKS)

@@ -242,6 +242,22 @@ def test_the_bottle_stands_in_for_a_missing_sample_number() -> None:
     assert one(read(bottle_file({"SAMPNO": "-999", "BTLNBR": "17"})), "sample") == "17"
 
 
+@pytest.mark.parametrize(
+    "code",
+    ["316N138/12", "316N138_7", "31DSCG96_1", "09AR9407_1", "325020080826", "18DD9403.1", "096u20160426"],
+)
+def test_expocodes_as_found(code: str) -> None:
+    assert read(bottle_file({"EXPOCODE": code})).cruises == (code.upper(),)
+
+
+@pytest.mark.parametrize(
+    "code", ["../x", "/etc/x", "a/../b", "x/../../y", "C:\\x", "..", ".x", "3.2E11", "-999", "A" * 41]
+)
+def test_expocodes_that_are_none(code: str) -> None:
+    with pytest.raises(DeliveryProblem):
+        read(bottle_file({"EXPOCODE": code}))
+
+
 def test_two_cruises_in_one_file() -> None:
     delivery = read(
         bottle_file({}, {"EXPOCODE": "ZZV220210301"}, {}, {"EXPOCODE": "ZZV220210301", "STNNBR": ""})

@@ -37,6 +37,13 @@ def test_a_unit_that_cannot_be_read_leaves_the_column_unused() -> None:
     assert checks(delivery) == ["unknown-unit"]
 
 
+def test_a_raw_signal_passes_through_without_a_word() -> None:
+    delivery = read(bottle_file({"FLUOR": "0.331"}, extra={"FLUOR": "0-5VDC", "FLUOR_FLAG_W": ""}))
+    assert one(delivery, "FLUOR") == 0.331
+    assert "fluorescence" not in delivery.table.column_names
+    assert not delivery.findings
+
+
 def test_ipts_68_becomes_its_90_and_the_delivered_number_stays() -> None:
     delivery = read(bottle_file({"CTDTMP": "10.0000"}, units={"CTDTMP": "IPTS-68"}))
     assert one(delivery, "temperature") == pytest.approx(9.99760057586, abs=1e-11)
