@@ -1,0 +1,254 @@
+"""What is wrong with a source catalogue whose single entries have the right form."""
+
+from __future__ import annotations
+
+from itertools import combinations
+from typing import TYPE_CHECKING, Any, TypeVar
+
+import numpy as np
+from pydantic import BaseModel, ValidationError
+
+from pipeline.mixing.entries import Source, SourceSet
+from pipeline.mixing.form import Fault
+from pipeline.mixing.properties import mixes_in_proportion, ratios_of, respiration_ratios
+from pipeline.mixing.tags import Tag
+from pipeline.settings import TracerSettings
+from pipeline.variables import REGISTRY
+
+if TYPE_CHECKING:
+    from collections.abc import Iterable, Iterator, Mapping, Sequence
+
+    from numpy.typing import NDArray
+
+    from pipeline.mixing.form import Location
+
+Entry = TypeVar("Entry", bound=BaseModel)
+
+MASS = "mass"  # the row of the sum, among given weights
+_LATITUDES = (-90.0, 90.0)
+_LONGITUDES = (-180.0, 360.0)
+
+
+def entry_faults(written: Mapping[str, Any]) -> list[Fault]:
+    """Return what is wrong within and between sources and sets; those of broken form are passed over."""
+    sources = dict(_sound(Source, written.get("source")))
+    sets = dict(_sound(SourceSet, written.get("set")))
+    codes = _labels(written.get("source"), "code")
+    by_code = {source.code: source for source in sources.values()}
+    faults = [
+        *_repeated(codes, ("source", "code")),
+        *_repeated(_labels(written.get("set"), "name"), ("set", "name")),
+    ]
+    for index, source in sources.items():
+        for at, words in _source_faults(source):
+            faults.append(Fault(("source", index, *at), f"source '{source.code}': {words}"))
+    for index, chosen in sets.items():
+        for at, words in _set_faults(chosen, by_code, set(codes.values())):
+            faults.append(Fault(("set", index, *at), f"set '{chosen.name}': {words}"))
+    faults += _gaps(sources, sets.values())
+    return faults
+
+
+def _sound(kind: type[Entry], entries: Any) -> Iterator[tuple[int, Entry]]:
+    """Yield the entries of sound form with their places in the file."""
+    for index, entry in enumerate(entries if isinstance(entries, list) else []):
+        try:
+            yield index, kind.model_validate(entry)
+        except ValidationError:
+            continue
+
+
+def _labels(entries: Any, key: str) -> dict[int, str]:
+    """Return what every entry is called, sound or not."""
+    return {
+        index: entry[key]
+        for index, entry in enumerate(entries if isinstance(entries, list) else [])
+        if isinstance(entry, dict) and isinstance(entry.get(key), str)
+    }
+
+
+def _repeated(labels: Mapping[int, str], called: tuple[str, str]) -> Iterator[Fault]:
+    kind, key = called
+    seen: set[str] = set()
+    for index, label in labels.items():
+        if label in seen:
+            yield Fault(
+                (kind, index, key), f"found a second {kind} '{label}'; expected every {key} once; rename one."
+            )
+        seen.add(label)
+
+
+def _gaps(sources: Mapping[int, Source], sets: Iterable[SourceSet]) -> Iterator[Fault]:
+    """Find the properties of a set that one of its sources does not give."""
+    for chosen in sets:
+        for index, source in sources.items():
+            missing = [name for name in chosen.properties if name not in source.properties]
+            if source.code in chosen.sources and missing:
+                yield Fault(
+                    ("source", index, "properties"),
+                    f"source '{source.code}': found no {', '.join(missing)}; expected every property of the set "
+                    f"'{chosen.name}'; add {'them' if len(missing) > 1 else 'it'}, or take the source from the set.",
+                )
+
+
+def _source_faults(source: Source) -> Iterator[tuple[Location, str]]:
+    if source.code.lower() in set(Tag):
+        yield (
+            ("code",),
+            f"found a code that is a tag for samples without a source ({', '.join(Tag)}); rename it.",
+        )
+    for name in source.properties:
+        if words := _no_property(name):
+            yield ("properties", name), words
+
+
+def _no_property(name: str) -> str | None:
+    if name not in REGISTRY:
+        return f"found the property '{name}', which is no name of the registry; correct its spelling or remove it."
+    if not mixes_in_proportion(name):
+        return (
+            f"found the property '{name}', which does not mix in proportion; expected a concentration, a "
+            f"salinity or conservative_temperature; replace it."
+        )
+    return None
+
+
+def _set_faults(
+    chosen: SourceSet, by_code: Mapping[str, Source], codes: set[str]
+) -> Iterator[tuple[Location, str]]:
+    for key, names, what in (
+        ("sources", chosen.sources, "source"),
+        ("properties", chosen.properties, "property"),
+    ):
+        for name in sorted({name for name in names if names.count(name) > 1}):
+            yield (key,), f"found the {what} '{name}' twice; expected it once; remove one."
+    for code in chosen.sources:
+        if code not in codes:
+            known = ", ".join(sorted(codes))
+            yield ("sources",), f"found the unknown source '{code}'; expected some of {known}; correct it."
+    for name in chosen.properties:
+        if words := _no_property(name):
+            yield ("properties",), words
+    yield from _counting(chosen)
+    yield from _weighting(chosen)
+    yield from _domain(chosen)
+    whole = [by_code[code] for code in dict.fromkeys(chosen.sources) if code in by_code]
+    whole = [source for source in whole if set(chosen.properties) <= set(source.properties)]
+    values = np.array([[s.properties[name].value for name in chosen.properties] for s in whole])
+    yield from _alike([source.code for source in whole], values)
+    if len(whole) == len(chosen.sources):
+        yield from _scaling(chosen, values)
+
+
+def _counting(chosen: SourceSet) -> Iterator[tuple[Location, str]]:
+    respired = chosen.respiration != "none"
+    n_unknown, n_equation = len(chosen.sources) + respired, len(chosen.properties) + 1
+    if n_unknown > n_equation:
+        shares = f"{len(chosen.sources)} shares" + (" and respiration" if respired else "")
+        yield (
+            ("sources",),
+            (
+                f"found {n_unknown} unknowns ({shares}) for {n_equation} equations ({len(chosen.properties)} properties"
+                f" and the sum of the shares); expected no more unknowns than equations; add properties or take "
+                f"sources away."
+            ),
+        )
+    ratios = respiration_ratios(TracerSettings(), chosen.silicate_per_phosphate)
+    if respired and not any(ratios_of(chosen.properties, ratios)):
+        yield (
+            ("respiration",),
+            (
+                f"found respiration = '{chosen.respiration}' and no property that respiration changes; expected "
+                f"oxygen, phosphate, nitrate or dic among them; add one, or set respiration = 'none'."
+            ),
+        )
+
+
+def _weighting(chosen: SourceSet) -> Iterator[tuple[Location, str]]:
+    given = chosen.given_weights
+    if chosen.weights == "given":
+        missing = [name for name in chosen.properties if name not in (given or {})]
+        unknown = [name for name in given or {} if name not in {*chosen.properties, MASS}]
+        if missing:
+            yield (
+                ("given_weights",),
+                f"found no given weight for {', '.join(missing)}; expected one each; add them.",
+            )
+        if unknown:
+            yield (
+                ("given_weights",),
+                f"found given weights for {', '.join(unknown)}, not among its properties; remove them.",
+            )
+    elif given is not None:
+        yield (
+            ("given_weights",),
+            (
+                f"found given_weights with weights = '{chosen.weights}'; expected them only with weights = 'given'; "
+                f"remove one of the two."
+            ),
+        )
+    if chosen.mass_weight is not None and chosen.mass == "exact":
+        yield (
+            ("mass_weight",),
+            "found a mass_weight with mass = 'exact'; expected it only with mass = 'weighted'; remove one of the two.",
+        )
+    if chosen.mass_weight is not None and MASS in (given or {}):
+        yield (
+            ("mass_weight",),
+            "found mass_weight and a given weight for mass; expected one; remove the other.",
+        )
+
+
+def _domain(chosen: SourceSet) -> Iterator[tuple[Location, str]]:
+    for name, bounds in (("latitude", _LATITUDES), ("longitude", _LONGITUDES)):
+        for end in getattr(chosen.valid, name) or ():
+            if not bounds[0] <= end <= bounds[1]:
+                yield (
+                    ("valid", name),
+                    (
+                        f"found {end:g} as an end of the {name}s it is valid in; "
+                        f"expected {bounds[0]:g} to {bounds[1]:g}; correct it."
+                    ),
+                )
+    for name in ("pressure", "sigma0", "latitude"):
+        ends = getattr(chosen.valid, name)
+        if ends is not None and ends[0] > ends[1]:
+            yield (
+                ("valid", name),
+                f"found the empty range [{ends[0]:g}, {ends[1]:g}] of {name}; expected [low, high]; swap the ends.",
+            )
+
+
+def _alike(codes: Sequence[str], values: NDArray[np.float64]) -> Iterator[tuple[Location, str]]:
+    """Judge values (n_source, n_property) of the sources that give every property of the set."""
+    for one, other in combinations(range(len(codes)), 2):
+        if (values[one] == values[other]).all():
+            yield (
+                ("sources",),
+                (
+                    f"found the same value of every property in the sources '{codes[one]}' and '{codes[other]}'; "
+                    f"expected sources that differ; add a property that tells them apart or remove one."
+                ),
+            )
+
+
+def _scaling(chosen: SourceSet, values: NDArray[np.float64]) -> Iterator[tuple[Location, str]]:
+    """Judge whether rows can be scaled with the spread of the sources, as in the published practice."""
+    if chosen.weights != "uncertainty":
+        flat = [name for name, column in zip(chosen.properties, values.T, strict=True) if np.ptp(column) == 0]
+        if flat:
+            yield (
+                ("weights",),
+                (
+                    f"found the same {', '.join(flat)} in all sources, which weights = '{chosen.weights}' cannot "
+                    f"scale; expected values that differ; take it from the set, or set weights = 'uncertainty'."
+                ),
+            )
+    elif chosen.mass == "weighted" and chosen.mass_weight is None and len(values) == 1:
+        yield (
+            ("mass",),
+            (
+                "found mass = 'weighted' for a single source, whose values have no spread to set its weight by; "
+                "expected a mass_weight; add it, or set mass = 'exact'."
+            ),
+        )

@@ -1,0 +1,102 @@
+"""Which quantities of the registry can be properties of a mixture, and what respiration does to them."""
+
+from __future__ import annotations
+
+from types import MappingProxyType
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from pipeline.tracers import nutrients
+from pipeline.tracers.stoichiometry import stoichiometry
+from pipeline.variables import MEASURED, REGISTRY, SEAWATER, TRACERS, Kind
+
+if TYPE_CHECKING:
+    from collections.abc import Callable, Mapping, Sequence
+
+    from pipeline.settings import TracerSettings
+    from pipeline.tables import FloatArray
+
+_AMOUNTS = frozenset(
+    {"umol kg-1", "nmol kg-1", "pmol kg-1", "fmol kg-1", "ug kg-1", "g kg-1", "tritium_unit"}
+)
+# Carried by the water itself, so that shares of water are shares of them.
+_BY_WATER = frozenset(
+    {
+        "conservative_temperature",
+        "potential_temperature",
+        "practical_salinity",
+        "ctd_salinity",
+        "bottle_salinity",
+        "delta_oxygen_18",
+    }
+)
+# Solubility curves with temperature and salinity, so the solubility of a mixture is not the mean; AOU
+# inherits that.
+_CURVED = frozenset({"oxygen_solubility", "aou", "preformed_phosphate", "preformed_nitrate"})
+
+
+def mixes_in_proportion(name: str) -> bool:
+    """Return whether ``name`` is a quantity of the registry whose value in a mixture is the mean of its parts.
+
+    Amounts per mass, salinities and Conservative Temperature do (potential temperature nearly).
+    Temperature in situ, densities, pH, partial pressures and isotope ratios of a dissolved element do
+    not: the latter mix in proportion to the element.
+    """
+    if name not in {*MEASURED, *SEAWATER, *TRACERS}:
+        return False
+    variable = REGISTRY[name]
+    if variable.kind is not Kind.NUMBER or name.endswith("_error") or name in _CURVED:
+        return False
+    return variable.unit in _AMOUNTS or name in _BY_WATER
+
+
+PROPERTIES: tuple[str, ...] = tuple(name for name in REGISTRY if mixes_in_proportion(name))
+
+
+def respiration_ratios(settings: TracerSettings, silicate_per_phosphate: float = 0.0) -> Mapping[str, float]:
+    """Return the change of each property per umol/kg of phosphate that respiration releases.
+
+    Properties that are not named do not change. Alkalinity falls by as much as nitrate rises, so that
+    their sum is kept (Brewer et al. 1975, from memory). Opal dissolves beside respiration and not because
+    of it: its ratio is the catalogue's choice.
+
+    Parameters
+    ----------
+    settings
+        Names the stoichiometry and the form of N*.
+    silicate_per_phosphate
+        umol/kg of silicic acid per umol/kg of phosphate.
+
+    """
+    chosen = stoichiometry(settings.stoichiometry)
+    oxygen, nitrate, phosphate = -chosen.oxygen.value, chosen.nitrogen.value, 1.0
+    return MappingProxyType(
+        {
+            "oxygen": oxygen,
+            "bottle_oxygen": oxygen,
+            "ctd_oxygen": oxygen,
+            "phosphate": phosphate,
+            "nitrate": nitrate,
+            "nitrate_plus_nitrite": nitrate,
+            "dic": chosen.carbon.value,
+            "alkalinity": -nitrate,
+            "silicate": silicate_per_phosphate,
+            "broecker_no": _change(nutrients.no_broecker_1974, oxygen, nitrate),
+            "broecker_po": _change(nutrients.po_broecker_1974, oxygen, phosphate),
+            "po4_star": _change(nutrients.po4_star_broecker_1991, oxygen, phosphate),
+            "n_star": _change(nutrients.N_STAR[nutrients.NStarForm(settings.n_star)], nitrate, phosphate),
+            "si_star": _change(nutrients.si_star_sarmiento_2004, silicate_per_phosphate, nitrate),
+        }
+    )
+
+
+def _change(tracer: Callable[[FloatArray, FloatArray], FloatArray], first: float, second: float) -> float:
+    """Return how much a tracer changes, whose parts change by ``first`` and ``second``."""
+    after, before = tracer(np.array([first, 0.0]), np.array([second, 0.0]))
+    return float(after - before)
+
+
+def ratios_of(properties: Sequence[str], ratios: Mapping[str, float]) -> list[float]:
+    """Return the ratios of ``properties`` in their order, zero for those that do not change."""
+    return [ratios.get(name, 0.0) for name in properties]
