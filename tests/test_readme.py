@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING
 
 import pytest
 
+from pipeline.mixing import read_catalogue
 from pipeline.tables import TABLE_NAMES
 from tests.flows.conftest import FIXTURES, ROOT, call
 
@@ -41,6 +42,12 @@ def test_reading_examples(
     exec(compile(example, "README.md", "exec"), {})  # noqa: S102 - the README's own words
     said = capsys.readouterr().out
     assert any(word in said for word in ("OVF", "ZZV120090306", "overflow", "umol kg-1"))
+
+
+def test_the_catalogue_shown_can_be_read(tmp_path: Path) -> None:
+    (shown,) = re.findall(r"```toml\n(.*?)```", TEXT, re.DOTALL)
+    (tmp_path / "sources.toml").write_text(shown, encoding="utf-8")
+    assert read_catalogue(tmp_path / "sources.toml").title == "Source waters of an invented sea"
 
 
 def test_there_are_examples_for_each_reader() -> None:

@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 import pyarrow as pa
 
+from pipeline.mixing.domains import validity
 from pipeline.mixing.properties import respiration_ratios
 from pipeline.mixing.solver import solve
 from pipeline.mixing.status import MixingStatus
@@ -22,7 +23,7 @@ if TYPE_CHECKING:
 
     from numpy.typing import NDArray
 
-    from pipeline.mixing.entries import Catalogue, Domain, SourceSet
+    from pipeline.mixing.entries import Catalogue, SourceSet
     from pipeline.mixing.solver import MixingSolution
     from pipeline.settings import Settings
 
@@ -93,39 +94,11 @@ def resolve(samples: pa.Table, catalogue: Catalogue, settings: Settings) -> Reso
 def _attempt(samples: pa.Table, catalogue: Catalogue, chosen: SourceSet, settings: Settings) -> _Attempt:
     ratios = respiration_ratios(settings.tracers, chosen.silicate_per_phosphate)
     problem = mixing_problem(catalogue, chosen, ratios)
-    inside, unknown = _validity(samples, chosen.valid, settings)
+    inside, unknown = validity(samples, chosen.valid, settings.use)
     rows = np.flatnonzero(inside)
     observed = np.stack([usable(samples, name, settings.use)[rows] for name in chosen.properties], axis=1)
     solution = solve(problem, observed, condition_limit=settings.mixing.condition_limit)
     return _Attempt(chosen, rows, unknown, solution)
-
-
-def _validity(samples: pa.Table, valid: Domain, settings: Settings) -> tuple[BoolArray, BoolArray]:
-    """Return where a set is valid and where that cannot be told, both (n_sample,)."""
-    inside = np.ones(samples.num_rows, dtype=bool)
-    unknown = np.zeros(samples.num_rows, dtype=bool)
-    violated = np.zeros(samples.num_rows, dtype=bool)
-    for name in type(valid).model_fields:
-        ends = getattr(valid, name)
-        if ends is None:
-            continue
-        values = usable(samples, name, settings.use)
-        holds = _between_meridians(values, *ends) if name == "longitude" else _between(values, *ends)
-        inside &= holds
-        unknown |= np.isnan(values)
-        violated |= ~holds & ~np.isnan(values)
-    return inside, unknown & ~violated
-
-
-def _between(values: FloatArray, low: float, high: float) -> BoolArray:
-    return np.asarray((values >= low) & (values <= high))
-
-
-def _between_meridians(values: FloatArray, west: float, east: float) -> BoolArray:
-    """Return where longitudes, in either custom of writing, lie on the way east from ``west`` to ``east``."""
-    if east - west >= 360.0:
-        return ~np.isnan(values)
-    return np.asarray(np.mod(values - west, 360.0) <= np.mod(east - west, 360.0))
 
 
 def _pick(attempts: Sequence[_Attempt], n_sample: int) -> tuple[NDArray[np.int8], IntArray]:
