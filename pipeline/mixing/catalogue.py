@@ -17,6 +17,8 @@ from pipeline.toml_text import line_of
 if TYPE_CHECKING:
     from pathlib import Path
 
+    from pipeline.mixing.form import Location
+
 _MOST_BYTES = 1_000_000
 
 
@@ -70,13 +72,18 @@ def parse_catalogue(text: str, name: str) -> Catalogue:
         faults = []
     faults += entry_faults(written)
     if catalogue is None or faults:
-        placed = sorted((line_of(text, fault.location) or 0, fault.sentence) for fault in faults)
+        placed = sorted((_line(text, fault.location), fault.sentence) for fault in faults)
         raise CatalogueProblem(
             "\n".join(
                 f"{name}, line {line}: {words}" if line else f"{name}: {words}" for line, words in placed
             )
         )
     return catalogue
+
+
+def _line(text: str, location: Location) -> int:
+    """Return the line of a location, 0 where nothing of it is written; of a list of tables, its first."""
+    return line_of(text, location) or line_of(text, (*location, 0)) or 0
 
 
 def _not_toml(name: str, text: str, words: str) -> str:

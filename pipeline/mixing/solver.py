@@ -124,25 +124,24 @@ def solve(problem: MixingProblem, observed: FloatArray, *, condition_limit: floa
     chi_square, optimality = np.empty((2, n_sample))
     choice = np.zeros(n_sample, dtype=np.int32)
     status = np.full(n_sample, MixingStatus.INCOMPLETE, dtype=np.int8)
-    nothing = np.full((1, problem.n_unknown), np.nan)
-    uncertainty, support, condition = [nothing], [np.zeros(1, dtype=np.int32)], [np.full(1, np.nan)]
-
+    # Uncertainties of the unknowns and condition number, for choices that follow one another.
+    no_answer = np.full((1, problem.n_unknown), np.nan)
+    listed: list[tuple[FloatArray, float]] = [(no_answer, np.nan)]
+    n_choice = 1
     for columns, rows in _groups(values):
         if columns.size == 0 or columns.size + 1 < problem.n_unknown:
             continue
         system = weighted_system(problem, columns)
-        choice[rows] = sum(map(len, support))
-        uncertainty.append(nothing)
-        support.append(np.zeros(1, dtype=np.int32))
+        choice[rows] = n_choice
+        listed.append((no_answer, system.condition_number))
+        n_choice += 1
         if system.condition_number > condition_limit:
             status[rows] = MixingStatus.UNDETERMINED
-        else:
-            results = (unknowns, residuals, chi_square, optimality, choice, status)
-            uncertainty.append(
-                _solve_group(problem, system, values, columns, rows, sum(map(len, support)), results)
-            )
-            support.append(np.arange(len(uncertainty[-1]), dtype=np.int32))
-        condition.append(np.full(sum(map(len, support)) - sum(map(len, condition)), system.condition_number))
+            continue
+        results = (unknowns, residuals, chi_square, optimality, choice, status)
+        spread = _solve_group(problem, system, values, columns, rows, n_choice, results)
+        listed.append((spread, system.condition_number))
+        n_choice += len(spread)
 
     unsolved = np.flatnonzero(status != MixingStatus.SOLVED)
     for result in (unknowns, residuals, chi_square, optimality):
@@ -155,7 +154,11 @@ def solve(problem: MixingProblem, observed: FloatArray, *, condition_limit: floa
         optimality=optimality,
         status=status,
         choice=choice,
-        choices=Choices(np.concatenate(uncertainty), np.concatenate(support), np.concatenate(condition)),
+        choices=Choices(
+            uncertainty=np.concatenate([spread for spread, _ in listed]),
+            support=np.concatenate([np.arange(len(spread), dtype=np.int32) for spread, _ in listed]),
+            condition_number=np.concatenate([np.full(len(spread), number) for spread, number in listed]),
+        ),
     )
 
 
