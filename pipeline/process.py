@@ -6,7 +6,6 @@ Everything here is a pure function of its arguments: no clock, no environment, n
 from __future__ import annotations
 
 from dataclasses import dataclass
-from functools import partial
 from typing import TYPE_CHECKING
 
 import pyarrow as pa
@@ -28,7 +27,7 @@ from pipeline.tables import (
     rejects_table,
     with_columns,
 )
-from pipeline.usable import usable
+from pipeline.usable import Rows
 from pipeline.working import working_columns
 
 if TYPE_CHECKING:
@@ -37,7 +36,6 @@ if TYPE_CHECKING:
     from pipeline.findings import Finding
     from pipeline.mixing import Catalogue
     from pipeline.settings import Settings
-    from pipeline.tables import FloatArray
 
 _KEYS = {DeliveryKind.BOTTLE: ("station", "cast", "sample"), DeliveryKind.CTD: ("station", "cast")}
 _CORES = {DeliveryKind.BOTTLE: SAMPLES_CORE, DeliveryKind.CTD: CASTS_CORE}
@@ -100,14 +98,10 @@ def _described(
     told = [finding for delivery in mine for finding in delivery.findings]
     checked = check(table, settings, told) if tables else Checked({}, ())
     table = with_columns(table, checked.flags)
-    table = with_columns(table, working_columns(table, settings.use))
-    table = with_columns(table, seawater.columns(table, partial(_usable, table, settings)))
-    table = with_columns(table, tracers.columns(partial(_usable, table, settings), settings.tracers))
+    table = with_columns(table, working_columns(Rows(table, settings.use)))
+    table = with_columns(table, seawater.columns(table, Rows(table, settings.use).usable))
+    table = with_columns(table, tracers.columns(Rows(table, settings.use).usable, settings.tracers))
     return table, checked.findings
-
-
-def _usable(table: pa.Table, settings: Settings, name: str) -> FloatArray:
-    return usable(table, name, settings.use)
 
 
 def shared_rows(one: Delivery, other: Delivery) -> int:

@@ -6,12 +6,8 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from pipeline.usable import usable
-
 if TYPE_CHECKING:
-    import pyarrow as pa
-
-    from pipeline.settings import UseSettings
+    from pipeline.usable import Rows
 
 # Working column: what it is chosen from, the first usable one taken.
 CHOICES: dict[str, tuple[tuple[str, str], ...]] = {
@@ -20,17 +16,17 @@ CHOICES: dict[str, tuple[tuple[str, str], ...]] = {
 }
 
 
-def working_columns(table: pa.Table, use: UseSettings) -> dict[str, Any]:
+def working_columns(data: Rows) -> dict[str, Any]:
     """Return each working column and its ``_source`` column, from name to values of shape (n_row,).
 
     The bottle's value is taken where it may be used, else the CTD's, else none.
     """
     columns: dict[str, Any] = {}
     for name, candidates in CHOICES.items():
-        chosen = np.full(table.num_rows, np.nan)
-        source = np.full(table.num_rows, None, dtype=object)
+        chosen = np.full(len(data), np.nan)
+        source = np.full(len(data), None, dtype=object)
         for measured, word in candidates:
-            values = usable(table, measured, use)
+            values = data.usable(measured)
             take = np.isnan(chosen) & ~np.isnan(values)
             chosen[take] = values[take]
             source[take] = word

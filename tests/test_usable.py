@@ -6,7 +6,7 @@ import pytest
 from pipeline.checking import check
 from pipeline.settings import Settings, UseSettings
 from pipeline.tables import with_columns
-from pipeline.usable import usable
+from pipeline.usable import Rows, usable
 from pipeline.working import working_columns
 from tests.invented import bottle_file, read
 
@@ -52,7 +52,7 @@ def test_the_working_salinity_is_the_bottles_else_the_ctds_else_none() -> None:
             {"SALNTY_FLAG_W": "4", "CTDSAL_FLAG_W": "4"},
         )
     ).table
-    columns = working_columns(table, SETTINGS.use)
+    columns = working_columns(Rows(table, SETTINGS.use))
     np.testing.assert_array_equal(columns["practical_salinity"], [35.1, 35.2, np.nan])
     assert columns["practical_salinity_source"].tolist() == ["bottle", "ctd", None]
     assert columns["oxygen_source"].tolist() == ["bottle"] * 3

@@ -20,6 +20,7 @@ from pipeline.checking.levels import duplicate_pressure, pressure_order
 from pipeline.checking.marks import check_flags, findings_of
 from pipeline.checking.ranges import gross_range
 from pipeline.checking.track import cast_time, station_speed
+from pipeline.usable import Rows
 from pipeline.variables import CHECKED
 
 if TYPE_CHECKING:
@@ -33,7 +34,7 @@ if TYPE_CHECKING:
     from pipeline.findings import Finding
     from pipeline.settings import Settings
 
-    Check = Callable[[pa.Table, Settings], list[Mark]]
+    Check = Callable[[Rows, Settings], list[Mark]]
 
 CHECKS: dict[str, Check] = {
     "duplicate-sample": duplicate_sample,
@@ -73,13 +74,13 @@ def check(table: pa.Table, settings: Settings, told: Iterable[Finding] = ()) -> 
 
     """
     unreadable = {(f.file, f.line, f.variable) for f in told if f.check == "not-a-number"}
-    marks = [mark for one in CHECKS.values() for mark in one(table, settings)]
-    measured = [name for name in CHECKED if name in table.column_names]
-    per_cast = "sample" not in table.column_names
-    findings = findings_of(table, marks, per_cast=per_cast)
+    data = Rows(table, settings.use)
+    marks = [mark for one in CHECKS.values() for mark in one(data, settings)]
+    measured = [name for name in CHECKED if name in data.names]
+    findings = findings_of(data, marks)
     news = [
         f
         for f in findings
         if f.check != "flag-without-value" or (f.file, f.line, f.variable) not in unreadable
     ]
-    return Checked(check_flags(table, measured, marks), tuple(news))  # fmt: skip
+    return Checked(check_flags(data, measured, marks), tuple(news))  # fmt: skip

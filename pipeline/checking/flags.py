@@ -9,14 +9,14 @@ import pyarrow as pa
 
 from pipeline.checking.marks import Mark
 from pipeline.findings import Severity
-from pipeline.tables import floats
-from pipeline.usable import may_use
+from pipeline.usable import one_of
 from pipeline.variables import CHECKED, EXCHANGE_NAMES, MEASURED, REGISTRY, FlagScheme, flag_name
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from pipeline.settings import Settings
+    from pipeline.usable import Rows
 
     BoolArray = NDArray[np.bool_]
 
@@ -35,17 +35,17 @@ _GOOD, _NOT_REPORTED, _NOT_SAMPLED = 2, 5, 9
 _FEWEST_FOR_A_WHOLE = 10
 
 
-def unknown_flag(table: pa.Table, settings: Settings) -> list[Mark]:
+def unknown_flag(data: Rows, settings: Settings) -> list[Mark]:
     """Flags outside the scheme of their column."""
     marks = []
     for name in (*MEASURED, "bottle"):
-        if flag_name(name) not in table.column_names:
+        if flag_name(name) not in data.names:
             continue
         scheme = REGISTRY[name].flags
         if scheme is None:
             continue
-        flags = floats(table, flag_name(name))
-        rows = np.flatnonzero(~np.isnan(flags) & ~np.isin(flags, SCHEMES[scheme]))
+        flags = data.floats(flag_name(name))
+        rows = np.flatnonzero(~np.isnan(flags) & ~one_of(flags, SCHEMES[scheme]))
         if len(rows):
             limit = f"a WHP {_NAMES[scheme]} flag, {SCHEMES[scheme][0]} to {SCHEMES[scheme][-1]}"
             marks.append(
@@ -62,17 +62,17 @@ def unknown_flag(table: pa.Table, settings: Settings) -> list[Mark]:
     return marks
 
 
-def igoss_flag(table: pa.Table, settings: Settings) -> list[Mark]:
+def igoss_flag(data: Rows, settings: Settings) -> list[Mark]:
     """Values that an IGOSS flag column, which stands in place of a WHP one, calls doubtful or erroneous."""
     marks = []
-    for column in table.column_names:
+    for column in data.table.column_names:
         variable = EXCHANGE_NAMES.get(column.upper().removesuffix(_IGOSS_SUFFIX))
         if not column.upper().endswith(_IGOSS_SUFFIX) or variable is None or variable.name not in CHECKED:
             continue
-        flags = floats(table, column) if table.schema.field(column).type == pa.float64() else np.empty(0)
+        flags = data.floats(column) if data.table.schema.field(column).type == pa.float64() else np.empty(0)
         for flag, severity, word in _IGOSS_BAD:
             rows = np.flatnonzero(flags == flag)
-            if len(rows) and variable.name in table.column_names:
+            if len(rows) and variable.name in data.names:
                 marks.append(
                     Mark(
                         "igoss-flag", severity, variable.name, rows, flags[rows].tolist(),
@@ -82,11 +82,11 @@ def igoss_flag(table: pa.Table, settings: Settings) -> list[Mark]:
     return marks
 
 
-def flag_without_value(table: pa.Table, settings: Settings) -> list[Mark]:
+def flag_without_value(data: Rows, settings: Settings) -> list[Mark]:
     """A good flag on a missing value."""
     marks = []
-    for name in _flagged(table):
-        flags, values = floats(table, flag_name(name)), floats(table, name)
+    for name in _flagged(data):
+        flags, values = data.floats(flag_name(name)), data.floats(name)
         rows = np.flatnonzero(np.isnan(values) & (flags == _GOOD))
         if len(rows):
             marks.append(
@@ -98,12 +98,12 @@ def flag_without_value(table: pa.Table, settings: Settings) -> list[Mark]:
     return marks
 
 
-def value_under_missing_flag(table: pa.Table, settings: Settings) -> list[Mark]:
+def value_under_missing_flag(data: Rows, settings: Settings) -> list[Mark]:
     """A value under a flag that says there is none."""
     marks = []
-    for name in _flagged(table):
-        flags, values = floats(table, flag_name(name)), floats(table, name)
-        rows = np.flatnonzero(~np.isnan(values) & np.isin(flags, (_NOT_REPORTED, _NOT_SAMPLED)))
+    for name in _flagged(data):
+        flags, values = data.floats(flag_name(name)), data.floats(name)
+        rows = np.flatnonzero(~np.isnan(values) & one_of(flags, (_NOT_REPORTED, _NOT_SAMPLED)))
         if len(rows):
             marks.append(
                 Mark(
@@ -114,14 +114,14 @@ def value_under_missing_flag(table: pa.Table, settings: Settings) -> list[Mark]:
     return marks
 
 
-def all_flagged_bad(table: pa.Table, settings: Settings) -> list[Mark]:
+def all_flagged_bad(data: Rows, settings: Settings) -> list[Mark]:
     """A whole parameter of which no value may be used."""
     marks = []
-    for name in _flagged(table):
-        rows = np.flatnonzero(~np.isnan(floats(table, name)))
-        if len(rows) < _FEWEST_FOR_A_WHOLE or may_use(table, name, settings.use)[rows].any():
+    for name in _flagged(data):
+        rows = np.flatnonzero(~np.isnan(data.floats(name)))
+        if len(rows) < _FEWEST_FOR_A_WHOLE or data.may_use(name)[rows].any():
             continue
-        flags = floats(table, flag_name(name))[rows]
+        flags = data.floats(flag_name(name))[rows]
         common = np.bincount(flags[np.isfinite(flags) & (flags >= 0)].astype(int), minlength=1).argmax()
         marks.append(
             Mark(
@@ -133,6 +133,5 @@ def all_flagged_bad(table: pa.Table, settings: Settings) -> list[Mark]:
     return marks
 
 
-def _flagged(table: pa.Table) -> list[str]:
-    names = set(table.column_names)
-    return [name for name in MEASURED if name in names and flag_name(name) in names]
+def _flagged(data: Rows) -> list[str]:
+    return [name for name in MEASURED if name in data.names and flag_name(name) in data.names]

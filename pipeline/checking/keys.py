@@ -11,26 +11,27 @@ import pyarrow.compute as pc
 from pipeline.checking.marks import Mark
 from pipeline.checking.track import nautical_miles
 from pipeline.findings import Severity
-from pipeline.tables import KEY, floats
+from pipeline.tables import KEY
 
 if TYPE_CHECKING:
     from pipeline.settings import Settings
+    from pipeline.usable import Rows
 
 
-def duplicate_sample(table: pa.Table, settings: Settings) -> list[Mark]:
+def duplicate_sample(data: Rows, settings: Settings) -> list[Mark]:
     """The same sample number twice in one cast."""
-    if "sample" not in table.column_names:
+    if not data.is_bottle:
         return []
-    keys = pc.binary_join_element_wise(*[table.column(name).cast(pa.string()) for name in KEY], "\x1f")
+    keys = pc.binary_join_element_wise(*[data.table.column(name).cast(pa.string()) for name in KEY], "\x1f")
     known = np.asarray(pc.is_valid(keys).to_numpy(), dtype=bool)
     codes = pc.fill_null(keys, "").combine_chunks().dictionary_encode().indices.to_numpy()
     _, first = np.unique(codes, return_index=True)
-    repeated = np.ones(table.num_rows, dtype=bool)
+    repeated = np.ones(len(data), dtype=bool)
     repeated[first] = False
     rows = np.flatnonzero(repeated & known)
     if not len(rows):
         return []
-    values = table.column("sample").take(pa.array(rows)).to_pylist()
+    values = data.table.column("sample").take(pa.array(rows)).to_pylist()
     return [
         Mark(
             "duplicate-sample", Severity.DOUBT, "sample", rows, values,
@@ -39,13 +40,13 @@ def duplicate_sample(table: pa.Table, settings: Settings) -> list[Mark]:
     ]  # fmt: skip
 
 
-def repeated_station(table: pa.Table, settings: Settings) -> list[Mark]:
+def repeated_station(data: Rows, settings: Settings) -> list[Mark]:
     """One station name at two places."""
-    stations = table.column("station").combine_chunks().dictionary_encode()
+    stations = data.table.column("station").combine_chunks().dictionary_encode()
     codes = stations.indices.to_numpy()
     _, first = np.unique(codes, return_index=True)
     at = first[np.searchsorted(np.unique(codes), codes)]
-    latitude, longitude = floats(table, "latitude"), floats(table, "longitude")
+    latitude, longitude = data.floats("latitude"), data.floats("longitude")
     away = nautical_miles(latitude, longitude, latitude[at], longitude[at])
     far = np.flatnonzero(away > settings.checks.same_place)
     if not len(far):

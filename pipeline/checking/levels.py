@@ -8,19 +8,17 @@ import numpy as np
 
 from pipeline.checking.marks import Mark
 from pipeline.findings import Severity
-from pipeline.tables import cast_groups, floats
 
 if TYPE_CHECKING:
-    import pyarrow as pa
-
     from pipeline.settings import Settings
+    from pipeline.usable import Rows
 
 
-def duplicate_pressure(table: pa.Table, settings: Settings) -> list[Mark]:
+def duplicate_pressure(data: Rows, settings: Settings) -> list[Mark]:
     """CTD levels whose pressure stands already in the cast. Bottles may share a pressure."""
-    if "sample" in table.column_names:
+    if data.is_bottle:
         return []
-    pressure, casts = floats(table, "pressure"), cast_groups(table)
+    pressure, casts = data.floats("pressure"), data.casts
     order = np.lexsort((np.arange(len(casts)), pressure, casts))
     same = (np.diff(casts[order]) == 0) & (np.diff(pressure[order]) == 0)
     rows = np.sort(order[1:][same])
@@ -34,11 +32,11 @@ def duplicate_pressure(table: pa.Table, settings: Settings) -> list[Mark]:
     ]  # fmt: skip
 
 
-def pressure_order(table: pa.Table, settings: Settings) -> list[Mark]:
+def pressure_order(data: Rows, settings: Settings) -> list[Mark]:
     """CTD casts whose pressure does not go one way. The order is kept as delivered."""
-    if "sample" in table.column_names:
+    if data.is_bottle:
         return []
-    pressure, casts = floats(table, "pressure"), cast_groups(table)
+    pressure, casts = data.floats("pressure"), data.casts
     within = np.diff(casts) == 0
     step = np.diff(pressure)
     n_cast = int(casts.max()) + 1 if len(casts) else 0

@@ -8,7 +8,6 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from pipeline.findings import Finding, Severity
-from pipeline.tables import cast_groups, floats
 from pipeline.usable import CHECK_DOUBT, CHECK_FAULT, CHECK_GOOD, CHECK_MISSING
 from pipeline.variables import REGISTRY, check_name
 
@@ -17,6 +16,8 @@ if TYPE_CHECKING:
 
     import pyarrow as pa
     from numpy.typing import NDArray
+
+    from pipeline.usable import Rows
 
     IntArray = NDArray[np.int64]
 
@@ -44,10 +45,10 @@ class Mark:
     limit: str
 
 
-def check_flags(table: pa.Table, measured: Iterable[str], marks: Iterable[Mark]) -> dict[str, IntArray]:
+def check_flags(data: Rows, measured: Iterable[str], marks: Iterable[Mark]) -> dict[str, IntArray]:
     """Return our check flags (IODE primary flags) of measured columns, from column name to (n_row,)."""
     flags = {
-        name: np.where(np.isnan(floats(table, name)), CHECK_MISSING, CHECK_GOOD).astype(np.int64)
+        name: np.where(np.isnan(data.floats(name)), CHECK_MISSING, CHECK_GOOD).astype(np.int64)
         for name in measured
     }
     for mark in marks:
@@ -59,17 +60,17 @@ def check_flags(table: pa.Table, measured: Iterable[str], marks: Iterable[Mark])
     return {check_name(name): column for name, column in flags.items()}
 
 
-def findings_of(table: pa.Table, marks: Iterable[Mark], *, per_cast: bool) -> list[Finding]:
-    """Tell marks in words: each row by itself, or the rows of a cast together (for CTD levels)."""
-    casts = cast_groups(table) if per_cast else np.arange(table.num_rows)
+def findings_of(data: Rows, marks: Iterable[Mark]) -> list[Finding]:
+    """Tell marks in words: each bottle row by itself, the CTD levels of a cast together."""
+    casts = np.arange(len(data)) if data.is_bottle else data.casts
     findings = []
     for mark in marks:
         groups = _groups(casts[mark.rows])
         told = groups[:MOST_ROWS_TOLD]
-        findings += [_finding(table, mark, members) for members in told]
+        findings += [_finding(data.table, mark, members) for members in told]
         if len(groups) > len(told):
             rest = np.concatenate(groups[len(told) :])
-            findings.append(_finding(table, mark, rest, rest_of=True))
+            findings.append(_finding(data.table, mark, rest, rest_of=True))
     return findings
 
 

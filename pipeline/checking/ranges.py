@@ -8,17 +8,14 @@ import numpy as np
 
 from pipeline.checking.marks import Mark
 from pipeline.findings import Severity
-from pipeline.tables import floats
-from pipeline.usable import may_use
 from pipeline.variables import MEASURED, REGISTRY
 
 if TYPE_CHECKING:
-    import pyarrow as pa
-
     from pipeline.settings import Settings
+    from pipeline.usable import Rows
 
 
-def gross_range(table: pa.Table, settings: Settings) -> list[Mark]:
+def gross_range(data: Rows, settings: Settings) -> list[Mark]:
     """Values outside the plausible range of the registry that their flags would let be used.
 
     A value further out than the range is wide is a fault (garbage, another unit); a nearer one is a doubt,
@@ -28,16 +25,16 @@ def gross_range(table: pa.Table, settings: Settings) -> list[Mark]:
     marks = []
     for name in MEASURED:
         plausible = REGISTRY[name].plausible
-        if name not in table.column_names or plausible is None:
+        if name not in data.names or plausible is None:
             continue
-        values = floats(table, name)
+        values = data.floats(name)
         with np.errstate(invalid="ignore"):
             outside = (values < plausible[0]) | (values > plausible[1])
             width = plausible[1] - plausible[0]
             far = (values < plausible[0] - width) | (values > plausible[1] + width)
         if not outside.any():
             continue
-        outside &= may_use(table, name, settings.use)
+        outside &= data.may_use(name)
         limit = f"{plausible[0]:g} to {plausible[1]:g} {_unit(name)}".rstrip()
         for severity, found in ((Severity.FAULT, outside & far), (Severity.DOUBT, outside & ~far)):
             rows = np.flatnonzero(found)

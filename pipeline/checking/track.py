@@ -8,13 +8,12 @@ import numpy as np
 
 from pipeline.checking.marks import Mark
 from pipeline.findings import Severity
-from pipeline.tables import cast_groups, floats
 
 if TYPE_CHECKING:
-    import pyarrow as pa
     from numpy.typing import NDArray
 
     from pipeline.settings import Settings
+    from pipeline.usable import Rows
 
     FloatArray = NDArray[np.float64]
 
@@ -38,16 +37,16 @@ def nautical_miles(
     return np.asarray(np.degrees(angle) * _MILES_PER_DEGREE, dtype=np.float64)
 
 
-def station_speed(table: pa.Table, settings: Settings) -> list[Mark]:
+def station_speed(data: Rows, settings: Settings) -> list[Mark]:
     """Casts that the ship could not have reached in time from the cast before."""
-    hours = _hours(table)
-    casts = cast_groups(table)
+    hours = _hours(data)
+    casts = data.casts
     first = np.sort(np.unique(casts, return_index=True)[1])
     first = first[~np.isnan(hours[first])]
     order = first[np.argsort(hours[first], kind="stable")]
     if len(order) < 2:
         return []
-    latitude, longitude = floats(table, "latitude"), floats(table, "longitude")
+    latitude, longitude = data.floats("latitude"), data.floats("longitude")
     before, after = order[:-1], order[1:]
     miles = nautical_miles(latitude[before], longitude[before], latitude[after], longitude[after])
     between = np.maximum(hours[after] - hours[before], _SHORTEST_HOURS)
@@ -64,10 +63,10 @@ def station_speed(table: pa.Table, settings: Settings) -> list[Mark]:
     ]  # fmt: skip
 
 
-def cast_time(table: pa.Table, settings: Settings) -> list[Mark]:
+def cast_time(data: Rows, settings: Settings) -> list[Mark]:
     """Casts whose rows give more than one time."""
-    hours = _hours(table)
-    casts = cast_groups(table)
+    hours = _hours(data)
+    casts = data.casts
     n_cast = int(casts.max()) + 1 if len(casts) else 0
     low, high = np.full(n_cast, np.inf), np.full(n_cast, -np.inf)
     known = ~np.isnan(hours)
@@ -88,8 +87,8 @@ def cast_time(table: pa.Table, settings: Settings) -> list[Mark]:
     return marks
 
 
-def _hours(table: pa.Table) -> FloatArray:
+def _hours(data: Rows) -> FloatArray:
     """Return hours since 1970 of every row, NaN where no time of day is known, (n_row,)."""
-    instants = table.column("time").combine_chunks().to_numpy(zero_copy_only=False)
+    instants = data.table.column("time").combine_chunks().to_numpy(zero_copy_only=False)
     seconds = instants.astype("datetime64[s]").astype(np.float64)
     return np.where(np.isnat(instants), np.nan, seconds / _SECONDS_PER_HOUR)

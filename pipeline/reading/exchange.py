@@ -123,7 +123,7 @@ class _Rows:
         )
 
     def instants(self) -> Instants:
-        return read_instants(self.text("date").to_pylist(), self.text("time").to_pylist())
+        return read_instants(self.text("date"), self.text("time"))
 
     def sample(self) -> pa.Array:
         """Return the sample number; the bottle's where no sample number was given."""

@@ -10,8 +10,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 if TYPE_CHECKING:
-    from collections.abc import Sequence
-
+    import pyarrow as pa
     from numpy.typing import NDArray
 
 _COMPACT = re.compile(r"(\d{4})(\d{2})(\d{2})(\.0*)?$")
@@ -36,8 +35,8 @@ class Instants:
     ambiguous: str | None  # a date that could be read month first or day first; month first was taken
 
 
-def read_instants(dates: Sequence[str], times: Sequence[str]) -> Instants:
-    """Read delivered dates and times of day.
+def read_instants(dates: pa.Array, times: pa.Array) -> Instants:
+    """Read delivered dates and times of day; each spelling is read once.
 
     Parameters
     ----------
@@ -45,20 +44,30 @@ def read_instants(dates: Sequence[str], times: Sequence[str]) -> Instants:
         Delivered text of n_row rows; blank or a missing code where not given.
 
     """
-    days_of, ambiguous = _read_dates(set(dates))
-    seconds_of = {text: _seconds(text) for text in set(times)}
-    day = np.array([days_of[text] for text in dates], dtype="datetime64[D]")
-    seconds = np.array([seconds_of[text] for text in times], dtype=np.float64)
-    bad_date = np.array([np.isnat(days_of[text]) and not _MISSING.match(text) for text in dates], dtype=bool)
-    bad_time = np.array([np.isinf(seconds_of[text]) for text in times], dtype=bool)
+    date_texts, date_of = _spellings(dates)
+    days, ambiguous = _read_dates(date_texts)
+    day = days[date_of]
+    bad_date = np.array([not _MISSING.match(text) for text in date_texts], dtype=bool) & np.isnat(days)
+    time_texts, time_of = _spellings(times)
+    seconds = np.array([_seconds(text) for text in time_texts], dtype=np.float64)[time_of]
     known = np.isfinite(seconds)
     instant = day.astype("datetime64[s]") + np.where(known, seconds, 0.0).astype("timedelta64[s]")
     instant[~known] = np.datetime64("NaT")
-    return Instants(day, instant, np.flatnonzero(bad_date), np.flatnonzero(bad_time), ambiguous)
+    return Instants(
+        day, instant, np.flatnonzero(bad_date[date_of]), np.flatnonzero(np.isinf(seconds)), ambiguous
+    )
 
 
-def _read_dates(texts: set[str]) -> tuple[dict[str, np.datetime64], str | None]:
-    """Return the day of every spelling, and one that is ambiguous where nothing in the file decides."""
+def _spellings(texts: pa.Array) -> tuple[list[str], NDArray[np.int64]]:
+    """Return the different texts of a column, and which of them each row has, (n_row,)."""
+    codes = texts.dictionary_encode()
+    return codes.dictionary.to_pylist(), np.asarray(
+        codes.indices.to_numpy(zero_copy_only=False), dtype=np.int64
+    )
+
+
+def _read_dates(texts: list[str]) -> tuple[NDArray[np.datetime64], str | None]:
+    """Return the day of every spelling, (n_spelling,), and one that is ambiguous where nothing in the file decides."""
     slashed = {text: m for text in texts if (m := _SLASHED.match(text))}
     # one spelling is used throughout a file: a first number over 12 can only be a day
     day_first = any(int(m[1]) > 12 for m in slashed.values()) and not any(
@@ -66,7 +75,7 @@ def _read_dates(texts: set[str]) -> tuple[dict[str, np.datetime64], str | None]:
     )
     decided = any(max(int(m[1]), int(m[2])) > 12 or m[1] == m[2] for m in slashed.values())
     ambiguous = min(slashed) if slashed and not decided else None
-    return {text: _day(text, day_first=day_first) for text in texts}, ambiguous
+    return np.array([_day(text, day_first=day_first) for text in texts], dtype="datetime64[D]"), ambiguous
 
 
 def _day(text: str, *, day_first: bool) -> np.datetime64:

@@ -60,9 +60,11 @@ def missing_codes(values: FloatArray, variable: Variable | None, flags: FloatArr
         The delivered flags of the column, NaN where there are none, or None.
 
     """
-    with np.errstate(invalid="ignore"):
-        codes: BoolArray = np.isin(values, _CODES) | (np.abs(values) >= _HUGE)
-    short = np.isin(values, _SHORT_CODES)
+    codes: BoolArray = np.abs(values) >= _HUGE
+    candidates = np.flatnonzero(values <= _SHORT_CODES.max())  # few, or one comparison has settled it
+    codes[candidates] |= np.isin(values[candidates], _CODES)
+    short = np.zeros(len(values), dtype=bool)
+    short[candidates] = np.isin(values[candidates], _SHORT_CODES)
     if not short.any():
         return codes
     said_missing = np.zeros(len(values), dtype=bool)
