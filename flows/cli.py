@@ -45,6 +45,24 @@ example:
 lists the cruises of an archive, or tells of one cruise what it was made from and what its samples are."""
 
 
+SOURCES_CHECK_EXAMPLE = """\
+example:
+  seawhence sources check sources.toml
+  seawhence sources check sources.toml --properties conservative_temperature preformed_salinity oxygen
+
+tells of every set how well its sources can be told apart, and in a sentence what stands in the way."""
+
+SOURCES_DERIVE_EXAMPLE = """\
+example:
+  seawhence sources derive archive --rules rules.toml --out sources.toml
+
+finds each source by its rule in the good values of the archive, and writes how it was found beside it."""
+
+SOURCES_STATUSES = """\
+exit status: 0 every set can be used; 1 a set has a problem; 2 wrong usage, or a catalogue that cannot be read;
+3 a fault of ours"""
+
+
 def parser() -> argparse.ArgumentParser:
     """Return the parser of the whole command."""
     top = argparse.ArgumentParser(
@@ -90,7 +108,46 @@ def parser() -> argparse.ArgumentParser:
     )  # fmt: skip
     show.add_argument("archive", type=Path, metavar="ARCHIVE", help="the archive's directory")
     show.add_argument("cruise", nargs="?", metavar="CRUISE", help="expocode of a cruise")
+    _add_sources(commands)
     return top
+
+
+def _add_sources(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> None:
+    """Add the parsers of ``seawhence sources``."""
+    sources = commands.add_parser(
+        "sources", help="judge a catalogue of source waters, or make one from an archive",
+        description="Judge a catalogue of source waters before a run, or make one from an archive.",
+        formatter_class=_Plain,
+    )  # fmt: skip
+    tasks = sources.add_subparsers(dest="task", required=True, metavar="TASK")
+    check = tasks.add_parser(
+        "check", help="tell what a catalogue can tell apart",
+        description="Tell how well the sources of every set can be told apart. No cruise is read.",
+        epilog=SOURCES_CHECK_EXAMPLE + "\n\n" + SOURCES_STATUSES, formatter_class=_Plain,
+    )  # fmt: skip
+    check.add_argument("catalogue", type=Path, metavar="CATALOGUE", help="source waters, a TOML file")
+    check.add_argument(
+        "--properties",
+        nargs="+",
+        metavar="NAME",
+        help="judge with these alone, as when others were not measured",
+    )
+    check.add_argument("--settings", type=Path, metavar="FILE.toml", help="settings; the defaults without it")
+    check.add_argument("--format", choices=("text", "json"), default="text", help="default: text")
+
+    derive = tasks.add_parser(
+        "derive", help="find source waters in an archive by rules",
+        description="Find source waters in an archive by rules, and write them as a catalogue.",
+        epilog=SOURCES_DERIVE_EXAMPLE + "\n\n" + STATUSES, formatter_class=_Plain,
+    )  # fmt: skip
+    derive.add_argument("archive", type=Path, metavar="ARCHIVE", help="the archive's directory")
+    derive.add_argument("--rules", type=Path, required=True, metavar="FILE.toml", help="a rule per source")
+    derive.add_argument(
+        "--out", type=Path, required=True, metavar="CATALOGUE.toml", help="where the catalogue is written"
+    )
+    derive.add_argument(
+        "--settings", type=Path, metavar="FILE.toml", help="settings; the defaults without it"
+    )
 
 
 class _Plain(argparse.RawDescriptionHelpFormatter):
@@ -144,6 +201,10 @@ def _run(chosen: argparse.Namespace) -> int:
             from flows.showing import show  # noqa: PLC0415
 
             return show(chosen)
+        case "sources":
+            from flows.sources import sources  # noqa: PLC0415
+
+            return sources(chosen)
     raise UsageProblem(f"there is no command '{chosen.command}'")
 
 

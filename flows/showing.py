@@ -47,7 +47,7 @@ def _archive(contents: Contents) -> list[str]:
                 (made.catalogue_title or "-") if made else "-",
             )
         )
-    lines = _aligned(rows) if len(rows) > 1 else ["The archive has no cruise."]
+    lines = aligned(rows) if len(rows) > 1 else ["The archive has no cruise."]
     lines += [f"doubt  {trouble}" for cruise in contents.cruises.values() for trouble in cruise.troubles]
     lines += [f"note  {stranger}: not a table of the archive." for stranger in contents.strangers]
     return lines
@@ -64,7 +64,7 @@ def _cruise(cruise: CruiseContents, store: Store) -> list[str]:
         + (f" (earlier ones kept: {', '.join(earlier)})" if earlier else ""),
         "",
         "made from",
-        *_aligned(
+        *aligned(
             [
                 ("  file", "kind", "bytes", "rows", "kept", "rejected", "sha256"),
                 *(
@@ -90,7 +90,7 @@ def _cruise(cruise: CruiseContents, store: Store) -> list[str]:
         f"  fingerprint {made.fingerprint[:16]}",
         "",
         "rows",
-        *_aligned([(f"  {name}", str(cruise.rows.get(name, "missing"))) for name in TABLE_NAMES]),
+        *aligned([(f"  {name}", str(cruise.rows.get(name, "missing"))) for name in TABLE_NAMES]),
     ]
     return [*lines, *_tags(cruise, store)]
 
@@ -107,10 +107,10 @@ def _tags(cruise: CruiseContents, store: Store) -> list[str]:
         (f"  {tag or 'none (no source waters given)'}", str(count), f"{100 * count / total:.1f} %")
         for tag, count in counts
     ]
-    return ["", "samples by tag", *_aligned(rows)]
+    return ["", "samples by tag", *aligned(rows)]
 
 
-def _aligned(rows: Sequence[Sequence[str]]) -> list[str]:
+def aligned(rows: Sequence[Sequence[str]]) -> list[str]:
     """Return rows of cells as lines, the first column to the left and numbers to the right."""
     widths = [max(len(row[i]) for row in rows) for i in range(len(rows[0]))]
     last = len(widths) - 1

@@ -13,7 +13,7 @@ import pyarrow.compute as pc
 
 from pipeline import seawater, tracers
 from pipeline.checking import Checked, check
-from pipeline.mixing import resolve
+from pipeline.mixing import absent_properties, resolve
 from pipeline.problems import DeliveryProblem
 from pipeline.reading import Delivery, DeliveryKind, stack
 from pipeline.tables import (
@@ -69,13 +69,16 @@ def process_cruise(
     samples, sample_findings = _described(deliveries, DeliveryKind.BOTTLE, settings)
     casts, cast_findings = _described(deliveries, DeliveryKind.CTD, settings)
     mixtures = empty(MIXTURES)
+    mixing_findings: tuple[Finding, ...] = ()
     if catalogue is not None:
+        mixing_findings = absent_properties(samples, catalogue, settings)
         resolution = resolve(samples, catalogue, settings)
         samples = with_columns(samples, resolution.columns)
         mixtures = resolution.mixtures
     else:
         samples = with_columns(samples, {name: [None] * samples.num_rows for name in MIXING})
-    findings = (*(f for d in deliveries for f in d.findings), *sample_findings, *cast_findings)
+    delivered = [finding for delivery in deliveries for finding in delivery.findings]
+    findings = (*delivered, *sample_findings, *cast_findings, *mixing_findings)
     return ProcessedCruise(
         tables={
             "samples": arranged(samples),

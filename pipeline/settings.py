@@ -87,6 +87,19 @@ class MixingSettings(_Section):
     condition_limit: Positive = Field(
         1000.0, description="condition number of the weighted system above which it is not solved"
     )
+    members: int = Field(
+        100, ge=0, le=10_000, description="members of the ensemble; 0 for first-order uncertainty"
+    )
+    seed: int = Field(20_260, ge=0, description="seed of the ensemble; the same seed gives the same members")
+    mixed_layer_density: Positive = Field(
+        0.03, description="kg/m3 above sigma0 at 10 dbar that ends the mixed layer (de Boyer Montegut 2004)"
+    )
+    uncertainty: dict[str, Positive] = Field(
+        {}, description="standard uncertainty of a measured property, in its unit, in place of the registry's"
+    )
+    oxygen_utilisation_rate: Positive | None = Field(
+        None, description="umol/kg per year; gives a pseudo-age, and none without it"
+    )
 
 
 class Settings(_Section):
@@ -149,4 +162,6 @@ def _overlay(values: dict[str, Any], environment: Mapping[str, str]) -> None:
             value = tomllib.loads(f"value = {environment[key]}")["value"]
         except tomllib.TOMLDecodeError:
             value = environment[key]  # a bare word is text
-        values.setdefault(section, {})[setting] = value
+        table = values.setdefault(section, {})
+        if isinstance(table, dict):  # else the file is at fault, which validation tells
+            table[setting] = value

@@ -42,11 +42,18 @@ def sentences(name: str, text: str, error: ValidationError) -> list[str]:
     """Return one sentence for each fault of a validated TOML text, in the order of its lines."""
     faults = []
     for fault in error.errors():
+        if is_echo(fault):
+            continue
         location = fault["loc"]
         line = line_of(text, location)
         place = f"{name}, line {line}" if line else name
         faults.append((line or 0, f"{place}: {_words(location, fault)}"))
     return [sentence for _, sentence in sorted(faults)]
+
+
+def is_echo(fault: Any) -> bool:
+    """Return whether a list is only called too short because some of its entries have faults of their own."""
+    return bool(fault["type"] == "too_short" and len(fault["input"]) >= fault["ctx"]["min_length"])
 
 
 def _words(location: Sequence[str | int], fault: Any) -> str:
@@ -56,6 +63,8 @@ def _words(location: Sequence[str | int], fault: Any) -> str:
             return f"found the key '{key}', which is not known here; correct its spelling or remove it."
         case "missing":
             return f"the key '{key}' is missing; add it."
+        case "too_short":
+            return f"'{key}' is {fault['input']!r}; expected at least {fault['ctx']['min_length']} in it; add some."
         case _:
             expected = fault["msg"].removeprefix("Value error, ").removeprefix("Input should be ")
             return f"'{key}' is {fault['input']!r}; expected {expected}; correct it."

@@ -292,6 +292,8 @@ _MIXING = (
     Variable("leading_share", "Share of the leading source", "1", None, source=_MIXING_SOURCE),
     Variable("leading_share_uncertainty", "Standard uncertainty of the leading share", "1", None,
              source=_MIXING_SOURCE),
+    Variable("leading_probability", "Probability that the leading source leads", "1", None,
+             source="share of ensemble members, perturbed sources and measurements"),
     Variable("respiration", "Phosphate released by respiration since the sources mixed", "umol kg-1", None,
              source=_MIXING_SOURCE),
     Variable("reduced_chi_square", "Weighted squared misfit per degree of freedom", "1", None,
@@ -301,6 +303,21 @@ _MIXING = (
     Variable("source", "Source water", "", None, Kind.TEXT),
     Variable("share", "Share of the source in the sample", "1", None, source=_MIXING_SOURCE),
     Variable("share_uncertainty", "Standard uncertainty of the share", "1", None, source=_MIXING_SOURCE),
+    Variable("share_p16", "Share: 16th percentile of the ensemble", "1", None, source=_MIXING_SOURCE),
+    Variable("share_p50", "Share: median of the ensemble", "1", None, source=_MIXING_SOURCE),
+    Variable("share_p84", "Share: 84th percentile of the ensemble", "1", None, source=_MIXING_SOURCE),
+    Variable("respiration_uncertainty", "Standard uncertainty of the phosphate released", "umol kg-1", None,
+             source=_MIXING_SOURCE),
+    Variable("pseudo_age", "Oxygen consumed over a given utilisation rate: an age only in name", "year", None,
+             source="Karstensen and Tomczak 1998; rate from the settings"),
+    *(
+        Variable(f"{name}_{part}{suffix}", f"{quantity} {words}{of}", "umol kg-1", None, source=_MIXING_SOURCE)
+        for name, quantity in (("phosphate", "Phosphate"), ("nitrate", "Nitrate"), ("silicate", "Silicic acid"),
+                               ("oxygen", "Oxygen"), ("dic", "Dissolved inorganic carbon"))
+        for part, words in (("from_sources", "that came with the source waters"),
+                            ("from_respiration", "that respiration added (negative: took away)"))
+        for suffix, of in (("", ""), ("_uncertainty", ": standard uncertainty"))
+    ),
 )
 
 _NOTICES = (

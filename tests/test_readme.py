@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING
 import pytest
 
 from pipeline.mixing import read_catalogue
+from pipeline.mixing.tags import tag_table
 from pipeline.tables import TABLE_NAMES
 from tests.flows.conftest import FIXTURES, ROOT, call
 
@@ -58,3 +59,11 @@ def test_there_are_examples_for_each_reader() -> None:
 
 def test_every_table_is_described() -> None:
     assert all(f"| `{name}` |" in TEXT for name in TABLE_NAMES)
+
+
+def test_the_tags_are_those_of_the_code() -> None:
+    shown = re.search(r"\| tag \| means \|\n\|---\|---\|\n((?:\|.*\|\n)+)", TEXT)
+    assert shown
+    rows = [tuple(cell.strip() for cell in line.strip("|").split(" | ")) for line in shown[1].splitlines()]
+    (leading, words), *reasons = tag_table()
+    assert rows == [(leading, words), *((f"`{tag}`", words) for tag, words in reasons)]

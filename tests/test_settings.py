@@ -51,6 +51,13 @@ def test_the_choices_are_those_that_the_tracers_know() -> None:
     assert set(get_args(fields["n_star"].annotation)) == {name.value for name in N_STAR}
 
 
+def test_a_section_that_is_no_table_is_told_and_nothing_breaks(tmp_path: Path) -> None:
+    path = tmp_path / "settings.toml"
+    path.write_text("mixing = 3\n", encoding="utf-8")
+    with pytest.raises(SettingsProblem, match="line 1: 'mixing' is 3"):
+        read_settings(path, {"SEAWHENCE_MIXING__TAG_SHARE": "0.6"})
+
+
 def test_a_file_that_is_not_toml_or_not_there(tmp_path: Path) -> None:
     path = tmp_path / "settings.toml"
     with pytest.raises(SettingsProblem, match="cannot be read"):

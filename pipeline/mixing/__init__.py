@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
+from pipeline.mixing.absences import absent_properties
 from pipeline.mixing.analysis import Resolution, resolve
 from pipeline.mixing.catalogue import read_catalogue
 from pipeline.mixing.entries import Catalogue
 
-__all__ = ["Catalogue", "Resolution", "read_catalogue", "resolve"]
+__all__ = ["Catalogue", "Resolution", "absent_properties", "read_catalogue", "resolve"]

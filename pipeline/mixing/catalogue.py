@@ -8,7 +8,8 @@ from typing import TYPE_CHECKING
 
 from pydantic import ValidationError
 
-from pipeline.mixing.entries import Catalogue
+from pipeline.mixing.conversion import converted
+from pipeline.mixing.entries import CatalogueFile
 from pipeline.mixing.faults import entry_faults
 from pipeline.mixing.form import form_faults
 from pipeline.problems import CatalogueProblem
@@ -17,6 +18,7 @@ from pipeline.toml_text import line_of
 if TYPE_CHECKING:
     from pathlib import Path
 
+    from pipeline.mixing.entries import Catalogue
     from pipeline.mixing.form import Location
 
 _MOST_BYTES = 1_000_000
@@ -54,7 +56,10 @@ def read_catalogue(path: Path) -> Catalogue:
 
 
 def parse_catalogue(text: str, name: str) -> Catalogue:
-    """Make a catalogue of the text of the file ``name``. Raises as ``read_catalogue`` does."""
+    """Make a catalogue of the text of the file ``name``. Raises as ``read_catalogue`` does.
+
+    Values of the published practice are made conservative here, so that all that follows sees one kind.
+    """
     try:
         written = tomllib.loads(text)
     except tomllib.TOMLDecodeError as error:
@@ -64,21 +69,21 @@ def parse_catalogue(text: str, name: str) -> Catalogue:
             f"{name}: found tables nested beyond reason; expected a source catalogue; write it anew."
         ) from error
     try:
-        catalogue = Catalogue.model_validate(written)
+        file = CatalogueFile.model_validate(written)
     except ValidationError as error:
-        catalogue = None
+        file = None
         faults = form_faults(error, written)
     else:
         faults = []
     faults += entry_faults(written)
-    if catalogue is None or faults:
+    if file is None or faults:
         placed = sorted((_line(text, fault.location), fault.sentence) for fault in faults)
         raise CatalogueProblem(
             "\n".join(
                 f"{name}, line {line}: {words}" if line else f"{name}: {words}" for line, words in placed
             )
         )
-    return catalogue
+    return converted(file)
 
 
 def _line(text: str, location: Location) -> int:

@@ -8,12 +8,13 @@ from typing import TYPE_CHECKING, Any, TypeVar
 import numpy as np
 from pydantic import BaseModel, ValidationError
 
-from pipeline.mixing.entries import Source, SourceSet
+from pipeline.mixing.conversion import asked_of, converted_source
+from pipeline.mixing.domain_faults import domain_faults
+from pipeline.mixing.entries import ReferenceState, Source, SourceSet
 from pipeline.mixing.form import Fault
-from pipeline.mixing.properties import mixes_in_proportion, ratios_of, respiration_ratios
-from pipeline.mixing.tags import Tag
+from pipeline.mixing.properties import ratios_of, respiration_ratios
+from pipeline.mixing.source_faults import gaps, no_property, source_faults
 from pipeline.settings import TracerSettings
-from pipeline.variables import REGISTRY
 
 if TYPE_CHECKING:
     from collections.abc import Iterable, Iterator, Mapping, Sequence
@@ -25,27 +26,26 @@ if TYPE_CHECKING:
 Entry = TypeVar("Entry", bound=BaseModel)
 
 MASS = "mass"  # the row of the sum, among given weights
-_LATITUDES = (-90.0, 90.0)
-_LONGITUDES = (-180.0, 360.0)
 
 
 def entry_faults(written: Mapping[str, Any]) -> list[Fault]:
     """Return what is wrong within and between sources and sets; those of broken form are passed over."""
-    sources = dict(_sound(Source, written.get("source")))
+    given = dict(_sound(Source, written.get("source")))
     sets = dict(_sound(SourceSet, written.get("set")))
+    sources = _as_used(given, sets.values(), written.get("catalogue"))
     codes = _labels(written.get("source"), "code")
     by_code = {source.code: source for source in sources.values()}
     faults = [
         *_repeated(codes, ("source", "code")),
         *_repeated(_labels(written.get("set"), "name"), ("set", "name")),
     ]
-    for index, source in sources.items():
-        for at, words in _source_faults(source):
+    for index, source in given.items():
+        for at, words in source_faults(source):
             faults.append(Fault(("source", index, *at), f"source '{source.code}': {words}"))
     for index, chosen in sets.items():
         for at, words in _set_faults(chosen, by_code, set(codes.values())):
             faults.append(Fault(("set", index, *at), f"set '{chosen.name}': {words}"))
-    faults += _gaps(sources, sets.values())
+    faults += _gaps(sources, sets.values(), written.get("catalogue"))
     return faults
 
 
@@ -56,6 +56,17 @@ def _sound(kind: type[Entry], entries: Any) -> Iterator[tuple[int, Entry]]:
             yield index, kind.model_validate(entry)
         except ValidationError:
             continue
+
+
+def _as_used(given: Mapping[int, Source], sets: Iterable[SourceSet], header: Any) -> dict[int, Source]:
+    """Return the sources with what can be converted, and without covariances, which may not be sound."""
+    state, _ = _reference_state(header)
+    return {
+        index: converted_source(
+            source.model_copy(update={"covariance": None}), asked_of(source, sets), state
+        )[0]
+        for index, source in given.items()
+    }
 
 
 def _labels(entries: Any, key: str) -> dict[int, str]:
@@ -78,39 +89,25 @@ def _repeated(labels: Mapping[int, str], called: tuple[str, str]) -> Iterator[Fa
         seen.add(label)
 
 
-def _gaps(sources: Mapping[int, Source], sets: Iterable[SourceSet]) -> Iterator[Fault]:
+def _gaps(sources: Mapping[int, Source], sets: Iterable[SourceSet], header: Any) -> Iterator[Fault]:
     """Find the properties of a set that one of its sources does not give."""
+    state, doubtful = _reference_state(header)
     for chosen in sets:
         for index, source in sources.items():
-            missing = [name for name in chosen.properties if name not in source.properties]
-            if source.code in chosen.sources and missing:
-                yield Fault(
-                    ("source", index, "properties"),
-                    f"source '{source.code}': found no {', '.join(missing)}; expected every property of the set "
-                    f"'{chosen.name}'; add {'them' if len(missing) > 1 else 'it'}, or take the source from the set.",
-                )
+            if source.code in chosen.sources:
+                for words in gaps(source, chosen, state, doubtful_state=doubtful):
+                    yield Fault(("source", index, "properties"), f"source '{source.code}': {words}")
 
 
-def _source_faults(source: Source) -> Iterator[tuple[Location, str]]:
-    if source.code.lower() in set(Tag):
-        yield (
-            ("code",),
-            f"found a code that is a tag for samples without a source ({', '.join(Tag)}); rename it.",
-        )
-    for name in source.properties:
-        if words := _no_property(name):
-            yield ("properties", name), words
-
-
-def _no_property(name: str) -> str | None:
-    if name not in REGISTRY:
-        return f"found the property '{name}', which is no name of the registry; correct its spelling or remove it."
-    if not mixes_in_proportion(name):
-        return (
-            f"found the property '{name}', which does not mix in proportion; expected a concentration, a "
-            f"salinity or conservative_temperature; replace it."
-        )
-    return None
+def _reference_state(header: Any) -> tuple[ReferenceState | None, bool]:
+    """Return the reference state, and whether one is written that cannot be used."""
+    written = header.get("reference_state") if isinstance(header, dict) else None
+    if written is None:
+        return None, False
+    try:
+        return ReferenceState.model_validate(written), False
+    except ValidationError:
+        return None, True
 
 
 def _set_faults(
@@ -127,11 +124,11 @@ def _set_faults(
             known = ", ".join(sorted(codes))
             yield ("sources",), f"found the unknown source '{code}'; expected some of {known}; correct it."
     for name in chosen.properties:
-        if words := _no_property(name):
+        if words := no_property(name):
             yield ("properties",), words
     yield from _counting(chosen)
     yield from _weighting(chosen)
-    yield from _domain(chosen)
+    yield from ((("valid", key), words) for key, words in domain_faults(chosen.valid))
     whole = [by_code[code] for code in dict.fromkeys(chosen.sources) if code in by_code]
     whole = [source for source in whole if set(chosen.properties) <= set(source.properties)]
     values = np.array([[s.properties[name].value for name in chosen.properties] for s in whole])
@@ -197,26 +194,6 @@ def _weighting(chosen: SourceSet) -> Iterator[tuple[Location, str]]:
             ("mass_weight",),
             "found mass_weight and a given weight for mass; expected one; remove the other.",
         )
-
-
-def _domain(chosen: SourceSet) -> Iterator[tuple[Location, str]]:
-    for name, bounds in (("latitude", _LATITUDES), ("longitude", _LONGITUDES)):
-        for end in getattr(chosen.valid, name) or ():
-            if not bounds[0] <= end <= bounds[1]:
-                yield (
-                    ("valid", name),
-                    (
-                        f"found {end:g} as an end of the {name}s it is valid in; "
-                        f"expected {bounds[0]:g} to {bounds[1]:g}; correct it."
-                    ),
-                )
-    for name in ("pressure", "sigma0", "latitude"):
-        ends = getattr(chosen.valid, name)
-        if ends is not None and ends[0] > ends[1]:
-            yield (
-                ("valid", name),
-                f"found the empty range [{ends[0]:g}, {ends[1]:g}] of {name}; expected [low, high]; swap the ends.",
-            )
 
 
 def _alike(codes: Sequence[str], values: NDArray[np.float64]) -> Iterator[tuple[Location, str]]:

@@ -5,16 +5,21 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
+from pipeline.mixing.domains import RANGES
 from pipeline.mixing.entries import (
     LARGEST,
     MOST_SOURCES,
-    Catalogue,
+    MOST_VERTICES,
+    CatalogueFile,
+    Covariance,
     Domain,
     Header,
+    ReferenceState,
     Source,
     SourceSet,
     SourceValue,
 )
+from pipeline.toml_text import is_echo
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
@@ -43,11 +48,19 @@ _EXPECTED = {
     "weights": '"uncertainty", "variance" or "given"',
     "mass_weight": _POSITIVE,
     "given_weights": f"for every property {_POSITIVE}",
-    "pressure": _RANGE,
-    "sigma0": _RANGE,
-    "latitude": _RANGE,
-    "longitude": _RANGE,
+    "reference_state": "a table with longitude, latitude and pressure",
+    "covariance": "a table with properties and matrix",
+    "matrix": f"as many rows of as many numbers, each {_NUMBER}",
+    **dict.fromkeys((*RANGES, "longitude"), _RANGE),
+    "region": f"3 to {MOST_VERTICES} vertices, [[longitude, latitude], ...], from -180 to 360 and -90 to 90 degrees",
+    "months": "a list of months, 1 to 12",
+    "mixed_layer": '"exclude" or "include"',
     "valid": "a table of ranges",
+}
+_STATE = {
+    "longitude": "degrees east, from -180 to 360",
+    "latitude": "degrees north, from -90 to 90",
+    "pressure": "a pressure in dbar, from 0 to 12000",
 }
 _LONGEST_QUOTE = 60
 
@@ -62,12 +75,7 @@ class Fault:
 
 def form_faults(error: ValidationError, written: Mapping[str, Any]) -> list[Fault]:
     """Return the faults that pydantic found in the form of single entries of the parsed file ``written``."""
-    return [Fault(fault["loc"], _sentence(fault, written)) for fault in error.errors() if not _echo(fault)]
-
-
-def _echo(fault: Any) -> bool:
-    """Return whether a list is only called too short because some of its entries have faults of their own."""
-    return bool(fault["type"] == "too_short" and len(fault["input"]) >= fault["ctx"]["min_length"])
+    return [Fault(fault["loc"], _sentence(fault, written)) for fault in error.errors() if not is_echo(fault)]
 
 
 def _sentence(fault: Any, written: Mapping[str, Any]) -> str:
@@ -92,6 +100,8 @@ def _expected(key: str, above: Location) -> str:
             return "{ value = ..., uncertainty = ... }"
         case ("set", int(), "given_weights"):
             return _POSITIVE
+        case ("catalogue", "reference_state"):
+            return _STATE.get(key, _TEXT)
         case _:
             return _EXPECTED.get(key, _TEXT)
 
@@ -100,8 +110,12 @@ def _kind_at(location: Location) -> type[BaseModel]:
     match location:
         case ("catalogue",):
             return Header
+        case ("catalogue", "reference_state"):
+            return ReferenceState
         case ("source", int()):
             return Source
+        case ("source", int(), "covariance"):
+            return Covariance
         case ("source", int(), "properties", str()):
             return SourceValue
         case ("set", int()):
@@ -109,7 +123,7 @@ def _kind_at(location: Location) -> type[BaseModel]:
         case ("set", int(), "valid"):
             return Domain
         case _:
-            return Catalogue
+            return CatalogueFile
 
 
 def place_of(location: Location, written: Mapping[str, Any]) -> str:
@@ -121,7 +135,7 @@ def place_of(location: Location, written: Mapping[str, Any]) -> str:
             label = entry.get("code" if kind == "source" else "name") if isinstance(entry, dict) else None
             called = f"{kind} '{label}'" if isinstance(label, str) and label else f"{kind} {index + 1}"
             return ", ".join([called, *(str(part) for part in rest if part != "properties")])
-        case ("catalogue", *_):
-            return "[catalogue]"
+        case ("catalogue", *rest):
+            return f"[{'.'.join(['catalogue', *(str(part) for part in rest)])}]"
         case _:
             return "the catalogue"

@@ -51,7 +51,22 @@ def mixes_in_proportion(name: str) -> bool:
     return variable.unit in _AMOUNTS or name in _BY_WATER
 
 
+# One quantity under several names, of which a mixture needs only one.
+_SAME = (
+    frozenset(
+        {"practical_salinity", "ctd_salinity", "bottle_salinity", "absolute_salinity", "preformed_salinity"}
+    ),
+    frozenset({"conservative_temperature", "potential_temperature"}),
+    frozenset({"oxygen", "bottle_oxygen", "ctd_oxygen"}),
+    frozenset({"nitrate", "nitrate_plus_nitrite"}),
+)
+
 PROPERTIES: tuple[str, ...] = tuple(name for name in REGISTRY if mixes_in_proportion(name))
+
+
+def same_quantity(one: str, other: str) -> bool:
+    """Return whether two properties are one quantity, so that the second says nothing new."""
+    return one == other or any({one, other} <= names for names in _SAME)
 
 
 def respiration_ratios(settings: TracerSettings, silicate_per_phosphate: float = 0.0) -> Mapping[str, float]:

@@ -30,15 +30,25 @@ class Tag(StrEnum):
 
 TAG_WORDS: Mapping[Tag, str] = MappingProxyType(
     {
-        Tag.MIXED: "no source has the share that the settings ask of a leading source",
+        Tag.MIXED: "no source has the share that `mixing.tag_share` asks of a leading one",
         Tag.UNEXPLAINED: (
-            "the sources do not explain the values: the reduced chi-square is above the limit of the "
-            "settings, or a value is absurd"
+            "the sources do not explain the values: the reduced chi-square is above "
+            "`mixing.unexplained_chi_square`, or a value is absurd"
         ),
-        Tag.UNDETERMINED: "the values that are there cannot tell the sources apart",
-        Tag.INCOMPLETE: "too many values are missing",
-        Tag.OUTSIDE: "no set of the catalogue is valid where the sample was taken",
+        Tag.UNDETERMINED: (
+            "the values that are there cannot tell the sources apart: the condition number is above "
+            "`mixing.condition_limit`"
+        ),
+        Tag.INCOMPLETE: (
+            "so many values are missing that there are fewer equations than unknowns, or that no domain can be judged"
+        ),
+        Tag.OUTSIDE: "no set of the catalogue is valid where the sample was taken, or it lies in the mixed layer",
     }
+)
+
+LEADING_WORDS = (
+    "the source with the largest share, which is at least `mixing.tag_share` of the settings, and the sources "
+    "explain the sample"
 )
 
 # The tag of a sample that was not solved.
@@ -51,6 +61,14 @@ UNSOLVED: Mapping[MixingStatus, Tag] = MappingProxyType(
         MixingStatus.OUTSIDE: Tag.OUTSIDE,
     }
 )
+
+
+def tag_table() -> tuple[tuple[str, str], ...]:
+    """Return every tag and what it means, a source's code first."""
+    return (
+        ("a source's code", LEADING_WORDS),
+        *((tag.value, words) for tag, words in TAG_WORDS.items()),
+    )
 
 
 def tags(

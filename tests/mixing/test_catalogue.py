@@ -73,22 +73,22 @@ REFUSED: list[tuple[list[tuple[str, str]], list[str]]] = [
         [("title = ", "titel = ")],
         [
             "line 1: found no 'title' in [catalogue]; expected text; add it.",
-            "line 2: found the unknown key 'titel' in [catalogue]; expected one of title, reference; correct or "
-            "remove it.",
+            "line 2: found the unknown key 'titel' in [catalogue]; expected one of title, reference, reference_state; "
+            "correct or remove it.",
         ],
     ),
     (
         [('name = "Northern water"', 'name = "Northern water"\ncolour = "blue"')],
         [
-            "line 8: found the unknown key 'colour' in source 'NOR'; expected one of code, name, note, properties; "
-            "correct or remove it."
+            "line 8: found the unknown key 'colour' in source 'NOR'; expected one of code, name, note, properties, "
+            "covariance; correct or remove it."
         ],
     ),
     (
-        [("pressure = ", "depth = ")],
+        [("pressure = ", "density = ")],
         [
-            "line 31: found the unknown key 'depth' in set 'deep', valid; expected one of pressure, sigma0, latitude, "
-            "longitude; correct or remove it."
+            "line 31: found the unknown key 'density' in set 'deep', valid; expected one of pressure, depth, sigma0, "
+            "sigma2, sigma4, latitude, longitude, region, months, mixed_layer; correct or remove it."
         ],
     ),
     (
