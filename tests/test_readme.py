@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING
 import pytest
 
 from pipeline.mixing import read_catalogue
+from pipeline.mixing.rules import parse_rules
 from pipeline.mixing.tags import tag_table
 from pipeline.tables import TABLE_NAMES
 from tests.flows.conftest import FIXTURES, ROOT, call
@@ -46,7 +47,8 @@ def test_reading_examples(
 
 
 def test_the_catalogue_shown_can_be_read(tmp_path: Path) -> None:
-    (shown,) = re.findall(r"```toml\n(.*?)```", TEXT, re.DOTALL)
+    shown, rules = re.findall(r"```toml\n(.*?)```", TEXT, re.DOTALL)
+    assert parse_rules(rules, "README.md").rules.source[0].code == "OVF"
     (tmp_path / "sources.toml").write_text(shown, encoding="utf-8")
     assert read_catalogue(tmp_path / "sources.toml").title == "Source waters of an invented sea"
 
