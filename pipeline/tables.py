@@ -32,10 +32,12 @@ ARROW_TYPES: dict[Kind, pa.DataType] = {
 
 KEY = ("expocode", "station", "cast", "sample")
 MIXING = (
-    "tag", "leading_source", "leading_share", "leading_share_uncertainty", "respiration",
-    "reduced_chi_square", "mixing_set", "mixing_status",
+    "tag", "leading_source", "leading_share", "leading_share_uncertainty", "leading_probability",
+    "respiration", "respiration_uncertainty", "reduced_chi_square", "mixing_set", "mixing_status",
 )  # fmt: skip
-MIXTURES = (*KEY, "line", "mixing_set", "source", "share", "share_uncertainty")
+MIXTURES = (
+    *KEY, "line", "mixing_set", "source", "share", "share_uncertainty", "share_p16", "share_p50", "share_p84",
+)  # fmt: skip
 FINDINGS = (
     "expocode", "file", "line", "station", "cast", "sample", "variable", "check", "severity", "count",
     "value", "limit", "message",

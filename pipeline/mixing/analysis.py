@@ -8,7 +8,9 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 import pyarrow as pa
 
+from pipeline.mixing.answers import Attempt, answer_of
 from pipeline.mixing.domains import validity
+from pipeline.mixing.members import sample_keys
 from pipeline.mixing.properties import respiration_ratios
 from pipeline.mixing.solver import solve
 from pipeline.mixing.status import MixingStatus
@@ -16,15 +18,14 @@ from pipeline.mixing.tags import tags
 from pipeline.mixing.weights import mixing_problem
 from pipeline.tables import MIXTURES, as_arrow, registry_field
 from pipeline.usable import usable
-from pipeline.variables import residual_name
 
 if TYPE_CHECKING:
     from collections.abc import Mapping, Sequence
 
     from numpy.typing import NDArray
 
+    from pipeline.mixing.answers import Answer
     from pipeline.mixing.entries import Catalogue, SourceSet
-    from pipeline.mixing.solver import MixingSolution
     from pipeline.settings import Settings
 
     FloatArray = NDArray[np.float64]
@@ -51,16 +52,6 @@ class Resolution:
     mixtures: pa.Table  # a row is a solved sample and a source of the set it was solved with
 
 
-@dataclass(frozen=True, eq=False)
-class _Attempt:
-    """A set's answer to the samples for which it is valid."""
-
-    chosen: SourceSet
-    rows: IntArray  # (n_valid,) samples
-    unknown: BoolArray  # (n_sample,) whether it is valid cannot be told: a coordinate is missing
-    solution: MixingSolution  # of n_valid samples
-
-
 def resolve(samples: pa.Table, catalogue: Catalogue, settings: Settings) -> Resolution:
     """Resolve every sample of a table into the source waters of a catalogue.
 
@@ -79,7 +70,12 @@ def resolve(samples: pa.Table, catalogue: Catalogue, settings: Settings) -> Reso
     """
     attempts = [_attempt(samples, catalogue, chosen, settings) for chosen in catalogue.set]
     status, picked = _pick(attempts, samples.num_rows)
-    columns: dict[str, Any] = {"tag": None, **_columns(attempts, picked)}
+    keys = sample_keys(samples, settings.mixing.seed)
+    answers = [
+        answer_of(catalogue, attempt, picked[attempt.rows] == index, keys, settings.mixing)
+        for index, attempt in enumerate(attempts)
+    ]
+    columns: dict[str, Any] = {"tag": None, **_columns(answers, samples.num_rows)}
     columns["tag"] = tags(
         status,
         columns["leading_source"],
@@ -88,20 +84,20 @@ def resolve(samples: pa.Table, catalogue: Catalogue, settings: Settings) -> Reso
         settings.mixing,
     )
     columns["mixing_status"] = np.array([MixingStatus(code).label for code in status], dtype=object)
-    return Resolution(columns, _mixtures(samples, attempts, picked))
+    return Resolution(columns, _mixtures(samples, answers))
 
 
-def _attempt(samples: pa.Table, catalogue: Catalogue, chosen: SourceSet, settings: Settings) -> _Attempt:
+def _attempt(samples: pa.Table, catalogue: Catalogue, chosen: SourceSet, settings: Settings) -> Attempt:
     ratios = respiration_ratios(settings.tracers, chosen.silicate_per_phosphate)
-    problem = mixing_problem(catalogue, chosen, ratios)
-    inside, unknown = validity(samples, chosen.valid, settings.use)
+    problem = mixing_problem(catalogue, chosen, ratios, settings.mixing.uncertainty)
+    inside, unknown = validity(samples, chosen.valid, settings)
     rows = np.flatnonzero(inside)
     observed = np.stack([usable(samples, name, settings.use)[rows] for name in chosen.properties], axis=1)
     solution = solve(problem, observed, condition_limit=settings.mixing.condition_limit)
-    return _Attempt(chosen, rows, unknown, solution)
+    return Attempt(chosen, ratios, problem, rows, unknown, observed, solution)
 
 
-def _pick(attempts: Sequence[_Attempt], n_sample: int) -> tuple[NDArray[np.int8], IntArray]:
+def _pick(attempts: Sequence[Attempt], n_sample: int) -> tuple[NDArray[np.int8], IntArray]:
     """Return the status of every sample and the attempt it keeps, -1 for none, both (n_sample,)."""
     status = np.full(n_sample, MixingStatus.OUTSIDE, dtype=np.int8)
     picked = np.full(n_sample, -1)
@@ -119,55 +115,43 @@ def _pick(attempts: Sequence[_Attempt], n_sample: int) -> tuple[NDArray[np.int8]
     return status, picked
 
 
-def _columns(attempts: Sequence[_Attempt], picked: IntArray) -> dict[str, Any]:
+def _columns(answers: Sequence[Answer], n_sample: int) -> dict[str, Any]:
     """Return the columns of the solved samples, (n_sample,) each."""
-    n_sample = len(picked)
-    names = ["leading_share", "leading_share_uncertainty", "respiration", "reduced_chi_square"]
-    residuals = dict.fromkeys(
-        residual_name(name) for attempt in attempts for name in attempt.chosen.properties
-    )
     columns: dict[str, Any] = {
         name: np.full(n_sample, None, dtype=object) for name in ("leading_source", "mixing_set")
     }
-    columns |= {name: np.full(n_sample, np.nan) for name in (*names, *residuals)}
-    for index, attempt in enumerate(attempts):
-        solution, kept = attempt.solution, picked[attempt.rows] == index
-        rows = attempt.rows[kept]
-        shares = solution.shares[kept]
-        leading = shares.argmax(axis=1)
-        columns["leading_source"][rows] = np.array(attempt.chosen.sources, dtype=object)[leading]
-        columns["leading_share"][rows] = np.take_along_axis(shares, leading[:, None], axis=1)[:, 0]
-        columns["leading_share_uncertainty"][rows] = np.take_along_axis(
-            solution.share_uncertainty[kept], leading[:, None], axis=1
-        )[:, 0]
-        if solution.processes.shape[1]:
-            columns["respiration"][rows] = solution.processes[kept, 0]
-        columns["reduced_chi_square"][rows] = solution.reduced_chi_square[kept]
-        columns["mixing_set"][rows] = attempt.chosen.name
-        for position, name in enumerate(attempt.chosen.properties):
-            columns[residual_name(name)][rows] = solution.residuals[kept, position]
+    numbers = dict.fromkeys(name for answer in answers for name in answer.per_sample)
+    columns |= {name: np.full(n_sample, np.nan) for name in numbers}
+    for answer in answers:
+        codes = np.array(answer.chosen.sources, dtype=object)
+        columns["leading_source"][answer.rows] = codes[answer.leading]
+        columns["mixing_set"][answer.rows] = answer.chosen.name
+        for name, values in answer.per_sample.items():
+            columns[name][answer.rows] = values
     return columns
 
 
-def _mixtures(samples: pa.Table, attempts: Sequence[_Attempt], picked: IntArray) -> pa.Table:
+def _mixtures(samples: pa.Table, answers: Sequence[Answer]) -> pa.Table:
     """Return a row per solved sample and source of its set, in the order of the samples."""
-    parts: list[tuple[Any, ...]] = []
-    for index, attempt in enumerate(attempts):
-        kept = picked[attempt.rows] == index
-        n_source = len(attempt.chosen.sources)
-        rows = np.repeat(attempt.rows[kept], n_source)
-        codes = np.tile(np.array(attempt.chosen.sources, dtype=object), int(kept.sum()))
-        names = np.full(len(rows), attempt.chosen.name, dtype=object)
-        shares, uncertainties = attempt.solution.shares[kept], attempt.solution.share_uncertainty[kept]
-        parts.append((rows, names, codes, shares.ravel(), uncertainties.ravel()))
-    rows, *made = (np.concatenate(column) for column in zip(*parts, strict=True))
+    n_source = [len(answer.chosen.sources) for answer in answers]
+    rows = np.concatenate([np.repeat(one.rows, n) for one, n in zip(answers, n_source, strict=True)])
     order = np.argsort(rows, kind="stable")
-    own = dict(zip(("mixing_set", "source", "share", "share_uncertainty"), made, strict=True))
+    codes = [np.tile(np.array(one.chosen.sources, dtype=object), len(one.rows)) for one in answers]
+    names = [
+        np.full(len(own), one.chosen.name, dtype=object) for one, own in zip(answers, codes, strict=True)
+    ]
+    made = {
+        "source": codes,
+        "mixing_set": names,
+        **{name: [one.per_share[name].ravel() for one in answers] for name in answers[0].per_share},
+    }
+    own = {name: np.concatenate(parts)[order] for name, parts in made.items()}
+    taken = pa.array(rows[order])
     fields = [registry_field(name) for name in MIXTURES]
     columns = [
-        as_arrow(own[field.name][order], field.type)
+        as_arrow(own[field.name], field.type)
         if field.name in own
-        else samples.column(field.name).take(pa.array(rows[order])).cast(field.type)
+        else samples.column(field.name).take(taken).cast(field.type)
         for field in fields
     ]
     return pa.table(columns, schema=pa.schema(fields))

@@ -16,7 +16,7 @@ if TYPE_CHECKING:
     FloatArray = NDArray[np.float64]
     BoolArray = NDArray[np.bool_]
 
-RANK_TOLERANCE = 1e-10  # smallest over largest singular value below which columns count as dependent
+RANK_TOLERANCE = 1e-10  # part of the strongest direction below which another counts as dependent
 MOST_CONSTRAINED = 14  # 2**14 supports of 15 equations are 30 MB; no catalogue comes near it
 
 # No column is weaker than this part of the strongest when gradients are scaled: a source in the very
@@ -38,7 +38,6 @@ class SupportOperators:
     constant: FloatArray  # (n_support, n_unknown)
     usable: BoolArray  # (n_support,) False where the columns that take part are dependent
     inside: BoolArray  # (n_support, n_unknown) which unknowns take part
-    rank: NDArray[np.int64]  # (n_support,) unknowns that take part, less one for an exact sum
 
 
 def singular_values(A: FloatArray, summed: BoolArray) -> FloatArray:
@@ -68,8 +67,8 @@ def support_operators(A: FloatArray, constrained: BoolArray, summed: BoolArray) 
     """Return the operators of all supports of ``min |A x - b|`` with ``x[constrained] >= 0``.
 
     Where ``summed`` names unknowns, their sum is held at one exactly. Orthogonal factorisations only: a
-    basis of the plane of the sum, then a singular value decomposition of the system on that plane
-    (the null-space method; Lawson and Hanson 1974, chapter 20).
+    basis of the plane of the sum, then a factorisation of the system on that plane (the null-space
+    method; Lawson and Hanson 1974, chapter 20).
 
     Parameters
     ----------
@@ -83,70 +82,19 @@ def support_operators(A: FloatArray, constrained: BoolArray, summed: BoolArray) 
     n_constrained = int(constrained.sum())
     if n_constrained > MOST_CONSTRAINED:
         raise ValueError(f"{n_constrained} constrained unknowns; at most {MOST_CONSTRAINED} can be solved")
+    from pipeline.mixing import making  # noqa: PLC0415 - numba takes longer to import than all else here
+
     n_support = 1 << n_constrained
     inside = np.ones((n_support, n_unknown), dtype=bool)
     inside[:, constrained] = (np.arange(n_support)[:, None] >> np.arange(n_constrained)) & 1
-    n_summed = inside[:, summed].sum(axis=1)
-    n_inside = inside.sum(axis=1)
-    rank = n_inside - (1 if summed.any() else 0)
-
-    result = SupportOperators(
-        matrix=np.zeros((n_support, n_equation, n_unknown)),
-        constant=np.zeros((n_support, n_unknown)),
-        usable=np.zeros(n_support, dtype=bool),
-        inside=inside,
-        rank=rank,
-    )
-    possible = (rank <= n_equation) & ((n_summed > 0) | ~summed.any())
-    # Supports with as many shares and as many other unknowns have the same shapes and are done together.
     columns = np.ascontiguousarray(A.T)
-    kinds = n_summed * (n_unknown + 1) + n_inside
-    for kind in np.unique(kinds[possible]):
-        _fill(result, np.flatnonzero(possible & (kinds == kind)), columns, summed)
-    return result
-
-
-def _fill(
-    result: SupportOperators, members: NDArray[np.int64], columns: FloatArray, summed: BoolArray
-) -> None:
-    """Fill in the operators of supports ``members``, which have equally many unknowns of each kind.
-
-    ``columns`` are those of the system, (n_unknown, n_equation).
-    """
-    n_unknown, n_equation = columns.shape
-    n_member = len(members)
-    inside = result.inside[members]
-    taking = np.nonzero(inside)[1].reshape(n_member, -1)  # (n_member, n_inside)
-    resting = np.nonzero(~inside)[1].reshape(n_member, n_unknown - taking.shape[1])
-
-    B = columns[taking].transpose(0, 2, 1)  # (n_member, n_equation, n_inside)
-    own_sum = summed[taking[0]]  # the same for all members: shares come before the other unknowns
-    plane = _plane(own_sum)  # (n_inside, rank)
-    start = own_sum / max(1, own_sum.sum())  # equal shares: a point of the plane
-    at_start = B @ start  # (n_member, n_equation)
-
-    U, size, Vt = np.linalg.svd(B @ plane, full_matrices=False)
-    largest = size[:, :1] if size.shape[1] else np.ones((n_member, 1))
-    dependent = size <= RANK_TOLERANCE * largest
-    result.usable[members] = ~dependent.any(axis=1) & (largest[:, 0] > 0)
-    size = np.where(dependent, np.inf, size)  # keeps unusable operators finite
-    V = plane @ Vt.transpose(0, 2, 1)  # (n_member, n_inside, rank)
-    value = (V / size[:, None, :]) @ U.transpose(0, 2, 1)  # (n_member, n_inside, n_equation)
-
-    # At the optimum the gradients of all shares that take part are equal: their mean is the multiplier.
-    mean_column = at_start if own_sum.any() else np.zeros_like(at_start)
-    pull = columns[resting] - summed[resting][:, :, None] * mean_column[:, None, :]
-    pull -= (pull @ U) @ U.transpose(0, 2, 1)  # acts on the part of the data that is not explained
-    gradient = -pull / _sizes(columns)[resting][:, :, None]
-
-    each = np.arange(n_member)[:, None]
-    matrix = np.empty((n_member, n_unknown, n_equation))
-    matrix[each, taking] = value
-    matrix[each, resting] = gradient
-    constant = -(matrix @ at_start[:, :, None])[:, :, 0]
-    constant[each, taking] += start
-    result.matrix[members] = matrix.transpose(0, 2, 1)
-    result.constant[members] = constant
+    matrix = np.zeros((n_support, n_unknown, n_equation))
+    constant = np.zeros((n_support, n_unknown))
+    usable = np.zeros(n_support, dtype=bool)
+    making.make_operators(
+        columns, _sizes(columns), inside, int(summed.sum()), RANK_TOLERANCE, matrix, constant, usable
+    )
+    return SupportOperators(matrix.transpose(0, 2, 1), constant, usable, inside)
 
 
 def _plane(summed: BoolArray) -> FloatArray:

@@ -8,13 +8,14 @@ Mackas et al. 1987; Karstensen and Tomczak 1998 for the processes). Arrays in, a
 
 from __future__ import annotations
 
-from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 import numpy as np
 
+from pipeline.mixing.blocks import Operators, Results, System
 from pipeline.mixing.operators import support_operators
 from pipeline.mixing.problem import MixingProblem, weighted_system
+from pipeline.mixing.solution import Choices, MixingSolution
 from pipeline.mixing.status import MixingStatus
 
 if TYPE_CHECKING:
@@ -27,65 +28,11 @@ if TYPE_CHECKING:
     FloatArray = NDArray[np.float64]
     IntArray = NDArray[np.int64]
 
+__all__ = ["ABSURD_DEVIATION", "Choices", "MixingSolution", "groups", "solve"]
+
 # A value further from the sources than a million of its weighted units is no measurement, and double
 # precision could no longer tell the shares to ten digits.
 ABSURD_DEVIATION = 1e6
-
-_LANES = 4  # doubles in a vector register: unknowns are padded to a multiple
-
-
-@dataclass(frozen=True, eq=False)
-class Choices:
-    """What depends only on which properties a sample has and which unknowns take part, one row per choice.
-
-    The first row is of samples that have fewer equations than unknowns. Every other pattern of properties
-    has a row for samples without an answer and one per support.
-    """
-
-    uncertainty: FloatArray  # (n_choice, n_unknown) NaN without an answer
-    support: NDArray[np.int32]  # (n_choice,) 0 without an answer
-    condition_number: FloatArray  # (n_choice,) NaN where there are fewer equations than unknowns
-
-
-@dataclass(frozen=True, eq=False)
-class MixingSolution:
-    """What came of every sample. Where the status is not ``SOLVED``, floats are NaN and the support is 0."""
-
-    shares: FloatArray  # (n_sample, n_source) never negative
-    processes: FloatArray  # (n_sample, n_process) respiration in umol/kg of phosphate
-    residuals: FloatArray  # (n_sample, n_property) fitted less observed, in property units; NaN where missing
-    # Misfits in standard uncertainties, squared, over properties less unknowns that take part, plus one
-    # for the sum: a fit has as many parameters as the face of the constraints it lies on has dimensions
-    # (Tibshirani and Taylor 2012, from memory).
-    reduced_chi_square: FloatArray  # (n_sample,) NaN without degrees of freedom
-    optimality: FloatArray  # (n_sample,) lowest share or reduced gradient: an optimum where not negative
-    status: NDArray[np.int8]  # (n_sample,) a MixingStatus
-    choice: NDArray[np.int32]  # (n_sample,) row of ``choices``
-    choices: Choices
-
-    @property
-    def share_uncertainty(self) -> FloatArray:
-        """Standard uncertainty of every share, (n_sample, n_source).
-
-        First-order propagation of the problem's uncertainties through the operator of the sample's
-        support. Exact where no bound is active; a share that is held at zero has none.
-        """
-        return self.choices.uncertainty[self.choice, : self.shares.shape[1]]
-
-    @property
-    def process_uncertainty(self) -> FloatArray:
-        """Standard uncertainty of every process, (n_sample, n_process), like that of the shares."""
-        return self.choices.uncertainty[self.choice, self.shares.shape[1] :]
-
-    @property
-    def support(self) -> NDArray[np.int32]:
-        """Which unknowns take part, (n_sample,): bit i is set where the i-th that is not free does."""
-        return self.choices.support[self.choice]
-
-    @property
-    def condition_number(self) -> FloatArray:
-        """Of the weighted system, (n_sample,): NaN where INCOMPLETE, known where UNDETERMINED."""
-        return self.choices.condition_number[self.choice]
 
 
 def solve(problem: MixingProblem, observed: FloatArray, *, condition_limit: float = 1e3) -> MixingSolution:
@@ -119,41 +66,41 @@ def solve(problem: MixingProblem, observed: FloatArray, *, condition_limit: floa
     if values.ndim != 2 or values.shape[1] != n_property:
         raise ValueError(f"observed has shape {values.shape}; expected (n_sample, {n_property})")
     n_sample = len(values)
-    unknowns = np.empty((n_sample, problem.n_unknown))
-    residuals = np.empty((n_sample, n_property))
-    chi_square, optimality = np.empty((2, n_sample))
-    choice = np.zeros(n_sample, dtype=np.int32)
-    status = np.full(n_sample, MixingStatus.INCOMPLETE, dtype=np.int8)
+    results = Results(
+        unknowns=np.empty((n_sample, problem.n_unknown)),
+        chi_square=np.empty(n_sample),
+        optimality=np.empty(n_sample),
+        choice=np.zeros(n_sample, dtype=np.int32),
+        status=np.full(n_sample, MixingStatus.INCOMPLETE, dtype=np.int8),
+    )
     # Uncertainties of the unknowns and condition number, for choices that follow one another.
     no_answer = np.full((1, problem.n_unknown), np.nan)
     listed: list[tuple[FloatArray, float]] = [(no_answer, np.nan)]
     n_choice = 1
-    for columns, rows in _groups(values):
-        if columns.size == 0 or columns.size + 1 < problem.n_unknown:
-            continue
+    for columns, rows in _passes(problem, values, results.status, condition_limit):
         system = weighted_system(problem, columns)
-        choice[rows] = n_choice
         listed.append((no_answer, system.condition_number))
         n_choice += 1
         if system.condition_number > condition_limit:
-            status[rows] = MixingStatus.UNDETERMINED
+            results.choice[rows] = n_choice - 1
+            results.status[rows] = MixingStatus.UNDETERMINED
             continue
-        results = (unknowns, residuals, chi_square, optimality, choice, status)
-        spread = _solve_group(problem, system, values, columns, rows, n_choice, results)
+        spread = _solve_rows(problem, system, values, columns, rows, n_choice, results)
         listed.append((spread, system.condition_number))
         n_choice += len(spread)
 
-    unsolved = np.flatnonzero(status != MixingStatus.SOLVED)
-    for result in (unknowns, residuals, chi_square, optimality):
+    unsolved = np.flatnonzero(results.status != MixingStatus.SOLVED)
+    for result in (results.unknowns, results.chi_square, results.optimality):
         result[unsolved] = np.nan
     return MixingSolution(
-        shares=unknowns[:, :n_source],
-        processes=unknowns[:, n_source:],
-        residuals=residuals,
-        reduced_chi_square=chi_square,
-        optimality=optimality,
-        status=status,
-        choice=choice,
+        problem=problem,
+        observed=values,
+        shares=results.unknowns[:, :n_source],
+        processes=results.unknowns[:, n_source:],
+        reduced_chi_square=results.chi_square,
+        optimality=results.optimality,
+        status=results.status,
+        choice=results.choice,
         choices=Choices(
             uncertainty=np.concatenate([spread for spread, _ in listed]),
             support=np.concatenate([np.arange(len(spread), dtype=np.int32) for spread, _ in listed]),
@@ -162,7 +109,7 @@ def solve(problem: MixingProblem, observed: FloatArray, *, condition_limit: floa
     )
 
 
-def _groups(values: FloatArray) -> Iterator[tuple[IntArray, IntArray]]:
+def groups(values: FloatArray) -> Iterator[tuple[IntArray, IntArray]]:
     """Yield the properties that are there, and the samples that have just these, in their order."""
     n_sample, n_property = values.shape
     there = ~np.isnan(values)
@@ -170,24 +117,46 @@ def _groups(values: FloatArray) -> Iterator[tuple[IntArray, IntArray]]:
         if n_sample:
             yield np.arange(n_property), np.arange(n_sample)
         return
-    pattern = there @ (1 << np.arange(n_property))
-    if n_property <= 16:
-        pattern = pattern.astype(np.uint16)  # sorted in linear time
+    # A pattern is one integer of as few bytes as will do: up to two are sorted in linear time.
+    n_byte = next(size for size in (1, 2, 4, 8) if n_property <= 8 * size)
+    pattern = np.zeros((n_sample, n_byte), dtype=np.uint8)
+    packed = np.packbits(there, axis=1, bitorder="little")
+    pattern[:, : packed.shape[1]] = packed
+    pattern = pattern.view(f"<u{n_byte}")[:, 0]
     order = np.argsort(pattern, kind="stable")
     for rows in np.split(order, np.flatnonzero(np.diff(pattern[order])) + 1):
         yield np.flatnonzero(there[rows[0]]), rows
 
 
-def _solve_group(
+def _passes(
+    problem: MixingProblem, values: FloatArray, status: NDArray[np.int8], condition_limit: float
+) -> Iterator[tuple[IntArray, IntArray]]:
+    """Yield properties that have as many equations as unknowns, and the samples to be solved with just these.
+
+    Samples that have all properties come first, and only where these determine the unknowns: as no rows,
+    which means all samples that are complete. Sorting by what is missing is for those that are left then.
+    """
+    whole = np.arange(values.shape[1])
+    left = np.arange(len(values))
+    enough = len(values) and whole.size + 1 >= problem.n_unknown
+    if enough and weighted_system(problem, whole).condition_number <= condition_limit:
+        yield whole, np.empty(0, dtype=np.int64)
+        left = np.flatnonzero(status == MixingStatus.INCOMPLETE)
+    for columns, rows in groups(values[left]):
+        if columns.size and columns.size + 1 >= problem.n_unknown:
+            yield columns, left[rows]
+
+
+def _solve_rows(
     problem: MixingProblem,
     system: WeightedSystem,
     values: FloatArray,
     columns: IntArray,
     rows: IntArray,
     first_choice: int,
-    results: tuple[NDArray[np.generic], ...],
+    results: Results,
 ) -> FloatArray:
-    """Solve the samples ``rows``, all of which have the properties ``columns``, into their rows of ``results``.
+    """Solve the samples ``rows``, which have the properties ``columns``, into their rows of ``results``.
 
     Returns the standard uncertainty of every unknown per support, (n_support, n_unknown).
     """
@@ -196,35 +165,36 @@ def _solve_group(
     n_used, n_unknown = columns.size, problem.n_unknown
     operators = support_operators(system.A, system.constrained, system.summed)
     n_support = operators.usable.size
-    n_lane = -(-n_unknown // _LANES) * _LANES
-    matrix = np.zeros((n_support, n_used, n_lane))  # acts on deviations in property units
-    matrix[:, :, :n_unknown] = operators.matrix[:, :n_used] * problem.weight[columns, None]
-    constant = np.zeros((n_support, n_lane))
-    constant[:, :n_unknown] = operators.constant
+    # By unknown and property, to act on deviations in property units.
+    matrix = operators.matrix[:, :n_used].transpose(0, 2, 1) * problem.weight[columns]
+    constant = operators.constant
     if problem.mass_weight is not None:
-        constant[:, :n_unknown] += operators.matrix[:, n_used] * problem.mass_weight
-
+        constant = constant + operators.matrix[:, n_used] * problem.mass_weight
     freedom = n_used + 1.0 - np.maximum(operators.inside.sum(axis=1), 1)
     bit = np.zeros(n_unknown, dtype=np.int64)
     bit[system.constrained] = 1 << np.arange(system.constrained.sum())
     kernel.solve_rows(
         values,
         rows,
-        columns,
-        problem.reference[columns],
-        problem.weight[columns],
-        1 / problem.uncertainty[columns],
-        ABSURD_DEVIATION,
-        system.reach,
-        matrix,
-        constant,
-        operators.usable,
-        bit,
-        int(system.summed.sum()),
-        np.ascontiguousarray(problem.design[:, columns]),
-        1 / np.where(freedom > 0, freedom, np.nan),
-        first_choice,
-        *results,
+        System(
+            columns=columns,
+            reference=problem.reference[columns],
+            weight=problem.weight[columns],
+            uncertainty=problem.uncertainty[columns],
+            design=np.ascontiguousarray(problem.design[:, columns].T),
+            bit=bit,
+            n_summed=int(system.summed.sum()),
+            reach=system.reach,
+            limit=ABSURD_DEVIATION,
+        ),
+        Operators(
+            matrix=np.ascontiguousarray(matrix).reshape(n_support * n_unknown, n_used),
+            constant=np.ascontiguousarray(constant).ravel(),
+            usable=operators.usable,
+            per_freedom=1 / np.where(freedom > 0, freedom, np.nan),
+            first_choice=first_choice,
+        ),
+        results,
     )
-    spread = np.sqrt(np.einsum("sji,j->si", matrix[:, :, :n_unknown] ** 2, problem.uncertainty[columns] ** 2))
+    spread = np.sqrt(np.einsum("sij,j->si", matrix**2, problem.uncertainty[columns] ** 2))
     return np.where(operators.inside, spread, 0.0)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from types import MappingProxyType
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -10,7 +11,7 @@ import numpy as np
 from pipeline.mixing.faults import MASS
 from pipeline.mixing.problem import MixingProblem
 from pipeline.mixing.properties import ratios_of
-from pipeline.variables import REGISTRY
+from pipeline.variables import REGISTRY, Uncertainty
 
 if TYPE_CHECKING:
     from collections.abc import Mapping, Sequence
@@ -20,6 +21,8 @@ if TYPE_CHECKING:
     from pipeline.mixing.entries import Catalogue, SourceSet
 
     FloatArray = NDArray[np.float64]
+
+_NONE_GIVEN: Mapping[str, float] = MappingProxyType({})
 
 
 @dataclass(frozen=True, eq=False)
@@ -31,23 +34,51 @@ class Weights:
     per_unit: FloatArray  # of a misfit in property units: what enters the matrix
 
 
-def measurement_uncertainty(properties: Sequence[str], values: FloatArray) -> FloatArray:
-    """Return the usual standard uncertainty of measurements, (n_property,), zero where the registry has none.
+def measurement_parts(properties: Sequence[str], given: Mapping[str, float]) -> tuple[FloatArray, FloatArray]:
+    """Return the absolute and the relative part of the measurements' standard uncertainty, (n_property,) each.
+
+    Their hypotenuse at a value is its standard uncertainty; both are zero where none is known.
+
+    Parameters
+    ----------
+    properties
+        Registry names.
+    given
+        Standard uncertainties that stand in place of the registry's, in property units.
+
+    """
+    usual = [
+        Uncertainty(given[name], 0.0, "settings") if name in given else REGISTRY[name].uncertainty
+        for name in properties
+    ]
+    absolute = np.array([one.absolute if one else 0.0 for one in usual])
+    return absolute, np.array([one.relative if one else 0.0 for one in usual])
+
+
+def measurement_uncertainty(
+    properties: Sequence[str], values: FloatArray, given: Mapping[str, float] = _NONE_GIVEN
+) -> FloatArray:
+    """Return the standard uncertainty of measurements at ``values``, (..., n_property), zero where unknown.
 
     Parameters
     ----------
     properties
         Registry names.
     values
-        Value of each at which a relative uncertainty is taken, (n_property,), in property units.
+        (..., n_property), in property units.
+    given
+        As ``measurement_parts`` takes them.
 
     """
-    usual = [REGISTRY[name].uncertainty for name in properties]
-    return np.array([u.at(value) if u else 0.0 for u, value in zip(usual, values, strict=True)])
+    absolute, relative = measurement_parts(properties, given)
+    return np.asarray(np.hypot(absolute, relative * values))
 
 
 def joined_uncertainty(
-    properties: Sequence[str], values: FloatArray, uncertainties: FloatArray
+    properties: Sequence[str],
+    values: FloatArray,
+    uncertainties: FloatArray,
+    given: Mapping[str, float] = _NONE_GIVEN,
 ) -> FloatArray:
     """Return the standard uncertainty of a misfit, (n_property,): measurement and source, independent.
 
@@ -60,9 +91,11 @@ def joined_uncertainty(
         Registry names.
     values, uncertainties
         Of the sources and their standard uncertainties, both (n_source, n_property), in property units.
+    given
+        Of measurements, as ``measurement_parts`` takes them.
 
     """
-    measured = measurement_uncertainty(properties, values.mean(axis=0))
+    measured = measurement_uncertainty(properties, values.mean(axis=0), given)
     return np.asarray(np.sqrt(measured**2 + (uncertainties**2).mean(axis=0)))
 
 
@@ -86,7 +119,12 @@ def variance_weights_tomczak_large_1989(values: FloatArray, uncertainties: Float
     return np.asarray(values.var(axis=0, ddof=1) / (uncertainties**2).max(axis=0))
 
 
-def weights_of(chosen: SourceSet, values: FloatArray, uncertainties: FloatArray) -> Weights:
+def weights_of(
+    chosen: SourceSet,
+    values: FloatArray,
+    uncertainties: FloatArray,
+    given: Mapping[str, float] = _NONE_GIVEN,
+) -> Weights:
     """Return the weights that a set of the catalogue asks for.
 
     A weight of the published practice multiplies a misfit over the standard deviation of the property
@@ -99,17 +137,19 @@ def weights_of(chosen: SourceSet, values: FloatArray, uncertainties: FloatArray)
         The set.
     values, uncertainties
         Of its sources and properties, both (n_source, n_property), in property units.
+    given
+        Uncertainties of measurements, as ``measurement_parts`` takes them.
 
     """
-    uncertainty = joined_uncertainty(chosen.properties, values, uncertainties)
+    uncertainty = joined_uncertainty(chosen.properties, values, uncertainties, given)
     spread = values.std(axis=0, ddof=1) if len(values) > 1 else np.zeros(len(uncertainty))
     if chosen.weights == "uncertainty":
         return Weights(uncertainty, scaled=spread / uncertainty, per_unit=1 / uncertainty)
     if chosen.weights == "variance":
         scaled = variance_weights_tomczak_large_1989(values, uncertainties)
     else:
-        given = chosen.given_weights or {}
-        scaled = np.array([given[name] for name in chosen.properties])
+        by_hand = chosen.given_weights or {}
+        scaled = np.array([by_hand[name] for name in chosen.properties])
     return Weights(uncertainty, scaled, per_unit=scaled / spread)
 
 
@@ -124,7 +164,12 @@ def mass_weight(chosen: SourceSet, weights: Weights) -> float | None:
     return chosen.mass_weight or given or float(weights.scaled.max())
 
 
-def mixing_problem(catalogue: Catalogue, chosen: SourceSet, ratios: Mapping[str, float]) -> MixingProblem:
+def mixing_problem(
+    catalogue: Catalogue,
+    chosen: SourceSet,
+    ratios: Mapping[str, float],
+    given: Mapping[str, float] = _NONE_GIVEN,
+) -> MixingProblem:
     """Return the problem that a set of the catalogue poses.
 
     Parameters
@@ -133,14 +178,16 @@ def mixing_problem(catalogue: Catalogue, chosen: SourceSet, ratios: Mapping[str,
         The catalogue and one of its sets.
     ratios
         Change of each property per umol/kg of phosphate that respiration releases; none for the others.
+    given
+        Uncertainties of measurements, as ``measurement_parts`` takes them.
 
     """
-    given = [
+    entries = [
         [catalogue.sources[code].properties[name] for name in chosen.properties] for code in chosen.sources
     ]
-    values = np.array([[one.value for one in row] for row in given])
-    uncertainties = np.array([[one.uncertainty for one in row] for row in given])
-    weights = weights_of(chosen, values, uncertainties)
+    values = np.array([[one.value for one in row] for row in entries])
+    uncertainties = np.array([[one.uncertainty for one in row] for row in entries])
+    weights = weights_of(chosen, values, uncertainties, given)
     respired = chosen.respiration != "none"
     return MixingProblem(
         sources=values,

@@ -1,0 +1,200 @@
+"""What a set says about the samples that keep its solution: shares, respiration and split, with uncertainties."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from pipeline.mixing.ensemble import run_ensemble
+from pipeline.mixing.members import measurement_noise, perturbed_sources
+from pipeline.mixing.properties import ratios_of
+from pipeline.mixing.split import (
+    first_order_uncertainty,
+    pseudo_age,
+    quantities_of,
+    source_values,
+    split,
+)
+from pipeline.mixing.weights import measurement_uncertainty
+from pipeline.variables import residual_name
+
+if TYPE_CHECKING:
+    from collections.abc import Mapping, Sequence
+
+    from numpy.typing import NDArray
+
+    from pipeline.mixing.entries import Catalogue, SourceSet
+    from pipeline.mixing.problem import MixingProblem
+    from pipeline.mixing.solver import MixingSolution
+    from pipeline.settings import MixingSettings
+
+    FloatArray = NDArray[np.float64]
+    BoolArray = NDArray[np.bool_]
+    IntArray = NDArray[np.int64]
+
+
+@dataclass(frozen=True, eq=False)
+class Attempt:
+    """A set's solution of the samples for which it is valid."""
+
+    chosen: SourceSet
+    ratios: Mapping[str, float]  # change of each property per umol/kg of phosphate released
+    problem: MixingProblem
+    rows: IntArray  # (n_valid,) samples
+    unknown: BoolArray  # (n_sample,) whether it is valid cannot be told: a coordinate is missing
+    observed: FloatArray  # (n_valid, n_property)
+    solution: MixingSolution  # of n_valid samples
+
+
+@dataclass(frozen=True, eq=False)
+class Answer:
+    """What a set says about the samples that keep its solution."""
+
+    chosen: SourceSet
+    rows: IntArray  # (n_kept,) samples
+    leading: IntArray  # (n_kept,) source with the largest share
+    per_sample: Mapping[str, FloatArray]  # registry name to (n_kept,)
+    per_share: Mapping[str, FloatArray]  # registry name to (n_kept, n_source)
+
+
+@dataclass(frozen=True, eq=False)
+class _Uncertain:
+    """How far the numbers of some samples are from the truth; NaN where only an ensemble could say."""
+
+    shares: FloatArray  # (n_kept, n_source)
+    processes: FloatArray  # (n_kept, n_process)
+    carried: FloatArray  # (n_kept, n_quantity)
+    percentiles: FloatArray  # (n_kept, 3, n_source)
+    leading_probability: FloatArray  # (n_kept,)
+
+
+def answer_of(
+    catalogue: Catalogue,
+    attempt: Attempt,
+    kept: BoolArray,
+    keys: NDArray[np.uint64],
+    settings: MixingSettings,
+) -> Answer:
+    """Return what a set says about the samples ``kept``.
+
+    Parameters
+    ----------
+    catalogue, attempt
+        The catalogue, and the solution of one of its sets.
+    kept
+        Which of the valid samples keep this solution, (n_valid,); all of them are solved.
+    keys
+        Of all samples, (n_sample,).
+    settings
+        Members, seed, uncertainties of measurements, and the rate of a pseudo-age.
+
+    """
+    chosen, solution = attempt.chosen, attempt.solution
+    rows, shares = attempt.rows[kept], solution.shares[kept]
+    leading = shares.argmax(axis=1)
+    names = quantities_of(catalogue, chosen)
+    carried = source_values(catalogue, chosen, names)
+    found = (
+        _by_members(catalogue, attempt, kept, keys[rows], leading, names, settings)
+        if settings.members
+        else _to_first_order(catalogue, attempt, kept, carried, names, settings)
+    )
+
+    none = np.full(len(rows), np.nan)
+    respired = bool(attempt.problem.signs)
+    respiration = solution.processes[kept, 0] if respired else none
+    of_respiration = found.processes[:, 0] if respired else none
+    per_sample = {
+        "leading_share": _at(shares, leading),
+        "leading_share_uncertainty": _at(found.shares, leading),
+        "leading_probability": found.leading_probability,
+        "respiration": respiration,
+        "respiration_uncertainty": of_respiration,
+        "reduced_chi_square": solution.reduced_chi_square[kept],
+    }
+    ratios = ratios_of(names, attempt.ratios)
+    from_sources, from_respiration = split(shares, respiration, carried, ratios)
+    for q, name in enumerate(names):
+        per_sample[f"{name}_from_sources"] = from_sources[:, q]
+        per_sample[f"{name}_from_sources_uncertainty"] = found.carried[:, q]
+        per_sample[f"{name}_from_respiration"] = from_respiration[:, q]
+        per_sample[f"{name}_from_respiration_uncertainty"] = of_respiration * abs(ratios[q])
+    if settings.oxygen_utilisation_rate is not None:
+        per_sample["pseudo_age"] = pseudo_age(respiration, attempt.ratios, settings.oxygen_utilisation_rate)
+    for position, name in enumerate(chosen.properties):
+        per_sample[residual_name(name)] = solution.residuals[kept, position]
+    per_share = {"share": shares, "share_uncertainty": found.shares}
+    for index, name in enumerate(("share_p16", "share_p50", "share_p84")):
+        per_share[name] = found.percentiles[:, index]
+    return Answer(chosen, rows, leading, per_sample, per_share)
+
+
+def _at(values: FloatArray, position: IntArray) -> FloatArray:
+    """Return one of each row, (n,), of (n, m)."""
+    return np.asarray(np.take_along_axis(values, position[:, None], axis=1)[:, 0])
+
+
+def _by_members(
+    catalogue: Catalogue,
+    attempt: Attempt,
+    kept: BoolArray,
+    keys: NDArray[np.uint64],
+    leading: IntArray,
+    names: Sequence[str],
+    settings: MixingSettings,
+) -> _Uncertain:
+    properties = attempt.chosen.properties
+    sources = perturbed_sources(
+        catalogue, attempt.chosen, (*properties, *names), seed=settings.seed, members=settings.members
+    )
+    ensemble = run_ensemble(
+        attempt.problem,
+        attempt.observed[kept],
+        attempt.solution.support[kept],
+        leading,
+        measurement_noise(keys, properties, settings.uncertainty),
+        sources[:, :, : len(properties)],
+        sources[:, :, len(properties) :],
+    )
+    return _Uncertain(
+        ensemble.share_uncertainty,
+        ensemble.process_uncertainty,
+        ensemble.carried_uncertainty,
+        ensemble.share_percentiles,
+        ensemble.leading_probability,
+    )
+
+
+def _to_first_order(
+    catalogue: Catalogue,
+    attempt: Attempt,
+    kept: BoolArray,
+    carried: FloatArray,
+    names: Sequence[str],
+    settings: MixingSettings,
+) -> _Uncertain:
+    properties, solution, observed = attempt.chosen.properties, attempt.solution, attempt.observed[kept]
+    shares = solution.shares[kept]
+    each = (*properties, *names)
+    once = sorted({*each})
+    places = [once.index(name) for name in each]
+    covariances = [
+        catalogue.sources[code].covariance_of(once)[np.ix_(places, places)] for code in attempt.chosen.sources
+    ]
+    return _Uncertain(
+        solution.share_uncertainty[kept],
+        solution.process_uncertainty[kept],
+        first_order_uncertainty(
+            attempt.problem,
+            observed,
+            solution.support[kept],
+            shares,
+            measurement_uncertainty(properties, observed, settings.uncertainty),
+            np.array(covariances),
+            carried,
+        ),
+        percentiles=np.full((len(shares), 3, shares.shape[1]), np.nan),
+        leading_probability=np.full(len(shares), np.nan),
+    )

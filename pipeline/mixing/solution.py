@@ -1,0 +1,93 @@
+"""What came of a batch of samples: arrays in the order of the samples, some of them made when asked for."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import cached_property
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+if TYPE_CHECKING:
+    from numpy.typing import NDArray
+
+    from pipeline.mixing.problem import MixingProblem
+
+    FloatArray = NDArray[np.float64]
+
+_ROWS = 4096  # samples whose residuals are made together, in the fast memory of the processor
+
+
+@dataclass(frozen=True, eq=False)
+class Choices:
+    """What depends only on which properties a sample has and which unknowns take part, one row per choice.
+
+    The first row is of samples that have fewer equations than unknowns. Every other pattern of properties
+    has a row for samples without an answer and one per support.
+    """
+
+    uncertainty: FloatArray  # (n_choice, n_unknown) NaN without an answer
+    support: NDArray[np.int32]  # (n_choice,) 0 without an answer
+    condition_number: FloatArray  # (n_choice,) NaN where there are fewer equations than unknowns
+
+
+@dataclass(frozen=True, eq=False)
+class MixingSolution:
+    """What came of every sample. Where the status is not ``SOLVED``, floats are NaN and the support is 0."""
+
+    problem: MixingProblem
+    observed: FloatArray  # (n_sample, n_property) as given and not copied: residuals are made from it
+    shares: FloatArray  # (n_sample, n_source) never negative
+    processes: FloatArray  # (n_sample, n_process) respiration in umol/kg of phosphate
+    # Misfits in standard uncertainties, squared, over properties less unknowns that take part, plus one
+    # for the sum: a fit has as many parameters as the face of the constraints it lies on has dimensions
+    # (Tibshirani and Taylor 2012, from memory).
+    reduced_chi_square: FloatArray  # (n_sample,) NaN without degrees of freedom
+    optimality: FloatArray  # (n_sample,) lowest share or reduced gradient: an optimum where not negative
+    status: NDArray[np.int8]  # (n_sample,) a MixingStatus
+    choice: NDArray[np.int32]  # (n_sample,) row of ``choices``
+    choices: Choices
+
+    @cached_property
+    def residuals(self) -> FloatArray:
+        """Fitted less observed, (n_sample, n_property), in property units; NaN where missing.
+
+        Made when first asked for, from the ``observed`` that was solved: do not change it before.
+        """
+        residuals = np.empty(self.observed.shape)
+        design, n_source = self.problem.design, self.shares.shape[1]
+        for start in range(0, len(residuals), _ROWS):
+            own = slice(start, start + _ROWS)
+            total = np.zeros_like(residuals[own])
+            for i, one in enumerate(design):
+                amount = self.shares[own, i] if i < n_source else self.processes[own, i - n_source]
+                total += amount[:, None] * one
+            unsolved = np.isnan(total)  # their values may be infinite
+            with np.errstate(invalid="ignore"):
+                residuals[own] = total - (self.observed[own] - self.problem.reference)
+            residuals[own][unsolved] = np.nan
+        return residuals
+
+    @property
+    def share_uncertainty(self) -> FloatArray:
+        """Standard uncertainty of every share, (n_sample, n_source).
+
+        First-order propagation of the problem's uncertainties through the operator of the sample's
+        support. Exact where no bound is active; a share that is held at zero has none.
+        """
+        return self.choices.uncertainty[self.choice, : self.shares.shape[1]]
+
+    @property
+    def process_uncertainty(self) -> FloatArray:
+        """Standard uncertainty of every process, (n_sample, n_process), like that of the shares."""
+        return self.choices.uncertainty[self.choice, self.shares.shape[1] :]
+
+    @property
+    def support(self) -> NDArray[np.int32]:
+        """Which unknowns take part, (n_sample,): bit i is set where the i-th that is not free does."""
+        return self.choices.support[self.choice]
+
+    @property
+    def condition_number(self) -> FloatArray:
+        """Of the weighted system, (n_sample,): NaN where INCOMPLETE, known where UNDETERMINED."""
+        return self.choices.condition_number[self.choice]
