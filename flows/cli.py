@@ -83,7 +83,10 @@ def parser() -> argparse.ArgumentParser:
         "--archive", type=Path, required=True, metavar="DIR", help="the archive; made if there is none"
     )
     run.add_argument(
-        "--sources", type=Path, metavar="FILE.toml", help="source waters; without it nothing is resolved"
+        "--sources",
+        type=Path,
+        metavar="FILE.toml",
+        help="source waters; without it those the archive was made with, if any",
     )
     run.add_argument("--settings", type=Path, metavar="FILE.toml", help="settings; the defaults without it")
     run.add_argument("--summary", type=Path, metavar="FILE.json", help="write the summary there as JSON too")

@@ -7,7 +7,9 @@ from typing import TYPE_CHECKING
 
 from flows.plan import list_inbox, plan_run
 from flows.records import CruiseRecord, Refusal, RunSummary, State, merged
-from flows.work import refuse_file, run_job
+from flows.remembered import with_remembered_sources
+from flows.stopping import stoppable
+from flows.work import refuse_file, run_job, tagged_samples
 from pipeline.archive import clean_staging, locked, open_archive, read_contents, read_table
 
 if TYPE_CHECKING:
@@ -43,8 +45,13 @@ def run_directly(inbox: Path, config: RunConfig, progress: Progress = iter) -> R
     with locked(store):
         clean_staging(store)
         contents = read_contents(store)
+        config = with_remembered_sources(config, contents, store)
         plan = plan_run(files, contents, config.settings, config.catalogue)
-        records = [run_job(job, config) for job in progress(plan.jobs)]
+        records = []
+        with stoppable() as stop_if_asked:
+            for job in progress(plan.jobs):
+                records.append(run_job(job, config))
+                stop_if_asked()
         return summarise(plan, records, config, store)
 
 
@@ -74,8 +81,21 @@ def unchanged_record(cruise: CruiseContents, store: Store) -> CruiseRecord:
         rejected=sum(file.rejected for file in deliveries),
         findings=cruise.rows.get("findings", 0),
         samples=cruise.rows.get("samples", 0),
+        tagged=_tagged(cruise, store),
+        resolved=provenance is not None and provenance.catalogue_sha256 is not None,
         refusals=_refused_members(cruise, store),
     )
+
+
+def _tagged(cruise: CruiseContents, store: Store) -> int:
+    if (
+        cruise.provenance is None
+        or cruise.provenance.catalogue_sha256 is None
+        or not cruise.rows.get("samples")
+    ):
+        return 0
+    columns = ["tag", "leading_source"]
+    return tagged_samples(read_table(store, cruise.expocode, "samples", columns=columns))
 
 
 def _refused_members(cruise: CruiseContents, store: Store) -> tuple[Refusal, ...]:

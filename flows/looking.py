@@ -6,6 +6,7 @@ import json
 from dataclasses import asdict, dataclass
 from typing import TYPE_CHECKING, Any
 
+from flows.plan import shown_name
 from flows.records import ExitStatus, Refusal
 from pipeline.checking import check as check_table
 from pipeline.findings import Finding, Severity
@@ -55,9 +56,9 @@ def check(chosen: argparse.Namespace) -> int:
 
 def _look(path: Path, settings: Settings) -> Look | Refusal:
     try:
-        delivery = read_delivery(path.name, path.read_bytes(), settings.reading)
+        delivery = read_delivery(shown_name(path.name), path.read_bytes(), settings.reading)
     except DeliveryProblem as problem:
-        return Refusal(str(path), problem.reason, str(problem))
+        return Refusal(shown_name(path.name), problem.reason, str(problem))
     except OSError as error:
         return Refusal(
             str(path), "unreadable", f"{path}: the file cannot be read ({error.strerror}); give another file."
@@ -105,7 +106,9 @@ def _as_text(look: Look | Refusal) -> list[str]:
     for severity, group in _grouped(look.findings):
         lines += [f"  {severity:<8}  {finding.message}" for finding in group[:_MOST_TOLD]]
         if left := sum(finding.count for finding in group[_MOST_TOLD:]):
-            lines.append(f"  {severity:<8}  ... and {left} more of {group[0].check} in {group[0].variable}")
+            lines.append(
+                f"  {severity:<8}  ... and {left} more of {group[0].check} in {group[0].variable} (--format json tells all)"
+            )
     if not delivery.rejects and not look.findings:
         lines.append("  nothing doubtful was found")
     return lines

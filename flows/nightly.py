@@ -13,6 +13,7 @@ from prefect.task_runners import TaskRunner, ThreadPoolTaskRunner
 
 from flows.direct import summarise
 from flows.plan import list_inbox, pack, plan_run
+from flows.remembered import with_remembered_sources
 from flows.work import RunConfig, run_batch
 from pipeline.archive import clean_staging, locked, open_archive, read_contents
 from pipeline.mixing import Catalogue
@@ -70,7 +71,9 @@ def bring_up_to_date(
     store = open_archive(archive, create=True)
     with locked(store):
         clean_staging(store)
-        plan = plan_run(files, read_contents(store), config.settings, config.catalogue)
+        contents = read_contents(store)
+        config = with_remembered_sources(config, contents, store)
+        plan = plan_run(files, contents, config.settings, config.catalogue)
         futures = [cruise_batch.submit(batch, config) for batch in pack(plan.jobs, MOST_BATCHES, LEAST_BYTES)]
         records = [record for future in futures for record in future.result()]
         summary = summarise(plan, records, config, store)

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from pipeline.archive import DeliveredFile, fingerprint, judge
+from pipeline.archive import DeliveredFile, fingerprint, is_archive, judge
 from pipeline.problems import UsageProblem
 from pipeline.reading import survey_cruises
 
@@ -57,7 +57,7 @@ class Plan:
 def list_inbox(inbox: Path, archive: Path) -> list[InboxFile]:
     """Return the files of an inbox and its folders, sorted by name; hidden ones are not deliveries.
 
-    An archive inside the inbox is not looked into.
+    Archives inside the inbox are not looked into.
 
     Raises
     ------
@@ -79,7 +79,11 @@ def list_inbox(inbox: Path, archive: Path) -> list[InboxFile]:
     paths: list[Path] = []
     for folder, folders, names in os.walk(inbox, onerror=unreadable):
         here = Path(folder)
-        folders[:] = [f for f in folders if not f.startswith(".") and (here / f).resolve() != kept_out]
+        folders[:] = [
+            f
+            for f in folders
+            if not f.startswith(".") and (here / f).resolve() != kept_out and not is_archive(here / f)
+        ]
         paths += [here / name for name in names if not name.startswith(".")]
     return [_inbox_file(path, inbox) for path in sorted(paths)]
 
@@ -94,7 +98,13 @@ def _inbox_file(path: Path, inbox: Path) -> InboxFile:
             size = path.stat().st_size
     except OSError:
         pass
-    return InboxFile(path.relative_to(inbox).as_posix(), str(path), size, sha256)
+    return InboxFile(shown_name(path.relative_to(inbox).as_posix()), str(path), size, sha256)
+
+
+def shown_name(name: str) -> str:
+    """Return a file's name as text of one line, whatever bytes it is made of."""
+    text = os.fsencode(name).decode("utf-8", errors="backslashreplace")
+    return "".join(f"\\x{ord(c):02x}" if c < " " or c == "\x7f" else c for c in text)
 
 
 def plan_run(

@@ -62,16 +62,17 @@ class CruiseRecord:
         match self.state:
             case State.UNCHANGED:
                 return (
-                    f"{self.expocode}  unchanged, revision {self.revision}: {self.rows} rows in, {self.kept} kept,"
+                    f"{self.expocode}  unchanged, revision {self.revision}: {_count(self.rows, 'row')} in, {self.kept} kept,"
                     f" {self.rejected} rejected"
                 )
             case State.REFUSED | State.FAILED:
                 return f"{self.expocode}  {self.state}: {self.message}"
             case _:
-                return f"{self.expocode}  {self.state}, revision {self.revision}: {self._counts()}"
+                doubt = f"; {self.message}" if self.message else ""
+                return f"{self.expocode}  {self.state}, revision {self.revision}: {self._counts()}{doubt}"
 
     def _counts(self) -> str:
-        words = f"{self.rows} rows in, {self.kept} kept, {self.rejected} rejected; {_count(self.findings, 'finding')}"
+        words = f"{_count(self.rows, 'row')} in, {self.kept} kept, {self.rejected} rejected; {_count(self.findings, 'finding')}"
         if not self.samples:
             return f"{words}; no bottle samples"
         if not self.resolved:

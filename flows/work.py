@@ -19,12 +19,12 @@ from pipeline.process import process_cruise, refuse_two_editions, shared_rows
 from pipeline.reading import read_delivery
 
 if TYPE_CHECKING:
-    from collections.abc import Iterable, Sequence
+    from collections.abc import Iterable, Mapping, Sequence
 
     import pyarrow as pa
 
     from flows.plan import InboxFile, Job
-    from pipeline.archive import Store
+    from pipeline.archive import CruiseContents, Store
     from pipeline.mixing import Catalogue
     from pipeline.reading import Delivery
     from pipeline.settings import Settings
@@ -85,6 +85,7 @@ def _make(job: Job, config: RunConfig, refusals: list[Refusal]) -> CruiseRecord:
     deliveries = [*delivered, *_read_archived(job, config, store, delivered)]
     deliveries.sort(key=lambda delivery: (delivery.kind, delivery.name))
     processed = process_cruise(job.expocode, deliveries, config.settings, config.catalogue)
+    _keep_choices(config, store)
     before = read_cruise(store, job.expocode)
     revision = publish(store, _provenance(job.expocode, deliveries, config), processed.tables)
     known = before.provenance is not None or revision > 1
@@ -102,7 +103,27 @@ def _make(job: Job, config: RunConfig, refusals: list[Refusal]) -> CruiseRecord:
         tagged=tagged_samples(samples),
         resolved=config.catalogue is not None,
         refusals=tuple(refusals),
+        message=_losses(before, processed.tables),
     )
+
+
+def _losses(before: CruiseContents, tables: Mapping[str, pa.Table]) -> str:
+    """Return what a reissue has less of than the revision before; a file may have been cut short."""
+    if before.provenance is None:
+        return ""
+    number = before.provenance.revision
+    return "; ".join(
+        f"doubt: revision {number} had {before.rows[name]} {words}, this one has {tables[name].num_rows}"
+        for name, words in (("samples", "samples"), ("casts", "CTD levels"))
+        if before.rows.get(name, 0) > tables[name].num_rows
+    )
+
+
+def _keep_choices(config: RunConfig, store: Store) -> None:
+    """Keep the texts of settings and catalogue beside the delivered bytes, under the hashes that tables name."""
+    vault.keep(store, config.settings.text)
+    if config.catalogue is not None:
+        vault.keep(store, config.catalogue.text)
 
 
 def tagged_samples(samples: pa.Table) -> int:

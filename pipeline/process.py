@@ -26,6 +26,7 @@ from pipeline.tables import (
     findings_table,
     rejects_table,
     with_columns,
+    with_metadata,
 )
 from pipeline.usable import Rows
 from pipeline.working import working_columns
@@ -104,7 +105,7 @@ def _described(
     table = with_columns(table, working_columns(Rows(table, settings.use)))
     table = with_columns(table, seawater.columns(table, Rows(table, settings.use).usable))
     table = with_columns(table, tracers.columns(Rows(table, settings.use).usable, settings.tracers))
-    return table, checked.findings
+    return with_metadata(table, tracers.forms(settings.tracers)), checked.findings
 
 
 def shared_rows(one: Delivery, other: Delivery) -> int:

@@ -112,10 +112,14 @@ class Settings(_Section):
     mixing: MixingSettings = MixingSettings()
 
     @property
+    def text(self) -> bytes:
+        """The effective values as JSON, the same bytes for the same values."""
+        return json.dumps(self.model_dump(mode="json"), sort_keys=True, separators=(",", ":")).encode()
+
+    @property
     def sha256(self) -> str:
-        """Hash of the effective values, in hexadecimal."""
-        text = json.dumps(self.model_dump(mode="json"), sort_keys=True, separators=(",", ":"))
-        return hashlib.sha256(text.encode()).hexdigest()
+        """Hash of ``text``, in hexadecimal."""
+        return hashlib.sha256(self.text).hexdigest()
 
 
 def read_settings(path: Path | None = None, environment: Mapping[str, str] | None = None) -> Settings:

@@ -37,6 +37,7 @@ MIXING = (
 )  # fmt: skip
 MIXTURES = (
     *KEY, "line", "mixing_set", "source", "share", "share_uncertainty", "share_p16", "share_p50", "share_p84",
+    "tag", "reduced_chi_square",
 )  # fmt: skip
 FINDINGS = (
     "expocode", "file", "line", "station", "cast", "sample", "variable", "check", "severity", "count",
@@ -115,6 +116,17 @@ def with_columns(table: pa.Table, columns: Mapping[str, Any]) -> pa.Table:
         listed[name] = registry_field(name)
         named[name] = as_arrow(values, listed[name].type)
     return pa.table(list(named.values()), schema=pa.schema([listed[name] for name in named]))
+
+
+def with_metadata(table: pa.Table, metadata: Mapping[str, Mapping[str, str]]) -> pa.Table:
+    """Return ``table`` with entries added to the metadata of some of its columns."""
+    fields = [
+        field.with_metadata({**(field.metadata or {}), **metadata[field.name]})
+        if field.name in metadata
+        else field
+        for field in table.schema
+    ]
+    return table.cast(pa.schema(fields))
 
 
 def as_arrow(values: Any, kind: pa.DataType) -> pa.Array | pa.ChunkedArray:

@@ -23,7 +23,7 @@ from pipeline.archive.currency import Currency, Reason, judge
 from pipeline.archive.lock import locked
 from pipeline.archive.provenance import DeliveredFile, Provenance, fingerprint
 from pipeline.archive.publishing import clean_staging, publish
-from pipeline.archive.storage import Disk, Store, open_archive
+from pipeline.archive.storage import Disk, Store, is_archive, open_archive
 
 __all__ = [
     "Contents",
@@ -36,6 +36,7 @@ __all__ = [
     "Store",
     "clean_staging",
     "fingerprint",
+    "is_archive",
     "judge",
     "locked",
     "open_archive",

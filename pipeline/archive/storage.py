@@ -146,6 +146,11 @@ class Disk:
                 directory = directory.parent
 
 
+def is_archive(place: Path) -> bool:
+    """Return whether a directory is an archive."""
+    return all((place / name).is_dir() for name in layout.TABLE_NAMES)
+
+
 def open_archive(place: Path | str, *, create: bool = False) -> Disk:
     """Return the archive in the directory ``place``.
 

@@ -16,7 +16,7 @@ from pipeline.mixing.solver import solve
 from pipeline.mixing.status import MixingStatus
 from pipeline.mixing.tags import tags
 from pipeline.mixing.weights import mixing_problem
-from pipeline.tables import MIXTURES, as_arrow, registry_field
+from pipeline.tables import MIXTURES, as_arrow, registry_field, with_columns
 from pipeline.usable import usable
 
 if TYPE_CHECKING:
@@ -84,7 +84,8 @@ def resolve(samples: pa.Table, catalogue: Catalogue, settings: Settings) -> Reso
         settings.mixing,
     )
     columns["mixing_status"] = np.array([MixingStatus(code).label for code in status], dtype=object)
-    return Resolution(columns, _mixtures(samples, answers))
+    told = with_columns(samples, {name: columns[name] for name in ("tag", "reduced_chi_square")})
+    return Resolution(columns, _mixtures(told, answers))
 
 
 def _attempt(samples: pa.Table, catalogue: Catalogue, chosen: SourceSet, settings: Settings) -> Attempt:

@@ -152,7 +152,11 @@ class Catalogue(CatalogueFile):
         return {source.code: source for source in self.source}
 
     @property
+    def text(self) -> bytes:
+        """The content as JSON, the same bytes for the same content."""
+        return json.dumps(self.model_dump(mode="json"), sort_keys=True, separators=(",", ":")).encode()
+
+    @property
     def sha256(self) -> str:
-        """Hash of the content, in hexadecimal."""
-        text = json.dumps(self.model_dump(mode="json"), sort_keys=True, separators=(",", ":"))
-        return hashlib.sha256(text.encode()).hexdigest()
+        """Hash of ``text``, in hexadecimal."""
+        return hashlib.sha256(self.text).hexdigest()

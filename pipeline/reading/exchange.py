@@ -189,8 +189,9 @@ class _Rows:
         return [
             Finding(
                 check, Severity.FAULT,
-                f"{self.sheet.text.name}, line {self.lines[same[0]]}: {REGISTRY[column].exchange[0]} is '{text[:30]}';"
-                f" expected {wanted}; it counts as missing.",
+                f"{self.sheet.text.name}, line {self.lines[same[0]]}: {REGISTRY[column].exchange[0]} is '{text[:30]}'"
+                f"{f' (and in {len(same) - 1} more rows)' if len(same) > 1 else ''}; expected {wanted}; it counts as"
+                " missing.",
                 variable=column, value=text[:30], limit=wanted, file=self.sheet.text.name,
                 line=int(self.lines[same[0]]), station=station, cast=cast, count=len(same),
             )

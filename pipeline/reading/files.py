@@ -20,6 +20,12 @@ if TYPE_CHECKING:
     from pipeline.settings import ReadingSettings
 
 ZIP_MAGICS = (b"PK\x03\x04", b"PK\x05\x06")  # the second is an empty zip's
+# All that the library raises on zips that are cut, spoiled, packed in an odd way or not zips at all.
+ZIP_ERRORS = (
+    zipfile.BadZipFile, zlib.error, RuntimeError, NotImplementedError, EOFError, OSError, ValueError,
+)  # fmt: skip
+_LOCKED = 0x1  # bit of a member's flags: it needs a password
+_SPREADSHEET = "[Content_Types].xml"
 # What operating systems put into zips by themselves; nobody delivers it.
 _LITTER = re.compile(r"(^|/)(__MACOSX/|\.DS_Store$|\._|Thumbs\.db$)")
 _GIGABYTE = 1e9
@@ -57,7 +63,7 @@ def _read_zip(name: str, data: bytes, sha256: str, limits: ReadingSettings) -> D
     """Read a zip of CTD casts; a member that cannot be used is refused alone."""
     try:
         archive = zipfile.ZipFile(io.BytesIO(data))
-    except (zipfile.BadZipFile, ValueError, OSError) as error:
+    except ZIP_ERRORS as error:
         raise DeliveryProblem(
             "broken-zip", f"{name}: the zip cannot be opened ({error}); ask for it to be sent again."
         ) from error
@@ -85,6 +91,12 @@ def _read_zip(name: str, data: bytes, sha256: str, limits: ReadingSettings) -> D
             else:
                 read.append(cast)
     if not read:
+        if any(member.filename == _SPREADSHEET for member in members):
+            raise DeliveryProblem(
+                "spreadsheet",
+                f"{name}: found a spreadsheet or another office document; expected an exchange bottle or CTD file;"
+                " ask for the cruise in the exchange format.",
+            )
         raise _no_cast(name, refused)
     rejects = [reject for cast in read for reject in cast.rejects]
     rejects += [
@@ -116,10 +128,15 @@ def _read_member(
             f"{name}: the member '{member.filename[:80]}' has a path in its name; expected plain file names; it was"
             " not read; pack the casts without folders and deliver the zip again.",
         )
+    if member.flag_bits & _LOCKED:
+        raise DeliveryProblem(
+            "locked-member",
+            f"{shown}: the member needs a password; it was not read; pack it again without one.",
+        )
     try:
         with archive.open(member) as stream:
             data = stream.read(member.file_size + 1)
-    except (zipfile.BadZipFile, zlib.error, RuntimeError, NotImplementedError, EOFError, OSError) as error:
+    except ZIP_ERRORS as error:
         raise DeliveryProblem(
             "broken-member",
             f"{shown}: the member cannot be unpacked ({error}); pack it again and deliver the zip.",

@@ -4,13 +4,12 @@ from __future__ import annotations
 
 import io
 import zipfile
-import zlib
 from typing import TYPE_CHECKING
 
 from pipeline.problems import DeliveryProblem
 from pipeline.reading.cells import column_texts
 from pipeline.reading.columns import plan_columns
-from pipeline.reading.files import ZIP_MAGICS
+from pipeline.reading.files import ZIP_ERRORS, ZIP_MAGICS
 from pipeline.reading.identity import usable_expocode
 from pipeline.reading.sheet import find_sheet
 from pipeline.reading.text import delivered_text
@@ -49,16 +48,15 @@ def _cruises_of_sheet(sheet: Sheet) -> set[str]:
 def _cruises_of_zip(data: bytes, limits: ReadingSettings) -> tuple[str, ...]:
     codes: set[str] = set()
     try:
-        with zipfile.ZipFile(io.BytesIO(data)) as archive:
-            for member in archive.infolist():
+        archive = zipfile.ZipFile(io.BytesIO(data))
+    except ZIP_ERRORS:
+        return ()
+    with archive:
+        for member in archive.infolist():
+            try:
                 with archive.open(member) as stream:
                     head = stream.read(_HEAD_BYTES)
-                try:
-                    codes |= _cruises_of_sheet(
-                        find_sheet(delivered_text(member.filename, head), limits.columns)
-                    )
-                except DeliveryProblem:
-                    continue
-    except (zipfile.BadZipFile, zlib.error, RuntimeError, NotImplementedError, EOFError, OSError, ValueError):
-        return tuple(sorted(codes))
+                codes |= _cruises_of_sheet(find_sheet(delivered_text(member.filename, head), limits.columns))
+            except (DeliveryProblem, *ZIP_ERRORS):
+                continue  # the next member may be whole
     return tuple(sorted(codes))

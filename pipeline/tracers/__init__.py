@@ -67,6 +67,20 @@ def columns(usable: Callable[[str], FloatArray], settings: TracerSettings) -> di
     }
 
 
+def forms(settings: TracerSettings) -> dict[str, dict[str, str]]:
+    """Return, by tracer, which of several published forms the settings chose: metadata of its column."""
+    solubility = {"form": f"fit {settings.oxygen_solubility}"}
+    preformed = {"form": f"ratios {settings.stoichiometry}, fit {settings.oxygen_solubility}"}
+    return {
+        "oxygen_solubility": solubility,
+        "aou": solubility,
+        "oxygen_saturation": solubility,
+        "preformed_phosphate": preformed,
+        "preformed_nitrate": preformed,
+        "n_star": {"form": settings.n_star},
+    }
+
+
 def _concentration(values: FloatArray) -> FloatArray:
     """Return ``values`` (umol/kg), NaN where they can be no concentration."""
     return np.where(np.abs(values) < _WATER_UMOL_KG, values, np.nan)

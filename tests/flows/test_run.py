@@ -2,16 +2,20 @@
 
 from __future__ import annotations
 
+import hashlib
 import json
 import os
+import signal
 import subprocess
 import sys
+from contextlib import suppress
 from typing import TYPE_CHECKING
 
 import pyarrow.parquet as pq
 import pytest
 
 from flows.plan import Job, pack
+from flows.stopping import stoppable
 from tests.flows.conftest import FIXTURES, ROOT, call, hashes
 from tests.invented import EXPOCODE, bottle_file, cast_file, zipped
 
@@ -52,7 +56,8 @@ def test_a_bad_file_takes_no_other_down(inbox: Path, tmp_path: Path) -> None:
     assert outcome.err == ""
     summary = json.loads((tmp_path / "summary.json").read_text(encoding="utf-8"))
     assert [refusal["reason"] for refusal in summary["refused"]] == ["empty-file", "spoiled-expocode"]
-    assert len(list((archive / "raw").rglob("*"))) - len(list((archive / "raw").iterdir())) == 3
+    kept = {path.name for path in (archive / "raw").glob("*/*")}
+    assert {hashlib.sha256(path.read_bytes()).hexdigest() for path in inbox.glob("[!.]*")} <= kept
 
 
 def test_a_delivery_after_the_inbox_was_emptied_adds_to_the_cruise(inbox: Path, tmp_path: Path) -> None:
@@ -268,6 +273,78 @@ def test_a_file_that_was_only_renamed_changes_nothing(inbox: Path, tmp_path: Pat
     (inbox / "a_hy1.csv").rename(inbox / "b_hy1.csv")
     outcome = call("run", inbox, "--archive", tmp_path / "archive")
     assert outcome.out.splitlines()[-1].startswith("Nothing was new")
+
+
+def test_forgetting_the_sources_keeps_those_the_archive_was_made_with(inbox: Path, tmp_path: Path) -> None:
+    (inbox / "a_hy1.csv").write_bytes(bottle_file())
+    archive = tmp_path / "archive"
+    call("run", inbox, "--archive", archive, "--sources", FIXTURES / "sources.toml")
+    assert call("run", inbox, "--archive", archive).out.splitlines()[-1].startswith("Nothing was new")
+    (inbox / "b_hy1.csv").write_bytes(bottle_file({"EXPOCODE": "ZZV220210301"}))
+    outcome = call("run", inbox, "--archive", archive)
+    (line,) = [line for line in outcome.out.splitlines() if line.startswith("ZZV220210301  new")]
+    assert line.endswith("; 0 of 1 samples tagged")
+
+
+def test_what_a_table_was_made_with_can_be_read_from_the_archive(inbox: Path, tmp_path: Path) -> None:
+    (inbox / "a_hy1.csv").write_bytes(bottle_file())
+    (tmp_path / "settings.toml").write_text('[tracers]\nn_star = "gruber_sarmiento_1997"\n', encoding="utf-8")
+    archive = tmp_path / "archive"
+    call("run", inbox, "--archive", archive, "--settings", tmp_path / "settings.toml")
+    schema = pq.read_schema(archive / f"samples/{EXPOCODE}.parquet")
+    assert schema.field("n_star").metadata[b"form"] == b"gruber_sarmiento_1997"
+    sha256 = json.loads(schema.metadata[b"seawhence"])["settings_sha256"]
+    kept = json.loads((archive / f"raw/{sha256[:2]}/{sha256}").read_text(encoding="utf-8"))
+    assert kept["tracers"]["n_star"] == "gruber_sarmiento_1997"
+
+
+def test_a_reissue_that_lost_rows_says_so(inbox: Path, tmp_path: Path) -> None:
+    (inbox / "a_hy1.csv").write_bytes(bottle_file({}, {}, {}))
+    call("run", inbox, "--archive", tmp_path / "archive")
+    (inbox / "a_hy1.csv").write_bytes(bottle_file({}))
+    outcome = call("run", inbox, "--archive", tmp_path / "archive")
+    assert "no sample is tagged; doubt: revision 1 had 3 samples, this one has 1" in outcome.out
+
+
+def test_an_unchanged_cruise_keeps_its_tags_in_the_summary(inbox: Path, tmp_path: Path) -> None:
+    (inbox / "a_hy1.csv").write_bytes((FIXTURES / "inbox/ZZV519960914_hy1.csv").read_bytes())
+    said = []
+    for _ in range(2):
+        call(
+            "run", inbox, "--archive", tmp_path / "archive", "--sources", FIXTURES / "sources.toml",
+            "--summary", tmp_path / "summary.json",
+        )  # fmt: skip
+        said.append(json.loads((tmp_path / "summary.json").read_text(encoding="utf-8"))["cruises"][0])
+    assert said[0]["tagged"] > 0
+    assert [(one["tagged"], one["resolved"]) for one in said] == [(said[0]["tagged"], True)] * 2
+
+
+def test_file_names_that_are_no_text_are_shown_as_text(inbox: Path, tmp_path: Path) -> None:
+    (inbox / os.fsdecode(b"bad\xff\nname_hy1.csv")).write_bytes(bottle_file())
+    outcome = call("run", inbox, "--archive", tmp_path / "archive")
+    assert outcome.status == 0
+    assert samples(tmp_path / "archive")[0]["file"] == r"bad\xff\x0aname_hy1.csv"
+    checked = call("check", inbox / os.fsdecode(b"bad\xff\nname_hy1.csv"))
+    assert checked.out.startswith(r"bad\xff\x0aname_hy1.csv: bottle file of")
+
+
+def test_another_archive_in_the_inbox_is_no_delivery(inbox: Path, tmp_path: Path) -> None:
+    (inbox / "a_hy1.csv").write_bytes(bottle_file())
+    call("run", inbox, "--archive", inbox / "other")
+    outcome = call("run", inbox, "--archive", tmp_path / "archive")
+    assert outcome.status == 0
+    assert "refused" not in outcome.out
+
+
+def test_an_interrupt_that_is_swallowed_stops_the_run_at_the_next_cruise() -> None:
+    before = signal.getsignal(signal.SIGINT)
+    with stoppable() as stop_if_asked:
+        stop_if_asked()
+        with suppress(KeyboardInterrupt):  # as a library may do
+            signal.raise_signal(signal.SIGINT)
+        with pytest.raises(KeyboardInterrupt):
+            stop_if_asked()
+    assert signal.getsignal(signal.SIGINT) is before
 
 
 def test_jobs_are_packed_by_bytes_in_their_order() -> None:

@@ -5,7 +5,7 @@ import zipfile
 import pytest
 
 from pipeline.problems import DeliveryProblem
-from pipeline.reading import read_delivery
+from pipeline.reading import read_delivery, survey_cruises
 from pipeline.reading.files import ZIP_MAGICS
 from pipeline.settings import ReadingSettings
 from tests.invented import EXPOCODE, bottle_file, cast_file, checks, one, read, zipped
@@ -124,6 +124,19 @@ def test_a_member_with_a_wrong_checksum_is_refused() -> None:
     delivery = read(bytes(data), "casts_ct1.zip")
     assert [reject.reason for reject in delivery.rejects] == ["broken-member"]
     assert delivery.table.num_rows == 2
+
+
+def test_a_survey_goes_on_behind_a_broken_member() -> None:
+    other = cast_file(header={"EXPOCODE": "ZZV220210301"})
+    data = bytearray(zipped({"a_ct1.csv": cast_file(), "b_ct1.csv": other}))
+    data[60] ^= 0xFF
+    assert survey_cruises("casts_ct1.zip", bytes(data), ReadingSettings()) == ("ZZV220210301",)
+
+
+def test_a_spreadsheet_is_called_one() -> None:
+    data = zipped({"[Content_Types].xml": b"<Types/>", "xl/workbook.xml": b"<workbook/>"})
+    with pytest.raises(DeliveryProblem, match="found a spreadsheet or another office document"):
+        read(data, "cruise.xlsx")
 
 
 def test_an_empty_zip_holds_no_cast() -> None:
