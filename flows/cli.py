@@ -86,7 +86,7 @@ def parser() -> argparse.ArgumentParser:
         "--sources",
         type=Path,
         metavar="FILE.toml",
-        help="source waters; without it those the archive was made with, if any",
+        help="source waters; without it those of the archive, if any",
     )
     run.add_argument("--settings", type=Path, metavar="FILE.toml", help="settings; the defaults without it")
     run.add_argument("--summary", type=Path, metavar="FILE.json", help="write the summary there as JSON too")

@@ -106,9 +106,8 @@ def _as_text(look: Look | Refusal) -> list[str]:
     for severity, group in _grouped(look.findings):
         lines += [f"  {severity:<8}  {finding.message}" for finding in group[:_MOST_TOLD]]
         if left := sum(finding.count for finding in group[_MOST_TOLD:]):
-            lines.append(
-                f"  {severity:<8}  ... and {left} more of {group[0].check} in {group[0].variable} (--format json tells all)"
-            )
+            what = f"{group[0].check} in {group[0].variable}"
+            lines.append(f"  {severity:<8}  ... and {left} more of {what} (--format json tells all)")
     if not delivery.rejects and not look.findings:
         lines.append("  nothing doubtful was found")
     return lines

@@ -61,18 +61,18 @@ class CruiseRecord:
         """Return the cruise's one line of the summary."""
         match self.state:
             case State.UNCHANGED:
-                return (
-                    f"{self.expocode}  unchanged, revision {self.revision}: {_count(self.rows, 'row')} in, {self.kept} kept,"
-                    f" {self.rejected} rejected"
-                )
+                return f"{self.expocode}  unchanged, revision {self.revision}: {self._rows()}"
             case State.REFUSED | State.FAILED:
                 return f"{self.expocode}  {self.state}: {self.message}"
             case _:
                 doubt = f"; {self.message}" if self.message else ""
                 return f"{self.expocode}  {self.state}, revision {self.revision}: {self._counts()}{doubt}"
 
+    def _rows(self) -> str:
+        return f"{_count(self.rows, 'row')} in, {self.kept} kept, {self.rejected} rejected"
+
     def _counts(self) -> str:
-        words = f"{_count(self.rows, 'row')} in, {self.kept} kept, {self.rejected} rejected; {_count(self.findings, 'finding')}"
+        words = f"{self._rows()}; {_count(self.findings, 'finding')}"
         if not self.samples:
             return f"{words}; no bottle samples"
         if not self.resolved:

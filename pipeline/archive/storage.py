@@ -148,7 +148,7 @@ class Disk:
 
 def is_archive(place: Path) -> bool:
     """Return whether a directory is an archive."""
-    return all((place / name).is_dir() for name in layout.TABLE_NAMES)
+    return all((place / name).is_dir() for name in TABLE_NAMES)
 
 
 def open_archive(place: Path | str, *, create: bool = False) -> Disk:
