@@ -57,12 +57,10 @@ class Block(NamedTuple):
 
 
 class Waiting(NamedTuple):
-    """Samples that wait for a support: a block per support."""
+    """Samples that wait for a support, per support."""
 
-    deviation: Floats  # (n_support, n_used, n_room)
-    row: Ints  # (n_support, n_room)
-    scale: Floats  # (n_support, n_room)
-    tried: Ints  # (n_support, n_room)
+    row: Ints  # (n_support, n_wait)
+    tried: Ints  # (n_support, n_wait)
     here: Ints  # (n_support,) how many wait
     enough: Ints  # (n_support,) supports for which enough wait,
     n_enough: Ints  # (1,) and how many these are
@@ -77,3 +75,5 @@ class Room(NamedTuple):
     misfit: Floats  # (n_room,)
     settled: Ints  # (n_room,) places of samples for which the support is clearly optimal,
     other: Ints  # (n_room,) and of all others
+    deviation: Floats  # (n_used,) of one sample, and
+    entry: Floats  # (n_unknown,) what an operator makes of it

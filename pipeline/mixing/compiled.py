@@ -12,12 +12,25 @@ if TYPE_CHECKING:
 
 def compiled(function: Callable[..., Any]) -> Any:
     """Compile for one thread; the machine code is kept on disk where there is a place that can be written."""
-    try:
-        return njit(cache=True, nogil=True, error_model="numpy")(function)
-    except RuntimeError:
-        return njit(nogil=True, error_model="numpy")(function)
+    return _compile(function)
+
+
+def compiled_step(function: Callable[..., Any]) -> Any:
+    """Compile a step of a kernel, which makes no arrays, so that it counts no references to those it is given.
+
+    Each count is an atomic operation; a step on a few hundred samples would spend a tenth of its time so.
+    Numba refuses to compile a step that makes an array.
+    """
+    return _compile(function, _nrt=False)
 
 
 def inlined(function: Callable[..., Any]) -> Any:
     """Compile into every function that calls this one, which saves what handing arrays on costs."""
     return njit(inline="always", error_model="numpy")(function)
+
+
+def _compile(function: Callable[..., Any], **options: Any) -> Any:
+    try:
+        return njit(cache=True, nogil=True, error_model="numpy", **options)(function)
+    except RuntimeError:
+        return njit(nogil=True, error_model="numpy", **options)(function)

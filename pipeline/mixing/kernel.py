@@ -16,6 +16,7 @@ import numpy as np
 
 from pipeline.mixing.blocks import Block, Room, Waiting
 from pipeline.mixing.compiled import compiled as _compiled
+from pipeline.mixing.compiled import compiled_step as _step
 from pipeline.mixing.status import MixingStatus
 
 if TYPE_CHECKING:
@@ -37,15 +38,14 @@ _FAILED = 1e-6  # no support is optimal to this: never seen, but a sample would 
 
 _BLOCK = 512  # samples; what a block needs stays in the fast memory of the processor
 _ENOUGH = 256  # samples that wait for the same support from which they are taken together
-_FEW = 32  # the same where there are very many supports
-_WAITING = 1 << 17  # samples there is room for among those that wait
+_FEW, _WAITING = 32, 1 << 19  # room for those that wait: of one support at least, of all at most
 _SKEW = 8  # added to rows of a block: rows a power of two apart would evict one another
 _QUICK = 12  # whole exchanges tried from the first guess before looking carefully
 _PATIENCE = 3  # whole exchanges allowed without progress before pivoting one at a time
 _PIVOTS_PER_UNKNOWN = 8  # then all supports are compared
 
 
-@_compiled
+@_step
 def _evaluate(operators: Operators, support: int, deviation: Floats, value: Floats) -> None:
     """Evaluate the operator of ``support`` for one sample, (n_used,), into ``value``, (n_unknown,)."""
     for i in range(value.size):
@@ -55,7 +55,7 @@ def _evaluate(operators: Operators, support: int, deviation: Floats, value: Floa
             value[i] += operators.matrix[k, j] * deviation[j]
 
 
-@_compiled
+@_step
 def _judge(bit: Ints, negative: float, value: Floats) -> tuple[int, float]:
     """Return the bits of the constrained entries below ``negative``, and the lowest constrained entry."""
     violated = 0
@@ -68,7 +68,7 @@ def _judge(bit: Ints, negative: float, value: Floats) -> tuple[int, float]:
     return violated, lowest
 
 
-@_compiled
+@_step
 def _walk(system: System, operators: Operators, deviation: Floats, rounding: float, value: Floats) -> int:
     """Pivot from everything until no constrained entry is negative; -1 where that leads nowhere.
 
@@ -99,7 +99,7 @@ def _walk(system: System, operators: Operators, deviation: Floats, rounding: flo
     return -1
 
 
-@_compiled
+@_step
 def _compare_all(system: System, operators: Operators, deviation: Floats, value: Floats) -> int:
     """Return the usable support whose lowest constrained entry is highest, the first of equals; -1 for none."""
     best = -1
@@ -114,7 +114,7 @@ def _compare_all(system: System, operators: Operators, deviation: Floats, value:
     return best
 
 
-@_compiled
+@_step
 def _find_carefully(
     system: System, operators: Operators, deviation: Floats, rounding: float, value: Floats
 ) -> int:
@@ -144,7 +144,7 @@ def _find_carefully(
     return support
 
 
-@_compiled
+@_step
 def _add(total: Floats, i: int, factors: Floats, k: int, rows: Floats, n_row: int, n: int) -> None:
     """Add ``factors[k] @ rows`` to the first ``n`` of ``total[i]``, one row after another."""
     alone = n_row % 3
@@ -159,33 +159,42 @@ def _add(total: Floats, i: int, factors: Floats, k: int, rows: Floats, n_row: in
             total[i, t] = total[i, t] + one * rows[j, t] + two * rows[j + 1, t] + three * rows[j + 2, t]
 
 
-@_compiled
-def _answer(system: System, operators: Operators, support: int, block: Block, n: int, room: Room) -> None:
-    """Do what ``_evaluate`` and ``_judge`` do, with the same bits, for the first ``n`` of a block.
-
-    Then turn the entries into unknowns: zero outside the support, never negative, the sum one.
-    """
-    # Names, because numba counts references at every look into a tuple.
-    bit, design, uncertainty, n_summed = system.bit, system.design, system.uncertainty, system.n_summed
-    matrix, constant, deviation = operators.matrix, operators.constant, block.deviation
-    value, lowest, violated, misfit = room.value, room.lowest, room.violated, room.misfit
-    n_unknown, n_used = bit.size, uncertainty.size
-    spare = n_unknown  # a row of values to work in
+@_step
+def _judge_block(
+    system: System, operators: Operators, support: int, block: Block, n: int, room: Room
+) -> None:
+    """Do what ``_evaluate`` and ``_judge`` do, with the same bits, for the first ``n`` of a block."""
+    bit, matrix, constant, deviation = system.bit, operators.matrix, operators.constant, block.deviation
+    value, lowest, violated = room.value, room.lowest, room.violated
     for t in range(n):
         lowest[t] = np.inf
         violated[t] = 0
-        misfit[t] = 0.0
-    for i in range(n_unknown):
-        own, k = bit[i], support * n_unknown + i
+    for i in range(bit.size):
+        own, k = bit[i], support * bit.size + i
         start = constant[k]
         for t in range(n):
             value[i, t] = start
-        _add(value, i, matrix, k, deviation, n_used, n)
+        _add(value, i, matrix, k, deviation, deviation.shape[0], n)
         if own:
             for t in range(n):
                 lowest[t] = min(lowest[t], value[i, t])
                 violated[t] |= own if value[i, t] < 0.0 else 0
-            inside = own & support != 0
+
+
+@_step
+def _answer_block(
+    system: System, operators: Operators, support: int, block: Block, n: int, room: Room, results: Results
+) -> None:
+    """Turn entries of the operator into unknowns: zero outside the support, never negative, the sum one.
+
+    Then sum their squared misfits in standard uncertainties, and write the answers.
+    """
+    bit, design, uncertainty, n_summed = system.bit, system.design, system.uncertainty, system.n_summed
+    deviation, value, misfit = block.deviation, room.value, room.misfit
+    spare = bit.size  # a row to work in
+    for i in range(bit.size):
+        if bit[i]:
+            inside = bit[i] & support != 0
             for t in range(n):
                 value[i, t] = value[i, t] if inside and value[i, t] > 0.0 else 0.0
     if n_summed:
@@ -197,38 +206,50 @@ def _answer(system: System, operators: Operators, support: int, block: Block, n:
         for i in range(n_summed):
             for t in range(n):
                 value[i, t] /= value[spare, t]
-    for j in range(n_used):
+    for t in range(n):
+        misfit[t] = 0.0
+    for j in range(uncertainty.size):
         precision = 1.0 / uncertainty[j]
         for t in range(n):
             value[spare, t] = -deviation[j, t]
-        _add(value, spare, design, j, value, n_unknown, n)
+        _add(value, spare, design, j, value, bit.size, n)
         for t in range(n):
             misfit[t] += (value[spare, t] * precision) ** 2
+    lowest, rows = room.lowest, block.row
+    unknowns, chi_square, optimality, choice, status = results
+    per_freedom, own_choice = operators.per_freedom[support], operators.first_choice + support
+    for t in range(n):
+        row = rows[t]
+        for i in range(unknowns.shape[1]):
+            unknowns[row, i] = value[i, t]
+        chi_square[row] = misfit[t] * per_freedom
+        optimality[row] = lowest[t]
+        choice[row] = own_choice
+        status[row] = _SOLVED
 
 
-@_compiled
+@_step
 def _settle_alone(
     system: System, operators: Operators, block: Block, t: int, single: Block, room: Room, results: Results
 ) -> None:
     """Answer one sample of a block from that sample alone."""
     row, scale = block.row[t], block.scale[t]
-    deviation, value = np.empty(system.columns.size), np.empty(system.bit.size)
+    if scale == np.inf:
+        results.status[row], results.choice[row] = _ABSURD, operators.first_choice - 1
+        return
+    single.row[0] = row
+    deviation, value = room.deviation, room.entry
     for j in range(deviation.size):
         deviation[j] = single.deviation[j, 0] = block.deviation[j, t]
     support = _find_carefully(system, operators, deviation, _ROUNDING * scale, value)
     if support < 0 or _judge(system.bit, 0.0, value)[1] < -_FAILED * scale:
         results.status[row], results.choice[row] = _NOT_OPTIMAL, operators.first_choice - 1
         return
-    _answer(system, operators, support, single, 1, room)
-    for i in range(value.size):
-        results.unknowns[row, i] = room.value[i, 0]
-    results.chi_square[row] = room.misfit[0] * operators.per_freedom[support]
-    results.optimality[row] = room.lowest[0]
-    results.choice[row] = operators.first_choice + support
-    results.status[row] = _SOLVED
+    _judge_block(system, operators, support, single, 1, room)
+    _answer_block(system, operators, support, single, 1, room, results)
 
 
-@_compiled
+@_step
 def _settle(
     system: System, operators: Operators, support: int, block: Block, n: int, waiting: Waiting,
     room: Room, single: Block, alone: Room, results: Results,
@@ -242,10 +263,10 @@ def _settle(
         for t in range(n):
             _settle_alone(system, operators, block, t, single, alone, results)
         return
-    _answer(system, operators, support, block, n, room)
-    value, lowest, violated, misfit = room.value, room.lowest, room.violated, room.misfit
+    _judge_block(system, operators, support, block, n, room)
+    value, lowest, violated = room.value, room.lowest, room.violated
     settled, other = room.settled, room.other
-    deviation, rows, scale, tried = block.deviation, block.row, block.scale, block.tried
+    deviation, rows, scale, tried = block
     n_settled = n_other = 0
     for t in range(n):
         clear = lowest[t] >= _MARGIN * scale[t]
@@ -254,101 +275,83 @@ def _settle(
         other[n_other] = t
         n_other += not clear
 
-    unknowns, chi_square, optimality = results.unknowns, results.chi_square, results.optimality
-    choice, status = results.choice, results.status
-    per_freedom, own_choice = operators.per_freedom[support], operators.first_choice + support
-    for index in range(n_settled):
-        t = settled[index]
-        row = rows[t]
-        for i in range(unknowns.shape[1]):
-            unknowns[row, i] = value[i, t]
-        chi_square[row] = misfit[t] * per_freedom
-        optimality[row] = lowest[t]
-        choice[row] = own_choice
-        status[row] = _SOLVED
-
-    next_deviation, next_row, next_scale = waiting.deviation, waiting.row, waiting.scale
-    next_tried, here = waiting.tried, waiting.here
-    n_room = next_row.shape[1]
+    next_row, next_tried, here, enough, n_enough = waiting
+    n_wait = next_row.shape[1]
     for index in range(n_other):
         t = other[index]
         target = support ^ violated[t]
         place = here[target]
-        if target == support or tried[t] == _QUICK or place == n_room:
+        if target == support or tried[t] == _QUICK or place == n_wait or scale[t] == np.inf:
             _settle_alone(system, operators, block, t, single, alone, results)
             continue
-        for j in range(deviation.shape[0]):
-            next_deviation[target, j, place] = deviation[j, t]
         next_row[target, place] = rows[t]
-        next_scale[target, place] = scale[t]
         next_tried[target, place] = tried[t] + 1
         here[target] = place + 1
-        if 2 * (place + 1) == n_room - n_room % 2:
-            waiting.enough[waiting.n_enough[0]] = target
-            waiting.n_enough[0] += 1
+        if 2 * (place + 1) == n_wait:
+            enough[n_enough[0]] = target
+            n_enough[0] += 1
+    if n_settled < n:  # the settled move up
+        for index in range(n_settled):
+            rows[index], lowest[index] = rows[settled[index]], lowest[settled[index]]
+        for j in range(deviation.shape[0]):
+            for index in range(n_settled):
+                deviation[j, index] = deviation[j, settled[index]]
+        for i in range(value.shape[0] - 1):
+            for index in range(n_settled):
+                value[i, index] = value[i, settled[index]]
+    _answer_block(system, operators, support, block, n_settled, room, results)
 
 
-@_compiled
-def _settle_waiting(
-    system: System, operators: Operators, support: int, waiting: Waiting, room: Room, single: Block,
-    alone: Room, results: Results,
-) -> None:  # fmt: skip
-    """Settle those that wait for ``support``; no support follows itself, so they make room for no other."""
-    n = waiting.here[support]
-    waiting.here[support] = 0
-    block = Block(
-        waiting.deviation[support], waiting.row[support], waiting.scale[support], waiting.tried[support]
-    )
-    _settle(system, operators, support, block, n, waiting, room, single, alone, results)
-
-
-@_compiled
+@_step
 def _load(
-    observed: Floats, rows: Ints, position: int, system: System, no_choice: int, block: Block,
-    largest: Floats, results: Results,
-) -> tuple[int, int]:  # fmt: skip
-    """Take the next samples that have all used properties into a block; return how many, and where to go on.
+    observed: Floats, rows: Ints, position: int, n_taken: int, system: System, block: Block, largest: Floats
+) -> int:
+    """Take those of the next samples that have all used properties into a block; return how many.
 
-    ``largest`` is written: the largest weighted deviation. Absurd samples are told so and left out.
+    ``largest`` is room for the largest weighted deviations. An absurd sample has an infinite scale.
     """
-    columns, reference, weight, reach, limit = (
-        system.columns, system.reference, system.weight, system.reach, system.limit
-    )  # fmt: skip
-    deviation, row, scale, tried = block.deviation, block.row, block.scale, block.tried
-    n_row = rows.size or observed.shape[0]
-    n = 0
-    while n < largest.size and position < n_row:
-        own = rows[position] if rows.size else position
-        position += 1
-        row[n] = own
-        there = True
-        for j in range(columns.size):
-            step = observed[own, columns[j]] - reference[j]
-            deviation[j, n] = step
-            there &= step == step  # noqa: PLR0124 - NaN is not
-        n += there
+    columns, reference, weight = system.columns, system.reference, system.weight
+    reach, limit = system.reach, system.limit
+    deviation, row, scale, tried = block
+    n = n_taken
+    for t in range(n):
+        row[t] = rows[position + t] if rows.size else position + t
+        tried[t] = 0
+    for j in range(columns.size):
+        column, middle = np.uint64(columns[j]), reference[j]
+        for t in range(n):
+            deviation[j, t] = observed[np.uint64(row[t]), column] - middle
+        for t in range(n):
+            tried[t] |= np.isnan(deviation[j, t])
+    if tried[:n].any():
+        n = 0
+        for t in range(n_taken):
+            for j in range(columns.size):
+                deviation[j, n] = deviation[j, t]
+            row[n] = row[t]
+            n += not tried[t]
     largest[:n] = 0.0
     for j in range(columns.size):
         for t in range(n):
-            size = abs(deviation[j, t] * weight[j])
-            largest[t] = max(largest[t], size)
-    n_sound = 0
+            largest[t] = max(largest[t], abs(deviation[j, t] * weight[j]))
     for t in range(n):
-        scale[t] = 1.0 + reach * largest[t]
+        scale[t] = 1.0 + reach * largest[t] if largest[t] <= limit else np.inf
         tried[t] = 0
-        n_sound += largest[t] <= limit
-    if n_sound < n:
-        n_sound = 0
-        for t in range(n):
-            if largest[t] > limit:
-                results.status[row[t]], results.choice[row[t]] = _ABSURD, no_choice
-                continue
-            for j in range(columns.size):
-                deviation[j, n_sound] = deviation[j, t]
-            row[n_sound] = row[t]
-            scale[n_sound] = scale[t]
-            n_sound += 1
-    return n_sound, position
+    return n
+
+
+@_step
+def _settle_waiting(
+    observed: Floats, system: System, operators: Operators, support: int, block: Block, waiting: Waiting,
+    room: Room, single: Block, alone: Room, results: Results,
+) -> None:  # fmt: skip
+    """Settle those that wait for ``support``."""
+    n = waiting.here[support]
+    waiting.here[support] = 0
+    _load(observed, waiting.row[support], 0, n, system, block, room.lowest)
+    for t in range(n):
+        block.tried[t] = waiting.tried[support, t]
+    _settle(system, operators, support, block, n, waiting, room, single, alone, results)
 
 
 @_compiled
@@ -360,40 +363,37 @@ def solve_rows(observed: Floats, rows: Ints, system: System, operators: Operator
     n_used, n_unknown, n_support = system.columns.size, system.bit.size, operators.usable.size
     n_row = rows.size or observed.shape[0]
     n_block = min(_BLOCK, n_row)
-    n_wait = max(_FEW, min(2 * _ENOUGH, _WAITING // n_support, 2 * n_row)) + _SKEW
-    n_room = max(n_block + _SKEW, n_wait)
+    n_wait = max(_FEW, min(2 * _ENOUGH, _WAITING // n_support))
+    n_room = max(n_block, n_wait) + _SKEW
     block = Block(
         np.empty((n_used, n_room)), np.empty(n_room, np.int64), np.empty(n_room), np.empty(n_room, np.int64)
     )
     single = Block(np.empty((n_used, 1)), np.empty(1, np.int64), np.empty(1), np.empty(1, np.int64))
     waiting = Waiting(
-        np.empty((n_support, n_used, n_wait)), np.empty((n_support, n_wait), np.int64),
-        np.empty((n_support, n_wait)), np.empty((n_support, n_wait), np.int64),
+        np.empty((n_support, n_wait), np.int64), np.empty((n_support, n_wait), np.int64),
         np.zeros(n_support, np.int64), np.empty(n_support, np.int64), np.zeros(1, np.int64),
     )  # fmt: skip
     room = Room(
         np.empty((n_unknown + 1, n_room)), np.empty(n_room), np.empty(n_room, np.int64), np.empty(n_room),
-        np.empty(n_room, np.int64), np.empty(n_room, np.int64),
+        np.empty(n_room, np.int64), np.empty(n_room, np.int64), np.empty(n_used), np.empty(n_unknown),
     )  # fmt: skip
     alone = Room(
         np.empty((n_unknown + 1, 1)), np.empty(1), np.empty(1, np.int64), np.empty(1), np.empty(1, np.int64),
-        np.empty(1, np.int64),
+        np.empty(1, np.int64), np.empty(n_used), np.empty(n_unknown),
     )  # fmt: skip
-    largest = np.empty(n_block)
-    position = 0
-    while position < n_row:
-        n, position = _load(
-            observed, rows, position, system, operators.first_choice - 1, block, largest, results
-        )
+    for position in range(0, n_row, n_block):
+        n = _load(observed, rows, position, min(n_block, n_row - position), system, block, room.lowest)
         _settle(system, operators, n_support - 1, block, n, waiting, room, single, alone, results)
         while waiting.n_enough[0]:
             waiting.n_enough[0] -= 1
             support = waiting.enough[waiting.n_enough[0]]
-            _settle_waiting(system, operators, support, waiting, room, single, alone, results)
-    left = True
-    while left:
-        left = False
+            _settle_waiting(
+                observed, system, operators, support, block, waiting, room, single, alone, results
+            )
+    while waiting.here.any():
         for support in range(n_support):
             if waiting.here[support]:
-                left = True
-                _settle_waiting(system, operators, support, waiting, room, single, alone, results)
+                waiting.n_enough[0] = 0  # all are visited
+                _settle_waiting(
+                    observed, system, operators, support, block, waiting, room, single, alone, results
+                )

@@ -15,8 +15,6 @@ if TYPE_CHECKING:
 
     FloatArray = NDArray[np.float64]
 
-_ROWS = 4096  # samples whose residuals are made together, in the fast memory of the processor
-
 
 @dataclass(frozen=True, eq=False)
 class Choices:
@@ -54,18 +52,13 @@ class MixingSolution:
 
         Made when first asked for, from the ``observed`` that was solved: do not change it before.
         """
+        from pipeline.mixing.residuals import write_residuals  # noqa: PLC0415 - numba takes long to import
+
         residuals = np.empty(self.observed.shape)
-        design, n_source = self.problem.design, self.shares.shape[1]
-        for start in range(0, len(residuals), _ROWS):
-            own = slice(start, start + _ROWS)
-            total = np.zeros_like(residuals[own])
-            for i, one in enumerate(design):
-                amount = self.shares[own, i] if i < n_source else self.processes[own, i - n_source]
-                total += amount[:, None] * one
-            unsolved = np.isnan(total)  # their values may be infinite
-            with np.errstate(invalid="ignore"):
-                residuals[own] = total - (self.observed[own] - self.problem.reference)
-            residuals[own][unsolved] = np.nan
+        problem = self.problem
+        write_residuals(
+            self.observed, problem.reference, problem.design, self.shares, self.processes, residuals
+        )
         return residuals
 
     @property

@@ -137,14 +137,17 @@ def _passes(
     which means all samples that are complete. Sorting by what is missing is for those that are left then.
     """
     whole = np.arange(values.shape[1])
-    left = np.arange(len(values))
     enough = len(values) and whole.size + 1 >= problem.n_unknown
-    if enough and weighted_system(problem, whole).condition_number <= condition_limit:
+    solved_first = bool(enough and weighted_system(problem, whole).condition_number <= condition_limit)
+    if solved_first:
         yield whole, np.empty(0, dtype=np.int64)
-        left = np.flatnonzero(status == MixingStatus.INCOMPLETE)
-    for columns, rows in groups(values[left]):
+        if not (status == MixingStatus.INCOMPLETE).any():
+            return
+    for columns, rows in groups(values):
+        if solved_first and columns.size == whole.size:
+            continue
         if columns.size and columns.size + 1 >= problem.n_unknown:
-            yield columns, left[rows]
+            yield columns, rows
 
 
 def _solve_rows(
