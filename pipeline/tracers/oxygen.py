@@ -9,8 +9,8 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from pipeline.problems import SettingsProblem
 from pipeline.seawater import Domain
+from pipeline.tracers.choices import chosen
 from pipeline.units import OXYGEN_UMOL_PER_ML, T68_PER_T90
 
 if TYPE_CHECKING:
@@ -138,13 +138,7 @@ def solubility_fit(name: str) -> SolubilityFit:
         With the names that exist.
 
     """
-    try:
-        return SOLUBILITY_FITS[SolubilityName(name)]
-    except ValueError:
-        known = ", ".join(SolubilityName)
-        raise SettingsProblem(
-            f"tracers.oxygen_solubility: found '{name}', expected one of {known}; correct the settings."
-        ) from None
+    return chosen(SOLUBILITY_FITS, "tracers.oxygen_solubility", name)
 
 
 def oxygen_saturation(solubility: FloatArray, oxygen: FloatArray) -> FloatArray:

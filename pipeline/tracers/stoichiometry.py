@@ -12,7 +12,7 @@ from enum import StrEnum
 from types import MappingProxyType
 from typing import TYPE_CHECKING
 
-from pipeline.problems import SettingsProblem
+from pipeline.tracers.choices import chosen
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
@@ -118,10 +118,4 @@ def stoichiometry(name: str) -> Stoichiometry:
         With the names that exist.
 
     """
-    try:
-        return STOICHIOMETRIES[StoichiometryName(name)]
-    except ValueError:
-        known = ", ".join(StoichiometryName)
-        raise SettingsProblem(
-            f"tracers.stoichiometry: found '{name}', expected one of {known}; correct the settings."
-        ) from None
+    return chosen(STOICHIOMETRIES, "tracers.stoichiometry", name)
