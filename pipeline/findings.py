@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from enum import StrEnum
+from pathlib import PurePosixPath
 
 
 class Severity(StrEnum):
@@ -46,3 +47,14 @@ class Reject:
     reason: str
     message: str
     expocode: str | None = None
+
+
+# What the rows of a file that is not made of lines are called.
+_ROW_WORDS = {".nc": "record", ".nc4": "record", ".cdf": "record", ".xlsx": "row", ".parquet": "row"}
+
+
+def at(file: str, line: int | None) -> str:
+    """Return in words where a row of a delivered file is."""
+    if line is None:
+        return file
+    return f"{file}, {_ROW_WORDS.get(PurePosixPath(file).suffix.lower(), 'line')} {line}"

@@ -1,37 +1,34 @@
-"""One delivered file, text or zip, to a Delivery."""
+"""One delivered file, whatever its format, to a Delivery: which reader reads it, told by its first bytes."""
 
 from __future__ import annotations
 
 import hashlib
 import io
-import re
 import zipfile
-import zlib
 from typing import TYPE_CHECKING
 
-from pipeline.findings import Finding, Reject, Severity
 from pipeline.problems import DeliveryProblem
-from pipeline.reading.delivery import Delivery, DeliveryKind, stack
-from pipeline.reading.exchange import ReadSheet, read_sheet
+from pipeline.reading.delivery import Delivery
+from pipeline.reading.described import read_described
+from pipeline.reading.exchange import read_sheet
+from pipeline.reading.netcdf import NETCDF_MAGICS, read_netcdf
 from pipeline.reading.sheet import find_sheet, kind_of
 from pipeline.reading.text import delivered_text
+from pipeline.reading.zips import ZIP_ERRORS, ZIP_MAGICS, read_zip
 
 if TYPE_CHECKING:
+    from pipeline.reading.assembly import ReadRows
+    from pipeline.reading.delivery import DeliveryKind
+    from pipeline.reading.description import Description
     from pipeline.settings import ReadingSettings
 
-ZIP_MAGICS = (b"PK\x03\x04", b"PK\x05\x06")  # the second is an empty zip's
-# All that the library raises on zips that are cut, spoiled, packed in an odd way or not zips at all.
-ZIP_ERRORS = (
-    zipfile.BadZipFile, zlib.error, RuntimeError, NotImplementedError, EOFError, OSError, ValueError,
-)  # fmt: skip
-_LOCKED = 0x1  # bit of a member's flags: it needs a password
-_SPREADSHEET = "[Content_Types].xml"
-# What operating systems put into zips by themselves; nobody delivers it.
-_LITTER = re.compile(r"(^|/)(__MACOSX/|\.DS_Store$|\._|Thumbs\.db$)")
-_GIGABYTE = 1e9
+PARQUET_MAGIC = b"PAR1"
+_WORKBOOK = "xl/workbook.xml"  # the member that every spreadsheet has
 
 
-def read_delivery(name: str, data: bytes, limits: ReadingSettings) -> Delivery:
+def read_delivery(
+    name: str, data: bytes, limits: ReadingSettings, description: Description | None = None
+) -> Delivery:
     """Read one delivered file.
 
     Parameters
@@ -42,6 +39,8 @@ def read_delivery(name: str, data: bytes, limits: ReadingSettings) -> Delivery:
         Its bytes.
     limits
         How much of a broken file is borne.
+    description
+        What a ``cruise.toml`` beside the file says of it, if any.
 
     Raises
     ------
@@ -50,125 +49,46 @@ def read_delivery(name: str, data: bytes, limits: ReadingSettings) -> Delivery:
 
     """
     sha256 = hashlib.sha256(data).hexdigest()
-    if data.startswith(ZIP_MAGICS):
-        return _read_zip(name, data, sha256, limits)
-    sheet = find_sheet(delivered_text(name, data), limits.columns)
-    read = read_sheet(sheet, limits)
-    return Delivery(
-        name, sha256, len(data), sheet.kind, read.table, read.rows, read.rejects, read.findings
-    )  # fmt: skip
+    if data.startswith(ZIP_MAGICS) and not is_workbook(data):
+        return read_zip(name, data, sha256, limits)
+    kind, read = _read(name, data, limits, description)
+    return Delivery(name, sha256, len(data), kind, read.table, read.rows, read.rejects, read.findings)
 
 
-def _read_zip(name: str, data: bytes, sha256: str, limits: ReadingSettings) -> Delivery:
-    """Read a zip of CTD casts; a member that cannot be used is refused alone."""
+def _read(
+    name: str, data: bytes, limits: ReadingSettings, description: Description | None
+) -> tuple[DeliveryKind, ReadRows]:
+    """Read a file that is one table."""
+    if data.startswith(NETCDF_MAGICS):
+        return read_netcdf(name, data, limits, description)
+    if data.startswith((PARQUET_MAGIC, *ZIP_MAGICS)):
+        return _read_table(name, data, limits, description)
+    text = delivered_text(name, data)
+    if kind_of(text) is None and description is not None:
+        return _read_table(name, data, limits, description)
+    sheet = find_sheet(text, limits.columns)
+    return sheet.kind, read_sheet(sheet, limits)
+
+
+def _read_table(
+    name: str, data: bytes, limits: ReadingSettings, description: Description | None
+) -> tuple[DeliveryKind, ReadRows]:
+    """Read a table whose columns mean nothing without a description."""
+    if description is None:
+        what = "Parquet table" if data.startswith(PARQUET_MAGIC) else "spreadsheet"
+        raise DeliveryProblem(
+            "not-described",
+            f"{name}: found a {what} and no cruise.toml beside it that says what its columns are; nothing is"
+            f" guessed; run `seawhence mapping {name}` for a draft of one, or ask for the cruise in the exchange"
+            " format.",
+        )
+    return read_described(name, data, limits, description)
+
+
+def is_workbook(data: bytes) -> bool:
+    """Return whether a zip is a spreadsheet's."""
     try:
-        archive = zipfile.ZipFile(io.BytesIO(data))
-    except ZIP_ERRORS as error:
-        raise DeliveryProblem(
-            "broken-zip", f"{name}: the zip cannot be opened ({error}); ask for it to be sent again."
-        ) from error
-    with archive:
-        members = [m for m in archive.infolist() if not m.is_dir() and not _LITTER.search(m.filename)]
-        unpacked = sum(member.file_size for member in members)
-        if unpacked > limits.unpacked_bytes:
-            raise DeliveryProblem(
-                "too-large",
-                f"{name}: the zip unpacks to {unpacked / _GIGABYTE:.1f} GB; expected at most"
-                f" {limits.unpacked_bytes / _GIGABYTE:.1f} GB; deliver the casts in several zips, or raise"
-                " reading.unpacked_bytes in the settings.",
-            )
-        read: list[ReadSheet] = []
-        refused: list[tuple[str, DeliveryProblem]] = []
-        findings: list[Finding] = []
-        for member in sorted(members, key=lambda m: m.filename):
-            try:
-                cast = _read_member(name, archive, member, limits)
-            except DeliveryProblem as problem:
-                refused.append((member.filename, problem))
-                continue
-            if cast is None:
-                findings.append(_not_a_cast(name, member.filename))
-            else:
-                read.append(cast)
-    if not read:
-        if any(member.filename == _SPREADSHEET for member in members):
-            raise DeliveryProblem(
-                "spreadsheet",
-                f"{name}: found a spreadsheet or another office document; expected an exchange bottle or CTD file;"
-                " ask for the cruise in the exchange format.",
-            )
-        raise _no_cast(name, refused)
-    rejects = [reject for cast in read for reject in cast.rejects]
-    rejects += [
-        Reject(name, None, member[: limits.raw_text], problem.reason, str(problem))
-        for member, problem in refused
-    ]
-    return Delivery(
-        name, sha256, len(data), DeliveryKind.CTD,
-        table=stack([cast.table for cast in read]),
-        rows=sum(cast.rows for cast in read) + len(refused),
-        rejects=tuple(rejects),
-        findings=(*findings, *(finding for cast in read for finding in cast.findings)),
-        refused_members=len(refused),
-    )  # fmt: skip
-
-
-def _read_member(
-    name: str, archive: zipfile.ZipFile, member: zipfile.ZipInfo, limits: ReadingSettings
-) -> ReadSheet | None:
-    """Read one member; None where it is no exchange file at all."""
-    shown = f"{name}:{member.filename}"
-    if (
-        ".." in member.filename.split("/")
-        or member.filename.startswith(("/", "\\"))
-        or "\\" in member.filename
-    ):
-        raise DeliveryProblem(
-            "member-path",
-            f"{name}: the member '{member.filename[:80]}' has a path in its name; expected plain file names; it was"
-            " not read; pack the casts without folders and deliver the zip again.",
-        )
-    if member.flag_bits & _LOCKED:
-        raise DeliveryProblem(
-            "locked-member",
-            f"{shown}: the member needs a password; it was not read; pack it again without one.",
-        )
-    try:
-        with archive.open(member) as stream:
-            data = stream.read(member.file_size + 1)
-    except ZIP_ERRORS as error:
-        raise DeliveryProblem(
-            "broken-member",
-            f"{shown}: the member cannot be unpacked ({error}); pack it again and deliver the zip.",
-        ) from error
-    text = delivered_text(shown, data)
-    kind = kind_of(text)
-    if kind is None:
-        return None
-    if kind is DeliveryKind.BOTTLE:
-        raise DeliveryProblem(
-            "bottle-in-zip",
-            f"{shown}: found a bottle file in a zip of CTD casts; it was not read; deliver it beside the zip.",
-        )
-    return read_sheet(find_sheet(text, limits.columns), limits)
-
-
-def _not_a_cast(name: str, member: str) -> Finding:
-    return Finding(
-        "not-a-cast", Severity.NOTE,
-        f"{name}: the member '{member[:80]}' is no CTD file of the exchange format; it was not read.",
-        value=member[:200], file=name,
-    )  # fmt: skip
-
-
-def _no_cast(name: str, refused: list[tuple[str, DeliveryProblem]]) -> DeliveryProblem:
-    if refused:
-        _, first = refused[0]
-        return DeliveryProblem(
-            first.reason,
-            f"{name}: none of the {len(refused)} casts in the zip can be used; the first: {first}",
-        )
-    return DeliveryProblem(
-        "not-a-cruise-file",
-        f"{name}: the zip holds no CTD file; expected files that start with CTD; remove it from the inbox.",
-    )
+        with zipfile.ZipFile(io.BytesIO(data)) as archive:
+            return _WORKBOOK in archive.namelist()
+    except ZIP_ERRORS:
+        return False

@@ -10,6 +10,7 @@ import numpy as np
 import pyarrow as pa
 import pyarrow.compute as pc
 
+from pipeline.findings import at
 from pipeline.problems import DeliveryProblem
 
 if TYPE_CHECKING:
@@ -59,9 +60,9 @@ def usable_expocode(written: str) -> str | None:
     return code if _EXPOCODE.match(code) and not _SPREADSHEET.match(code) else None
 
 
-def refuse_expocode(name: str, written: str, line: int) -> DeliveryProblem:
+def refuse_expocode(name: str, written: str, line: int | None) -> DeliveryProblem:
     """Return the refusal of a file whose expocode cannot be used."""
-    place = f"{name}, line {line}"
+    place = at(name, line)
     code = written.strip().upper()
     if _SPREADSHEET.match(code):
         return DeliveryProblem(

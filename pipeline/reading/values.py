@@ -9,7 +9,7 @@ import numpy as np
 import pyarrow as pa
 import pyarrow.compute as pc
 
-from pipeline.findings import Finding, Severity
+from pipeline.findings import Finding, Severity, at
 from pipeline.reading.columns import Column, Use
 from pipeline.reading.numbers import missing_codes, to_flags, to_floats
 from pipeline.units import DensityAt, density, scaled
@@ -157,7 +157,7 @@ def unreadable_findings(
         findings.append(
             Finding(
                 check, Severity.FAULT,
-                f"{name}, line {lines[row]}: {column.delivered} is '{text[:40]}'; expected {wanted}; it counts as"
+                f"{at(name, int(lines[row]))}: {column.delivered} is '{text[:40]}'; expected {wanted}; it counts as"
                 " missing.",
                 variable=variable, value=text[:200], limit=wanted, file=name, line=int(lines[row]),
                 station=station, cast=cast, sample=sample,
@@ -169,7 +169,7 @@ def unreadable_findings(
         findings.append(
             Finding(
                 check, Severity.FAULT,
-                f"{name}, from line {lines[row]} on: {left} more cells of {column.delivered} hold no {wanted[2:]};"
+                f"{at(name, int(lines[row]))} and below: {left} more cells of {column.delivered} hold no {wanted[2:]};"
                 " they count as missing.",
                 variable=variable, limit=wanted, file=name, line=int(lines[row]), count=left,
             )

@@ -135,7 +135,7 @@ def test_a_survey_goes_on_behind_a_broken_member() -> None:
 
 def test_a_spreadsheet_is_called_one() -> None:
     data = zipped({"[Content_Types].xml": b"<Types/>", "xl/workbook.xml": b"<workbook/>"})
-    with pytest.raises(DeliveryProblem, match="found a spreadsheet or another office document"):
+    with pytest.raises(DeliveryProblem, match="found a spreadsheet and no cruise.toml"):
         read(data, "cruise.xlsx")
 
 

@@ -1,0 +1,326 @@
+"""A file's cells to one table in canonical columns with its rejects and findings, whatever format they came in."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+import pyarrow as pa
+import pyarrow.compute as pc
+
+from pipeline.findings import Finding, Reject, Severity, at
+from pipeline.problems import DeliveryProblem
+from pipeline.reading.columns import Column, Use
+from pipeline.reading.delivery import DeliveryKind
+from pipeline.reading.identity import REASONS, Identity, identify, refuse_expocode, usable_expocode
+from pipeline.reading.instants import Instants, read_instants
+from pipeline.reading.numbers import missing_codes, to_floats
+from pipeline.reading.values import Values, read_values, unreadable_findings
+from pipeline.tables import CASTS_CORE, SAMPLES_CORE, as_arrow, registry_field
+from pipeline.variables import REGISTRY
+
+if TYPE_CHECKING:
+    from collections.abc import Sequence
+
+    from numpy.typing import NDArray
+
+    from pipeline.reading.grid import Grid
+    from pipeline.settings import ReadingSettings
+
+_REQUIRED = {
+    "expocode": "no-expocode",
+    "station": "no-station",
+    "latitude": "no-position",
+    "longitude": "no-position",
+    "pressure": "no-pressure",
+}
+
+
+@dataclass(frozen=True, slots=True)
+class ReadRows:
+    """The rows of one file, all accounted for: ``rows == table.num_rows + len(rejects)``."""
+
+    table: pa.Table
+    rows: int
+    rejects: tuple[Reject, ...]
+    findings: tuple[Finding, ...]
+
+
+def assemble(
+    grid: Grid, columns: Sequence[Column], limits: ReadingSettings, findings: Sequence[Finding] = ()
+) -> ReadRows:
+    """Make the table of a file's rows.
+
+    Parameters
+    ----------
+    grid
+        The file's cells; n_column columns.
+    columns
+        What each is to us, (n_column,). Where none gives an identity quantity, the grid's constants may.
+    limits
+        How much of a broken file is borne.
+    findings
+        What was noticed on the way here; they come first.
+
+    Raises
+    ------
+    DeliveryProblem
+        Where no row of the file can be used, with the reason.
+
+    """
+    _require_columns(grid, columns)
+    cells = grid.cells
+    rows = _Rows(grid, columns)
+    identity = rows.identity()
+    values = read_values(columns, cells, decimal_comma=grid.decimal_comma)
+    pressure = values.numbers["pressure"]
+    unusable = {**identity.unusable, "no-pressure": np.isnan(pressure)}
+    rejects = [*_width_rejects(grid, limits), *_row_rejects(grid, rows, unusable, limits)]
+    keep = ~np.any(list(unusable.values()), axis=0)
+    if not keep.any():
+        raise _nothing_usable(grid, rejects, rows)
+    instants = rows.instants()
+    found = [*findings, *rows.findings(identity, instants, values, keep)]
+    table = _table(grid, rows, identity, instants, values)
+    if not keep.all():
+        table = table.filter(pa.array(keep))
+    return ReadRows(table, len(cells.lines) + len(cells.misfits), tuple(rejects), tuple(found))
+
+
+class _Rows:
+    """The identity side of the rows: columns, or what all rows have in common."""
+
+    def __init__(self, grid: Grid, columns: Sequence[Column]) -> None:
+        self.grid = grid
+        self.n_row = len(grid.cells.lines)
+        self.lines = grid.cells.lines
+        self._given = {
+            column.name: grid.cells.columns[column.position]
+            for column in columns
+            if column.use is Use.IDENTITY
+        }
+
+    def has(self, name: str) -> bool:
+        return name in self._given or name in self.grid.constants
+
+    def text(self, name: str) -> pa.Array:
+        """Return an identity column as text, "" where not given, (n_row,)."""
+        if name in self._given:
+            column = self._given[name]
+            return column if pa.types.is_string(column.type) else column.cast(pa.string())
+        return pa.repeat(pa.scalar(self.grid.constants.get(name, ""), pa.string()), self.n_row)
+
+    def numbers(self, name: str) -> NDArray[np.float64]:
+        """Return an identity column as numbers, NaN where missing or no number, (n_row,)."""
+        column = self._given.get(name, None) if name in self._given else self.text(name)
+        numbers, _ = to_floats(column, decimal_comma=self.grid.decimal_comma)
+        return np.where(missing_codes(numbers, REGISTRY[name], None), np.nan, numbers)
+
+    def identity(self) -> Identity:
+        return identify(
+            self.text("expocode"),
+            self.text("station"),
+            self.numbers("cast") if self.has("cast") else None,
+            self.numbers("latitude"),
+            self.numbers("longitude"),
+        )
+
+    def instants(self) -> Instants:
+        return read_instants(self.text("date"), self.text("time"))
+
+    def sample(self) -> pa.Array:
+        """Return the sample number; the bottle's where no sample number was given."""
+        sample, bottle = _blank_to_null(self.text("sample")), _blank_to_null(self.text("bottle"))
+        return pc.coalesce(sample, bottle)
+
+    def where(self) -> list[tuple[str, int, str | None]]:
+        """Return station, cast and sample of every row."""
+        cast = self.numbers("cast") if self.has("cast") else np.ones(self.n_row)
+        casts = np.nan_to_num(cast, nan=0.0, posinf=0.0, neginf=0.0).astype(int).tolist()
+        return list(zip(self.text("station").to_pylist(), casts, self.sample().to_pylist(), strict=True))
+
+    def findings(
+        self, identity: Identity, instants: Instants, values: Values, keep: NDArray[np.bool_]
+    ) -> list[Finding]:
+        """Tell what of the kept rows could not be read, or was read in a way worth knowing."""
+        name = self.grid.name
+        findings: list[Finding] = []
+        where = self.where() if values.unreadable else []
+        for unreadable in values.unreadable:
+            findings += unreadable_findings(name, unreadable, self.lines, where)
+        for check, column, rows, wanted in (
+            ("impossible-date", "date", instants.impossible_dates, "a date YYYYMMDD that exists"),
+            ("impossible-time", "time", instants.impossible_times, "a time hhmm"),
+        ):
+            findings += self._impossible(check, column, rows[keep[rows]], wanted)
+        if instants.ambiguous:
+            findings.append(
+                Finding(
+                    "ambiguous-date", Severity.DOUBT,
+                    f"{name}: nothing in the file tells whether '{instants.ambiguous}' is written month first or"
+                    " day first; month first was taken; expected YYYYMMDD.",
+                    variable="date", value=instants.ambiguous, limit="YYYYMMDD", file=name,
+                )
+            )  # fmt: skip
+        if identity.shifted_longitudes:
+            findings.append(
+                Finding(
+                    "longitude-range", Severity.NOTE,
+                    f"{name}: {identity.shifted_longitudes} longitudes above 180 were read as degrees east and are"
+                    " kept as -180..180.",
+                    variable="longitude", limit="-180..180", file=name, count=identity.shifted_longitudes,
+                )
+            )  # fmt: skip
+        for variable, count in values.unconverted.items():
+            findings.append(
+                Finding(
+                    "not-converted", Severity.DOUBT,
+                    f"{name}: {count} values of {REGISTRY[variable].exchange[0]} could not be converted to"
+                    f" {REGISTRY[variable].unit}, because the row has no salinity or temperature for its density.",
+                    variable=variable, file=name, count=count,
+                )
+            )  # fmt: skip
+        return findings
+
+    def _impossible(self, check: str, column: str, rows: NDArray[np.int64], wanted: str) -> list[Finding]:
+        """Tell each spelling of an impossible date or time once per cast."""
+        where, texts = (self.where(), self.text(column).to_pylist()) if len(rows) else ([], [])
+        told: dict[tuple[str, int, str], list[int]] = {}
+        for row in rows:
+            station, cast, _ = where[row]
+            told.setdefault((station, cast, texts[row]), []).append(int(row))
+        return [
+            Finding(
+                check, Severity.FAULT,
+                f"{at(self.grid.name, self.lines[same[0]])}: {REGISTRY[column].exchange[0]} is '{text[:30]}'"
+                f"{f' (and in {len(same) - 1} more rows)' if len(same) > 1 else ''}; expected {wanted}; it counts as"
+                " missing.",
+                variable=column, value=text[:30], limit=wanted, file=self.grid.name,
+                line=int(self.lines[same[0]]), station=station, cast=cast, count=len(same),
+            )
+            for (station, cast, text), same in told.items()
+        ]  # fmt: skip
+
+
+def _blank_to_null(column: pa.Array) -> pa.Array:
+    blank = pc.match_substring_regex(column, r"^(-999(\.0*)?)?$")
+    return pc.if_else(blank, pa.scalar(None, pa.string()), column)
+
+
+def _require_columns(grid: Grid, columns: Sequence[Column]) -> None:
+    """Refuse a file that nowhere holds what every row needs."""
+    given = {column.name for column in columns} | set(grid.constants)
+    for name, reason in _REQUIRED.items():
+        if name not in given:
+            raise DeliveryProblem(
+                reason,
+                f"{at(grid.name, grid.names_line)}: there is no {grid.word(name)}; expected it among the"
+                f" {grid.holders}; add it and deliver the file again.",
+                grid.names_line,
+            )
+
+
+def _width_rejects(grid: Grid, limits: ReadingSettings) -> list[Reject]:
+    return [
+        Reject(
+            grid.name, line, grid.raw(line)[: limits.raw_text], "field-count",
+            f"{at(grid.name, line)}: found {found} fields; expected {len(grid.names)}, one for each column name;"
+            " correct the row and deliver the file again.",
+            usable_expocode(grid.constants.get("expocode", "")),
+        )
+        for line, found in grid.cells.misfits
+    ]  # fmt: skip
+
+
+def _row_rejects(
+    grid: Grid, rows: _Rows, unusable: dict[str, NDArray[np.bool_]], limits: ReadingSettings
+) -> list[Reject]:
+    """Return the rows that lack what a row needs, each with its first reason in the order of REASONS."""
+    reason_of: dict[int, str] = {}
+    for reason in REASONS:
+        for row in np.flatnonzero(unusable[reason]).tolist():
+            reason_of.setdefault(row, reason)
+    rejects = []
+    for row, reason in sorted(reason_of.items()):
+        line = int(rows.lines[row])
+        found = _found(rows, reason, row)
+        code = usable_expocode(rows.text("expocode")[row].as_py())
+        rejects.append(
+            Reject(
+                grid.name, line, grid.raw(line)[: limits.raw_text], reason,
+                f"{at(grid.name, line)}: {REASONS[reason].format(value=found)}; correct the row and deliver"
+                " the file again.",
+                code,
+            )
+        )  # fmt: skip
+    return rejects
+
+
+def _found(rows: _Rows, reason: str, row: int) -> str:
+    """Return in words what stands where a needed value should."""
+    names = {
+        "no-expocode": ("expocode",),
+        "no-station": ("station",),
+        "no-cast": ("cast",),
+        "no-position": ("latitude", "longitude"),
+    }.get(reason)
+    if names is None:
+        return "missing"
+    written = ", ".join(rows.text(name)[row].as_py() or "" for name in names)
+    return f"'{written[:60]}'" if written.strip(", ") else "missing"
+
+
+def _nothing_usable(grid: Grid, rejects: Sequence[Reject], rows: _Rows) -> DeliveryProblem:
+    """Return why a file none of whose rows can be used is refused whole."""
+    name = grid.name
+    if not rejects:
+        return DeliveryProblem(
+            "no-rows",
+            f"{at(name, grid.first_line)}: there are no data rows; expected at least one below the column names;"
+            " ask for the file to be sent again.",
+            grid.first_line,
+        )
+    first = min(rejects, key=lambda reject: reject.line or 0)
+    if first.reason == "no-expocode" and rows.n_row:
+        return refuse_expocode(name, rows.text("expocode")[0].as_py(), int(rows.lines[0]))
+    return DeliveryProblem(
+        first.reason,
+        f"{name}: none of its {len(rejects)} rows can be used; the first: {first.message}",
+        first.line,
+    )
+
+
+def _table(grid: Grid, rows: _Rows, identity: Identity, instants: Instants, values: Values) -> pa.Table:
+    """Put the columns together: identity, measured in the order of delivery, what passes through, ledger."""
+    bottle = grid.kind is DeliveryKind.BOTTLE
+    columns: dict[str, Any] = {
+        "expocode": identity.expocode,
+        "section": _blank_to_null(rows.text("section")),
+        "station": identity.station,
+        "cast": identity.cast,
+        "sample": rows.sample() if bottle else None,
+        "bottle": _blank_to_null(rows.text("bottle")) if bottle else None,
+        "bottle_flag": values.flags.get("bottle_flag", np.full(rows.n_row, np.nan)) if bottle else None,
+        "date": instants.dates,
+        "time": instants.times,
+        "latitude": identity.latitude,
+        "longitude": identity.longitude,
+        "bottom_depth": rows.numbers("bottom_depth"),
+        "file": pa.repeat(pa.scalar(grid.name), rows.n_row),
+        "line": rows.lines,
+    }
+    named = {name: columns[name] for name in (SAMPLES_CORE if bottle else CASTS_CORE)}
+    for name, numbers in values.numbers.items():
+        named[name] = numbers
+        beside = f"{name}_flag"
+        if beside in values.flags:
+            named[beside] = values.flags[beside]
+    fields, arrays = [], []
+    for name, column in {**named, **values.extras}.items():
+        field = registry_field(name) if name in REGISTRY else pa.field(name, column.type)
+        if name in values.metadata:
+            field = field.with_metadata({**(field.metadata or {}), **values.metadata[name]})
+        fields.append(field)
+        arrays.append(as_arrow(column, field.type))
+    return pa.table(arrays, schema=pa.schema(fields))

@@ -1,0 +1,139 @@
+"""A zip of CTD casts to a Delivery; a member that cannot be used is refused alone."""
+
+from __future__ import annotations
+
+import io
+import re
+import zipfile
+import zlib
+from typing import TYPE_CHECKING
+
+from pipeline.findings import Finding, Reject, Severity
+from pipeline.problems import DeliveryProblem
+from pipeline.reading.delivery import Delivery, DeliveryKind, stack
+from pipeline.reading.exchange import read_sheet
+from pipeline.reading.sheet import find_sheet, kind_of
+from pipeline.reading.text import delivered_text
+
+if TYPE_CHECKING:
+    from pipeline.reading.assembly import ReadRows
+    from pipeline.settings import ReadingSettings
+
+ZIP_MAGICS = (b"PK\x03\x04", b"PK\x05\x06")  # the second is an empty zip's
+# All that the library raises on zips that are cut, spoiled, packed in an odd way or not zips at all.
+ZIP_ERRORS = (
+    zipfile.BadZipFile, zlib.error, RuntimeError, NotImplementedError, EOFError, OSError, ValueError,
+)  # fmt: skip
+_LOCKED = 0x1  # bit of a member's flags: it needs a password
+# What operating systems put into zips by themselves; nobody delivers it.
+_LITTER = re.compile(r"(^|/)(__MACOSX/|\.DS_Store$|\._|Thumbs\.db$)")
+_GIGABYTE = 1e9
+
+
+def read_zip(name: str, data: bytes, sha256: str, limits: ReadingSettings) -> Delivery:
+    """Read a zip of CTD casts; a member that cannot be used is refused alone."""
+    try:
+        archive = zipfile.ZipFile(io.BytesIO(data))
+    except ZIP_ERRORS as error:
+        raise DeliveryProblem(
+            "broken-zip", f"{name}: the zip cannot be opened ({error}); ask for it to be sent again."
+        ) from error
+    with archive:
+        members = [m for m in archive.infolist() if not m.is_dir() and not _LITTER.search(m.filename)]
+        unpacked = sum(member.file_size for member in members)
+        if unpacked > limits.unpacked_bytes:
+            raise DeliveryProblem(
+                "too-large",
+                f"{name}: the zip unpacks to {unpacked / _GIGABYTE:.1f} GB; expected at most"
+                f" {limits.unpacked_bytes / _GIGABYTE:.1f} GB; deliver the casts in several zips, or raise"
+                " reading.unpacked_bytes in the settings.",
+            )
+        read: list[ReadRows] = []
+        refused: list[tuple[str, DeliveryProblem]] = []
+        findings: list[Finding] = []
+        for member in sorted(members, key=lambda m: m.filename):
+            try:
+                cast = _read_member(name, archive, member, limits)
+            except DeliveryProblem as problem:
+                refused.append((member.filename, problem))
+                continue
+            if cast is None:
+                findings.append(_not_a_cast(name, member.filename))
+            else:
+                read.append(cast)
+    if not read:
+        raise _no_cast(name, refused)
+    rejects = [reject for cast in read for reject in cast.rejects]
+    rejects += [
+        Reject(name, None, member[: limits.raw_text], problem.reason, str(problem))
+        for member, problem in refused
+    ]
+    return Delivery(
+        name, sha256, len(data), DeliveryKind.CTD,
+        table=stack([cast.table for cast in read]),
+        rows=sum(cast.rows for cast in read) + len(refused),
+        rejects=tuple(rejects),
+        findings=(*findings, *(finding for cast in read for finding in cast.findings)),
+        refused_members=len(refused),
+    )  # fmt: skip
+
+
+def _read_member(
+    name: str, archive: zipfile.ZipFile, member: zipfile.ZipInfo, limits: ReadingSettings
+) -> ReadRows | None:
+    """Read one member; None where it is no exchange file at all."""
+    shown = f"{name}:{member.filename}"
+    if (
+        ".." in member.filename.split("/")
+        or member.filename.startswith(("/", "\\"))
+        or "\\" in member.filename
+    ):
+        raise DeliveryProblem(
+            "member-path",
+            f"{name}: the member '{member.filename[:80]}' has a path in its name; expected plain file names; it was"
+            " not read; pack the casts without folders and deliver the zip again.",
+        )
+    if member.flag_bits & _LOCKED:
+        raise DeliveryProblem(
+            "locked-member",
+            f"{shown}: the member needs a password; it was not read; pack it again without one.",
+        )
+    try:
+        with archive.open(member) as stream:
+            data = stream.read(member.file_size + 1)
+    except ZIP_ERRORS as error:
+        raise DeliveryProblem(
+            "broken-member",
+            f"{shown}: the member cannot be unpacked ({error}); pack it again and deliver the zip.",
+        ) from error
+    text = delivered_text(shown, data)
+    kind = kind_of(text)
+    if kind is None:
+        return None
+    if kind is DeliveryKind.BOTTLE:
+        raise DeliveryProblem(
+            "bottle-in-zip",
+            f"{shown}: found a bottle file in a zip of CTD casts; it was not read; deliver it beside the zip.",
+        )
+    return read_sheet(find_sheet(text, limits.columns), limits)
+
+
+def _not_a_cast(name: str, member: str) -> Finding:
+    return Finding(
+        "not-a-cast", Severity.NOTE,
+        f"{name}: the member '{member[:80]}' is no CTD file of the exchange format; it was not read.",
+        value=member[:200], file=name,
+    )  # fmt: skip
+
+
+def _no_cast(name: str, refused: list[tuple[str, DeliveryProblem]]) -> DeliveryProblem:
+    if refused:
+        _, first = refused[0]
+        return DeliveryProblem(
+            first.reason,
+            f"{name}: none of the {len(refused)} casts in the zip can be used; the first: {first}",
+        )
+    return DeliveryProblem(
+        "not-a-cruise-file",
+        f"{name}: the zip holds no CTD file; expected files that start with CTD; remove it from the inbox.",
+    )
