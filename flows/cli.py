@@ -20,8 +20,12 @@ if TYPE_CHECKING:
 COMMANDS = {
     "run": ("running", "run"),
     "check": ("looking", "check"),
+    "mapping": ("mapping", "mapping"),
     "show": ("showing", "show"),
+    "changes": ("changes", "changes"),
     "sources": ("sources", "sources"),
+    "crossovers": ("crossovers", "crossovers"),
+    "speciation": ("speciation", "print_speciation"),
 }
 
 

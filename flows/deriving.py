@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING
 from flows.records import ExitStatus
 from pipeline.archive import fingerprint, open_archive, read_contents, read_table
 from pipeline.mixing.catalogue import parse_catalogue
-from pipeline.mixing.deriving import derive_sources, derived_catalogue
+from pipeline.mixing.deriving import RELATIVE, derive_sources, derived_catalogue
 from pipeline.mixing.faults import entry_faults
 from pipeline.mixing.gathering import columns_used
 from pipeline.mixing.rules import read_rules
@@ -67,6 +67,7 @@ def derive(chosen: argparse.Namespace) -> int:
     print("\n".join(_told(derivation.sources)))
     for trouble in troubles:
         print(f"left out  {trouble}")
+    print(RELATIVE)
     count = len(derivation.cruises)
     print(
         f"{len(derivation.sources)} source{'s' if len(derivation.sources) != 1 else ''} derived from {count} of "

@@ -2,22 +2,27 @@
 
 from __future__ import annotations
 
+import hashlib
 import json
-from dataclasses import asdict, dataclass
+from dataclasses import asdict, dataclass, replace
 from typing import TYPE_CHECKING, Any
 
+from flows.beside import Folder
+from flows.markdown import visible
+from flows.note import note, refused_note
+from flows.pages import as_markdown
 from flows.plan import shown_name
 from flows.records import ExitStatus, Refusal
 from pipeline.checking import check as check_table
 from pipeline.findings import Finding, Severity
 from pipeline.problems import DeliveryProblem
-from pipeline.reading import read_delivery
+from pipeline.reading import CRUISE_FILE, read_delivery
 from pipeline.settings import read_settings
 from pipeline.variables import MEASURED, REGISTRY
 
 if TYPE_CHECKING:
     import argparse
-    from collections.abc import Iterable
+    from collections.abc import Iterable, Sequence
     from pathlib import Path
 
     from pipeline.findings import Reject
@@ -41,36 +46,81 @@ class Look:
         return tuple(reject for reject in self.delivery.rejects if reject.line is None)
 
 
+@dataclass(frozen=True, slots=True)
+class Refused:
+    """A file that cannot be used, and what it is, where it could be read at all."""
+
+    refusal: Refusal
+    size: int | None = None  # bytes
+    sha256: str | None = None
+
+
 def check(chosen: argparse.Namespace) -> int:
     """Look at every file, print what was found, and return the exit status."""
     settings = read_settings(chosen.settings)
-    looks: list[Look | Refusal] = [_look(path, settings) for path in chosen.files]
-    if chosen.format == "json":
-        print(json.dumps({"files": [_as_json(look) for look in looks]}, indent=2, ensure_ascii=False))
-    else:
-        for look in looks:
-            print("\n".join(_as_text(look)))
-    refused = any(isinstance(look, Refusal) or look.refused_members for look in looks)
+    looks = [_look(path, settings) for path in chosen.files]
+    match chosen.format:
+        case "json":
+            print(json.dumps({"files": [_as_json(look) for look in looks]}, indent=2, ensure_ascii=False))
+        case "markdown":
+            print("\n\n---\n\n".join("\n".join(_as_page(look, settings)) for look in looks))
+        case _:
+            for look in looks:
+                print("\n".join(visible(line) for line in _as_text(look)))
+    refused = any(isinstance(look, Refused) or look.refused_members for look in looks)
     return ExitStatus.REFUSED if refused else ExitStatus.GOOD
 
 
-def _look(path: Path, settings: Settings) -> Look | Refusal:
+def _look(path: Path, settings: Settings) -> Look | Refused:
+    name = shown_name(path.name)
     try:
-        delivery = read_delivery(shown_name(path.name), path.read_bytes(), settings.reading)
-    except DeliveryProblem as problem:
-        return Refusal(shown_name(path.name), problem.reason, str(problem))
+        if path.exists() and not path.is_file():  # a pipe would wait for ever
+            return Refused(
+                Refusal(name, "not-a-file", f"{name}: found no regular file; give a delivered file.")
+            )
+        data = path.read_bytes()
     except OSError as error:
-        return Refusal(
-            str(path), "unreadable", f"{path}: the file cannot be read ({error.strerror}); give another file."
-        )
-    return Look(
-        delivery, (*delivery.findings, *check_table(delivery.table, settings, delivery.findings).findings)
-    )
+        shown = shown_name(str(path))
+        message = f"{shown}: the file cannot be read ({error.strerror}); give another file."
+        return Refused(Refusal(shown, "unreadable", message))
+    sha256 = hashlib.sha256(data).hexdigest()
+    beside = Folder(path.parent, CRUISE_FILE).says(path.name)
+    if beside.fault:
+        message = f"{name}: not used, because the {CRUISE_FILE} beside it cannot be: {beside.fault}"
+        return Refused(Refusal(name, "broken-description", message), len(data), sha256)
+    try:
+        delivery = read_delivery(name, data, settings.reading, beside.description)
+    except DeliveryProblem as problem:
+        return Refused(Refusal(name, problem.reason, str(problem)), len(data), sha256)
+    delivery = replace(delivery, described_by=beside.sha256)
+    checked = check_table(delivery.table, settings, delivery.findings)
+    return Look(delivery, in_line_order([*delivery.findings, *checked.findings]))
 
 
-def _as_json(look: Look | Refusal) -> dict[str, Any]:
-    if isinstance(look, Refusal):
-        return {"file": look.file, "used": False, "refused": asdict(look)}
+def in_line_order(findings: Sequence[Finding]) -> tuple[Finding, ...]:
+    """Return findings check by check as they were made, those of one check in the order of files and lines.
+
+    What a check says of a whole file comes before what it says of a line.
+    """
+    order = {check: place for place, check in enumerate(dict.fromkeys(f.check for f in findings))}
+    return tuple(sorted(findings, key=lambda f: (order[f.check], f.file or "", f.line or 0)))
+
+
+def _as_page(look: Look | Refused, settings: Settings) -> list[str]:
+    if isinstance(look, Refused):
+        refusal = look.refusal
+        return as_markdown(refused_note(refusal.file, refusal.message, look.size, look.sha256))
+    return as_markdown(note(look.delivery, look.findings, settings.use))
+
+
+def _as_json(look: Look | Refused) -> dict[str, Any]:
+    if isinstance(look, Refused):
+        return {
+            "file": look.refusal.file,
+            "used": False,
+            "refused": asdict(look.refusal),
+            "sha256": look.sha256,
+        }
     delivery = look.delivery
     return {
         "file": delivery.name,
@@ -88,9 +138,9 @@ def _as_json(look: Look | Refusal) -> dict[str, Any]:
     }
 
 
-def _as_text(look: Look | Refusal) -> list[str]:
-    if isinstance(look, Refusal):
-        return [f"refused: {look.message}"]
+def _as_text(look: Look | Refused) -> list[str]:
+    if isinstance(look, Refused):
+        return [f"refused: {look.refusal.message}"]
     delivery = look.delivery
     kind = "bottle" if delivery.kind == "bottle" else "CTD"
     lines = [
@@ -106,7 +156,7 @@ def _as_text(look: Look | Refusal) -> list[str]:
     for severity, group in _grouped(look.findings):
         lines += [f"  {severity:<8}  {finding.message}" for finding in group[:_MOST_TOLD]]
         if left := sum(finding.count for finding in group[_MOST_TOLD:]):
-            what = f"{group[0].check} in {group[0].variable}"
+            what = f"{group[0].check} in {group[0].variable}" if group[0].variable else group[0].check
             lines.append(f"  {severity:<8}  ... and {left} more of {what} (--format json tells all)")
     if not delivery.rejects and not look.findings:
         lines.append("  nothing doubtful was found")

@@ -25,16 +25,42 @@ made anew."""
 CHECK_EXAMPLE = """\
 example:
   seawhence check deliveries/*.csv
+  seawhence check deliveries/a_hy1.csv --format markdown > note.md
 
-reads and checks the files and writes nothing."""
+reads and checks the files and writes nothing. As Markdown it is a page to send to the group that made the file."""
+
+MAPPING_EXAMPLE = """\
+example:
+  seawhence mapping deliveries/nutrients.xlsx --out deliveries/cruise.toml
+
+drafts the cruise.toml that a table needs, with every doubt as a comment. Read and finish it: a run uses a
+cruise.toml that lies beside its file, and never a guess."""
 
 SHOW_EXAMPLE = """\
 example:
   seawhence show archive
   seawhence show archive ZZV120090214
 
-lists the cruises of an archive, or tells of one cruise what it was made from and what its samples are."""
+lists the cruises of an archive, or tells of one cruise what it was made from, what became of every row, and what
+its samples are. With --verify every delivered file that is kept is hashed again and every table is read."""
 
+
+CHANGES_EXAMPLE = """\
+example:
+  seawhence changes archive ZZV120090214
+  seawhence changes archive ZZV120090214 --from 1 --to 3 --format markdown --out changes.parquet
+
+tells which samples, CTD levels and values differ between two revisions of a cruise, and whether the delivery or
+the processing is another. Of what is computed from the delivered values only counts and the largest difference
+are told."""
+
+CHANGES_STATUSES = """\
+exit status: 0 the revisions were compared, or there is only one; 2 wrong usage, or an archive that cannot be read;
+3 a fault of ours"""
+
+SHOW_STATUSES = """\
+exit status: 0 what was looked at is whole; 1 something is damaged or missing (each is told); 2 wrong usage, or an
+archive that cannot be read; 3 a fault of ours"""
 
 SOURCES_CHECK_EXAMPLE = """\
 example:
@@ -48,6 +74,33 @@ example:
   seawhence sources derive archive --rules rules.toml --out sources.toml
 
 finds each source by its rule in the good values of the archive, and writes how it was found beside it."""
+
+CROSSOVERS_EXAMPLE = """\
+example:
+  seawhence crossovers archive --out crossovers
+
+compares the deep values of every two cruises that come near each other, and writes the offsets, the corrections
+that would make all agree, and a page with both in sentences. The archive is not changed."""
+
+CROSSOVERS_STATUSES = """\
+exit status: 0 the cruises were compared; 1 some could not be read (each is told why); 2 wrong usage; 3 a fault of
+ours"""
+
+SPECIATION_EXAMPLE = """\
+example:
+  seawhence speciation --salinity 35 --temperature 25
+  seawhence speciation --salinity 34.7 --temperature 1.5 --pressure 4000 --out deep.svg
+
+tells how carbon is divided into carbon dioxide, bicarbonate and carbonate over pH, with the constants of the
+settings, and where ocean water lies."""
+
+SPECIATION_STATUSES = """\
+exit status: 0 the table was made; 2 wrong usage; 3 a fault of ours"""
+
+SOURCES_DERIVE_STATUSES = """\
+exit status: 0 every source was found and the catalogue is written; 1 it is written, and cruises were left out (each
+is told why); 2 wrong usage, rules or an archive that cannot be used, or a source that was not found: nothing is
+written; 3 a fault of ours"""
 
 SOURCES_STATUSES = """\
 exit status: 0 every set can be used; 1 a set has a problem; 2 wrong usage, or a catalogue that cannot be read;
@@ -92,18 +145,57 @@ def parser() -> argparse.ArgumentParser:
         epilog=CHECK_EXAMPLE + "\n\n" + STATUSES, formatter_class=_Plain,
     )  # fmt: skip
     check.add_argument("files", type=Path, nargs="+", metavar="FILE", help="delivered file")
-    check.add_argument("--format", choices=("text", "json"), default="text", help="default: text")
+    check.add_argument("--format", choices=("text", "json", "markdown"), default="text", help="default: text")
     check.add_argument("--settings", type=Path, metavar="FILE.toml", help="settings; the defaults without it")
 
+    _add_mapping(commands)
     show = commands.add_parser(
         "show", help="tell what is in an archive",
         description="Tell what is in an archive, or of one cruise: revision, provenance, rows, tags.",
-        epilog=SHOW_EXAMPLE, formatter_class=_Plain,
+        epilog=SHOW_EXAMPLE + "\n\n" + SHOW_STATUSES, formatter_class=_Plain,
     )  # fmt: skip
     show.add_argument("archive", type=Path, metavar="ARCHIVE", help="the archive's directory")
     show.add_argument("cruise", nargs="?", metavar="CRUISE", help="expocode of a cruise")
+    show.add_argument("--format", choices=("text", "json"), default="text", help="default: text")
+    show.add_argument(
+        "--verify", action="store_true", help="hash every kept delivery again and read every table"
+    )
+    _add_changes(commands)
     _add_sources(commands)
+    _add_crossovers(commands)
+    _add_speciation(commands)
     return top
+
+
+def _add_mapping(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> None:
+    """Add the parser of ``seawhence mapping``."""
+    mapping = commands.add_parser(
+        "mapping", help="draft the description that a table needs",
+        description="Draft a cruise.toml, which says what the columns of a file are. The file is not changed.",
+        epilog=MAPPING_EXAMPLE + "\n\n" + STATUSES, formatter_class=_Plain,
+    )  # fmt: skip
+    mapping.add_argument("file", type=Path, metavar="FILE", help="delivered file")
+    mapping.add_argument(
+        "--out", type=Path, metavar="cruise.toml", help="where it is written; printed without it"
+    )
+    mapping.add_argument(
+        "--settings", type=Path, metavar="FILE.toml", help="settings; the defaults without it"
+    )
+
+
+def _add_changes(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> None:
+    """Add the parser of ``seawhence changes``."""
+    changes = commands.add_parser(
+        "changes", help="tell what differs between two revisions of a cruise",
+        description="Tell what differs between two revisions of a cruise, the last two where nothing else is said.",
+        epilog=CHANGES_EXAMPLE + "\n\n" + CHANGES_STATUSES, formatter_class=_Plain,
+    )  # fmt: skip
+    changes.add_argument("archive", type=Path, metavar="ARCHIVE", help="the archive's directory")
+    changes.add_argument("cruise", metavar="CRUISE", help="expocode of a cruise")
+    changes.add_argument("--from", dest="earlier", type=int, metavar="N", help="the earlier revision")
+    changes.add_argument("--to", dest="later", type=int, metavar="M", help="the later one; the last without it")
+    changes.add_argument("--format", choices=("text", "json", "markdown"), default="text", help="default: text")
+    changes.add_argument("--out", type=Path, metavar="FILE.parquet", help="write every change there as a table too")
 
 
 def _add_sources(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> None:
@@ -124,7 +216,7 @@ def _add_sources(commands: argparse._SubParsersAction[argparse.ArgumentParser]) 
         "--properties",
         nargs="+",
         metavar="NAME",
-        help="judge with these alone, as when others were not measured",
+        help="judge with these alone, as when others were not measured; one named twice counts once",
     )
     check.add_argument("--settings", type=Path, metavar="FILE.toml", help="settings; the defaults without it")
     check.add_argument("--format", choices=("text", "json"), default="text", help="default: text")
@@ -132,7 +224,7 @@ def _add_sources(commands: argparse._SubParsersAction[argparse.ArgumentParser]) 
     derive = tasks.add_parser(
         "derive", help="find source waters in an archive by rules",
         description="Find source waters in an archive by rules, and write them as a catalogue.",
-        epilog=SOURCES_DERIVE_EXAMPLE + "\n\n" + STATUSES, formatter_class=_Plain,
+        epilog=SOURCES_DERIVE_EXAMPLE + "\n\n" + SOURCES_DERIVE_STATUSES, formatter_class=_Plain,
     )  # fmt: skip
     derive.add_argument("archive", type=Path, metavar="ARCHIVE", help="the archive's directory")
     derive.add_argument("--rules", type=Path, required=True, metavar="FILE.toml", help="a rule per source")
@@ -140,6 +232,39 @@ def _add_sources(commands: argparse._SubParsersAction[argparse.ArgumentParser]) 
         "--out", type=Path, required=True, metavar="CATALOGUE.toml", help="where the catalogue is written"
     )
     derive.add_argument(
+        "--settings", type=Path, metavar="FILE.toml", help="settings; the defaults without it"
+    )
+
+
+def _add_crossovers(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> None:
+    """Add the parser of ``seawhence crossovers``."""
+    crossovers = commands.add_parser(
+        "crossovers", help="compare the deep values of the cruises of an archive",
+        description="Compare the deep values of the cruises of an archive, and propose corrections.",
+        epilog=CROSSOVERS_EXAMPLE + "\n\n" + CROSSOVERS_STATUSES, formatter_class=_Plain,
+    )  # fmt: skip
+    crossovers.add_argument("archive", type=Path, metavar="ARCHIVE", help="the archive's directory")
+    crossovers.add_argument(
+        "--out", type=Path, required=True, metavar="DIR", help="where the tables and the page are written"
+    )
+    crossovers.add_argument(
+        "--settings", type=Path, metavar="FILE.toml", help="settings; the defaults without it"
+    )
+
+
+def _add_speciation(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> None:
+    """Add the parser of ``seawhence speciation``."""
+    speciation = commands.add_parser(
+        "speciation", help="tell how carbon is divided among its forms over pH",
+        description="Tell how carbon is divided among its forms over pH, as a table and as a figure.",
+        epilog=SPECIATION_EXAMPLE + "\n\n" + SPECIATION_STATUSES, formatter_class=_Plain,
+    )  # fmt: skip
+    speciation.add_argument("--salinity", type=float, required=True, metavar="S", help="practical salinity")
+    speciation.add_argument("--temperature", type=float, required=True, metavar="T", help="degC")
+    speciation.add_argument("--pressure", type=float, default=0.0, metavar="P", help="dbar; 0 without it")
+    speciation.add_argument("--out", type=Path, metavar="FILE", help="write a figure (.svg, .png) or a table (.csv)")
+    speciation.add_argument("--format", choices=("text", "json"), default="text", help="default: text")
+    speciation.add_argument(
         "--settings", type=Path, metavar="FILE.toml", help="settings; the defaults without it"
     )
 

@@ -8,9 +8,10 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from pipeline.archive import DeliveredFile, fingerprint, is_archive, judge
+from flows.beside import NOTHING, Beside, Folder
+from pipeline.archive import DeliveredFile, content_of, fingerprint, is_archive, judge
 from pipeline.problems import UsageProblem
-from pipeline.reading import survey_cruises
+from pipeline.reading import CRUISE_FILE, survey_cruises
 
 if TYPE_CHECKING:
     from collections.abc import Iterable
@@ -28,6 +29,12 @@ class InboxFile:
     path: str
     size: int
     sha256: str
+    beside: Beside = NOTHING
+
+    @property
+    def content(self) -> str:
+        """What decides the rows that are read from it."""
+        return content_of(self.sha256, self.beside.sha256)
 
 
 @dataclass(frozen=True, slots=True)
@@ -57,7 +64,8 @@ class Plan:
 def list_inbox(inbox: Path, archive: Path) -> list[InboxFile]:
     """Return the files of an inbox and its folders, sorted by name; hidden ones are not deliveries.
 
-    Archives inside the inbox are not looked into.
+    A ``cruise.toml`` is none either: it is read for what it says of the files beside it. Archives inside
+    the inbox are not looked into.
 
     Raises
     ------
@@ -84,11 +92,19 @@ def list_inbox(inbox: Path, archive: Path) -> list[InboxFile]:
             for f in folders
             if not f.startswith(".") and (here / f).resolve() != kept_out and not is_archive(here / f)
         ]
-        paths += [here / name for name in names if not name.startswith(".")]
-    return [_inbox_file(path, inbox) for path in sorted(paths)]
+        paths += [here / name for name in names if not name.startswith(".") and name != CRUISE_FILE]
+    said = {
+        folder: Folder(folder, _shown_path(folder / CRUISE_FILE, inbox))
+        for folder in {p.parent for p in paths}
+    }
+    return [_inbox_file(path, inbox, said[path.parent].says(path.name)) for path in sorted(paths)]
 
 
-def _inbox_file(path: Path, inbox: Path) -> InboxFile:
+def _shown_path(path: Path, inbox: Path) -> str:
+    return shown_name(path.relative_to(inbox).as_posix())
+
+
+def _inbox_file(path: Path, inbox: Path, beside: Beside) -> InboxFile:
     """Return a file with its hash; "" for one that cannot be read, of which it is told when its turn comes."""
     sha256, size = "", 0
     try:
@@ -98,7 +114,7 @@ def _inbox_file(path: Path, inbox: Path) -> InboxFile:
             size = path.stat().st_size
     except OSError:
         pass
-    return InboxFile(shown_name(path.relative_to(inbox).as_posix()), str(path), size, sha256)
+    return InboxFile(_shown_path(path, inbox), str(path), size, sha256, beside)
 
 
 def shown_name(name: str) -> str:
@@ -118,13 +134,13 @@ def plan_run(
     cruises: dict[str, list[InboxFile]] = {}
     unknown = []
     for file in distinct:
-        codes = contents.delivered_with(file.sha256) or _survey(file, settings)
+        codes = contents.delivered_with(file.content) or _survey(file, settings)
         for code in codes:
             cruises.setdefault(code, []).append(file)
         if not codes:
             unknown.append(file)
     wanted = {
-        code: _wanted_fingerprint(delivered, contents.cruises.get(code), settings, catalogue)
+        code: _wanted_fingerprint(delivered, contents.cruises.get(code), settings.for_cruise(code), catalogue)
         for code, delivered in cruises.items()
     }
     currency = judge(wanted, contents)
@@ -148,13 +164,13 @@ def _without_doubles(files: Iterable[InboxFile]) -> tuple[list[InboxFile], list[
 
 
 def _survey(file: InboxFile, settings: Settings) -> tuple[str, ...]:
-    if not file.sha256:
+    if not file.sha256 or file.beside.fault:
         return ()
     try:
         data = Path(file.path).read_bytes()
     except OSError:
         return ()
-    return survey_cruises(file.name, data, settings.reading)
+    return survey_cruises(file.name, data, settings.reading, file.beside.description)
 
 
 def _wanted_fingerprint(
@@ -168,10 +184,10 @@ def _wanted_fingerprint(
     Where the inbox holds nothing that they were not made from, that is the fingerprint of all that they
     were made from, under the names it came with.
     """
-    files = [(file.name, file.sha256) for file in delivered]
+    files = [(file.name, file.content) for file in delivered]
     if archived is not None and archived.provenance is not None:
-        made_from = [(file.name, file.sha256) for file in archived.provenance.deliveries]
-        if {sha256 for _, sha256 in files} <= {sha256 for _, sha256 in made_from}:
+        made_from = [(file.name, file.content) for file in archived.provenance.deliveries]
+        if {content for _, content in files} <= {content for _, content in made_from}:
             files = made_from
     return fingerprint(files, settings.sha256, catalogue.sha256 if catalogue else None)
 

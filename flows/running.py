@@ -20,6 +20,7 @@ if TYPE_CHECKING:
 
     from flows.plan import Job
     from flows.records import RunSummary
+    from pipeline.settings import Settings
 
 
 def run(chosen: argparse.Namespace) -> int:
@@ -35,9 +36,21 @@ def run(chosen: argparse.Namespace) -> int:
         summary = run_directly(chosen.inbox, config, progress=_with_bar)
     for line in summary.lines():
         print(line)
+    for sentence in _corrections_not_made(config.settings, summary):
+        print(f"seawhence: {sentence}", file=sys.stderr)
     if chosen.summary:
         _write_summary(chosen.summary, summary)
     return summary.exit_status
+
+
+def _corrections_not_made(settings: Settings, summary: RunSummary) -> Iterator[str]:
+    """Yield a sentence for every cruise that the settings correct and this run had no file of."""
+    here = {cruise.expocode for cruise in summary.cruises}
+    for expocode in sorted(set(settings.corrections) - here):
+        yield (
+            f"the settings correct cruise {expocode}, of which the inbox holds no file; its tables, if there are any, "
+            "stay as they are; correct the expocode, or put the cruise's files into the inbox to make it anew."
+        )
 
 
 def _run_as_flow(inbox: Path, config: RunConfig) -> RunSummary:

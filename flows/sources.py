@@ -10,7 +10,7 @@ from typing import TYPE_CHECKING, Any
 from flows.records import ExitStatus
 from flows.showing import aligned
 from pipeline.mixing import read_catalogue
-from pipeline.mixing.advice import problems
+from pipeline.mixing.advice import problems, warnings
 from pipeline.mixing.determinacy import determinacy
 from pipeline.problems import UsageProblem
 from pipeline.settings import read_settings
@@ -32,6 +32,7 @@ class Judged:
     name: str
     told: Determinacy | None  # None where none of its properties is left
     problems: tuple[str, ...]
+    warnings: tuple[str, ...]  # what may be meant so
 
 
 def sources(chosen: argparse.Namespace) -> int:
@@ -72,9 +73,11 @@ def _judge(
     left = tuple(name for name in chosen.properties if not properties or name in properties)
     if not left:
         sentence = f"none of its properties is left; it needs some of {', '.join(chosen.properties)}."
-        return Judged(chosen.name, None, (sentence,))
+        return Judged(chosen.name, None, (sentence,), ())
     told = determinacy(catalogue, chosen.model_copy(update={"properties": left}), settings)
-    return Judged(chosen.name, told, tuple(problems(told, catalogue, settings)))
+    return Judged(
+        chosen.name, told, tuple(problems(told, catalogue, settings)), tuple(warnings(told, catalogue))
+    )
 
 
 def _as_text(catalogue: Catalogue, judged: Sequence[Judged], settings: Settings) -> list[str]:
@@ -90,7 +93,8 @@ def _as_text(catalogue: Catalogue, judged: Sequence[Judged], settings: Settings)
         else:
             lines += _set_as_text(one.told, settings)
         lines += [f"  problem  {sentence}" for sentence in one.problems]
-        if not one.problems:
+        lines += [f"  warning  {sentence}" for sentence in one.warnings]
+        if one.told and len(one.told.chosen.sources) > 1 and not one.problems:
             lines.append("  good  every source can be told from the others")
     return lines
 
@@ -104,7 +108,8 @@ def _set_as_text(told: Determinacy, settings: Settings) -> list[str]:
         f"{told.chosen.name}: {unknowns} from {properties} and the sum of the shares",
         (
             f"  condition number {_number(told.condition_number)} (limit {settings.mixing.condition_limit:g}),"
-            f" rank {propagation.rank} of {told.n_free}"
+            f" rank {propagation.rank} of {told.n_free} (combinations of the unknowns, the sum "
+            f"{'aside' if told.chosen.mass == 'exact' else 'among them'}, that are seen at all)"
         ),
         "  standard uncertainty at equal shares: of each share, and of share moved from one source to another",
         *aligned(
@@ -122,8 +127,8 @@ def _set_as_text(told: Determinacy, settings: Settings) -> list[str]:
         ),
     ]
     if respired is not None:
-        shown = f"{respired:.3f}" if math.isfinite(respired) else "unknown"
-        lines.append(f"    respiration  {shown} umol/kg of phosphate")
+        shown = f"{respired:.3f} umol/kg of phosphate" if math.isfinite(respired) else "unknown"
+        lines.append(f"    respiration  {shown}")
     if told.worth:
         least_last = sorted(told.worth, key=lambda worth: -worth.share_uncertainty)
         lines.append("  without one property, the one that tells most first")
@@ -149,6 +154,7 @@ def _as_json(catalogue: Catalogue, judged: Sequence[Judged]) -> dict[str, Any]:
                 "name": one.name,
                 **(_set_as_json(one.told) if one.told else {"properties": []}),
                 "problems": list(one.problems),
+                "warnings": list(one.warnings),
             }
             for one in judged
         ],

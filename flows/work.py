@@ -6,8 +6,8 @@ Safe to run again: a cruise that is published already is published as it is.
 from __future__ import annotations
 
 import logging
-from dataclasses import dataclass
-from pathlib import Path
+from dataclasses import dataclass, replace
+from pathlib import Path, PurePosixPath
 from typing import TYPE_CHECKING
 
 import pyarrow.compute as pc
@@ -15,8 +15,8 @@ import pyarrow.compute as pc
 from flows.records import CruiseRecord, Refusal, State
 from pipeline.archive import DeliveredFile, Provenance, open_archive, publish, read_cruise, vault
 from pipeline.problems import ArchiveProblem, DeliveryProblem
-from pipeline.process import process_cruise, refuse_two_editions, shared_rows
-from pipeline.reading import read_delivery
+from pipeline.process import process_cruise, settle_editions, shared_rows
+from pipeline.reading import read_cruise_file, read_delivery
 
 if TYPE_CHECKING:
     from collections.abc import Iterable, Mapping, Sequence
@@ -24,9 +24,9 @@ if TYPE_CHECKING:
     import pyarrow as pa
 
     from flows.plan import InboxFile, Job
-    from pipeline.archive import CruiseContents, Store
+    from pipeline.archive import Account, CruiseContents, Store
     from pipeline.mixing import Catalogue
-    from pipeline.reading import Delivery
+    from pipeline.reading import Delivery, Description
     from pipeline.settings import Settings
 
 _log = logging.getLogger(__name__)
@@ -68,7 +68,10 @@ def refuse_file(file: InboxFile, config: RunConfig) -> Refusal:
     """Keep a file in which no cruise was found, and say why it is refused."""
     try:
         vault.keep(open_archive(config.archive), Path(file.path))
-        read_delivery(file.name, Path(file.path).read_bytes(), config.settings.reading)
+        if file.beside.fault:
+            return Refusal(file.name, "broken-description", _not_described(file))
+        data = Path(file.path).read_bytes()
+        read_delivery(file.name, data, config.settings.reading, file.beside.description)
     except DeliveryProblem as problem:
         return Refusal(file.name, problem.reason, str(problem))
     except OSError as error:
@@ -78,16 +81,18 @@ def refuse_file(file: InboxFile, config: RunConfig) -> Refusal:
 
 def _make(job: Job, config: RunConfig, refusals: list[Refusal]) -> CruiseRecord:
     store = open_archive(config.archive)
+    config = replace(config, settings=config.settings.for_cruise(job.expocode))
     delivered = _read_inbox(job, config, store, refusals)
     if not delivered:
         return CruiseRecord(job.expocode, State.REFUSED, refusals=tuple(refusals), message=_first(refusals))
-    refuse_two_editions(delivered)
+    delivered = settle_editions(delivered, {file.name for file in job.files if file.beside.stands})
     deliveries = [*delivered, *_read_archived(job, config, store, delivered)]
     deliveries.sort(key=lambda delivery: (delivery.kind, delivery.name))
     processed = process_cruise(job.expocode, deliveries, config.settings, config.catalogue)
     _keep_choices(config, store)
     before = read_cruise(store, job.expocode)
-    revision = publish(store, _provenance(job.expocode, deliveries, config), processed.tables)
+    made_from = _provenance(job.expocode, deliveries, processed.accounts, config)
+    revision = publish(store, made_from, processed.tables)
     known = before.provenance is not None or revision > 1
     samples = processed.tables["samples"]
     return CruiseRecord(
@@ -139,14 +144,19 @@ def _read_inbox(job: Job, config: RunConfig, store: Store, refusals: list[Refusa
         try:
             data = Path(file.path).read_bytes()
             vault.keep(store, data)
-            delivery = read_delivery(file.name, data, config.settings.reading)
+            if file.beside.fault:
+                refusals.append(Refusal(file.name, "broken-description", _not_described(file)))
+                continue
+            if file.beside.text:
+                vault.keep(store, file.beside.text)
+            delivery = read_delivery(file.name, data, config.settings.reading, file.beside.description)
         except DeliveryProblem as problem:
             refusals.append(Refusal(file.name, problem.reason, str(problem)))
             continue
         except OSError as error:
             refusals.append(Refusal(file.name, "unreadable", _unreadable(file.name, error)))
             continue
-        part = delivery.of_cruise(job.expocode)
+        part = replace(delivery, described_by=file.beside.sha256).of_cruise(job.expocode)
         refusals += [
             Refusal(f"{file.name}:{r.raw}", r.reason, r.message) for r in part.rejects if r.line is None
         ]
@@ -162,13 +172,29 @@ def _read_archived(
     standing = []
     for file in job.archived:
         data = vault.read(store, file.sha256)
-        delivery = read_delivery(file.name, data, config.settings.reading).of_cruise(job.expocode)
+        description = _kept_description(file, store)
+        delivery = read_delivery(file.name, data, config.settings.reading, description)
+        delivery = replace(delivery, described_by=file.described_by).of_cruise(job.expocode)
         if not any(shared_rows(delivery, other) for other in delivered):
             standing.append(delivery)
     return standing
 
 
-def _provenance(expocode: str, deliveries: Sequence[Delivery], config: RunConfig) -> Provenance:
+def _kept_description(file: DeliveredFile, store: Store) -> Description | None:
+    """Return what the ``cruise.toml`` of an earlier run says of a file, by the name that the file had in its folder."""
+    if not file.described_by:
+        return None
+    text = vault.read(store, file.described_by)
+    return read_cruise_file(f"the cruise.toml of {file.name}", text).of(PurePosixPath(file.name).name)
+
+
+def _not_described(file: InboxFile) -> str:
+    return f"{file.name}: not used, because the cruise.toml beside it cannot be: {file.beside.fault}"
+
+
+def _provenance(
+    expocode: str, deliveries: Sequence[Delivery], accounts: Sequence[Account], config: RunConfig
+) -> Provenance:
     catalogue = config.catalogue
     return Provenance(
         expocode=expocode,
@@ -181,12 +207,16 @@ def _provenance(expocode: str, deliveries: Sequence[Delivery], config: RunConfig
                 rows=d.rows,
                 kept=d.table.num_rows,
                 rejected=len(d.rejects),
+                set_aside=d.set_aside,
+                described_by=d.described_by,
+                account=account,
             )
-            for d in deliveries
+            for d, account in zip(deliveries, accounts, strict=True)
         ),
         settings_sha256=config.settings.sha256,
         catalogue_sha256=catalogue.sha256 if catalogue else None,
         catalogue_title=catalogue.title if catalogue else "",
+        corrections=config.settings.corrections_of(expocode),
     )
 
 

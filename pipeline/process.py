@@ -5,14 +5,18 @@ Everything here is a pure function of its arguments: no clock, no environment, n
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from itertools import combinations
 from typing import TYPE_CHECKING
 
 import pyarrow as pa
 import pyarrow.compute as pc
 
 from pipeline import seawater, tracers
+from pipeline.archive import accounts
 from pipeline.checking import Checked, check
+from pipeline.corrections import corrected, correction_findings
+from pipeline.findings import Finding, Severity
 from pipeline.mixing import absent_properties, resolve
 from pipeline.problems import DeliveryProblem
 from pipeline.reading import Delivery, DeliveryKind, stack
@@ -32,9 +36,10 @@ from pipeline.usable import Rows
 from pipeline.working import working_columns
 
 if TYPE_CHECKING:
-    from collections.abc import Mapping, Sequence
+    from collections.abc import Collection, Mapping, Sequence
 
-    from pipeline.findings import Finding
+    from pipeline.archive import Account
+    from pipeline.crossover_settings import Correction
     from pipeline.mixing import Catalogue
     from pipeline.settings import Settings
 
@@ -48,6 +53,7 @@ class ProcessedCruise:
 
     tables: Mapping[str, pa.Table]
     findings: tuple[Finding, ...]
+    accounts: tuple[Account, ...] = ()  # what became of the rows of each delivery, in their order
 
 
 def process_cruise(
@@ -67,19 +73,22 @@ def process_cruise(
         The source waters, or None: then no sample is resolved.
 
     """
-    samples, sample_findings = _described(deliveries, DeliveryKind.BOTTLE, settings)
-    casts, cast_findings = _described(deliveries, DeliveryKind.CTD, settings)
+    corrections = settings.corrections.get(expocode, {})
+    samples, sample_findings = _described(deliveries, DeliveryKind.BOTTLE, settings, corrections)
+    casts, cast_findings = _described(deliveries, DeliveryKind.CTD, settings, corrections)
     mixtures = empty(MIXTURES)
     mixing_findings: tuple[Finding, ...] = ()
     if catalogue is not None:
         mixing_findings = absent_properties(samples, catalogue, settings)
         resolution = resolve(samples, catalogue, settings)
+        mixing_findings += resolution.findings
         samples = with_columns(samples, resolution.columns)
         mixtures = resolution.mixtures
     else:
         samples = with_columns(samples, {name: [None] * samples.num_rows for name in MIXING})
     delivered = [finding for delivery in deliveries for finding in delivery.findings]
-    findings = (*delivered, *sample_findings, *cast_findings, *mixing_findings)
+    corrected_findings = correction_findings(expocode, {"sample": samples, "CTD level": casts}, corrections)
+    findings = (*delivered, *sample_findings, *cast_findings, *corrected_findings, *mixing_findings)
     return ProcessedCruise(
         tables={
             "samples": arranged(samples),
@@ -89,23 +98,51 @@ def process_cruise(
             "rejects": rejects_table(expocode, [r for d in deliveries for r in d.rejects]),
         },
         findings=findings,
+        accounts=_accounts(deliveries, {DeliveryKind.BOTTLE: samples, DeliveryKind.CTD: casts}),
     )
 
 
 def _described(
-    deliveries: Sequence[Delivery], kind: DeliveryKind, settings: Settings
+    deliveries: Sequence[Delivery],
+    kind: DeliveryKind,
+    settings: Settings,
+    corrections: Mapping[str, Correction],
 ) -> tuple[pa.Table, tuple[Finding, ...]]:
-    """Return the rows of one kind, checked and with every quantity computed from them."""
+    """Return the rows of one kind, checked as delivered, corrected, and with every quantity computed from them."""
     mine = [delivery for delivery in deliveries if delivery.kind is kind]
     tables = [delivery.table for delivery in mine]
     table = stack(tables) if tables else empty((*_CORES[kind], "pressure"))
     told = [finding for delivery in mine for finding in delivery.findings]
     checked = check(table, settings, told) if tables else Checked({}, ())
     table = with_columns(table, checked.flags)
+    table = corrected(table, corrections)
     table = with_columns(table, working_columns(Rows(table, settings.use)))
     table = with_columns(table, seawater.columns(table, Rows(table, settings.use).usable))
     table = with_columns(table, tracers.columns(Rows(table, settings.use).usable, settings.tracers))
-    return with_metadata(table, tracers.forms(settings.tracers)), checked.findings
+    table = with_metadata(table, tracers.forms(settings.tracers))
+    if kind is DeliveryKind.CTD:
+        return table, checked.findings
+    own = tracers.sample_tracers(Rows(table, settings.use), settings)
+    table = with_metadata(with_columns(table, own.columns), own.forms)
+    return table, (*checked.findings, *own.findings)
+
+
+def _accounts(deliveries: Sequence[Delivery], tables: Mapping[DeliveryKind, pa.Table]) -> tuple[Account, ...]:
+    """Return the account of every delivery; a table has its rows in the order of the deliveries."""
+    by_kind = {
+        kind: iter(
+            accounts(
+                table,
+                [
+                    (d.name, d.table.num_rows, [reject.reason for reject in d.rejects])
+                    for d in deliveries
+                    if d.kind is kind
+                ],
+            )
+        )
+        for kind, table in tables.items()
+    }
+    return tuple(next(by_kind[delivery.kind]) for delivery in deliveries)
 
 
 def shared_rows(one: Delivery, other: Delivery) -> int:
@@ -116,8 +153,19 @@ def shared_rows(one: Delivery, other: Delivery) -> int:
     return len(_row_keys(one.table, keys) & _row_keys(other.table, keys))
 
 
-def refuse_two_editions(deliveries: Sequence[Delivery]) -> None:
-    """Refuse deliveries of one cruise that hold the same samples or casts: nothing tells which one stands.
+def settle_editions(deliveries: Sequence[Delivery], standing: Collection[str] = ()) -> list[Delivery]:
+    """Settle which of the deliveries of one cruise that hold the same samples or casts stands.
+
+    Parameters
+    ----------
+    deliveries
+        In any order.
+    standing
+        Names of the files of which a ``cruise.toml`` says that they stand.
+
+    Returns
+    -------
+        The deliveries; of one that gives way to a standing one, only a finding that says so is left.
 
     Raises
     ------
@@ -125,16 +173,41 @@ def refuse_two_editions(deliveries: Sequence[Delivery]) -> None:
         That names both files.
 
     """
-    for position, one in enumerate(deliveries):
-        for other in deliveries[position + 1 :]:
-            shared = shared_rows(one, other)
-            if shared:
-                what = "samples" if one.kind is DeliveryKind.BOTTLE else "casts"
-                raise DeliveryProblem(
-                    "two-editions",
-                    f"{one.name} and {other.name}: both hold {shared} of the same {what} of cruise"
-                    f" {', '.join(one.cruises)}; expected one edition of a cruise; remove the one that does not stand.",
-                )
+    settled = list(deliveries)
+    for one, other in combinations(range(len(settled)), 2):
+        shared = shared_rows(settled[one], settled[other])
+        if shared:
+            stands = [settled[i].name in standing for i in (one, other)]
+            if stands[0] == stands[1]:
+                raise _two_editions(settled[one], settled[other], shared)
+            giving_way, stayer = (other, one) if stands[0] else (one, other)
+            settled[giving_way] = _given_way(settled[giving_way], settled[stayer], shared)
+    return settled
+
+
+def _two_editions(one: Delivery, other: Delivery, shared: int) -> DeliveryProblem:
+    return DeliveryProblem(
+        "two-editions",
+        f"{one.name} and {other.name}: both hold {shared} of the same {_rows_of(one)} of cruise"
+        f" {', '.join(one.cruises)}; expected one edition of a cruise; remove the one that does not stand, or name"
+        " the one that does in a cruise.toml beside them (stands).",
+    )
+
+
+def _given_way(delivery: Delivery, stayer: Delivery, shared: int) -> Delivery:
+    """Return a delivery of which nothing is used, because another edition stands."""
+    rows = delivery.table.num_rows + len(delivery.rejects)
+    told = Finding(
+        "edition-set-aside", Severity.NOTE,
+        f"{delivery.name}: holds {shared} of the same {_rows_of(delivery)} as {stayer.name}, which stands by the"
+        f" cruise.toml beside them; it was kept, and none of its {rows} rows was used.",
+        value=str(shared), file=delivery.name, count=rows,
+    )  # fmt: skip
+    return replace(delivery, table=delivery.table.slice(0, 0), rejects=(), findings=(told,), set_aside=rows)
+
+
+def _rows_of(delivery: Delivery) -> str:
+    return "samples" if delivery.kind is DeliveryKind.BOTTLE else "casts"
 
 
 def _row_keys(table: pa.Table, names: Sequence[str]) -> set[str]:

@@ -33,7 +33,8 @@ ARROW_TYPES: dict[Kind, pa.DataType] = {
 KEY = ("expocode", "station", "cast", "sample")
 MIXING = (
     "tag", "leading_source", "leading_share", "leading_share_uncertainty", "leading_probability",
-    "respiration", "respiration_uncertainty", "reduced_chi_square", "mixing_set", "mixing_status",
+    "respiration", "respiration_uncertainty", "reduced_chi_square", "degrees_of_freedom", "condition_number",
+    "hull_distance", "mixing_set", "mixing_status",
 )  # fmt: skip
 MIXTURES = (
     *KEY, "line", "mixing_set", "source", "share", "share_uncertainty", "share_p16", "share_p50", "share_p84",
@@ -44,6 +45,21 @@ FINDINGS = (
     "value", "limit", "message",
 )  # fmt: skip
 REJECTS = ("expocode", "file", "line", "raw", "reason", "message")
+# What differs between two revisions: made when it is asked for, no table of the archive.
+CHANGES = (
+    *KEY, "pressure", "occurrence", "file", "line", "table", "change", "variable", "before", "after", "difference",
+)  # fmt: skip
+# How cruises compare, and what would make them agree: made when it is asked for, no tables of the archive.
+OFFSETS = (
+    "expocode", "other_expocode", "variable", "kind", "offset", "offset_uncertainty", "between_places",
+    "depth_contrast", "depth_contrast_uncertainty",
+    "mean_difference", "mean_difference_uncertainty", "difference_unit", "surface", "stations", "other_stations",
+    "station_pairs", "places", "levels", "years_apart",
+)  # fmt: skip
+PROPOSALS = (
+    "expocode", "variable", "kind", "correction", "correction_uncertainty", "correction_limit", "difference_unit",
+    "crossovers", "group", "proposed", "why_not",
+)  # fmt: skip
 
 # Always there, in this order, whatever was delivered: a reader may rely on them.
 SAMPLES_CORE = (

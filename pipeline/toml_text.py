@@ -3,15 +3,17 @@
 from __future__ import annotations
 
 import re
+import tomllib
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
-    from collections.abc import Sequence
+    from collections.abc import Mapping, Sequence
 
     from pydantic import ValidationError
 
 _TABLE = re.compile(r"\s*(\[\[?)\s*([^\[\]]+?)\s*\]\]?\s*(#.*)?$")
-_KEY = re.compile(r"\s*([A-Za-z0-9_.\"'-]+)\s*=")
+_PART = r"""(?:"(?:[^"\\]|\\.)*"|'[^']*'|[A-Za-z0-9_-]+)"""
+_KEY = re.compile(rf"\s*({_PART}(?:\s*\.\s*{_PART})*)\s*=")
 
 
 def line_of(text: str, location: Sequence[str | int]) -> int | None:
@@ -38,8 +40,24 @@ def line_of(text: str, location: Sequence[str | int]) -> int | None:
     return best
 
 
-def sentences(name: str, text: str, error: ValidationError) -> list[str]:
-    """Return one sentence for each fault of a validated TOML text, in the order of its lines."""
+def sentences(
+    name: str,
+    text: str,
+    error: ValidationError,
+    elsewhere: Mapping[tuple[str, ...], str] | None = None,
+) -> list[str]:
+    """Return one sentence for each fault of a validated TOML text, in the order of its lines.
+
+    Parameters
+    ----------
+    name, text
+        The file and what stands in it.
+    error
+        Its faults.
+    elsewhere
+        By nested keys, what set a value in place of the file, in words.
+
+    """
     faults = []
     for fault in error.errors():
         if is_echo(fault):
@@ -47,6 +65,11 @@ def sentences(name: str, text: str, error: ValidationError) -> list[str]:
         location = fault["loc"]
         line = line_of(text, location)
         place = f"{name}, line {line}" if line else name
+        for keys, setter in (elsewhere or {}).items():
+            # a section that only the setter has is at fault as a whole
+            if location[: len(keys)] == keys or (not line and keys[: len(location)] == location):
+                line, place = None, setter
+                break
         faults.append((line or 0, f"{place}: {_words(location, fault)}"))
     return [sentence for _, sentence in sorted(faults)]
 
@@ -57,7 +80,7 @@ def is_echo(fault: Any) -> bool:
 
 
 def _words(location: Sequence[str | int], fault: Any) -> str:
-    key = ".".join(str(part) for part in location)
+    key = ".".join(str(part) for part in location if part != "[key]")  # the last where a key itself is wrong
     match fault["type"]:
         case "extra_forbidden":
             return f"found the key '{key}', which is not known here; correct its spelling or remove it."
@@ -85,4 +108,14 @@ def _table_path(written: str, counts: dict[str, int], *, repeated: bool) -> list
 
 
 def _parts(written: str) -> list[str]:
-    return [part.strip(" \"'") for part in written.split(".")]
+    """Return the parts of a dotted key; a quoted part may hold dots, blanks and escapes."""
+    if '"' not in written and "'" not in written:
+        return [part.strip() for part in written.split(".")]
+    return [_unquoted(part) for part in re.findall(_PART, written)]
+
+
+def _unquoted(part: str) -> str:
+    try:
+        return next(iter(tomllib.loads(f"{part} = 0")))
+    except tomllib.TOMLDecodeError:  # no key at all, but a line of a longer text that looks like one
+        return part

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from pipeline.tables import cast_groups, floats
-from pipeline.variables import MEASURED, REGISTRY, FlagScheme, check_name, flag_name
+from pipeline.variables import MEASURED, REGISTRY, FlagScheme, check_name, corrected_name, flag_name
 
 if TYPE_CHECKING:
     from collections.abc import Iterable
@@ -64,9 +64,11 @@ class Rows:
     def usable(self, name: str) -> FloatArray:
         """Return the values of ``name`` that may be used, (n_row,), NaN for all others.
 
-        A derived column is usable as it is: it was computed from usable values only.
+        Where the table has the column with the settings' correction, its values stand for the delivered
+        ones, under the same flags. A derived column is usable as it is: it was computed from usable values only.
         """
-        values = self.floats(name)
+        corrected = corrected_name(name)
+        values = self.floats(corrected if corrected in self.names else name)
         return np.where(self.may_use(name), values, np.nan) if name in MEASURED else values
 
     def may_use(self, name: str) -> BoolArray:

@@ -1,71 +1,32 @@
 """The one registry: every quantity's column name, unit, CF name, exchange names, range and uncertainty.
 
 Everything else (schemas, reader maps, range checks, field metadata, plot labels) is derived from here.
-A quantity is added by one entry. This module imports nothing of ours and nothing registers into it.
+A quantity is added by one entry. This module imports the form of its rows, and the rows
+of carbon and of crossovers, and nothing else of ours; nothing registers into it.
 
 Plausible ranges are those of the parameter list of the exchange format, version 1.2.0, where it has one;
-``None`` where it has none. Usual measurement uncertainties carry their source in ``Uncertainty.source``.
+``None`` where it has none. What is made of delivered values has theirs, made a little wider (our choice).
+Usual measurement uncertainties carry their source in ``Uncertainty.source``.
 CF standard names are from table v93 (2026-03-17); ``None`` means that table has no name for the quantity.
 """
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-from enum import StrEnum
 from types import MappingProxyType
 from typing import TYPE_CHECKING
+
+from pipeline.carbon_variables import CARBONATE, EXTREMES, HORIZONS, STATION_CARBON
+from pipeline.crossover_variables import CROSSOVERS
+from pipeline.isotope_variables import ANOMALIES, ISOTOPES, MIXED_CARBON, SAMPLE_CARBON
+from pipeline.variable import FlagScheme, Kind, Uncertainty, Variable
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
 
-
-class Kind(StrEnum):
-    """How the values of a column are stored."""
-
-    NUMBER = "number"
-    INTEGER = "integer"
-    FLAG = "flag"
-    TEXT = "text"
-    DATE = "date"
-    TIME = "time"
-
-
-class FlagScheme(StrEnum):
-    """Which table of WHP quality flags a column's flags are read with (Joyce and Corry 1994, WHP 90-1)."""
-
-    BOTTLE = "bottle"
-    WATER = "water"
-    CTD = "ctd"
-
-
-@dataclass(frozen=True, slots=True)
-class Uncertainty:
-    """Usual standard uncertainty of a measurement: ``hypot(absolute, relative * value)``."""
-
-    absolute: float
-    relative: float
-    source: str
-
-    def at(self, value: float) -> float:
-        """Return the standard uncertainty at ``value``, in the unit of the variable."""
-        return float((self.absolute**2 + (self.relative * value) ** 2) ** 0.5)
-
-
-@dataclass(frozen=True, slots=True)
-class Variable:
-    """One quantity: what its column is called and means."""
-
-    name: str
-    long_name: str
-    unit: str  # UDUNITS; "1" for pure numbers; "" where a unit has no meaning (text, flags, dates)
-    standard_name: str | None = None
-    kind: Kind = Kind.NUMBER
-    exchange: tuple[str, ...] = ()  # names in exchange files, the canonical one first
-    exchange_unit: str = ""  # the unit as exchange files write it
-    flags: FlagScheme | None = None
-    plausible: tuple[float, float] | None = None
-    uncertainty: Uncertainty | None = None
-    source: str = ""  # the formula's reference, for derived quantities
+# Passed on, beside all that is defined here.
+__all__ = [
+    "ANOMALIES", "CARBONATE", "EXTREMES", "HORIZONS", "ISOTOPES", "FlagScheme", "Kind", "Uncertainty", "Variable",
+]  # fmt: skip
 
 
 _GOSHIP = "McTaggart et al. 2010 (GO-SHIP manual)"
@@ -227,27 +188,31 @@ _WATER = (
              exchange=("REVPRS",), exchange_unit="DBAR", flags=FlagScheme.WATER, plausible=(0, 11000)),
     Variable("delivered_potential_temperature", "Potential temperature, as delivered", "degree_C", None,
              exchange=("THETA",), exchange_unit="DEG C"),
+    Variable("draw_temperature", "Temperature of the water when its oxygen sample was drawn", "degree_C", None,
+             plausible=(-2, 35)),
+    Variable("laboratory_temperature", "Temperature at which amounts per volume were measured", "degree_C", None,
+             plausible=(0, 40)),
 )
 
 _SEAWATER = (
     Variable("practical_salinity", "Practical salinity used: the bottle's where good, else the CTD's", "1",
              "sea_water_practical_salinity", source="PSS-78; choice recorded in practical_salinity_source",
-             uncertainty=Uncertainty(0.002, 0.0, _GOSHIP)),
+             plausible=(0, 42), uncertainty=Uncertainty(0.002, 0.0, _GOSHIP)),
     Variable("practical_salinity_source", "Where the salinity used came from", "", None, Kind.TEXT),
     Variable("oxygen", "Dissolved oxygen used: the bottle's where good, else the CTD's", "umol kg-1",
              "moles_of_oxygen_per_unit_mass_in_sea_water", source="choice recorded in oxygen_source",
-             uncertainty=Uncertainty(0.0, 0.01, _CONSISTENCY)),
+             plausible=(0, 500), uncertainty=Uncertainty(0.0, 0.01, _CONSISTENCY)),
     Variable("oxygen_source", "Where the oxygen used came from", "", None, Kind.TEXT),
     Variable("absolute_salinity", "Absolute Salinity", "g kg-1", "sea_water_absolute_salinity",
-             source=f"{_TEOS}; gsw.SA_from_SP", uncertainty=Uncertainty(0.002, 0.0, _GOSHIP)),
+             source=f"{_TEOS}; gsw.SA_from_SP", plausible=(0, 43), uncertainty=Uncertainty(0.002, 0.0, _GOSHIP)),
     Variable("preformed_salinity", "Preformed Salinity", "g kg-1", "sea_water_preformed_salinity",
-             source=f"{_TEOS}; gsw.Sstar_from_SP", uncertainty=Uncertainty(0.002, 0.0, _GOSHIP)),
+             source=f"{_TEOS}; gsw.Sstar_from_SP", plausible=(0, 43), uncertainty=Uncertainty(0.002, 0.0, _GOSHIP)),
     Variable("conservative_temperature", "Conservative Temperature", "degree_C",
              "sea_water_conservative_temperature", source=f"{_TEOS}; gsw.CT_from_t",
-             uncertainty=Uncertainty(0.002, 0.0, _GOSHIP)),
+             plausible=(-3, 36), uncertainty=Uncertainty(0.002, 0.0, _GOSHIP)),
     Variable("potential_temperature", "Potential temperature referred to the surface", "degree_C",
              "sea_water_potential_temperature", source=f"{_TEOS}; gsw.pt0_from_t",
-             uncertainty=Uncertainty(0.002, 0.0, _GOSHIP)),
+             plausible=(-3, 36), uncertainty=Uncertainty(0.002, 0.0, _GOSHIP)),
     Variable("depth", "Depth below the surface", "m", "depth",
              source=f"{_TEOS}; gsw.z_from_p, positive down"),
     Variable("sigma0", "Potential density anomaly referred to 0 dbar", "kg m-3", "sea_water_sigma_theta",
@@ -286,34 +251,48 @@ _TRACERS = (
 )
 
 _MIXING_SOURCE = "Tomczak 1981; Mackas et al. 1987; Karstensen and Tomczak 1998"
+_SPREAD = (
+    "standard deviation over ensemble members, perturbed sources and measurements; without members of first order, "
+    "and then missing where a bound holds the value"
+)
+_PERCENTILE = "ensemble members, perturbed sources and measurements; the share itself is the unperturbed best fit"
 _MIXING = (
     Variable("tag", "Leading source, or the reason why there is none", "", None, Kind.TEXT),
     Variable("leading_source", "Source with the largest share", "", None, Kind.TEXT),
     Variable("leading_share", "Share of the leading source", "1", None, source=_MIXING_SOURCE),
     Variable("leading_share_uncertainty", "Standard uncertainty of the leading share", "1", None,
-             source=_MIXING_SOURCE),
+             source=_SPREAD),
     Variable("leading_probability", "Probability that the leading source leads", "1", None,
-             source="share of ensemble members, perturbed sources and measurements"),
+             source="part of the ensemble members, perturbed sources and measurements"),
     Variable("respiration", "Phosphate released by respiration since the sources mixed", "umol kg-1", None,
              source=_MIXING_SOURCE),
-    Variable("reduced_chi_square", "Weighted squared misfit per degree of freedom", "1", None,
-             source=_MIXING_SOURCE),
+    Variable("reduced_chi_square", "Weighted squared misfit per degree of freedom; missing where none is left", "1",
+             None, source="misfits over the uncertainties of measurement and sources joined: below one is usual"),
+    Variable("degrees_of_freedom", "Equations less unknowns that no bound holds", "1", None, Kind.INTEGER,
+             source="properties and the sum of the shares, less shares and respiration that take part"),
+    Variable("condition_number", "Condition number of the weighted properties that the sample has", "1", None,
+             source="largest over smallest singular value where the sum of the shares is kept"),
+    Variable("hull_distance", "Distance outside what the sources can mix to, in standard uncertainties", "1", None,
+             source="chi-square that the bounds add, square root; Wollan and Dykstra 1986"),
     Variable("mixing_set", "Source set the sample was solved with", "", None, Kind.TEXT),
     Variable("mixing_status", "Whether the sample was solved, else why not", "", None, Kind.TEXT),
     Variable("source", "Source water", "", None, Kind.TEXT),
-    Variable("share", "Share of the source in the sample", "1", None, source=_MIXING_SOURCE),
-    Variable("share_uncertainty", "Standard uncertainty of the share", "1", None, source=_MIXING_SOURCE),
-    Variable("share_p16", "Share: 16th percentile of the ensemble", "1", None, source=_MIXING_SOURCE),
-    Variable("share_p50", "Share: median of the ensemble", "1", None, source=_MIXING_SOURCE),
-    Variable("share_p84", "Share: 84th percentile of the ensemble", "1", None, source=_MIXING_SOURCE),
-    Variable("respiration_uncertainty", "Standard uncertainty of the phosphate released", "umol kg-1", None,
+    Variable("share", "Share of the source in the sample; exactly 0 where its bound holds it", "1", None,
              source=_MIXING_SOURCE),
+    Variable("share_uncertainty", "Standard uncertainty of the share", "1", None, source=_SPREAD),
+    Variable("share_p16", "Share: 16th percentile of the ensemble", "1", None, source=_PERCENTILE),
+    Variable("share_p50", "Share: median of the ensemble", "1", None, source=_PERCENTILE),
+    Variable("share_p84", "Share: 84th percentile of the ensemble", "1", None, source=_PERCENTILE),
+    Variable("respiration_uncertainty", "Standard uncertainty of the phosphate released", "umol kg-1", None,
+             source=_SPREAD),
     Variable("pseudo_age", "Oxygen consumed over a given utilisation rate: an age only in name", "year", None,
              source="Karstensen and Tomczak 1998; rate from the settings"),
     *(
-        Variable(f"{name}_{part}{suffix}", f"{quantity} {words}{of}", "umol kg-1", None, source=_MIXING_SOURCE)
+        Variable(f"{name}_{part}{suffix}", f"{quantity} {words}{of}", "umol kg-1", None,
+                 source=_SPREAD if suffix else _MIXING_SOURCE)
         for name, quantity in (("phosphate", "Phosphate"), ("nitrate", "Nitrate"), ("silicate", "Silicic acid"),
-                               ("oxygen", "Oxygen"), ("dic", "Dissolved inorganic carbon"))
+                               ("oxygen", "Oxygen"), ("dic", "Dissolved inorganic carbon"),
+                               ("alkalinity", "Total alkalinity"))
         for part, words in (("from_sources", "that came with the source waters"),
                             ("from_respiration", "that respiration added (negative: took away)"))
         for suffix, of in (("", ""), ("_uncertainty", ": standard uncertainty"))
@@ -330,16 +309,27 @@ _NOTICES = (
     Variable("message", "The finding in words", "", None, Kind.TEXT),
     Variable("raw", "The delivered text", "", None, Kind.TEXT),
     Variable("reason", "Why the row cannot be used, by name", "", None, Kind.TEXT),
+    Variable("table", "Table of the archive that the change is in", "", None, Kind.TEXT),
+    Variable("change", "What happened between two revisions, by name", "", None, Kind.TEXT),
+    Variable("occurrence", "Which of several rows of the same key, counted from 1", "", None, Kind.INTEGER),
+    Variable("before", "Value in the earlier revision, as text", "", None, Kind.TEXT),
+    Variable("after", "Value in the later revision, as text", "", None, Kind.TEXT),
+    Variable("difference", "Later number less the earlier one, in the unit of the variable concerned", ""),
 )
 # fmt: on
 
 BASE: tuple[Variable, ...] = (
-    *_IDENTITY, *_CTD, *_WATER, *_SEAWATER, *_TRACERS, *_MIXING, *_NOTICES, *_LEDGER,
+    *_IDENTITY, *_CTD, *_WATER, *_SEAWATER, *_TRACERS, *STATION_CARBON, *SAMPLE_CARBON, *_MIXING, *MIXED_CARBON,
+    *_NOTICES, *CROSSOVERS, *_LEDGER,
 )  # fmt: skip
 
 MEASURED: tuple[str, ...] = tuple(v.name for v in (*_CTD, *_WATER))
 # Measured columns that carry flags of their own are checked; uncertainties that came with them are not.
 CHECKED: tuple[str, ...] = tuple(v.name for v in (*_CTD, *_WATER) if v.flags is not None)
+# What a cruise measured may be off as a whole, and is corrected by a factor or by what is added.
+CORRECTABLE: tuple[str, ...] = tuple(
+    v.name for v in (*_CTD, *_WATER) if v.flags is not None and v.unit not in {"dbar", "degree_C"}
+)
 IDENTITY: tuple[str, ...] = tuple(v.name for v in _IDENTITY)
 SEAWATER: tuple[str, ...] = tuple(v.name for v in _SEAWATER)
 TRACERS: tuple[str, ...] = tuple(v.name for v in _TRACERS)
@@ -355,6 +345,11 @@ def flag_name(name: str) -> str:
 def check_name(name: str) -> str:
     """Return the column that holds our own check flags of ``name``."""
     return f"{name}_check"
+
+
+def corrected_name(name: str) -> str:
+    """Return the column that holds the values of ``name`` with the settings' correction of the cruise."""
+    return f"{name}_corrected"
 
 
 def residual_name(name: str) -> str:
@@ -375,6 +370,11 @@ def _companions(variable: Variable) -> list[Variable]:
         beside.append(
             Variable(check_name(variable.name), f"{variable.long_name}: result of our checks", "",
                      "quality_flag", Kind.FLAG, source="IODE primary flags, IOC MG 54, vol. 3")
+        )  # fmt: skip
+    if variable.name in CORRECTABLE:
+        beside.append(
+            Variable(corrected_name(variable.name), f"{variable.long_name}: with the settings' correction",
+                     variable.unit, variable.standard_name, source="the correction is in the field metadata")
         )  # fmt: skip
     if variable.kind is Kind.NUMBER and variable.name in {*MEASURED, *SEAWATER, *TRACERS}:
         beside.append(

@@ -12,16 +12,20 @@ import pytest
 ROOT = Path(__file__).parent.parent
 # In the order in which a module may import those before it.
 LAYERS = (
+    ("variable",),
+    ("crossover_variables", "carbon_variables", "isotope_variables"),
     ("variables", "problems", "findings", "version"),
-    ("toml_text", "tables", "units"),
+    ("toml_text", "tables", "units", "limits"),
+    ("crossover_settings", "carbonate_settings", "carbon_tracer_settings"),
     ("settings",),
-    ("usable",),
+    ("usable", "corrections"),
     ("working",),
     ("reading",),  # the rooms: none imports a later one
     ("seawater",),
     ("checking",),
     ("tracers",),
     ("mixing",),
+    ("crossovers",),
     ("archive",),
     ("process",),
 )

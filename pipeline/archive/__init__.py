@@ -11,6 +11,8 @@ with locked(store):
 from __future__ import annotations
 
 from pipeline.archive import vault
+from pipeline.archive.accounting import Account, accounts
+from pipeline.archive.comparison import RevisionChanges, compare_revisions, is_listing, write_listing
 from pipeline.archive.contents import (
     Contents,
     CruiseContents,
@@ -21,11 +23,13 @@ from pipeline.archive.contents import (
 )
 from pipeline.archive.currency import Currency, Reason, judge
 from pipeline.archive.lock import locked
-from pipeline.archive.provenance import DeliveredFile, Provenance, fingerprint
+from pipeline.archive.provenance import DeliveredFile, Provenance, content_of, fingerprint
 from pipeline.archive.publishing import clean_staging, publish
 from pipeline.archive.storage import Disk, Store, is_archive, open_archive
+from pipeline.archive.verifying import Verified, verify
 
 __all__ = [
+    "Account",
     "Contents",
     "CruiseContents",
     "Currency",
@@ -33,10 +37,16 @@ __all__ = [
     "Disk",
     "Provenance",
     "Reason",
+    "RevisionChanges",
     "Store",
+    "Verified",
+    "accounts",
     "clean_staging",
+    "compare_revisions",
+    "content_of",
     "fingerprint",
     "is_archive",
+    "is_listing",
     "judge",
     "locked",
     "open_archive",
@@ -46,4 +56,6 @@ __all__ = [
     "read_table",
     "revisions",
     "vault",
+    "verify",
+    "write_listing",
 ]

@@ -48,12 +48,12 @@ class Contents:
     cruises: Mapping[str, CruiseContents]
     strangers: tuple[str, ...] = field(default=())
 
-    def delivered_with(self, sha256: str) -> tuple[str, ...]:
-        """Return the cruises that delivered bytes of this SHA-256 went into."""
+    def delivered_with(self, content: str) -> tuple[str, ...]:
+        """Return the cruises that a file of this content (``content_of``) went into."""
         return tuple(
             expocode
             for expocode, cruise in self.cruises.items()
-            if cruise.provenance and any(file.sha256 == sha256 for file in cruise.provenance.deliveries)
+            if cruise.provenance and any(file.content == content for file in cruise.provenance.deliveries)
         )
 
 

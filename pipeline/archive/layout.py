@@ -132,6 +132,11 @@ def raw_key(sha256: str) -> str:
     return f"{RAW}/{sha256[:2]}/{sha256}"
 
 
+def is_raw(folder: str, name: str) -> bool:
+    """Return whether ``raw/FOLDER/NAME`` is a place of delivered bytes."""
+    return bool(_SHA256.fullmatch(name)) and folder == name[:2]
+
+
 def _known(table: str) -> str:
     if table not in TABLE_NAMES:
         raise BrokenPromise(f"the archive has no table '{table}'; it has {', '.join(TABLE_NAMES)}")

@@ -7,6 +7,7 @@ import json
 from dataclasses import dataclass, field, fields
 from typing import TYPE_CHECKING, Any, Literal
 
+from pipeline.archive.accounting import Account
 from pipeline.problems import ArchiveProblem
 from pipeline.version import VERSION
 
@@ -21,7 +22,7 @@ PLAIN = ("schema_version", "pipeline_version", "expocode", "revision", "fingerpr
 
 @dataclass(frozen=True, slots=True)
 class DeliveredFile:
-    """A delivered file and what became of its rows: ``rows == kept + rejected``."""
+    """A delivered file and what became of its rows: ``rows == kept + rejected + set_aside``."""
 
     name: str
     sha256: str
@@ -30,6 +31,19 @@ class DeliveredFile:
     rows: int
     kept: int
     rejected: int
+    set_aside: int = 0  # rows of an edition that gave way to another
+    described_by: str = ""  # SHA-256 of the cruise.toml that says what is in it, if one does
+    account: Account | None = None  # step by step; None in archives of before it was kept
+
+    @property
+    def content(self) -> str:
+        """What decides the rows that are read from it."""
+        return content_of(self.sha256, self.described_by)
+
+
+def content_of(sha256: str, described_by: str) -> str:
+    """Return what decides the rows of a delivered file: its bytes, and what a ``cruise.toml`` says of them."""
+    return f"{sha256}+{described_by}" if described_by else sha256
 
 
 @dataclass(frozen=True, slots=True)
@@ -45,12 +59,13 @@ class Provenance:
     pipeline_version: str = VERSION
     revision: int = 0
     tables: Mapping[str, int] = field(default_factory=dict)  # rows by table
+    corrections: Mapping[str, Mapping[str, Any]] = field(default_factory=dict)  # by quantity
 
     @property
     def fingerprint(self) -> str:
         """Hash over what decides the content: equal fingerprints, equal tables."""
         return fingerprint(
-            [(file.name, file.sha256) for file in self.deliveries],
+            [(file.name, file.content) for file in self.deliveries],
             self.settings_sha256,
             self.catalogue_sha256,
             schema_version=self.schema_version,
@@ -59,7 +74,7 @@ class Provenance:
 
     def to_json(self) -> str:
         """Return the record as JSON, the same text for the same record."""
-        values = {**_values(self), "deliveries": [_values(file) for file in self.deliveries]}
+        values = {**_values(self), "deliveries": [_file_values(file) for file in self.deliveries]}
         return json.dumps(values, sort_keys=True, separators=(",", ":"))
 
     @classmethod
@@ -74,7 +89,7 @@ class Provenance:
         """
         try:
             values = json.loads(text)
-            files = [DeliveredFile(**_known(DeliveredFile, file)) for file in values.pop("deliveries")]
+            files = [_delivered_file(file) for file in values.pop("deliveries")]
             return cls(deliveries=tuple(files), **_known(cls, values))
         except (TypeError, KeyError, AttributeError) as error:
             raise ValueError(f"no provenance record ({error})") from error
@@ -131,7 +146,7 @@ def fingerprint(
     Parameters
     ----------
     delivered
-        Name and SHA-256 of each delivered file, in any order.
+        Name and content of each delivered file (``content_of``), in any order.
     settings_sha256, catalogue_sha256
         Hashes of the effective settings and of the source catalogue, None where there is no catalogue.
     schema_version, pipeline_version
@@ -142,8 +157,18 @@ def fingerprint(
     return hashlib.sha256(json.dumps(decisive, separators=(",", ":")).encode()).hexdigest()
 
 
-def _values(record: Provenance | DeliveredFile) -> dict[str, Any]:
+def _values(record: Provenance | DeliveredFile | Account) -> dict[str, Any]:
     return {f.name: getattr(record, f.name) for f in fields(record)}
+
+
+def _file_values(file: DeliveredFile) -> dict[str, Any]:
+    return {**_values(file), "account": _values(file.account) if file.account else None}
+
+
+def _delivered_file(values: Mapping[str, Any]) -> DeliveredFile:
+    known = _known(DeliveredFile, values)
+    told = known.pop("account", None)
+    return DeliveredFile(**known, account=Account(**_known(Account, told)) if told else None)
 
 
 def _known(record: type[Any], values: Mapping[str, Any]) -> dict[str, Any]:

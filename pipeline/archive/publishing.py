@@ -18,7 +18,10 @@ from dataclasses import replace
 from functools import partial
 from typing import TYPE_CHECKING
 
+import pyarrow.compute as pc
+
 from pipeline.archive import layout
+from pipeline.archive.accounting import SOLVED, imbalances
 from pipeline.archive.footers import Footer, observe, read_footer
 from pipeline.archive.standing import Mark
 from pipeline.archive.writing import write_table
@@ -101,7 +104,7 @@ def _counted(provenance: Provenance, tables: Mapping[str, pa.Table]) -> dict[str
         raise BrokenPromise(f"{provenance.expocode}: found tables {sorted(tables)}, expected {TABLE_NAMES}")
     counts = {name: tables[name].num_rows for name in TABLE_NAMES}
     files = provenance.deliveries
-    accounts = [(f"{f.name}: rows", f.rows, f.kept + f.rejected) for f in files]
+    accounts = [(f"{f.name}: rows", f.rows, f.kept + f.rejected + f.set_aside) for f in files]
     accounts += [
         ("samples", sum(f.kept for f in files if f.kind == "bottle"), counts["samples"]),
         ("casts", sum(f.kept for f in files if f.kind == "ctd"), counts["casts"]),
@@ -110,7 +113,24 @@ def _counted(provenance: Provenance, tables: Mapping[str, pa.Table]) -> dict[str
     for what, expected, found in accounts:
         if expected != found:
             raise BrokenPromise(f"{provenance.expocode}: {what}: found {found} rows, expected {expected}")
+    for file in files:
+        if file.account and (
+            wrong := imbalances(file.account, file.rows - file.set_aside, file.kept, file.rejected)
+        ):
+            raise BrokenPromise(f"{provenance.expocode}: {file.name}: {'; '.join(wrong)}")
+    _compare_resolved(provenance, tables["samples"])
     return counts
+
+
+def _compare_resolved(provenance: Provenance, samples: pa.Table) -> None:
+    """See that the samples are resolved that the files' accounts say are."""
+    told = [file.account for file in provenance.deliveries if file.kind == "bottle"]
+    if None in told or "mixing_status" not in samples.column_names:
+        return
+    expected = sum(one.resolved for one in told if one)
+    found = pc.sum(pc.equal(samples.column("mixing_status"), SOLVED)).as_py() or 0
+    if expected != found:
+        raise BrokenPromise(f"{provenance.expocode}: found {found} samples resolved, expected {expected}")
 
 
 def _stage(store: Store, provenance: Provenance, tables: Mapping[str, pa.Table]) -> None:

@@ -20,7 +20,7 @@ def duplicate_pressure(data: Rows, settings: Settings) -> list[Mark]:
         return []
     pressure, casts = data.floats("pressure"), data.casts
     order = np.lexsort((np.arange(len(casts)), pressure, casts))
-    same = (np.diff(casts[order]) == 0) & (np.diff(pressure[order]) == 0)
+    same = (np.diff(casts[order]) == 0) & (pressure[order][1:] == pressure[order][:-1])
     rows = np.sort(order[1:][same])
     if not len(rows):
         return []
@@ -38,14 +38,14 @@ def pressure_order(data: Rows, settings: Settings) -> list[Mark]:
         return []
     pressure, casts = data.floats("pressure"), data.casts
     within = np.diff(casts) == 0
-    step = np.diff(pressure)
+    upwards, downwards = pressure[1:] < pressure[:-1], pressure[1:] > pressure[:-1]
     n_cast = int(casts.max()) + 1 if len(casts) else 0
-    up = np.bincount(casts[1:][within & (step < 0)], minlength=n_cast)
-    down = np.bincount(casts[1:][within & (step > 0)], minlength=n_cast)
+    up = np.bincount(casts[1:][within & upwards], minlength=n_cast)
+    down = np.bincount(casts[1:][within & downwards], minlength=n_cast)
     mixed = np.flatnonzero((up > 0) & (down > 0))
     if not len(mixed):
         return []
-    turning = within & np.where(down[casts[1:]] >= up[casts[1:]], step < 0, step > 0)
+    turning = within & np.where(down[casts[1:]] >= up[casts[1:]], upwards, downwards)
     rows = np.array([1 + np.flatnonzero(turning & (casts[1:] == cast))[0] for cast in mixed])
     return [
         Mark(

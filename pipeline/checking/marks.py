@@ -9,7 +9,7 @@ import numpy as np
 
 from pipeline.findings import Finding, Severity
 from pipeline.usable import CHECK_DOUBT, CHECK_FAULT, CHECK_GOOD, CHECK_MISSING
-from pipeline.variables import REGISTRY, check_name
+from pipeline.variables import MEASURED, REGISTRY, check_name
 
 if TYPE_CHECKING:
     from collections.abc import Iterable, Sequence
@@ -33,7 +33,8 @@ class Mark:
 
     ``words`` and ``limit`` complete the sentence "FILE, line N: NAME <words>; expected <limit>.";
     ``values`` holds what was found in each of ``rows``. A doubt or a fault of a measured variable
-    sets its check flag in those rows.
+    sets its check flag in those rows. What concerns a cast or a column as a whole is told in one
+    sentence for all its rows: ``together``.
     """
 
     check: str
@@ -42,7 +43,8 @@ class Mark:
     rows: IntArray
     values: Sequence[object]
     words: str
-    limit: str
+    limit: str | Sequence[str]  # one for all rows, or one for each
+    together: bool = False
 
 
 def check_flags(data: Rows, measured: Iterable[str], marks: Iterable[Mark]) -> dict[str, IntArray]:
@@ -60,11 +62,40 @@ def check_flags(data: Rows, measured: Iterable[str], marks: Iterable[Mark]) -> d
     return {check_name(name): column for name, column in flags.items()}
 
 
+def once(data: Rows, marks: Sequence[Mark]) -> list[Mark]:
+    """Return the marks to be told: where a whole column is doubted in one sentence, not again each of its values.
+
+    What is said of flags, of values that are missing, and of the column as a whole remains.
+    """
+    whole = {
+        mark.variable
+        for mark in marks
+        if mark.together
+        and mark.severity in _FLAG_OF
+        and mark.variable in MEASURED
+        and len(mark.rows)
+        == np.count_nonzero(data.may_use(mark.variable) & ~np.isnan(data.floats(mark.variable)))
+    }
+    return [
+        mark
+        for mark in marks
+        if mark.together
+        or mark.variable not in whole
+        or mark.check.endswith("-flag")
+        or np.isnan(data.floats(mark.variable)[mark.rows]).any()
+    ]
+
+
 def findings_of(data: Rows, marks: Iterable[Mark]) -> list[Finding]:
     """Tell marks in words: each bottle row by itself, the CTD levels of a cast together."""
     casts = np.arange(len(data)) if data.is_bottle else data.casts
     findings = []
     for mark in marks:
+        if mark.together:
+            members = np.arange(len(mark.rows))
+            several = bool(np.any(data.casts[mark.rows] != data.casts[mark.rows[0]]))
+            findings.append(_finding(data.table, mark, members, rest_of=several))
+            continue
         groups = _groups(casts[mark.rows])
         told = groups[:MOST_ROWS_TOLD]
         findings += [_finding(data.table, mark, members) for members in told]
@@ -90,14 +121,16 @@ def _finding(table: pa.Table, mark: Mark, members: IntArray, *, rest_of: bool = 
         name = f"{name} {table.column('station')[row].as_py()}"
     file, line = table.column("file")[row].as_py(), table.column("line")[row].as_py()
     value = _written(mark.values[first])
-    more = f" (and {count - 1} more rows)" if count > 1 else ""
+    limit = mark.limit if isinstance(mark.limit, str) else mark.limit[first]
+    alone = not (rest_of or mark.together)
+    more = f" (and {count - 1} more rows)" if count > 1 and not mark.together else ""
     return Finding(
         mark.check, mark.severity,
-        f"{file}, line {line}: {name} {mark.words.format(value=value)}{more}; expected {mark.limit}.",
-        variable=mark.variable, value=value, limit=mark.limit, file=file, line=line,
+        f"{file}, line {line}: {name} {mark.words.format(value=value)}{more}; expected {limit}.",
+        variable=mark.variable, value=value, limit=limit, file=file, line=line,
         station=None if rest_of else table.column("station")[row].as_py(),
         cast=None if rest_of else table.column("cast")[row].as_py(),
-        sample=table.column("sample")[row].as_py() if "sample" in table.column_names and not rest_of else None,
+        sample=table.column("sample")[row].as_py() if "sample" in table.column_names and alone else None,
         count=count,
     )  # fmt: skip
 

@@ -19,14 +19,17 @@ def gross_range(data: Rows, settings: Settings) -> list[Mark]:
     """Values outside the plausible range of the registry that their flags would let be used.
 
     A value further out than the range is wide is a fault (garbage, another unit); a nearer one is a doubt,
-    for it may be an honest extreme such as a river plume. A value that the group itself flagged as bad is
-    no news; it is not told again.
+    for it may be an honest extreme such as a river plume. A nutrient may lie below its range by the noise
+    near its limit of detection. A value that the group itself flagged as bad is no news; it is not told again.
     """
     marks = []
+    noise = dict(settings.checks.negative_nutrients)
     for name in MEASURED:
         plausible = REGISTRY[name].plausible
         if name not in data.names or plausible is None:
             continue
+        if name in noise:
+            plausible = (min(plausible[0], -noise[name]), plausible[1])
         values = data.floats(name)
         with np.errstate(invalid="ignore"):
             outside = (values < plausible[0]) | (values > plausible[1])

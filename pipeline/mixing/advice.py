@@ -1,4 +1,4 @@
-"""Plain sentences about what a source set cannot tell, and what would help."""
+"""Plain sentences about what a source set cannot tell, what would help, and what may be meant so."""
 
 from __future__ import annotations
 
@@ -6,8 +6,9 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from pipeline.mixing.determinacy import with_another
-from pipeline.mixing.properties import PROPERTIES, ratios_of, respiration_ratios, same_quantity
+from pipeline.mixing.determinacy import determinacy, with_another
+from pipeline.mixing.magnitudes import doubtful
+from pipeline.mixing.properties import LISTED_AS, PROPERTIES, ratios_of, respiration_ratios, same_quantity
 from pipeline.variables import TRACERS
 
 if TYPE_CHECKING:
@@ -43,7 +44,8 @@ def problems(told: Determinacy, catalogue: Catalogue, settings: Settings) -> lis
     if told.chosen.respiration != "none" and not any(ratios_of(told.chosen.properties, ratios)):
         return [_UNTOLD_RESPIRATION]
     sentences = [*_alike(told, catalogue, settings)]
-    sentences += _mixtures(told, catalogue, settings)
+    joined = _with_pairs_joined(told, catalogue, settings)
+    sentences += _mixtures(joined, catalogue, settings, after_joining=joined is not told)
     limit = settings.mixing.condition_limit
     if told.condition_number > limit:
         found = f"{told.condition_number:.0f}" if np.isfinite(told.condition_number) else "infinite"
@@ -52,6 +54,29 @@ def problems(told: Determinacy, catalogue: Catalogue, settings: Settings) -> lis
             f"every sample would be left undetermined; add properties or take sources away."
         )
     return sentences
+
+
+def warnings(told: Determinacy, catalogue: Catalogue) -> list[str]:
+    """Return a sentence for everything in a set that may be meant so and is likely not, none where nothing is."""
+    one = (
+        "there is one source: its share will be 1 in every sample, and only the reduced chi-square tells whether the "
+        "sample is of it; add sources to resolve mixtures."
+    )
+    return [*([one] if len(told.chosen.sources) == 1 else []), *doubtful(catalogue, told.chosen)]
+
+
+def _with_pairs_joined(told: Determinacy, catalogue: Catalogue, settings: Settings) -> Determinacy:
+    """Return what a set could tell with the second of every pair that is alike taken away.
+
+    Such a pair makes other shares uncertain too. That is told with the pair; what is uncertain without it
+    has reasons of its own.
+    """
+    codes = told.chosen.sources
+    second = {codes[other] for _, other in _pairs_alike(told.propagation)}
+    if not second:
+        return told
+    left = tuple(code for code in codes if code not in second)
+    return determinacy(catalogue, told.chosen.model_copy(update={"sources": left}), settings)
 
 
 def _too_few(told: Determinacy) -> str:
@@ -73,7 +98,10 @@ def _alike(told: Determinacy, catalogue: Catalogue, settings: Settings) -> Itera
         if np.isinf(told.propagation.alone[i, j]):
             found = f"none of these properties tells {one} from {other}"
         elif reached >= 1:
-            found = f"{one} and {other} cannot be told apart at all with these properties and uncertainties"
+            found = (
+                f"{one} and {other} cannot be told apart with these properties and uncertainties: share moved from one "
+                f"to the other is uncertain by more than the whole sample"
+            )
         else:
             found = (
                 f"{one} and {other} can be told apart only to {reached:.2f} of the sample with these properties and "
@@ -83,17 +111,19 @@ def _alike(told: Determinacy, catalogue: Catalogue, settings: Settings) -> Itera
         yield f"{found}; {helpful}, or join them."
 
 
-def _mixtures(told: Determinacy, catalogue: Catalogue, settings: Settings) -> Iterator[str]:
+def _mixtures(
+    told: Determinacy, catalogue: Catalogue, settings: Settings, *, after_joining: bool
+) -> Iterator[str]:
     """Tell of shares that are uncertain though no single other source is like theirs."""
     codes, propagation = told.chosen.sources, told.propagation
     explained = {index for pair in _pairs_alike(propagation) for index in pair}
     spread = told.share_uncertainty
-    doubtful = [i for i in range(len(codes)) if spread[i] > TOO_UNCERTAIN and i not in explained]
-    if not doubtful:
+    uncertain = [i for i in range(len(codes)) if spread[i] > TOO_UNCERTAIN and i not in explained]
+    if not uncertain:
         return
-    worst = max(doubtful, key=lambda i: spread[i])
-    vague = [i for i in doubtful if spread[i] < 1]
-    lost = [i for i in doubtful if i not in vague]
+    worst = max(uncertain, key=lambda i: spread[i])
+    vague = [i for i in uncertain if spread[i] < 1]
+    lost = [i for i in uncertain if i not in vague]
     found = []
     if vague:
         known = _joined([f"{spread[i]:.2f}" for i in vague])
@@ -101,8 +131,9 @@ def _mixtures(told: Determinacy, catalogue: Catalogue, settings: Settings) -> It
     if lost:
         found.append(f"{_shares(codes, lost)} not known at all")
     helpful = _helpful(told, catalogue, settings, spread[worst], lambda p: float(p.unknown[worst]))
+    also = "once those alike are joined, " if after_joining else ""
     yield (
-        f"{_joined(found)}, since {_looks_like(told, worst)}; {helpful}, or take one of these sources away."
+        f"{also}{_joined(found)}, since {_looks_like(told, worst)}; {helpful}, or take one of these sources away."
     )
 
 
@@ -147,6 +178,7 @@ def _helpful(
         name
         for name in PROPERTIES
         if name not in TRACERS
+        and name not in LISTED_AS
         and all(name in source.properties for source in sources)
         and not any(same_quantity(name, other) for other in chosen.properties)
     ]

@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 import pyarrow as pa
 
+from pipeline.mixing import notices
 from pipeline.mixing.answers import Attempt, answer_of
 from pipeline.mixing.domains import validity
 from pipeline.mixing.members import sample_keys
@@ -16,6 +17,7 @@ from pipeline.mixing.solver import solve
 from pipeline.mixing.status import MixingStatus
 from pipeline.mixing.tags import tags
 from pipeline.mixing.weights import mixing_problem
+from pipeline.problems import BrokenPromise
 from pipeline.tables import MIXTURES, as_arrow, registry_field, with_columns
 from pipeline.usable import usable
 
@@ -24,6 +26,7 @@ if TYPE_CHECKING:
 
     from numpy.typing import NDArray
 
+    from pipeline.findings import Finding
     from pipeline.mixing.answers import Answer
     from pipeline.mixing.entries import Catalogue, SourceSet
     from pipeline.settings import Settings
@@ -50,6 +53,7 @@ class Resolution:
 
     columns: Mapping[str, Any]  # registry name to n_sample values; NaN or None where missing
     mixtures: pa.Table  # a row is a solved sample and a source of the set it was solved with
+    findings: tuple[Finding, ...]  # samples not resolved, or outside what their sources can mix to
 
 
 def resolve(samples: pa.Table, catalogue: Catalogue, settings: Settings) -> Resolution:
@@ -61,15 +65,18 @@ def resolve(samples: pa.Table, catalogue: Catalogue, settings: Settings) -> Reso
     Parameters
     ----------
     samples
-        Table of registry columns, n_sample rows.
+        Table of registry columns, n_sample rows of one cruise.
     catalogue
         The source waters and the sets.
     settings
-        Which values may be used, the stoichiometry, and the limits of the tags.
+        Which values may be used, the stoichiometry, uncertainties of measurements, and the limits of the tags.
 
     """
+    expocode = _cruise(samples)
+    unused = notices.unused_uncertainties(expocode, catalogue, settings.mixing)
+    settings = settings.model_copy(update={"mixing": settings.mixing.of_cruise(expocode)})
     attempts = [_attempt(samples, catalogue, chosen, settings) for chosen in catalogue.set]
-    status, picked = _pick(attempts, samples.num_rows)
+    status, picked, told_of = _pick(attempts, samples.num_rows)
     keys = sample_keys(samples, settings.mixing.seed)
     answers = [
         answer_of(catalogue, attempt, picked[attempt.rows] == index, keys, settings.mixing)
@@ -80,12 +87,25 @@ def resolve(samples: pa.Table, catalogue: Catalogue, settings: Settings) -> Reso
         status,
         columns["leading_source"],
         columns["leading_share"],
+        columns["leading_probability"],
         columns["reduced_chi_square"],
         settings.mixing,
     )
+    columns["condition_number"] = _condition_numbers(attempts, told_of)
     columns["mixing_status"] = np.array([MixingStatus(code).label for code in status], dtype=object)
     told = with_columns(samples, {name: columns[name] for name in ("tag", "reduced_chi_square")})
-    return Resolution(columns, _mixtures(told, answers))
+    findings = (*unused, *notices.unresolved(status), *notices.of_fits(answers, settings.mixing))
+    return Resolution(columns, _mixtures(told, answers), findings)
+
+
+def _cruise(samples: pa.Table) -> str | None:
+    """Return the cruise of a table of samples, None where it has no samples."""
+    if "expocode" not in samples.column_names:
+        return None
+    cruises = [name for name in samples.column("expocode").unique().to_pylist() if name]
+    if len(cruises) > 1:
+        raise BrokenPromise(f"samples of the cruises {', '.join(sorted(cruises))} are resolved together")
+    return cruises[0] if cruises else None
 
 
 def _attempt(samples: pa.Table, catalogue: Catalogue, chosen: SourceSet, settings: Settings) -> Attempt:
@@ -98,22 +118,32 @@ def _attempt(samples: pa.Table, catalogue: Catalogue, chosen: SourceSet, setting
     return Attempt(chosen, ratios, problem, rows, unknown, observed, solution)
 
 
-def _pick(attempts: Sequence[Attempt], n_sample: int) -> tuple[NDArray[np.int8], IntArray]:
-    """Return the status of every sample and the attempt it keeps, -1 for none, both (n_sample,)."""
+def _pick(attempts: Sequence[Attempt], n_sample: int) -> tuple[NDArray[np.int8], IntArray, IntArray]:
+    """Return every sample's status, the attempt it keeps and the one its status is of, -1 for none; all (n_sample,)."""
     status = np.full(n_sample, MixingStatus.OUTSIDE, dtype=np.int8)
-    picked = np.full(n_sample, -1)
+    picked, told_of = np.full(n_sample, -1), np.full(n_sample, -1)
     lowest = np.full(n_sample, np.inf)
     for index, attempt in enumerate(attempts):
         own = np.full(n_sample, MixingStatus.OUTSIDE, dtype=np.int8)
         own[attempt.unknown] = MixingStatus.INCOMPLETE
         own[attempt.rows] = attempt.solution.status
-        status = np.where(_HOW_FAR[own] > _HOW_FAR[status], own, status)
+        further = _HOW_FAR[own] > _HOW_FAR[status]
+        status[further], told_of[further] = own[further], index
         chi_square = np.full(n_sample, np.inf)
         chi_square[attempt.rows] = np.nan_to_num(attempt.solution.reduced_chi_square, nan=np.inf)
         better = (own == MixingStatus.SOLVED) & ((picked < 0) | (chi_square < lowest))
-        picked[better] = index
+        picked[better] = told_of[better] = index
         lowest[better] = chi_square[better]
-    return status, picked
+    return status, picked, told_of
+
+
+def _condition_numbers(attempts: Sequence[Attempt], told_of: IntArray) -> FloatArray:
+    """Return the condition number of the attempt that a sample's status is of, (n_sample,); NaN where it has none."""
+    condition = np.full(len(told_of), np.nan)
+    for index, attempt in enumerate(attempts):
+        mine = told_of[attempt.rows] == index
+        condition[attempt.rows[mine]] = attempt.solution.condition_number[mine]
+    return condition
 
 
 def _columns(answers: Sequence[Answer], n_sample: int) -> dict[str, Any]:

@@ -55,6 +55,8 @@ class Answer:
     chosen: SourceSet
     rows: IntArray  # (n_kept,) samples
     leading: IntArray  # (n_kept,) source with the largest share
+    outside: BoolArray  # (n_kept,) beyond what its sources can mix to, by more than noise
+    side: IntArray  # (n_kept,) unknown that would be negative without bounds, -1 where none would
     per_sample: Mapping[str, FloatArray]  # registry name to (n_kept,)
     per_share: Mapping[str, FloatArray]  # registry name to (n_kept, n_source)
 
@@ -88,7 +90,7 @@ def answer_of(
     keys
         Of all samples, (n_sample,).
     settings
-        Members, seed, uncertainties of measurements, and the rate of a pseudo-age.
+        Members, seed, uncertainties of measurements, what is outside, and the rate of a pseudo-age.
 
     """
     chosen, solution = attempt.chosen, attempt.solution
@@ -106,6 +108,7 @@ def answer_of(
     respired = bool(attempt.problem.signs)
     respiration = solution.processes[kept, 0] if respired else none
     of_respiration = found.processes[:, 0] if respired else none
+    hull = solution.hull
     per_sample = {
         "leading_share": _at(shares, leading),
         "leading_share_uncertainty": _at(found.shares, leading),
@@ -113,6 +116,8 @@ def answer_of(
         "respiration": respiration,
         "respiration_uncertainty": of_respiration,
         "reduced_chi_square": solution.reduced_chi_square[kept],
+        "degrees_of_freedom": solution.degrees_of_freedom[kept],
+        "hull_distance": hull.distance[kept],
     }
     ratios = ratios_of(names, attempt.ratios)
     from_sources, from_respiration = split(shares, respiration, carried, ratios)
@@ -128,7 +133,8 @@ def answer_of(
     per_share = {"share": shares, "share_uncertainty": found.shares}
     for index, name in enumerate(("share_p16", "share_p50", "share_p84")):
         per_share[name] = found.percentiles[:, index]
-    return Answer(chosen, rows, leading, per_sample, per_share)
+    outside = hull.outside(settings.hull_probability)[kept]
+    return Answer(chosen, rows, leading, outside, hull.side[kept], per_sample, per_share)
 
 
 def _at(values: FloatArray, position: IntArray) -> FloatArray:

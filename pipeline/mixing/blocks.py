@@ -27,14 +27,40 @@ class System(NamedTuple):
     limit: float  # largest weighted deviation that is not absurd
 
 
-class Operators(NamedTuple):
-    """Per support the map from deviations: row ``support * n_unknown + i`` is of unknown i."""
+class Equations(NamedTuple):
+    """The weighted system of which operators are made."""
 
-    matrix: Floats  # (n_support * n_unknown, n_used)
+    columns: Floats  # (n_unknown, n_equation) of the unknowns; past the properties, the row of a weighted sum
+    sizes: Floats  # (n_unknown,) what the gradient of an unknown is divided by
+    bit: Ints  # (n_unknown,) bit in a support's number, 0 for a free unknown
+    n_summed: int  # the first so many unknowns add up to one exactly; 0 where no sum is held
+    weight: Floats  # (n_used,) of the properties
+    mass: float  # what the row of a weighted sum adds up to; 0 without one
+    tolerance: float  # part of the strongest direction below which another counts as dependent
+
+
+class Work(NamedTuple):
+    """Room for the making of an operator."""
+
+    P: Floats  # (n_unknown, n_unknown)
+    Q: Floats  # (n_unknown, n_equation)
+    start: Floats  # (1, n_unknown)
+    at_start: Floats  # (1, n_equation)
+    row: Floats  # (1, n_equation)
+
+
+class Operators(NamedTuple):
+    """The maps from deviations of the supports visited so far: row ``slot * n_unknown + i`` is of unknown i."""
+
+    matrix: Floats  # (n_support * n_unknown, n_used) memory is taken as they are made
     constant: Floats  # (n_support * n_unknown,)
-    usable: Bools  # (n_support,)
-    per_freedom: Floats  # (n_support,) one over the degrees of freedom, NaN where there are none
-    first_choice: int  # the choice of support 0; the one before is of samples without an answer
+    per_freedom: Floats  # (n_support,) by slot: one over the degrees of freedom, NaN where there are none
+    support: Ints  # (n_support,) by slot
+    slot: Ints  # (n_support,) by support; negative where there is none
+    n_made: Ints  # (1,)
+    first_choice: int  # the choice of slot 0; the one before is of samples without an answer
+    equations: Equations
+    work: Work
 
 
 class Results(NamedTuple):

@@ -19,9 +19,13 @@ def compiled_step(function: Callable[..., Any]) -> Any:
     """Compile a step of a kernel, which makes no arrays, so that it counts no references to those it is given.
 
     Each count is an atomic operation; a step on a few hundred samples would spend a tenth of its time so.
-    Numba refuses to compile a step that makes an array.
+    Numba refuses to compile a step that makes an array. The option is not one that numba promises to keep:
+    a numba without it compiles the step like any other function, and its answers are the same.
     """
-    return _compile(function, _nrt=False)
+    try:
+        return _compile(function, _nrt=False)
+    except KeyError:  # what numba raises for an option that it does not know
+        return _compile(function)
 
 
 def inlined(function: Callable[..., Any]) -> Any:

@@ -8,7 +8,8 @@ import gsw
 import numpy as np
 
 from pipeline.mixing.entries import Catalogue, Covariance, SourceValue
-from pipeline.seawater import PRACTICAL_SALINITY, TEMPERATURE, absolute_salinity, preformed_salinity
+from pipeline.mixing.magnitudes import impossible
+from pipeline.seawater import PRACTICAL_SALINITY, absolute_salinity, preformed_salinity
 
 if TYPE_CHECKING:
     from collections.abc import Iterable, Mapping
@@ -20,7 +21,6 @@ PRACTICAL, POTENTIAL = "practical_salinity", "potential_temperature"
 # What a set asks for, and what it is made from: first the counterpart, then what else it takes.
 MADE_FROM: Mapping[str, tuple[str, ...]] = {HEAT: (POTENTIAL, PRACTICAL), SALT: (PRACTICAL,)}
 _UNITS = {SALT: "g/kg", HEAT: "degC"}
-_DOMAINS = {PRACTICAL: PRACTICAL_SALINITY, POTENTIAL: TEMPERATURE}
 
 _STEP = 1e-3  # of practical salinity: Preformed Salinity is proportional to it, so any step will do
 
@@ -41,12 +41,8 @@ def obstacle(source: Source, name: str, state: ReferenceState | None) -> str | N
     for needed in MADE_FROM[name]:
         if needed not in source.properties:
             return f"found {counterpart} and no {needed}; expected both to make {name} of; add it, or give {name}."
-        domain, value = _DOMAINS[needed], source.properties[needed].value
-        if not domain.low <= value <= domain.high:
-            return (
-                f"found {needed} {value:g}; expected {domain.low:g} to {domain.high:g}, to make {name} of it; "
-                f"correct it."
-            )
+        if words := impossible(needed, source.properties[needed].value):
+            return words
     return None
 
 

@@ -11,7 +11,7 @@ import numpy as np
 
 from pipeline.mixing import entries, robust
 from pipeline.mixing.accounts import Account, note
-from pipeline.mixing.entries import LARGEST, CatalogueFile, Covariance, Source, SourceValue
+from pipeline.mixing.entries import LARGEST, SMALLEST, CatalogueFile, Covariance, Source, SourceValue
 from pipeline.mixing.form import Fault
 from pipeline.mixing.gathering import search, waters
 from pipeline.mixing.rules import LEAST_SAMPLES
@@ -25,13 +25,17 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from pipeline.mixing.gathering import Gathered, Search
-    from pipeline.mixing.rules import Header, Rules, SourceRule
+    from pipeline.mixing.rules import Header, Rules, SourceRule, Where
     from pipeline.settings import Settings
 
     FloatArray = NDArray[np.float64]
     BoolArray = NDArray[np.bool_]
     IntArray = NDArray[np.int64]
 
+RELATIVE = (
+    "The sources are samples of the archive and may be mixtures themselves: shares and respiration are relative to "
+    "these samples, and say nothing of how much purer a water was where it formed."
+)
 _DIGITS = 4  # of an uncertainty; a value is given to a thousandth of its uncertainty or finer
 _COVARIANCE_DIGITS = 6
 
@@ -67,7 +71,7 @@ def derive_sources(tables: Iterable[pa.Table], rules: Rules, settings: Settings)
     cruises: set[str] = set()
     for index, (rule, found) in enumerate(zip(rules.source, search(tables, rules, settings), strict=True)):
         if found.gathered is None:
-            one: DerivedSource | list[str] = [_nothing(found)]
+            one: DerivedSource | list[str] = [_nothing(found, rule.where)]
         else:
             cruises.update(map(str, np.unique(found.gathered.expocode)))
             one = _derived(found.gathered, rule, rules.rules, settings)
@@ -104,6 +108,7 @@ def derived_catalogue(
             if rules.rules.covariance
             else "."
         )
+        + f" {RELATIVE}"
     )
     return CatalogueFile(
         catalogue=entries.Header(title=rules.rules.title, reference=reference),
@@ -112,12 +117,22 @@ def derived_catalogue(
     )
 
 
-def _nothing(found: Search) -> str:
-    each = ", ".join(f"{name} for {count}" for name, count in found.alone.items())
+def _nothing(found: Search, where: Where) -> str:
+    each = ", ".join(_alone(found, where))
     return (
         f"found no sample for which all of its conditions hold; of {found.total} samples each alone holds: "
         f"{each or 'none is given'}; expected at least {LEAST_SAMPLES} samples; widen the narrowest."
     )
+
+
+def _alone(found: Search, where: Where) -> Iterator[str]:
+    """Yield for each condition that the rule has, written or not, how many samples it holds for."""
+    for name, count in found.alone.items():
+        if name != "mixed_layer":
+            yield f"{name} for {count}"
+        elif where.mixed_layer == "exclude":
+            unwritten = " (which holds unless mixed_layer = 'include' is written)"
+            yield f"being below the mixed layer{'' if name in where.model_fields_set else unwritten} for {count}"
 
 
 @dataclass(frozen=True, slots=True)
@@ -225,7 +240,7 @@ def _lacking(having: Mapping[str, int], every: int) -> Iterator[str]:
 
 def _unusable(header: Header, centre: FloatArray, uncertainty: FloatArray) -> Iterator[str]:
     for name, value, doubt in zip(header.properties, centre, uncertainty, strict=True):
-        if doubt == 0:
+        if doubt < SMALLEST:
             yield (
                 f"found the same {name}, {value:g}, in most samples, and no usual uncertainty of its measurement; "
                 f"expected a source that is uncertain; set mixing.uncertainty.{name} in the settings."

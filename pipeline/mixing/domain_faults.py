@@ -25,19 +25,20 @@ _POSSIBLE = {
 
 def domain_faults(valid: Domain) -> Iterator[tuple[str, str]]:
     """Yield the key and the words of every fault of a domain of sound form."""
+    beyond = set()
     for name, (low, high) in _BOUNDS.items():
-        for end in getattr(valid, name) or ():
-            if not low <= end <= high:
-                yield (
-                    name,
-                    (
-                        f"found {end:g} as an end of the {name}s it is valid in; expected {low:g} to {high:g}; "
-                        f"correct it."
-                    ),
-                )
+        if far := [f"{end:g}" for end in getattr(valid, name) or () if not low <= end <= high]:
+            beyond.add(name)
+            yield (
+                name,
+                (
+                    f"found {' and '.join(far)} as an end of the {name}s it is valid in; expected {low:g} to "
+                    f"{high:g}; correct it."
+                ),
+            )
     for name in RANGES:
         ends = getattr(valid, name)
-        if ends is None:
+        if ends is None or name in beyond:
             continue
         if ends[0] > ends[1]:
             yield (
@@ -53,6 +54,8 @@ def domain_faults(valid: Domain) -> Iterator[tuple[str, str]]:
                     f"of {low:g} to {high:g}; correct it."
                 ),
             )
+    for month in sorted({month for month in valid.months or () if (valid.months or ()).count(month) > 1}):
+        yield "months", f"found the month {month} twice; expected it once; remove one."
     if valid.region is not None:
         if words := polygon_fault(valid.region):
             yield "region", words

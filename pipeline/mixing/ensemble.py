@@ -25,6 +25,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from pipeline.mixing.operators import RANK_TOLERANCE, bits_of, sizes_of
 from pipeline.mixing.problem import weighted_system
 from pipeline.mixing.solver import groups
 
@@ -63,6 +64,7 @@ class _Workshop:
     n_summed: int
     mass: float
     weight: FloatArray  # (n_used,)
+    sizes: FloatArray = field(init=False)  # (n_member, n_unknown)
     slots: NDArray[np.int32] = field(init=False)  # (n_member, n_support)
     filled: IntArray = field(init=False)  # (1,)
     room: FloatArray = field(init=False)  # (n_room, n_used + 1, n_lane)
@@ -70,6 +72,7 @@ class _Workshop:
     def __post_init__(self) -> None:
         """Make room, none of which is in use yet."""
         n_member, n_unknown, _ = self.systems.shape
+        self.sizes = sizes_of(self.systems)
         n_support = int(self.bit.max()) << 1
         one = (self.weight.size + 1, -(-n_unknown // _LANES) * _LANES)
         n_room = max(1, min(n_member * n_support, _ROOM // (8 * one[0] * one[1])))
@@ -144,10 +147,12 @@ def run_ensemble(
             leading,
             np.ascontiguousarray(reference[:, columns].T),
             workshop.systems,
+            workshop.sizes,
             workshop.weight,
             workshop.bit,
             workshop.n_summed,
             workshop.mass,
+            RANK_TOLERANCE,
             np.ascontiguousarray(carried.transpose(2, 1, 0)),
             workshop.slots,
             workshop.filled,
@@ -159,20 +164,6 @@ def run_ensemble(
         )
         _put_back(workshop)
     return Ensemble(spread[:, :n_source], spread[:, n_source:], percentiles, probability, carried_spread)
-
-
-def operator(problem: MixingProblem, columns: IntArray, support: int) -> FloatArray:
-    """Return how the unknowns of one support follow the properties ``columns``, (n_used, n_unknown).
-
-    Zero for unknowns that take no part.
-    """
-    from pipeline.mixing import ensemble_kernel as kernel  # noqa: PLC0415 - numba takes long to import
-
-    own = _workshop(problem, (problem.sources - problem.reference)[None], columns)
-    matrix = own.room[0]
-    kernel.make_operator(own.systems[0], support, own.bit, own.n_summed, own.mass, own.weight, matrix)
-    inside = (own.bit == 0) | ((own.bit & support) != 0)
-    return np.where(inside, matrix[:-1, : problem.n_unknown], 0.0)
 
 
 def operators_kept() -> int:
@@ -198,8 +189,7 @@ def _workshop(problem: MixingProblem, deviations: FloatArray, columns: IntArray)
     if problem.mass_weight is not None:
         row = np.where(np.arange(problem.n_unknown) < n_source, mass, 0.0)
         systems = np.concatenate([systems, np.broadcast_to(row[:, None], (n_member, len(row), 1))], axis=2)
-    bit = np.zeros(problem.n_unknown, dtype=np.int64)
-    bit[unperturbed.constrained] = 1 << np.arange(unperturbed.constrained.sum())
+    bit = bits_of(unperturbed.constrained)
     n_summed = int(unperturbed.summed.sum())
     content = hashlib.blake2b(systems.tobytes())
     for part in (np.array(systems.shape), weight, bit, np.array([n_summed, mass])):

@@ -1,7 +1,6 @@
 """The compiled part of the ensemble: repeatable normal numbers, and all members of one sample after another.
 
-All of it stays in one file: numba's store of machine code does not notice when a function in another file
-has changed. ``ensemble`` imports it at its first use.
+``ensemble`` imports it at its first use.
 """
 
 from __future__ import annotations
@@ -11,8 +10,11 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from pipeline.mixing.blocks import Equations, Work
 from pipeline.mixing.compiled import compiled as _compiled
 from pipeline.mixing.compiled import inlined as _inlined
+from pipeline.mixing.making import UNKNOWN, UNUSABLE, make_operator
+from pipeline.mixing.pivoting import PATIENCE, PIVOTS_PER_UNKNOWN, exchanged
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -22,17 +24,16 @@ if TYPE_CHECKING:
     Keys = NDArray[np.uint64]
     Bools = NDArray[np.bool_]
 
+# Of what is compiled into this module from others, as in ``kernel``.
+BUILT_FROM = "da2bf5328bdd2ce2"
+
 # SplitMix64 (Steele, Lea and Flood 2014; constants from memory): a counter times the golden ratio, mixed.
 _GOLDEN = np.uint64(0x9E3779B97F4A7C15)
 _FIRST = np.uint64(0xBF58476D1CE4E5B9)
 _SECOND = np.uint64(0x94D049BB133111EB)
 _30, _27, _31, _12 = np.uint64(30), np.uint64(27), np.uint64(31), np.uint64(12)
 
-_DEPENDENT = 1e-10  # part of a column that is left of it below which it depends on those before
 _ROUNDING = 1e-10  # of the sample's largest weighted deviation: how far below zero is still zero
-_PATIENCE = 3  # whole exchanges allowed without progress before pivoting one at a time
-_PIVOTS_PER_UNKNOWN = 8
-_UNKNOWN, _UNUSABLE = -1, -2  # an operator not made yet; one whose columns are dependent
 _ALIKE = 1e-14  # shares no further apart are equal
 _RANKS = (0.16, 0.50, 0.84)
 
@@ -89,126 +90,30 @@ def normals(keys: Keys, numbers: Floats) -> None:
 
 
 @_compiled
-def _factor(
-    system: Floats, support: int, bit: Ints, n_summed: int, anchor: int, pull: Floats, which: Ints,
-    Q: Floats, R: Floats,
-) -> int:  # fmt: skip
-    """Factor the columns that take part into ``Q`` and ``R``, and return how many there are; -1 if dependent.
-
-    Modified Gram and Schmidt. ``which`` tells whose column is factored when, and ``pull`` is written with
-    the columns of all unknowns, those of the shares less the anchor's.
-    """
-    n = 0
-    for i in range(bit.size):
-        pull[i] = system[i]
-        if i < n_summed:
-            pull[i] -= system[anchor]
-        if i == anchor or not (bit[i] == 0 or bit[i] & support):
-            continue
-        if n == system.shape[1]:
-            return -1
-        column = pull[i].copy()
-        before = sqrt(np.sum(column * column))
-        for k in range(n):
-            R[k, n] = np.sum(Q[k] * column)
-            column -= R[k, n] * Q[k]
-        R[n, n] = sqrt(np.sum(column * column))
-        if not R[n, n] > _DEPENDENT * before:
-            return -1
-        Q[n] = column / R[n, n]
-        which[n] = i
-        n += 1
-    return n
-
-
-@_compiled
-def make_operator(
-    system: Floats, support: int, bit: Ints, n_summed: int, mass: float, weight: Floats, matrix: Floats
-) -> bool:
-    """Write the affine map of one support into ``matrix``; False where its columns are dependent.
-
-    For deviations d of the properties, ``matrix[:-1].T @ d + matrix[-1]`` is the value of an unknown
-    that takes part, and for one held at zero the reduced gradient over the square of its column. Where
-    the sum is exact, the first share that takes part, the anchor, is put as one less the others.
-
-    Parameters
-    ----------
-    system
-        Weighted columns of the unknowns, (n_unknown, n_equation); past the properties, the mass row.
-    support, bit
-        Bits of the constrained unknowns that take part, and which is whose, (n_unknown,), 0 for a free one.
-    n_summed
-        The first so many unknowns add up to one exactly; 0 where no sum is held.
-    mass
-        What the mass row adds up to, weighted.
-    weight
-        Of the properties, (n_used,).
-    matrix
-        Written: (n_used + 1, n_lane).
-
-    """
-    n_unknown, n_equation = system.shape
-    n_used = weight.size
-    anchor = -1
-    for i in range(n_summed):
-        if bit[i] & support:
-            anchor = i
-            break
-    if n_summed and anchor < 0:
-        return False
-    Q, R = np.zeros((n_unknown, n_equation)), np.zeros((n_unknown, n_unknown))
-    pull, which = np.zeros((n_unknown, n_equation)), np.zeros(n_unknown, np.int64)
-    n = _factor(system, support, bit, n_summed, anchor, pull, which, Q, R)
-    if n < 0:
-        return False
-
-    full = np.zeros((n_unknown, n_equation))  # row i acts on the weighted data less the anchor's column
-    for k in range(n - 1, -1, -1):
-        row = full[which[k]]
-        row[:] = Q[k]
-        for later in range(k + 1, n):
-            row -= R[k, later] * full[which[later]]
-        row /= R[k, k]
-    matrix[:] = 0.0
-    for i in range(n_unknown):
-        taking = i == anchor or bit[i] == 0 or bit[i] & support
-        if i == anchor:
-            for k in range(n):
-                if which[k] < n_summed:
-                    full[i] -= full[which[k]]
-        elif not taking:
-            size = np.sum(pull[i] * pull[i])
-            row = full[i]
-            row[:] = -pull[i]
-            for k in range(n):
-                row -= np.sum(Q[k] * row) * Q[k]
-            row /= size if size > 0.0 else 1.0
-        constant = 1.0 if i == anchor else 0.0
-        if anchor >= 0:
-            constant -= np.sum(full[i] * system[anchor])
-        if n_equation > n_used:
-            constant += full[i, n_used] * mass
-        matrix[n_used, i] = constant
-        for j in range(n_used):
-            matrix[j, i] = full[i, j] * weight[j]
-    return True
-
-
-@_compiled
 def _keep_operator(
-    member: int, support: int, systems: Floats, bit: Ints, n_summed: int, mass: float, weight: Floats,
+    member: int, support: int, equations: Equations, work: Work, matrix: Floats, constant: Floats,
     slots: Ints, filled: Ints, room: Floats,
 ) -> None:  # fmt: skip
-    """Make the operator of a member's support and keep it in ``room``, which is emptied when it is full."""
+    """Make the operator of a member's support and keep it in ``room``, which is emptied when it is full.
+
+    For deviations d of the properties, ``room[slot, :-1].T @ d + room[slot, -1]`` is what the operator makes
+    of them. ``matrix`` (n_unknown, n_used) and ``constant`` (n_unknown,) are room to work in.
+    """
     if filled[0] == room.shape[0]:
-        slots[:] = _UNKNOWN
+        slots[:] = UNKNOWN
         filled[0] = 0
-    slot = filled[0]
-    if make_operator(systems[member], support, bit, n_summed, mass, weight, room[slot]):
-        slots[member, support] = slot
-        filled[0] += 1
-    else:
-        slots[member, support] = _UNUSABLE
+    if not make_operator(equations, support, work, matrix, constant, 0):
+        slots[member, support] = UNUSABLE
+        return
+    n_unknown, n_used = matrix.shape
+    own = room[filled[0]]
+    own[:] = 0.0
+    for i in range(n_unknown):
+        own[n_used, i] = constant[i]
+        for j in range(n_used):
+            own[j, i] = matrix[i, j]
+    slots[member, support] = filled[0]
+    filled[0] += 1
 
 
 @_inlined
@@ -218,37 +123,28 @@ def _walk(
 ) -> int:  # fmt: skip
     """Pivot from ``support`` to the optimum of one member, its operator's entries in ``value``.
 
-    Whole exchanges, with single pivots when they stall (Portugal, Judice and Vicente 1994). Returns the
-    support, or -1 where that leads nowhere, or less the support whose operator has to be made first and 2.
-    It makes none itself, and is inlined: numba counts references to arrays that are handed on, which
-    would cost as much as all the rest.
+    Returns the support, or -1 where that leads nowhere, or less the support whose operator has to be made
+    first and 2. It makes none itself, and is inlined: numba counts references to arrays that are handed on,
+    which would cost as much as all the rest.
     """
     n_used, n_unknown = deviations.shape[0], bit.size
-    fewest = n_unknown + 1
-    patience = _PATIENCE
-    for _ in range(_PIVOTS_PER_UNKNOWN * n_unknown):
+    fewest, patience = n_unknown + 1, PATIENCE
+    for _ in range(PIVOTS_PER_UNKNOWN * n_unknown):
         slot = slots[member, support]
         if slot < 0:
-            return -1 if slot == _UNUSABLE else -2 - support
+            return -1 if slot == UNUSABLE else -2 - support
         for i in range(n_unknown):
             total = room[slot, n_used, i]
             for j in range(n_used):
                 total += room[slot, j, i] * deviations[j, member]
             value[i] = total
-        violated = count = last = 0
+        violated = 0
         for i in range(n_unknown):
             if bit[i] and value[i] < -rounding:
                 violated |= bit[i]
-                count += 1
-                last = bit[i]
         if violated == 0:
             return support
-        if count < fewest:
-            fewest = count
-            patience = _PATIENCE
-        else:
-            patience -= 1
-        support ^= violated if patience >= 0 else last
+        support, fewest, patience = exchanged(support, violated, fewest, patience)
     return -1
 
 
@@ -307,8 +203,8 @@ def _spread(numbers: Floats) -> float:
 def run_rows(
     observed: Floats, rows: Ints, columns: Ints, keys: Keys, property_keys: Keys, absolute: Floats,
     relative: Floats, supports: Ints, leading: Ints,
-    reference: Floats, systems: Floats, weight: Floats, bit: Ints, n_summed: int, mass: float,
-    carried: Floats, slots: Ints, filled: Ints, room: Floats,
+    reference: Floats, systems: Floats, sizes: Floats, weight: Floats, bit: Ints, n_summed: int, mass: float,
+    tolerance: float, carried: Floats, slots: Ints, filled: Ints, room: Floats,
     spread: Floats, percentiles: Floats, probability: Floats, carried_spread: Floats,
 ) -> None:  # fmt: skip
     """Solve every member of samples ``rows`` and write what their members show, the last four arguments.
@@ -330,9 +226,11 @@ def run_rows(
     reference
         What is subtracted from each used property, (n_used, n_member).
     systems
-        Weighted columns per member, (n_member, n_unknown, n_equation), as ``make_operator`` takes them.
-    weight, bit, n_summed, mass
-        As ``make_operator`` takes them.
+        Weighted columns per member, (n_member, n_unknown, n_equation).
+    sizes
+        Of the columns, (n_member, n_unknown).
+    weight, bit, n_summed, mass, tolerance
+        As ``Equations`` has them.
     carried
         Value of further quantities in every source, (n_quantity, n_source, n_member).
     slots, filled, room
@@ -347,6 +245,12 @@ def run_rows(
     unknowns, sums = np.zeros((n_unknown, n_member)), np.zeros((n_quantity, n_member))
     value, ranks, ordered = np.zeros(room.shape[2]), np.zeros(len(_RANKS)), np.zeros(n_member)
     lots, ends = np.zeros(n_member, np.int64), np.zeros(n_member, np.int64)
+    n_equation = systems.shape[2]
+    work = Work(
+        np.empty((n_unknown, n_unknown)), np.empty((n_unknown, n_equation)), np.empty((1, n_unknown)),
+        np.empty((1, n_equation)), np.empty((1, n_equation)),
+    )  # fmt: skip
+    matrix, constant = np.empty((n_unknown, n_used)), np.empty(n_unknown)
     for row in rows:
         largest = 1.0
         for j in range(n_used):
@@ -364,7 +268,8 @@ def run_rows(
             while support < -1:
                 support = _walk(m, supports[row], bit, slots, room, deviations, rounding, value)
                 if support < -1:
-                    _keep_operator(m, -2 - support, systems, bit, n_summed, mass, weight, slots, filled, room)
+                    own = Equations(systems[m], sizes[m], bit, n_summed, weight, mass, tolerance)
+                    _keep_operator(m, -2 - support, own, work, matrix, constant, slots, filled, room)
             if support < 0:
                 continue
             total = 0.0

@@ -15,11 +15,12 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
 LARGEST = 1e6  # no property of sea water comes near it in the registry's units
+SMALLEST = 1e-9  # nor is any known so well; squares of what is far smaller would be zero
 MOST_SOURCES = 12
 MOST_VERTICES = 500
 
 Number = Annotated[float, Field(strict=True, ge=-LARGEST, le=LARGEST, allow_inf_nan=False)]
-Positive = Annotated[float, Field(strict=True, gt=0, le=LARGEST, allow_inf_nan=False)]
+Positive = Annotated[float, Field(strict=True, ge=SMALLEST, le=LARGEST, allow_inf_nan=False)]
 Code = Annotated[str, Field(pattern=r"^[A-Za-z0-9_-]{1,12}$")]
 Text = Annotated[str, Field(min_length=1, max_length=2_000)]
 Name = Annotated[str, Field(min_length=1, max_length=60)]

@@ -12,7 +12,7 @@ from pipeline.mixing.conversion import asked_of, converted_source
 from pipeline.mixing.domain_faults import domain_faults
 from pipeline.mixing.entries import ReferenceState, Source, SourceSet
 from pipeline.mixing.form import Fault
-from pipeline.mixing.properties import ratios_of, respiration_ratios
+from pipeline.mixing.properties import LISTED_AS, ratios_of, respiration_ratios
 from pipeline.mixing.source_faults import gaps, no_property, source_faults
 from pipeline.settings import TracerSettings
 
@@ -35,6 +35,10 @@ def entry_faults(written: Mapping[str, Any]) -> list[Fault]:
     sources = _as_used(given, sets.values(), written.get("catalogue"))
     codes = _labels(written.get("source"), "code")
     by_code = {source.code: source for source in sources.values()}
+    repeated = len(set(codes.values())) < len(codes)
+    # Where a code is wanting or there twice, a set may mean that source: one fault is told once.
+    whole = codes and not repeated and len(codes) == _count(written.get("source"))
+    known = set(codes.values()) if whole else None
     faults = [
         *_repeated(codes, ("source", "code")),
         *_repeated(_labels(written.get("set"), "name"), ("set", "name")),
@@ -43,9 +47,10 @@ def entry_faults(written: Mapping[str, Any]) -> list[Fault]:
         for at, words in source_faults(source):
             faults.append(Fault(("source", index, *at), f"source '{source.code}': {words}"))
     for index, chosen in sets.items():
-        for at, words in _set_faults(chosen, by_code, set(codes.values())):
+        for at, words in _set_faults(chosen, by_code, known):
             faults.append(Fault(("set", index, *at), f"set '{chosen.name}': {words}"))
-    faults += _gaps(sources, sets.values(), written.get("catalogue"))
+    if not repeated:
+        faults += _gaps(sources, sets.values(), written.get("catalogue"))
     return faults
 
 
@@ -67,6 +72,10 @@ def _as_used(given: Mapping[int, Source], sets: Iterable[SourceSet], header: Any
         )[0]
         for index, source in given.items()
     }
+
+
+def _count(entries: Any) -> int:
+    return len(entries) if isinstance(entries, list) else 0
 
 
 def _labels(entries: Any, key: str) -> dict[int, str]:
@@ -111,8 +120,9 @@ def _reference_state(header: Any) -> tuple[ReferenceState | None, bool]:
 
 
 def _set_faults(
-    chosen: SourceSet, by_code: Mapping[str, Source], codes: set[str]
+    chosen: SourceSet, by_code: Mapping[str, Source], known: set[str] | None
 ) -> Iterator[tuple[Location, str]]:
+    """Judge one set; ``known`` are the codes of the file, None where they are at fault themselves."""
     for key, names, what in (
         ("sources", chosen.sources, "source"),
         ("properties", chosen.properties, "property"),
@@ -120,12 +130,20 @@ def _set_faults(
         for name in sorted({name for name in names if names.count(name) > 1}):
             yield (key,), f"found the {what} '{name}' twice; expected it once; remove one."
     for code in chosen.sources:
-        if code not in codes:
-            known = ", ".join(sorted(codes))
-            yield ("sources",), f"found the unknown source '{code}'; expected some of {known}; correct it."
+        if known is not None and code not in known:
+            some = ", ".join(sorted(known))
+            yield ("sources",), f"found the unknown source '{code}'; expected some of {some}; correct it."
     for name in chosen.properties:
         if words := no_property(name):
             yield ("properties",), words
+        elif name in LISTED_AS:
+            yield (
+                ("properties",),
+                (
+                    f"found the property '{name}'; expected {LISTED_AS[name]}, which mixes in proportion; list that "
+                    f"one: sources may go on giving {name}, which is converted at [catalogue.reference_state]."
+                ),
+            )
     yield from _counting(chosen)
     yield from _weighting(chosen)
     yield from ((("valid", key), words) for key, words in domain_faults(chosen.valid))
@@ -145,9 +163,9 @@ def _counting(chosen: SourceSet) -> Iterator[tuple[Location, str]]:
         yield (
             ("sources",),
             (
-                f"found {n_unknown} unknowns ({shares}) for {n_equation} equations ({len(chosen.properties)} properties"
-                f" and the sum of the shares); expected no more unknowns than equations; add properties or take "
-                f"sources away."
+                f"found {n_unknown} unknowns ({shares}) for {n_equation} equations ({len(chosen.properties)} "
+                f"{'property' if n_equation == 2 else 'properties'} and the sum of the shares); expected "
+                f"no more unknowns than equations; add properties or take sources away."
             ),
         )
     ratios = respiration_ratios(TracerSettings(), chosen.silicate_per_phosphate)

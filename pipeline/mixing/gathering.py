@@ -15,7 +15,7 @@ from pipeline.mixing.domains import validity
 from pipeline.mixing.entries import Domain
 from pipeline.tables import KEY, floats, texts
 from pipeline.usable import usable
-from pipeline.variables import REGISTRY, check_name, flag_name
+from pipeline.variables import REGISTRY, check_name, corrected_name, flag_name
 
 if TYPE_CHECKING:
     from collections.abc import Iterable, Iterator, Mapping, Sequence
@@ -62,7 +62,7 @@ def columns_used(rules: Rules) -> list[str]:
         named |= set(rule.where.ranges)
         if rule.extremum:
             named.add(rule.extremum.property)
-    beside = {of(name) for name in named for of in (flag_name, check_name)}
+    beside = {of(name) for name in named for of in (flag_name, check_name, corrected_name)}
     return [name for name in REGISTRY if name in {*named, *beside, *KEY, "bottle_flag"}]
 
 

@@ -1,7 +1,6 @@
 """The compiled walk over samples: find each one's support, evaluate its operator, write the answer.
 
-Importing this module loads numba; ``solver`` does so at its first solution, not before. All functions stay in
-one file: numba's store of machine code does not notice when one in another file has changed.
+Importing this module loads numba; ``solver`` does so at its first solution, not before.
 
 Samples are taken in blocks, their numbers beside one another, because one operation on many samples is
 what a processor does fastest. Those that need another support than their block's wait until enough wait for
@@ -17,6 +16,8 @@ import numpy as np
 from pipeline.mixing.blocks import Block, Room, Waiting
 from pipeline.mixing.compiled import compiled as _compiled
 from pipeline.mixing.compiled import compiled_step as _step
+from pipeline.mixing.making import slot_of
+from pipeline.mixing.pivoting import PATIENCE, PIVOTS_PER_UNKNOWN, exchanged
 from pipeline.mixing.status import MixingStatus
 
 if TYPE_CHECKING:
@@ -26,6 +27,10 @@ if TYPE_CHECKING:
 
     Floats = NDArray[np.float64]
     Ints = NDArray[np.integer[Any]]
+
+# Of what is compiled into this module from others. Numba's store of machine code notices only when this file
+# has changed: tests/mixing/test_compiled.py tells what to write here when one of those has.
+BUILT_FROM = "da2bf5328bdd2ce2"
 
 _SOLVED = int(MixingStatus.SOLVED)
 _ABSURD = int(MixingStatus.ABSURD)
@@ -41,15 +46,13 @@ _ENOUGH = 256  # samples that wait for the same support from which they are take
 _FEW, _WAITING = 32, 1 << 19  # room for those that wait: of one support at least, of all at most
 _SKEW = 8  # added to rows of a block: rows a power of two apart would evict one another
 _QUICK = 12  # whole exchanges tried from the first guess before looking carefully
-_PATIENCE = 3  # whole exchanges allowed without progress before pivoting one at a time
-_PIVOTS_PER_UNKNOWN = 8  # then all supports are compared
 
 
 @_step
-def _evaluate(operators: Operators, support: int, deviation: Floats, value: Floats) -> None:
-    """Evaluate the operator of ``support`` for one sample, (n_used,), into ``value``, (n_unknown,)."""
+def _evaluate(operators: Operators, slot: int, deviation: Floats, value: Floats) -> None:
+    """Evaluate the operator in ``slot`` for one sample, (n_used,), into ``value``, (n_unknown,)."""
     for i in range(value.size):
-        k = support * value.size + i
+        k = slot * value.size + i
         value[i] = operators.constant[k]
         for j in range(deviation.size):
             value[i] += operators.matrix[k, j] * deviation[j]
@@ -70,32 +73,18 @@ def _judge(bit: Ints, negative: float, value: Floats) -> tuple[int, float]:
 
 @_step
 def _walk(system: System, operators: Operators, deviation: Floats, rounding: float, value: Floats) -> int:
-    """Pivot from everything until no constrained entry is negative; -1 where that leads nowhere.
-
-    Whole exchanges, with single pivots when they stall (Portugal, Judice and Vicente 1994).
-    """
-    bit, usable = system.bit, operators.usable
-    support = usable.size - 1
-    fewest = bit.size + 1
-    patience = _PATIENCE
-    for _ in range(_PIVOTS_PER_UNKNOWN * bit.size):
-        if not usable[support]:
+    """Pivot from everything until no constrained entry is negative; -1 where that leads nowhere."""
+    support = operators.slot.size - 1
+    fewest, patience = system.bit.size + 1, PATIENCE
+    for _ in range(PIVOTS_PER_UNKNOWN * system.bit.size):
+        slot = slot_of(operators, support)
+        if slot < 0:
             return -1
-        _evaluate(operators, support, deviation, value)
-        violated, _lowest = _judge(bit, -rounding, value)
+        _evaluate(operators, slot, deviation, value)
+        violated, _lowest = _judge(system.bit, -rounding, value)
         if violated == 0:
             return support
-        count = last = 0
-        for i in range(bit.size):
-            if bit[i] & violated:
-                count += 1
-                last = bit[i]
-        if count < fewest:
-            fewest = count
-            patience = _PATIENCE
-        else:
-            patience -= 1
-        support ^= violated if patience >= 0 else last
+        support, fewest, patience = exchanged(support, violated, fewest, patience)
     return -1
 
 
@@ -104,9 +93,10 @@ def _compare_all(system: System, operators: Operators, deviation: Floats, value:
     """Return the usable support whose lowest constrained entry is highest, the first of equals; -1 for none."""
     best = -1
     best_lowest = -np.inf
-    for support in range(operators.usable.size):
-        if operators.usable[support]:
-            _evaluate(operators, support, deviation, value)
+    for support in range(operators.slot.size):
+        slot = slot_of(operators, support)
+        if slot >= 0:
+            _evaluate(operators, slot, deviation, value)
             _violated, lowest = _judge(system.bit, 0.0, value)
             if lowest > best_lowest:
                 best = support
@@ -129,18 +119,19 @@ def _find_carefully(
         support = _compare_all(system, operators, deviation, value)
     if support < 0:
         return support
-    _evaluate(operators, support, deviation, value)
+    slot = slot_of(operators, support)
+    _evaluate(operators, slot, deviation, value)
     smaller = support
     for i in range(bit.size):
         if bit[i] & support and value[i] <= rounding:
             smaller ^= bit[i]
-    if smaller == support or not operators.usable[smaller]:
+    if smaller == support or slot_of(operators, smaller) < 0:
         return support
-    _evaluate(operators, smaller, deviation, value)
+    _evaluate(operators, slot_of(operators, smaller), deviation, value)
     _violated, lowest = _judge(bit, 0.0, value)
     if lowest >= -4 * rounding:
         return smaller
-    _evaluate(operators, support, deviation, value)
+    _evaluate(operators, slot, deviation, value)
     return support
 
 
@@ -160,9 +151,7 @@ def _add(total: Floats, i: int, factors: Floats, k: int, rows: Floats, n_row: in
 
 
 @_step
-def _judge_block(
-    system: System, operators: Operators, support: int, block: Block, n: int, room: Room
-) -> None:
+def _judge_block(system: System, operators: Operators, slot: int, block: Block, n: int, room: Room) -> None:
     """Do what ``_evaluate`` and ``_judge`` do, with the same bits, for the first ``n`` of a block."""
     bit, matrix, constant, deviation = system.bit, operators.matrix, operators.constant, block.deviation
     value, lowest, violated = room.value, room.lowest, room.violated
@@ -170,7 +159,7 @@ def _judge_block(
         lowest[t] = np.inf
         violated[t] = 0
     for i in range(bit.size):
-        own, k = bit[i], support * bit.size + i
+        own, k = bit[i], slot * bit.size + i
         start = constant[k]
         for t in range(n):
             value[i, t] = start
@@ -183,7 +172,7 @@ def _judge_block(
 
 @_step
 def _answer_block(
-    system: System, operators: Operators, support: int, block: Block, n: int, room: Room, results: Results
+    system: System, operators: Operators, slot: int, block: Block, n: int, room: Room, results: Results
 ) -> None:
     """Turn entries of the operator into unknowns: zero outside the support, never negative, the sum one.
 
@@ -191,7 +180,7 @@ def _answer_block(
     """
     bit, design, uncertainty, n_summed = system.bit, system.design, system.uncertainty, system.n_summed
     deviation, value, misfit = block.deviation, room.value, room.misfit
-    spare = bit.size  # a row to work in
+    support, spare = operators.support[slot], bit.size  # spare is a row to work in
     for i in range(bit.size):
         if bit[i]:
             inside = bit[i] & support != 0
@@ -217,7 +206,7 @@ def _answer_block(
             misfit[t] += (value[spare, t] * precision) ** 2
     lowest, rows = room.lowest, block.row
     unknowns, chi_square, optimality, choice, status = results
-    per_freedom, own_choice = operators.per_freedom[support], operators.first_choice + support
+    per_freedom, own_choice = operators.per_freedom[slot], operators.first_choice + slot
     for t in range(n):
         row = rows[t]
         for i in range(unknowns.shape[1]):
@@ -245,8 +234,9 @@ def _settle_alone(
     if support < 0 or _judge(system.bit, 0.0, value)[1] < -_FAILED * scale:
         results.status[row], results.choice[row] = _NOT_OPTIMAL, operators.first_choice - 1
         return
-    _judge_block(system, operators, support, single, 1, room)
-    _answer_block(system, operators, support, single, 1, room, results)
+    slot = slot_of(operators, support)
+    _judge_block(system, operators, slot, single, 1, room)
+    _answer_block(system, operators, slot, single, 1, room, results)
 
 
 @_step
@@ -259,11 +249,12 @@ def _settle(
     An optimum with a clear margin is unique, so it may be looked for from anywhere; any other is found
     from the sample alone. So the answer depends neither on the guess nor on the rest of the batch.
     """
-    if not operators.usable[support]:
+    slot = slot_of(operators, support)
+    if slot < 0:
         for t in range(n):
             _settle_alone(system, operators, block, t, single, alone, results)
         return
-    _judge_block(system, operators, support, block, n, room)
+    _judge_block(system, operators, slot, block, n, room)
     value, lowest, violated = room.value, room.lowest, room.violated
     settled, other = room.settled, room.other
     deviation, rows, scale, tried = block
@@ -299,7 +290,7 @@ def _settle(
         for i in range(value.shape[0] - 1):
             for index in range(n_settled):
                 value[i, index] = value[i, settled[index]]
-    _answer_block(system, operators, support, block, n_settled, room, results)
+    _answer_block(system, operators, slot, block, n_settled, room, results)
 
 
 @_step
@@ -360,7 +351,7 @@ def solve_rows(observed: Floats, rows: Ints, system: System, operators: Operator
 
     Those that lack a property of ``system`` are passed over.
     """
-    n_used, n_unknown, n_support = system.columns.size, system.bit.size, operators.usable.size
+    n_used, n_unknown, n_support = system.columns.size, system.bit.size, operators.slot.size
     n_row = rows.size or observed.shape[0]
     n_block = min(_BLOCK, n_row)
     n_wait = max(_FEW, min(2 * _ENOUGH, _WAITING // n_support))

@@ -1,7 +1,7 @@
-"""The compiled making of operators: one small orthogonal factorisation per support.
+"""The compiled making of operators, one support at a time: a small orthogonal factorisation each.
 
-``operators`` imports it at its first use, because it loads numba. What it needs stays in this file: numba's
-store of machine code does not notice when a function in another file has changed.
+An operator is a function of the system and the support alone, so that when it is made shows in no bit of it.
+Nothing here makes an array: what is needed to work in is handed on, as ``Work``.
 """
 
 from __future__ import annotations
@@ -12,16 +12,20 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from pipeline.mixing.compiled import compiled as _compiled
+from pipeline.mixing.compiled import compiled_step as _step
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
+    from pipeline.mixing.blocks import Equations, Operators, Work
+
     Floats = NDArray[np.float64]
     Ints = NDArray[np.integer[Any]]
-    Bools = NDArray[np.bool_]
+
+UNKNOWN, UNUSABLE = -1, -2  # an operator not made yet; one whose columns are dependent
 
 
-@_compiled
+@_step
 def _dot(one: Floats, i: int, other: Floats, k: int) -> float:
     """Return the scalar product of two rows."""
     total = 0.0
@@ -30,15 +34,15 @@ def _dot(one: Floats, i: int, other: Floats, k: int) -> float:
     return total
 
 
-@_compiled
+@_step
 def _add(one: Floats, i: int, factor: float, other: Floats, k: int) -> None:
     """Add a multiple of row ``k`` to row ``i``."""
     for j in range(one.shape[1]):
         one[i, j] += factor * other[k, j]
 
 
-@_compiled
-def _span(inside: Bools, n_summed: int, P: Floats, start: Floats) -> int:
+@_step
+def _span(bit: Ints, support: int, n_summed: int, P: Floats, start: Floats) -> int:
     """Write unknowns that span what a support allows as rows of ``P``, and one point of it; return how many.
 
     Summed unknowns keep their sum: they change by rows of Helmert's matrix, one against the mean of those
@@ -47,8 +51,8 @@ def _span(inside: Bools, n_summed: int, P: Floats, start: Floats) -> int:
     P[:] = 0.0
     start[:] = 0.0
     n_row = n_before = 0
-    for i in range(inside.size):
-        if not inside[i]:
+    for i in range(bit.size):
+        if bit[i] and not bit[i] & support:
             continue
         if i >= n_summed:
             P[n_row, i] = 1.0
@@ -57,7 +61,7 @@ def _span(inside: Bools, n_summed: int, P: Floats, start: Floats) -> int:
         if n_before:
             size = sqrt(n_before * (n_before + 1.0))
             for before in range(i):
-                if inside[before]:
+                if bit[before] & support:
                     P[n_row, before] = 1.0 / size
             P[n_row, i] = -n_before / size
             n_row += 1
@@ -65,12 +69,12 @@ def _span(inside: Bools, n_summed: int, P: Floats, start: Floats) -> int:
     if n_summed and n_before == 0:
         return -1
     for i in range(n_summed):
-        if inside[i]:
+        if bit[i] & support:
             start[0, i] = 1.0 / n_before
     return n_row
 
 
-@_compiled
+@_step
 def _orthogonalise(A: Floats, rank: int, tolerance: float, P: Floats, Q: Floats) -> bool:
     """Make the first ``rank`` rows of ``Q = P A`` orthonormal by changing ``P``; False where they are dependent.
 
@@ -111,54 +115,84 @@ def _orthogonalise(A: Floats, rank: int, tolerance: float, P: Floats, Q: Floats)
     return True
 
 
-@_compiled
-def make_operators(
-    A: Floats, sizes: Floats, inside: Bools, n_summed: int, tolerance: float, matrix: Floats,
-    constant: Floats, usable: Bools,
-) -> None:  # fmt: skip
-    """Make the operators of all supports and write them into the last three arguments.
+@_step
+def make_operator(
+    equations: Equations, support: int, work: Work, matrix: Floats, constant: Floats, first: int
+) -> bool:
+    """Write the operator of one support; False where its columns are dependent, and then nothing is written.
 
     Parameters
     ----------
-    A
-        Columns of the system, (n_unknown, n_equation).
-    sizes
-        What the gradient of each unknown is divided by, (n_unknown,).
-    inside
-        Which unknowns take part, (n_support, n_unknown).
-    n_summed
-        The first so many unknowns add up to one exactly; 0 where no sum is held.
-    tolerance
-        Part of the strongest direction below which another counts as dependent.
-    matrix, constant, usable
-        Written: (n_support, n_unknown, n_equation), (n_support, n_unknown), (n_support,). Operators that
-        are not usable are left as they are.
+    equations, support
+        The system, and the bits of the constrained unknowns that take part.
+    work
+        Room to work in.
+    matrix, constant
+        Written from row ``first`` on, (n_unknown, n_used) and (n_unknown,): for deviations d of the
+        properties, ``matrix @ d + constant`` is the value of an unknown that takes part, and for one held
+        at zero the reduced gradient over the size of its column.
 
     """
+    A, sizes, bit, n_summed, weight, mass, tolerance = equations
+    P, Q, start, at_start, row = work
     n_unknown, n_equation = A.shape
-    P, Q = np.empty((n_unknown, n_unknown)), np.empty((n_unknown, n_equation))
-    start, at_start = np.empty((1, n_unknown)), np.empty((1, n_equation))
-    for support in range(inside.shape[0]):
-        taking, row = inside[support], matrix[support]
-        rank = _span(taking, n_summed, P, start)
-        usable[support] = 0 <= rank <= n_equation and _orthogonalise(A, rank, tolerance, P, Q)
-        if not usable[support]:
-            continue
-        at_start[:] = 0.0
-        for i in range(n_summed):
-            _add(at_start, 0, start[0, i], A, i)
-        for i in range(n_unknown):
-            if taking[i]:
-                row[i] = 0.0
-                for k in range(rank):
-                    _add(row, i, P[k, i], Q, k)
-            else:
-                # At the optimum the gradients of all shares that take part are equal: their mean is the
-                # multiplier. Gradients act on the part of the data that is not explained.
-                row[i] = A[i]
-                if i < n_summed:
-                    _add(row, i, -1.0, at_start, 0)
-                for k in range(rank):
-                    _add(row, i, -_dot(row, i, Q, k), Q, k)
-                row[i] /= -sizes[i]
-            constant[support, i] = start[0, i] - _dot(row, i, at_start, 0)
+    n_used = weight.size
+    rank = _span(bit, support, n_summed, P, start)
+    if rank < 0 or rank > n_equation or not _orthogonalise(A, rank, tolerance, P, Q):
+        return False
+    at_start[:] = 0.0
+    for i in range(n_summed):
+        _add(at_start, 0, start[0, i], A, i)
+    for i in range(n_unknown):
+        row[:] = 0.0
+        if bit[i] == 0 or bit[i] & support:
+            for k in range(rank):
+                _add(row, 0, P[k, i], Q, k)
+        else:
+            # At the optimum the gradients of all shares that take part are equal: their mean is the
+            # multiplier. Gradients act on the part of the data that is not explained.
+            _add(row, 0, 1.0, A, i)
+            if i < n_summed:
+                _add(row, 0, -1.0, at_start, 0)
+            for k in range(rank):
+                _add(row, 0, -_dot(row, 0, Q, k), Q, k)
+            for j in range(n_equation):
+                row[0, j] /= -sizes[i]
+        constant[first + i] = start[0, i] - _dot(row, 0, at_start, 0)
+        if n_equation > n_used:
+            constant[first + i] += row[0, n_used] * mass
+        for j in range(n_used):
+            matrix[first + i, j] = row[0, j] * weight[j]
+    return True
+
+
+@_step
+def slot_of(operators: Operators, support: int) -> int:
+    """Return where the operator of a support lies, which is made if it has not been; ``UNUSABLE`` if it cannot."""
+    slot: int = operators.slot[support]
+    if slot != UNKNOWN:
+        return slot
+    equations = operators.equations
+    bit = equations.bit
+    slot = operators.n_made[0]
+    if not make_operator(
+        equations, support, operators.work, operators.matrix, operators.constant, slot * bit.size
+    ):
+        operators.slot[support] = UNUSABLE
+        return UNUSABLE
+    n_inside = 0
+    for i in range(bit.size):
+        n_inside += bit[i] == 0 or bit[i] & support != 0
+    freedom = equations.weight.size + 1.0 - max(n_inside, 1)
+    operators.per_freedom[slot] = 1.0 / freedom if freedom > 0.0 else np.nan
+    operators.support[slot] = support
+    operators.slot[support] = slot
+    operators.n_made[0] = slot + 1
+    return slot
+
+
+@_compiled
+def make_one(equations: Equations, support: int, work: Work, matrix: Floats, constant: Floats) -> bool:
+    """Do what ``make_operator`` does, called from outside compiled code."""
+    made: bool = make_operator(equations, support, work, matrix, constant, 0)
+    return made

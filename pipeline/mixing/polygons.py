@@ -58,6 +58,8 @@ def polygon_fault(vertices: Sequence[tuple[float, float]]) -> str | None:
         )
     if np.ptp(ring[:, 0]) >= 360.0:
         return "found a polygon wider than the earth; expected less than 360 degrees; take vertices away."
+    if np.linalg.matrix_rank(edges) < 2:
+        return "found a polygon without an area: its vertices lie on one line; expected some beside it; correct one."
     if crossing := _crossing(ring):
         first, second = ((vertices[i], vertices[(i + 1) % len(vertices)]) for i in crossing)
         return (

@@ -7,10 +7,12 @@ from typing import TYPE_CHECKING, Literal
 
 import numpy as np
 
-from pipeline.mixing.operators import RANK_TOLERANCE, singular_values
+from pipeline.mixing.operators import RANK_TOLERANCE, equations_of, singular_values
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
+
+    from pipeline.mixing.blocks import Equations
 
     FloatArray = NDArray[np.float64]
     BoolArray = NDArray[np.bool_]
@@ -87,6 +89,11 @@ class MixingProblem:
         return len(self.sources) + len(self.processes)
 
     @property
+    def constrained(self) -> BoolArray:
+        """Which unknowns can only be positive or zero, (n_unknown,)."""
+        return np.array([True] * len(self.sources) + [sign == "non_negative" for sign in self.signs])
+
+    @property
     def reference(self) -> FloatArray:
         """Mean of the sources, (n_property,): values are taken as deviations from it.
 
@@ -109,14 +116,19 @@ class WeightedSystem:
     constrained: BoolArray  # (n_unknown,)
     summed: BoolArray  # (n_unknown,)
     singular: FloatArray  # on the plane of the exact sum, from the largest down
+    # Those of the properties alone, on the plane where shares change and their sum does not. Rows are centred, so
+    # the row of a weighted sum adds one more, of its own direction and by no merit or fault of the sources.
+    of_properties: FloatArray
 
     @property
     def condition_number(self) -> float:
-        """Largest over smallest singular value; infinite where columns are dependent."""
-        if self.singular.size == 0:  # one source and nothing else: the sum decides
+        """Largest over smallest singular value of the properties; infinite where columns are dependent."""
+        if self.of_properties.size == 0:  # one source and nothing else: the sum decides
             return 1.0
-        smallest = float(self.singular[-1])
-        return float(self.singular[0]) / smallest if smallest > 0 else np.inf
+        smallest = float(self.of_properties[-1])
+        # The row of the sum may be so heavy or so light that rounding would decide.
+        apart = float(self.singular[-1]) > RANK_TOLERANCE * float(self.singular[0])
+        return float(self.of_properties[0]) / smallest if smallest > 0 and apart else np.inf
 
     @property
     def reach(self) -> float:
@@ -137,8 +149,16 @@ def weighted_system(problem: MixingProblem, columns: IntArray) -> WeightedSystem
     n_source = len(problem.sources)
     A = (problem.design[:, columns] * problem.weight[columns]).T
     is_share = np.arange(problem.n_unknown) < n_source
-    summed = is_share & (problem.mass_weight is None)
-    if problem.mass_weight is not None:
-        A = np.vstack([A, is_share * problem.mass_weight])
-    constrained = np.array([True] * n_source + [sign == "non_negative" for sign in problem.signs])
-    return WeightedSystem(A, constrained, summed, singular_values(A, summed))
+    of_properties = singular_values(A, is_share)
+    if problem.mass_weight is None:
+        return WeightedSystem(A, problem.constrained, is_share, of_properties, of_properties)
+    A = np.vstack([A, is_share * problem.mass_weight])
+    summed = np.zeros(problem.n_unknown, dtype=bool)
+    return WeightedSystem(A, problem.constrained, summed, singular_values(A, summed), of_properties)
+
+
+def equations_for(problem: MixingProblem, system: WeightedSystem, columns: IntArray) -> Equations:
+    """Return the system of the properties ``columns`` as operators are made of it."""
+    return equations_of(
+        system.A, system.constrained, system.summed, problem.weight[columns], problem.mass_weight
+    )

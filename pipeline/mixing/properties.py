@@ -61,6 +61,12 @@ _SAME = (
     frozenset({"nitrate", "nitrate_plus_nitrite"}),
 )
 
+# What a set has to list in place of what published tables give: these mix in proportion only nearly, and of the
+# samples the conservative ones are always there. A source may give either.
+LISTED_AS: Mapping[str, str] = MappingProxyType(
+    {"potential_temperature": "conservative_temperature", "practical_salinity": "preformed_salinity"}
+)
+
 PROPERTIES: tuple[str, ...] = tuple(name for name in REGISTRY if mixes_in_proportion(name))
 
 

@@ -5,7 +5,6 @@ from __future__ import annotations
 import hashlib
 import json
 import math
-import tomllib
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Annotated, Any, Literal
 
@@ -14,18 +13,19 @@ from pydantic import BaseModel, ConfigDict, Field, ValidationError
 from pipeline.mixing.domain_faults import domain_faults
 from pipeline.mixing.entries import Code, Domain, Name, Range, SourceSet, Text
 from pipeline.mixing.faults import entry_faults
-from pipeline.mixing.form import Fault
+from pipeline.mixing.form import Fault, form_faults, refusal
 from pipeline.mixing.source_faults import no_property
-from pipeline.problems import CatalogueProblem
-from pipeline.toml_text import line_of, sentences
+from pipeline.mixing.toml_files import parsed, text_of
 from pipeline.variables import IDENTITY, MEASURED, REGISTRY, SEAWATER, TRACERS, Kind
 
 if TYPE_CHECKING:
     from collections.abc import Iterable, Iterator, Mapping
     from pathlib import Path
 
+    from pipeline.problems import CatalogueProblem
+
 LEAST_SAMPLES = 5  # of a source: fewer have no spread to speak of (common practice, no source)
-_MOST_BYTES = 1_000_000
+_WHAT = "rules for sources"
 
 
 class _Rule(BaseModel):
@@ -99,13 +99,7 @@ class RulesFile:
 
     def problem(self, faults: Iterable[Fault]) -> CatalogueProblem:
         """Return what to raise for faults: a sentence each, in the order of the file."""
-        placed = sorted((line_of(self.text, fault.location) or 0, fault.sentence) for fault in faults)
-        return CatalogueProblem(
-            "\n".join(
-                f"{self.name}, line {line}: {words}" if line else f"{self.name}: {words}"
-                for line, words in placed
-            )
-        )
+        return refusal(self.name, self.text, faults)
 
 
 def read_rules(path: Path) -> RulesFile:
@@ -117,36 +111,16 @@ def read_rules(path: Path) -> RulesFile:
         With one sentence, on a line of its own, for everything that is wrong, in the order of the file.
 
     """
-    try:
-        with path.open("rb") as file:
-            data = file.read(_MOST_BYTES + 1)
-    except (OSError, ValueError) as error:
-        reason = error.strerror if isinstance(error, OSError) else error
-        raise CatalogueProblem(f"{path}: the rules cannot be read ({reason}); name a file.") from error
-    if len(data) > _MOST_BYTES:
-        raise CatalogueProblem(
-            f"{path}: found more than {_MOST_BYTES} bytes; expected rules for sources; name another file."
-        )
-    try:
-        return parse_rules(data.decode("utf-8"), str(path))
-    except UnicodeDecodeError as error:
-        raise CatalogueProblem(
-            f"{path}: found bytes that are not UTF-8 text ({error.reason}); expected a TOML file; save it as UTF-8."
-        ) from error
+    return parse_rules(text_of(path, _WHAT), str(path))
 
 
 def parse_rules(text: str, name: str) -> RulesFile:
     """Make rules of the text of the file ``name``. Raises as ``read_rules`` does."""
-    try:
-        written = tomllib.loads(text)
-    except (tomllib.TOMLDecodeError, RecursionError) as error:
-        raise CatalogueProblem(
-            f"{name}: found text that is not TOML ({error}); expected rules for sources; correct it."
-        ) from error
+    written = parsed(text, name, _WHAT)
     try:
         rules = Rules.model_validate(written)
     except ValidationError as error:
-        raise CatalogueProblem("\n".join(sentences(name, text, error))) from error
+        raise refusal(name, text, form_faults(error, written, Rules, "the rules")) from error
     read = RulesFile(name, text, rules)
     if faults := [*_header_faults(rules.rules), *_where_faults(rules)] or _set_faults(rules):
         raise read.problem(faults)
@@ -196,6 +170,12 @@ def is_searchable(name: str) -> bool:
     return known and REGISTRY[name].kind in {Kind.NUMBER, Kind.INTEGER}
 
 
+def _within(name: str, part: float) -> float:
+    """Return a value that sea water can have, another for another part from -1 to 1."""
+    low, high = REGISTRY[name].plausible or (-1.0, 1.0)
+    return (low + high) / 2 + part * (high - low) / 2.001
+
+
 def _set_faults(rules: Rules) -> list[Fault]:
     """Return what the sets would be refused for whatever the values of the sources turn out to be."""
     standing_in = [
@@ -203,7 +183,7 @@ def _set_faults(rules: Rules) -> list[Fault]:
             "code": rule.code,
             "name": rule.name,
             "properties": {
-                name: {"value": math.cos((index + 1) * (column + 1)), "uncertainty": 1e-6}
+                name: {"value": _within(name, math.cos((index + 1) * (column + 1))), "uncertainty": 1e-6}
                 for column, name in enumerate(rules.rules.properties)
             },
         }

@@ -11,6 +11,7 @@ import numpy as np
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
+    from pipeline.mixing.hull import Hull
     from pipeline.mixing.problem import MixingProblem
 
     FloatArray = NDArray[np.float64]
@@ -21,12 +22,13 @@ class Choices:
     """What depends only on which properties a sample has and which unknowns take part, one row per choice.
 
     The first row is of samples that have fewer equations than unknowns. Every other pattern of properties
-    has a row for samples without an answer and one per support.
+    has a row for samples without an answer and one per support that was visited.
     """
 
-    uncertainty: FloatArray  # (n_choice, n_unknown) NaN without an answer
+    uncertainty: FloatArray  # (n_choice, n_unknown) NaN without an answer or where a bound holds the unknown
     support: NDArray[np.int32]  # (n_choice,) 0 without an answer
     condition_number: FloatArray  # (n_choice,) NaN where there are fewer equations than unknowns
+    n_inside: NDArray[np.int64]  # (n_choice,) unknowns that take part, 0 without an answer
 
 
 @dataclass(frozen=True, eq=False)
@@ -61,12 +63,20 @@ class MixingSolution:
         )
         return residuals
 
+    @cached_property
+    def hull(self) -> Hull:
+        """Where the samples lie against what the sources can mix to. Made when first asked for, like residuals."""
+        from pipeline.mixing.hull import hull_of  # noqa: PLC0415 - it stands on the solver, which makes solutions
+
+        return hull_of(self)
+
     @property
     def share_uncertainty(self) -> FloatArray:
         """Standard uncertainty of every share, (n_sample, n_source).
 
         First-order propagation of the problem's uncertainties through the operator of the sample's
-        support. Exact where no bound is active; a share that is held at zero has none.
+        support. Exact where no bound is active. NaN where a share cannot move at all: it is held at zero, or
+        all others are and the sum holds it at one. How far it is from the truth is not known to first order.
         """
         return self.choices.uncertainty[self.choice, : self.shares.shape[1]]
 
@@ -81,6 +91,13 @@ class MixingSolution:
         return self.choices.support[self.choice]
 
     @property
+    def degrees_of_freedom(self) -> FloatArray:
+        """Properties and the sum less unknowns that take part, (n_sample,); NaN where not solved."""
+        n_equation = (~np.isnan(self.observed)).sum(axis=1) + 1
+        n_inside = self.choices.n_inside[self.choice]
+        return np.where(n_inside > 0, n_equation - n_inside, np.nan)
+
+    @property
     def condition_number(self) -> FloatArray:
-        """Of the weighted system, (n_sample,): NaN where INCOMPLETE, known where UNDETERMINED."""
+        """Of the weighted properties, (n_sample,): NaN where INCOMPLETE, known where UNDETERMINED."""
         return self.choices.condition_number[self.choice]

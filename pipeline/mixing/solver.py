@@ -8,13 +8,14 @@ Mackas et al. 1987; Karstensen and Tomczak 1998 for the processes). Arrays in, a
 
 from __future__ import annotations
 
+from dataclasses import fields
 from typing import TYPE_CHECKING
 
 import numpy as np
 
-from pipeline.mixing.blocks import Operators, Results, System
-from pipeline.mixing.operators import support_operators
-from pipeline.mixing.problem import MixingProblem, weighted_system
+from pipeline.mixing.blocks import Results, System
+from pipeline.mixing.operators import inside, no_operators
+from pipeline.mixing.problem import MixingProblem, equations_for, weighted_system
 from pipeline.mixing.solution import Choices, MixingSolution
 from pipeline.mixing.status import MixingStatus
 
@@ -45,7 +46,7 @@ def solve(problem: MixingProblem, observed: FloatArray, *, condition_limit: floa
     observed
         (n_sample, n_property) in property units, NaN where missing.
     condition_limit
-        Condition number of the weighted system above which samples are left UNDETERMINED. With weights
+        Condition number of the weighted properties above which samples are left UNDETERMINED. With weights
         of one over the uncertainty, singular values are one over the uncertainties of combinations of
         shares. None is known to much better than 0.001, so at 1000 another is known no better than 1,
         the whole range.
@@ -73,21 +74,18 @@ def solve(problem: MixingProblem, observed: FloatArray, *, condition_limit: floa
         choice=np.zeros(n_sample, dtype=np.int32),
         status=np.full(n_sample, MixingStatus.INCOMPLETE, dtype=np.int8),
     )
-    # Uncertainties of the unknowns and condition number, for choices that follow one another.
-    no_answer = np.full((1, problem.n_unknown), np.nan)
-    listed: list[tuple[FloatArray, float]] = [(no_answer, np.nan)]
+    listed = [_no_answer(problem, np.nan)]
     n_choice = 1
     for columns, rows in _passes(problem, values, results.status, condition_limit):
         system = weighted_system(problem, columns)
-        listed.append((no_answer, system.condition_number))
+        listed.append(_no_answer(problem, system.condition_number))
         n_choice += 1
         if system.condition_number > condition_limit:
             results.choice[rows] = n_choice - 1
             results.status[rows] = MixingStatus.UNDETERMINED
             continue
-        spread = _solve_rows(problem, system, values, columns, rows, n_choice, results)
-        listed.append((spread, system.condition_number))
-        n_choice += len(spread)
+        listed.append(_solve_rows(problem, system, values, columns, rows, n_choice, results))
+        n_choice += len(listed[-1].support)
 
     unsolved = np.flatnonzero(results.status != MixingStatus.SOLVED)
     for result in (results.unknowns, results.chi_square, results.optimality):
@@ -102,9 +100,7 @@ def solve(problem: MixingProblem, observed: FloatArray, *, condition_limit: floa
         status=results.status,
         choice=results.choice,
         choices=Choices(
-            uncertainty=np.concatenate([spread for spread, _ in listed]),
-            support=np.concatenate([np.arange(len(spread), dtype=np.int32) for spread, _ in listed]),
-            condition_number=np.concatenate([np.full(len(spread), number) for spread, number in listed]),
+            *(np.concatenate([getattr(one, each.name) for one in listed]) for each in fields(Choices))
         ),
     )
 
@@ -158,46 +154,54 @@ def _solve_rows(
     rows: IntArray,
     first_choice: int,
     results: Results,
-) -> FloatArray:
+) -> Choices:
     """Solve the samples ``rows``, which have the properties ``columns``, into their rows of ``results``.
 
-    Returns the standard uncertainty of every unknown per support, (n_support, n_unknown).
+    Returns what was visited for them.
     """
     from pipeline.mixing import kernel  # noqa: PLC0415 - numba takes longer to import than all else here
 
-    n_used, n_unknown = columns.size, problem.n_unknown
-    operators = support_operators(system.A, system.constrained, system.summed)
-    n_support = operators.usable.size
-    # By unknown and property, to act on deviations in property units.
-    matrix = operators.matrix[:, :n_used].transpose(0, 2, 1) * problem.weight[columns]
-    constant = operators.constant
-    if problem.mass_weight is not None:
-        constant = constant + operators.matrix[:, n_used] * problem.mass_weight
-    freedom = n_used + 1.0 - np.maximum(operators.inside.sum(axis=1), 1)
-    bit = np.zeros(n_unknown, dtype=np.int64)
-    bit[system.constrained] = 1 << np.arange(system.constrained.sum())
+    n_unknown = problem.n_unknown
+    equations = equations_for(problem, system, columns)
+    operators = no_operators(equations, first_choice)
     kernel.solve_rows(
         values,
         rows,
         System(
             columns=columns,
             reference=problem.reference[columns],
-            weight=problem.weight[columns],
+            weight=equations.weight,
             uncertainty=problem.uncertainty[columns],
             design=np.ascontiguousarray(problem.design[:, columns].T),
-            bit=bit,
-            n_summed=int(system.summed.sum()),
+            bit=equations.bit,
+            n_summed=equations.n_summed,
             reach=system.reach,
             limit=ABSURD_DEVIATION,
         ),
-        Operators(
-            matrix=np.ascontiguousarray(matrix).reshape(n_support * n_unknown, n_used),
-            constant=np.ascontiguousarray(constant).ravel(),
-            usable=operators.usable,
-            per_freedom=1 / np.where(freedom > 0, freedom, np.nan),
-            first_choice=first_choice,
-        ),
+        operators,
         results,
     )
+    n_made = int(operators.n_made[0])
+    support = operators.support[:n_made].astype(np.int32)
+    matrix = operators.matrix[: n_made * n_unknown].reshape(n_made, n_unknown, columns.size)
     spread = np.sqrt(np.einsum("sij,j->si", matrix**2, problem.uncertainty[columns] ** 2))
-    return np.where(operators.inside, spread, 0.0)
+    taking_part = inside(equations.bit, support)
+    moves = taking_part.copy()
+    if equations.n_summed:  # a share without another to exchange with is one
+        moves[taking_part[:, : equations.n_summed].sum(axis=1) == 1, : equations.n_summed] = False
+    return Choices(
+        uncertainty=np.where(moves, spread, np.nan),
+        support=support,
+        condition_number=np.full(n_made, system.condition_number),
+        n_inside=np.maximum(taking_part.sum(axis=1), 1),
+    )
+
+
+def _no_answer(problem: MixingProblem, condition_number: float) -> Choices:
+    """Return the choice of samples without an answer."""
+    return Choices(
+        uncertainty=np.full((1, problem.n_unknown), np.nan),
+        support=np.zeros(1, dtype=np.int32),
+        condition_number=np.array([condition_number]),
+        n_inside=np.zeros(1, dtype=np.int64),
+    )

@@ -6,8 +6,9 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from pipeline.mixing.conversion import has_counterpart, obstacle
-from pipeline.mixing.properties import mixes_in_proportion
+from pipeline.mixing.conversion import MADE_FROM, has_counterpart, obstacle
+from pipeline.mixing.magnitudes import impossible
+from pipeline.mixing.properties import LISTED_AS, mixes_in_proportion
 from pipeline.mixing.tags import Tag
 from pipeline.variables import REGISTRY
 
@@ -31,7 +32,7 @@ def source_faults(source: Source) -> Iterator[tuple[Location, str]]:
             f"found a code that is a tag for samples without a source ({', '.join(Tag)}); rename it.",
         )
     for name in source.properties:
-        if words := no_property(name):
+        if words := no_property(name) or impossible(name, source.properties[name].value):
             yield ("properties", name), words
     yield from ((("covariance", at), words) for at, words in _covariance_faults(source))
 
@@ -65,7 +66,7 @@ def gaps(
         Whether a reference state is written whose own faults are told already.
 
     """
-    missing = [name for name in chosen.properties if name not in source.properties]
+    missing = [name for name in chosen.properties if name not in source.properties and name not in LISTED_AS]
     plain = [name for name in missing if not has_counterpart(source, name)]
     if plain:
         yield (
@@ -73,8 +74,16 @@ def gaps(
             f"{'them' if len(plain) > 1 else 'it'}, or take the source from the set."
         )
     if not doubtful_state:
-        convertible = [name for name in missing if name not in plain]
+        convertible = [
+            name for name in missing if name not in plain and not _from_the_impossible(source, name)
+        ]
         yield from dict.fromkeys(obstacle(source, name, state) or "" for name in convertible)
+
+
+def _from_the_impossible(source: Source, name: str) -> bool:
+    """Return whether what ``name`` would be made from is at fault itself, which is told already."""
+    given = [one for one in MADE_FROM[name] if one in source.properties]
+    return any(impossible(one, source.properties[one].value) for one in given)
 
 
 def _covariance_faults(source: Source) -> Iterator[tuple[str, str]]:

@@ -11,7 +11,9 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from pipeline.mixing.ensemble import operator
+from pipeline.mixing.operators import operator_of
+from pipeline.mixing.problem import equations_for, weighted_system
+from pipeline.problems import BrokenPromise
 
 if TYPE_CHECKING:
     from collections.abc import Mapping, Sequence
@@ -83,14 +85,24 @@ def first_order_uncertainty(
     for index, described in enumerate(kinds):
         rows = np.flatnonzero(kind.ravel() == index)
         columns = np.flatnonzero(described[:n_property])
-        P = operator(problem, columns, int(described[n_property]))[:, :n_source]  # (n_used, n_source)
         own = np.zeros((n_quantity, covariances.shape[1]))
-        own[:, columns] = (P @ carried).T
+        own[:, columns] = carried.T @ _response(problem, columns, int(described[n_property]))[:n_source]
         of_measurement = (own[:, columns] ** 2) @ (measured[rows][:, columns] ** 2).T
         own[np.arange(n_quantity), n_property + np.arange(n_quantity)] -= 1.0
         of_source = np.einsum("qa,iab,qb->qi", own, covariances, own)  # per squared share
         uncertainty[rows] = np.sqrt(of_measurement + of_source @ (shares[rows] ** 2).T).T
     return uncertainty
+
+
+def _response(problem: MixingProblem, columns: IntArray, support: int) -> FloatArray:
+    """Return how the unknowns of a support follow the properties ``columns``, (n_unknown, n_used).
+
+    Zero for unknowns that take no part. The support is one that samples were solved with.
+    """
+    operator = operator_of(equations_for(problem, weighted_system(problem, columns), columns), support)
+    if operator is None:
+        raise BrokenPromise(f"support {support} has been solved with and has no operator")
+    return np.where(operator.inside[:, None], operator.matrix, 0.0)
 
 
 def split(

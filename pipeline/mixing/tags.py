@@ -36,8 +36,9 @@ TAG_WORDS: Mapping[Tag, str] = MappingProxyType(
             "`mixing.unexplained_chi_square`, or a value is absurd"
         ),
         Tag.UNDETERMINED: (
-            "the values that are there cannot tell the sources apart: the condition number is above "
-            "`mixing.condition_limit`"
+            "the values that are there cannot tell which source leads: the condition number is above "
+            "`mixing.condition_limit`, or the source with the largest share leads in a smaller part of the ensemble "
+            "than `mixing.tag_probability`"
         ),
         Tag.INCOMPLETE: (
             "so many values are missing that there are fewer equations than unknowns, or that no domain can be judged"
@@ -47,8 +48,8 @@ TAG_WORDS: Mapping[Tag, str] = MappingProxyType(
 )
 
 LEADING_WORDS = (
-    "the source with the largest share, which is at least `mixing.tag_share` of the settings, and the sources "
-    "explain the sample"
+    "the source with the largest share, which is at least `mixing.tag_share` of the settings; it leads in at least "
+    "`mixing.tag_probability` of the ensemble, and the sources explain the sample"
 )
 
 # The tag of a sample that was not solved.
@@ -75,12 +76,14 @@ def tags(
     status: NDArray[np.int8],
     leading_source: NDArray[np.object_],
     leading_share: NDArray[np.float64],
+    leading_probability: NDArray[np.float64],
     reduced_chi_square: NDArray[np.float64],
     settings: MixingSettings,
 ) -> NDArray[np.object_]:
     """Return the tag of every sample, (n_sample,), from columns of that shape.
 
-    A fit without degrees of freedom has no chi-square that could speak against it.
+    A fit without degrees of freedom has no chi-square that could speak against it, and without an ensemble no
+    probability speaks against the leading source.
     """
     solved = status == MixingStatus.SOLVED
     explained = ~(reduced_chi_square > settings.unexplained_chi_square)
@@ -90,4 +93,5 @@ def tags(
     tag[solved & ~explained] = Tag.UNEXPLAINED.value
     leads = solved & explained & (leading_share >= settings.tag_share)
     tag[leads] = leading_source[leads]
+    tag[leads & (leading_probability < settings.tag_probability)] = Tag.UNDETERMINED.value
     return tag

@@ -15,8 +15,9 @@ from pipeline.reading.columns import Column, Use
 from pipeline.reading.delivery import DeliveryKind
 from pipeline.reading.identity import REASONS, Identity, identify, refuse_expocode, usable_expocode
 from pipeline.reading.instants import Instants, read_instants
-from pipeline.reading.numbers import missing_codes, to_floats
-from pipeline.reading.values import Values, read_values, unreadable_findings
+from pipeline.reading.numbers import is_number, missing_codes, to_floats
+from pipeline.reading.positions import Axis, to_degrees
+from pipeline.reading.values import Surroundings, Values, read_values, unreadable_findings
 from pipeline.tables import CASTS_CORE, SAMPLES_CORE, as_arrow, registry_field
 from pipeline.variables import REGISTRY
 
@@ -28,6 +29,8 @@ if TYPE_CHECKING:
     from pipeline.reading.grid import Grid
     from pipeline.settings import ReadingSettings
 
+# Reasons for a reject that name what is missing by the file's own word for it.
+_NAMED = frozenset({"no-station", "no-cast", "no-pressure"})
 _REQUIRED = {
     "expocode": "no-expocode",
     "station": "no-station",
@@ -73,7 +76,8 @@ def assemble(
     cells = grid.cells
     rows = _Rows(grid, columns)
     identity = rows.identity()
-    values = read_values(columns, cells, decimal_comma=grid.decimal_comma)
+    surroundings = Surroundings(identity.latitude, rows.laboratory_temperature(limits))
+    values = read_values(columns, cells, surroundings, decimal_comma=grid.decimal_comma)
     pressure = values.numbers["pressure"]
     unusable = {**identity.unusable, "no-pressure": np.isnan(pressure)}
     rejects = [*_width_rejects(grid, limits), *_row_rejects(grid, rows, unusable, limits)]
@@ -95,6 +99,7 @@ class _Rows:
         self.grid = grid
         self.n_row = len(grid.cells.lines)
         self.lines = grid.cells.lines
+        self._columns = columns
         self._given = {
             column.name: grid.cells.columns[column.position]
             for column in columns
@@ -108,14 +113,27 @@ class _Rows:
         """Return an identity column as text, "" where not given, (n_row,)."""
         if name in self._given:
             column = self._given[name]
-            return column if pa.types.is_string(column.type) else column.cast(pa.string())
+            return column if pa.types.is_string(column.type) else pc.fill_null(column.cast(pa.string()), "")
         return pa.repeat(pa.scalar(self.grid.constants.get(name, ""), pa.string()), self.n_row)
+
+    def delivered(self, name: str, row: int) -> str:
+        """Return what was delivered as a value in a row, "" where nothing was or where it came as a number."""
+        position = next((column.position for column in self._columns if column.name == name), None)
+        cell = None if position is None else self.grid.cells.columns[position][row].as_py()
+        return cell if isinstance(cell, str) else ""
 
     def numbers(self, name: str) -> NDArray[np.float64]:
         """Return an identity column as numbers, NaN where missing or no number, (n_row,)."""
         column = self._given.get(name, None) if name in self._given else self.text(name)
-        numbers, _ = to_floats(column, decimal_comma=self.grid.decimal_comma)
+        numbers, unreadable = to_floats(column, decimal_comma=self.grid.decimal_comma)
+        if len(unreadable) and name in {"latitude", "longitude"}:
+            numbers = np.where(np.isnan(numbers), to_degrees(column, Axis(name))[0], numbers)
         return np.where(missing_codes(numbers, REGISTRY[name], None), np.nan, numbers)
+
+    def laboratory_temperature(self, limits: ReadingSettings) -> float:
+        """Return the temperature (degC) at which amounts per volume were measured, where no column gives it."""
+        given = to_floats(self.text("laboratory_temperature")[:1], decimal_comma=self.grid.decimal_comma)[0]
+        return float(given[0]) if np.isfinite(given).any() else limits.laboratory_temperature
 
     def identity(self) -> Identity:
         return identify(
@@ -127,7 +145,7 @@ class _Rows:
         )
 
     def instants(self) -> Instants:
-        return read_instants(self.text("date"), self.text("time"))
+        return read_instants(self.text("date"), self.text("time"), self.grid.minutes_ahead)
 
     def sample(self) -> pa.Array:
         """Return the sample number; the bottle's where no sample number was given."""
@@ -172,11 +190,20 @@ class _Rows:
                     variable="longitude", limit="-180..180", file=name, count=identity.shifted_longitudes,
                 )
             )  # fmt: skip
+        if values.pressure_from:
+            findings.append(
+                Finding(
+                    "pressure-from-depth", Severity.NOTE,
+                    f"{name}: there is no pressure; it was computed from the depth in {values.pressure_from}, which is"
+                    " kept beside it.",
+                    variable="pressure", value=values.pressure_from, limit="a pressure", file=name,
+                )
+            )  # fmt: skip
         for variable, count in values.unconverted.items():
             findings.append(
                 Finding(
                     "not-converted", Severity.DOUBT,
-                    f"{name}: {count} values of {REGISTRY[variable].exchange[0]} could not be converted to"
+                    f"{name}: {count} values of {self.grid.word(variable)} could not be converted to"
                     f" {REGISTRY[variable].unit}, because the row has no salinity or temperature for its density.",
                     variable=variable, file=name, count=count,
                 )
@@ -193,7 +220,7 @@ class _Rows:
         return [
             Finding(
                 check, Severity.FAULT,
-                f"{at(self.grid.name, self.lines[same[0]])}: {REGISTRY[column].exchange[0]} is '{text[:30]}'"
+                f"{at(self.grid.name, self.lines[same[0]])}: {self.grid.word(column)} is '{text[:30]}'"
                 f"{f' (and in {len(same) - 1} more rows)' if len(same) > 1 else ''}; expected {wanted}; it counts as"
                 " missing.",
                 variable=column, value=text[:30], limit=wanted, file=self.grid.name,
@@ -212,7 +239,7 @@ def _require_columns(grid: Grid, columns: Sequence[Column]) -> None:
     """Refuse a file that nowhere holds what every row needs."""
     given = {column.name for column in columns} | set(grid.constants)
     for name, reason in _REQUIRED.items():
-        if name not in given:
+        if name not in given and not (name == "pressure" and "depth" in given):
             raise DeliveryProblem(
                 reason,
                 f"{at(grid.name, grid.names_line)}: there is no {grid.word(name)}; expected it among the"
@@ -225,8 +252,8 @@ def _width_rejects(grid: Grid, limits: ReadingSettings) -> list[Reject]:
     return [
         Reject(
             grid.name, line, grid.raw(line)[: limits.raw_text], "field-count",
-            f"{at(grid.name, line)}: found {found} fields; expected {len(grid.names)}, one for each column name;"
-            " correct the row and deliver the file again.",
+            f"{at(grid.name, line)}: found {found} fields; expected {grid.n_delivered or len(grid.names)}, one for each"
+            " column name; correct the row and deliver the file again.",
             usable_expocode(grid.constants.get("expocode", "")),
         )
         for line, found in grid.cells.misfits
@@ -245,11 +272,12 @@ def _row_rejects(
     for row, reason in sorted(reason_of.items()):
         line = int(rows.lines[row])
         found = _found(rows, reason, row)
+        word = grid.word(reason.removeprefix("no-")) if reason in _NAMED else ""
         code = usable_expocode(rows.text("expocode")[row].as_py())
         rejects.append(
             Reject(
                 grid.name, line, grid.raw(line)[: limits.raw_text], reason,
-                f"{at(grid.name, line)}: {REASONS[reason].format(value=found)}; correct the row and deliver"
+                f"{at(grid.name, line)}: {REASONS[reason].format(value=found, word=word)}; correct the row and deliver"
                 " the file again.",
                 code,
             )
@@ -259,6 +287,9 @@ def _row_rejects(
 
 def _found(rows: _Rows, reason: str, row: int) -> str:
     """Return in words what stands where a needed value should."""
+    if reason == "no-pressure":
+        written = rows.delivered("pressure", row) or rows.delivered("depth", row)
+        return f"'{written[:60]}'" if written.strip() and not is_number(written) else "missing"
     names = {
         "no-expocode": ("expocode",),
         "no-station": ("station",),

@@ -19,7 +19,7 @@ if TYPE_CHECKING:
 
 # A line that holds no value: blank, only delimiters, or a comment. It is no row.
 _HOLLOW = re.compile(rb"[ \t,;\"]*(#[^\n]*)?")
-# The same anywhere in a block that starts with a line end; the literal start makes the search fast.
+# The same anywhere in a block between line ends; the literal start makes the search fast.
 _HOLLOW_WITHIN = re.compile(rb"\n[ \t,;\"]*[#\n]")
 
 _PADDING = "\x00padding"
@@ -84,7 +84,7 @@ def _without_hollow_lines(sheet: Sheet) -> tuple[bytes, NDArray[np.int64]]:
         return b"", np.empty(0, dtype=np.int64)
     n_line = block.count(b"\n") + 1
     lines = np.arange(sheet.first_line, sheet.first_line + n_line, dtype=np.int64)
-    if _HOLLOW_WITHIN.search(b"\n" + block) is None:
+    if _HOLLOW_WITHIN.search(b"\n" + block + b"\n") is None:
         return block, lines
     written = block.split(b"\n")
     solid = np.array([_HOLLOW.fullmatch(line) is None for line in written])

@@ -148,7 +148,7 @@ def _note_unit(
     heading: Heading, delivered: str, unit: str, variable: Variable, how: Conversion, findings: list[Finding]
 ) -> None:
     """Note a unit that is assumed, spelled unusually, or converted."""
-    if unit.upper() == variable.exchange_unit.upper():
+    if unit.upper() == variable.exchange_unit.upper() or (unit == variable.unit and not how.changes):
         return
     if not unit.strip():
         if variable.unit in _UNITLESS or not any(heading.units):

@@ -27,7 +27,7 @@ class Delivery:
     """One delivered file, read.
 
     ``rows`` counts the data rows of the file (and one for each member of a zip that is refused);
-    each of them is in ``table`` or in ``rejects``.
+    each of them is in ``table`` or in ``rejects``, or was set aside because another edition stands.
     """
 
     name: str
@@ -39,10 +39,12 @@ class Delivery:
     rejects: tuple[Reject, ...] = ()
     findings: tuple[Finding, ...] = ()
     refused_members: int = 0
+    set_aside: int = 0
+    described_by: str = ""  # SHA-256 of the cruise.toml that says what is in it, if one does
 
     def __post_init__(self) -> None:
         """Hold the promise that no row is lost."""
-        accounted = self.table.num_rows + len(self.rejects)
+        accounted = self.table.num_rows + len(self.rejects) + self.set_aside
         if self.rows != accounted:
             raise BrokenPromise(f"{self.name}: {self.rows} rows in, but {accounted} accounted for")
 

@@ -4,10 +4,12 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
+from pipeline.problems import DeliveryProblem
 from pipeline.reading.assembly import assemble
 from pipeline.reading.cells import read_cells
 from pipeline.reading.columns import plan_columns
 from pipeline.reading.delivery import DeliveryKind
+from pipeline.reading.describing import describe, read_grid
 from pipeline.reading.exchange_names import exchange_meanings, heading_of
 from pipeline.reading.grid import Grid
 from pipeline.reading.identity import refuse_expocode, usable_expocode
@@ -16,12 +18,13 @@ from pipeline.variables import REGISTRY
 
 if TYPE_CHECKING:
     from pipeline.reading.assembly import ReadRows
+    from pipeline.reading.description import Description
     from pipeline.reading.sheet import Sheet
     from pipeline.settings import ReadingSettings
 
 
-def read_sheet(sheet: Sheet, limits: ReadingSettings) -> ReadRows:
-    """Read the data rows of an exchange sheet.
+def read_sheet(sheet: Sheet, limits: ReadingSettings, description: Description | None = None) -> ReadRows:
+    """Read the data rows of an exchange sheet; what a description says stands over what its names mean.
 
     Raises
     ------
@@ -32,14 +35,16 @@ def read_sheet(sheet: Sheet, limits: ReadingSettings) -> ReadRows:
     heading = heading_of(sheet)
     meanings, odd = exchange_meanings(heading)
     columns, findings = plan_columns(heading, meanings)
+    numeric = tuple(column.numeric and description is None for column in columns)
     is_cast = sheet.kind is DeliveryKind.CTD
     constants = _header_constants(sheet) if is_cast else {}
-    if "expocode" in constants and usable_expocode(constants["expocode"]) is None:
+    given = description.constants if description else {}
+    if "expocode" in constants and "expocode" not in given and usable_expocode(constants["expocode"]) is None:
         line = 1 + list(sheet.header).index("EXPOCODE") + 1
         raise refuse_expocode(sheet.text.name, constants["expocode"], line)
     grid = Grid(
         sheet.text.name, sheet.kind, sheet.names, sheet.units,
-        cells=read_cells(sheet, tuple(column.numeric for column in columns)),
+        cells=read_cells(sheet, numeric),
         raw=sheet.text.line,
         constants=constants,
         names_line=sheet.names_line,
@@ -47,7 +52,20 @@ def read_sheet(sheet: Sheet, limits: ReadingSettings) -> ReadRows:
         holders="header lines or column names" if is_cast else "column names",
         decimal_comma=sheet.delimiter == ";",
     )  # fmt: skip
+    if description is not None:
+        _refuse_other_kind(sheet, description)
+        return read_grid(describe(grid, meanings, description), limits, (*sheet.findings, *odd))
     return assemble(grid, columns, limits, (*sheet.findings, *odd, *findings))
+
+
+def _refuse_other_kind(sheet: Sheet, description: Description) -> None:
+    if description.kind not in {None, sheet.kind}:
+        raise DeliveryProblem(
+            "other-kind",
+            f"{sheet.text.name}, line 1: found the stamp of a {sheet.kind} file; expected kind {description.kind}, as"
+            f" {description.place()} says; correct it there.",
+            1,
+        )
 
 
 def _header_constants(sheet: Sheet) -> dict[str, str]:

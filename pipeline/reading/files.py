@@ -12,18 +12,18 @@ from pipeline.reading.delivery import Delivery
 from pipeline.reading.described import read_described
 from pipeline.reading.exchange import read_sheet
 from pipeline.reading.netcdf import NETCDF_MAGICS, read_netcdf
+from pipeline.reading.parquet import PARQUET_MAGIC
 from pipeline.reading.sheet import find_sheet, kind_of
 from pipeline.reading.text import delivered_text
+from pipeline.reading.workbook import OLD_SPREADSHEET_MAGIC, WORKBOOK
 from pipeline.reading.zips import ZIP_ERRORS, ZIP_MAGICS, read_zip
 
 if TYPE_CHECKING:
     from pipeline.reading.assembly import ReadRows
     from pipeline.reading.delivery import DeliveryKind
     from pipeline.reading.description import Description
+    from pipeline.reading.text import DeliveredText
     from pipeline.settings import ReadingSettings
-
-PARQUET_MAGIC = b"PAR1"
-_WORKBOOK = "xl/workbook.xml"  # the member that every spreadsheet has
 
 
 def read_delivery(
@@ -50,7 +50,7 @@ def read_delivery(
     """
     sha256 = hashlib.sha256(data).hexdigest()
     if data.startswith(ZIP_MAGICS) and not is_workbook(data):
-        return read_zip(name, data, sha256, limits)
+        return read_zip(name, data, sha256, limits, description)
     kind, read = _read(name, data, limits, description)
     return Delivery(name, sha256, len(data), kind, read.table, read.rows, read.rejects, read.findings)
 
@@ -63,11 +63,19 @@ def _read(
         return read_netcdf(name, data, limits, description)
     if data.startswith((PARQUET_MAGIC, *ZIP_MAGICS)):
         return _read_table(name, data, limits, description)
+    if data.startswith(OLD_SPREADSHEET_MAGIC):
+        raise DeliveryProblem(
+            "old-spreadsheet",
+            f"{name}: found a spreadsheet of the old kind (.xls), or one that is locked with a password; expected .xlsx"
+            " or text; save it so, without a password, and deliver it again.",
+        )
+    if description is not None and description.layout.encoding is not None:
+        return _read_table(name, data, limits, description)
     text = delivered_text(name, data)
-    if kind_of(text) is None and description is not None:
+    if description is not None and not is_sheet(text, limits):
         return _read_table(name, data, limits, description)
     sheet = find_sheet(text, limits.columns)
-    return sheet.kind, read_sheet(sheet, limits)
+    return sheet.kind, read_sheet(sheet, limits, description)
 
 
 def _read_table(
@@ -85,10 +93,21 @@ def _read_table(
     return read_described(name, data, limits, description)
 
 
+def is_sheet(text: DeliveredText, limits: ReadingSettings) -> bool:
+    """Return whether a text is an exchange file; a table whose first column is called Bottle only starts like one."""
+    if kind_of(text) is None:
+        return False
+    try:
+        find_sheet(text, limits.columns)
+    except DeliveryProblem as problem:
+        return problem.reason != "not-a-cruise-file"
+    return True
+
+
 def is_workbook(data: bytes) -> bool:
     """Return whether a zip is a spreadsheet's."""
     try:
         with zipfile.ZipFile(io.BytesIO(data)) as archive:
-            return _WORKBOOK in archive.namelist()
+            return WORKBOOK in archive.namelist()
     except ZIP_ERRORS:
         return False

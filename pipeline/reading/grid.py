@@ -34,6 +34,8 @@ class Grid:
     holders: str = "column names"  # where an identity quantity may be given, in words
     words: Mapping[str, str] = field(default_factory=dict)  # quantity to what this format calls it
     decimal_comma: bool = False
+    minutes_ahead: int = 0  # of UTC, the delivered times of day
+    n_delivered: int | None = None  # columns that the file has, where others have been added to them
 
     def word(self, quantity: str) -> str:
         """Return what a sentence about this file calls a quantity of the registry."""

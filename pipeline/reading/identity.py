@@ -26,13 +26,14 @@ _EXPOCODE = re.compile(r"(?=.{3,40}$)[0-9A-Z][0-9A-Z_-]*(\.[0-9A-Z_-]+)*(/[0-9A-
 _SPREADSHEET = re.compile(r"[+-]?\d+(\.\d+)?E[+-]?\d+$")
 _MISSING_TEXT = re.compile(r"(-9+(\.0*)?|NAN|NA|NULL|NONE)?$")
 
-# Row reject reasons, in the order they are looked for, and how each reads in a sentence.
+# Row reject reasons, in the order they are looked for, and how each reads in a sentence; {word} is what the file
+# calls the quantity.
 REASONS: Mapping[str, str] = {
     "no-expocode": "the EXPOCODE is {value}; expected a cruise code such as ZZV120090214",
-    "no-station": "the station (STNNBR) is {value}; expected a station name",
-    "no-cast": "the cast (CASTNO) is {value}; expected a whole number",
+    "no-station": "the station ({word}) is {value}; expected a station name",
+    "no-cast": "the cast ({word}) is {value}; expected a whole number",
     "no-position": "the position is {value}; expected a latitude in -90..90 and a longitude in -180..360",
-    "no-pressure": "the pressure (CTDPRS) is {value}; expected a number of decibars",
+    "no-pressure": "the pressure ({word}) is {value}; expected a number of decibars",
 }
 
 
@@ -68,7 +69,8 @@ def refuse_expocode(name: str, written: str, line: int | None) -> DeliveryProble
         return DeliveryProblem(
             "spoiled-expocode",
             f"{place}: the EXPOCODE '{written}' was turned into a number by a spreadsheet; expected a cruise code"
-            " such as ZZV120090214; put the code back in the file, as text, and deliver it again.",
+            " such as ZZV120090214; put the code back in the file, as text, and deliver it again,"
+            " or give it in a cruise.toml beside the file ([[file]] with files and [file.constants] with expocode).",
             line,
         )
     if not code or _MISSING_TEXT.match(code):

@@ -22,6 +22,7 @@ _MISSING = re.compile(r"(|-9+(\.[09]*)?|nan|na|null)$", re.IGNORECASE)
 
 _CENTURY_TURN = 50  # two-digit years below are 20xx (common practice, no source)
 SECONDS_PER_DAY = 86_400
+SECONDS_PER_MINUTE = 60
 
 
 @dataclass(frozen=True, slots=True)
@@ -35,13 +36,15 @@ class Instants:
     ambiguous: str | None  # a date that could be read month first or day first; month first was taken
 
 
-def read_instants(dates: pa.Array, times: pa.Array) -> Instants:
+def read_instants(dates: pa.Array, times: pa.Array, minutes_ahead: int = 0) -> Instants:
     """Read delivered dates and times of day; each spelling is read once.
 
     Parameters
     ----------
     dates, times
         Delivered text of n_row rows; blank or a missing code where not given.
+    minutes_ahead
+        How far the delivered times are ahead of UTC. Where no time of day is given, the date stays.
 
     """
     date_texts, date_of = _spellings(dates)
@@ -53,6 +56,9 @@ def read_instants(dates: pa.Array, times: pa.Array) -> Instants:
     known = np.isfinite(seconds)
     instant = day.astype("datetime64[s]") + np.where(known, seconds, 0.0).astype("timedelta64[s]")
     instant[~known] = np.datetime64("NaT")
+    if minutes_ahead:
+        instant = instant - np.timedelta64(minutes_ahead * SECONDS_PER_MINUTE, "s")
+        day = np.where(np.isnat(instant), day, instant.astype("datetime64[D]"))
     return Instants(
         day, instant, np.flatnonzero(bad_date[date_of]), np.flatnonzero(np.isinf(seconds)), ambiguous
     )
@@ -78,14 +84,18 @@ def _read_dates(texts: list[str]) -> tuple[NDArray[np.datetime64], str | None]:
     return np.array([_day(text, day_first=day_first) for text in texts], dtype="datetime64[D]"), ambiguous
 
 
+def full_year(written: str) -> int:
+    """Return a year of two or four digits as a number."""
+    year = int(written)
+    return year if len(written) > 2 else year + (2000 if year < _CENTURY_TURN else 1900)
+
+
 def _day(text: str, *, day_first: bool) -> np.datetime64:
     if m := _COMPACT.match(text) or _DASHED.match(text):
         year, month, day = int(m[1]), int(m[2]), int(m[3])
     elif m := _SLASHED.match(text):
-        first, second, year = int(m[1]), int(m[2]), int(m[3])
+        first, second, year = int(m[1]), int(m[2]), full_year(m[3])
         month, day = (second, first) if day_first else (first, second)
-        if len(m[3]) == 2:
-            year += 2000 if year < _CENTURY_TURN else 1900
     else:
         return np.datetime64("NaT", "D")
     try:

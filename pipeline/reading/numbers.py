@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -86,3 +87,8 @@ def to_flags(column: pa.Array) -> tuple[FloatArray, NDArray[np.int64]]:
     with np.errstate(invalid="ignore"):
         odd = ~np.isnan(flags) & ((flags != np.round(flags)) | (np.abs(flags) > np.iinfo(np.int16).max))
     return np.where(odd, np.nan, flags), np.union1d(unreadable, np.flatnonzero(odd))
+
+
+def is_number(text: str) -> bool:
+    """Return whether one text is a number as files write them."""
+    return re.match(_NUMBER, text) is not None

@@ -77,8 +77,9 @@ def find_sheet(text: DeliveredText, most_columns: int) -> Sheet:
         first = text.data[:60].split(b"\n")[0].decode("utf-8", errors="replace").strip()
         raise DeliveryProblem(
             "not-a-cruise-file",
-            f"{text.name}, line 1: found '{first}'; expected a line that starts with BOTTLE or CTD;"
-            " remove the file from the inbox, or ask for the cruise in the exchange format.",
+            f"{text.name}, line 1: found '{first}'; expected a line that starts with BOTTLE or CTD; it is no"
+            " NetCDF, no zip, no spreadsheet and no Parquet file either, and no cruise.toml beside it describes it;"
+            f" `seawhence mapping {text.name}` drafts one; or remove the file from the inbox.",
             1,
         )
     findings: list[Finding] = []

@@ -9,9 +9,10 @@ from typing import TYPE_CHECKING
 from pipeline.problems import DeliveryProblem
 from pipeline.reading.cells import column_texts
 from pipeline.reading.exchange_names import exchange_meanings, heading_of
-from pipeline.reading.files import PARQUET_MAGIC, is_workbook, read_delivery
+from pipeline.reading.files import is_workbook, read_delivery
 from pipeline.reading.identity import usable_expocode
-from pipeline.reading.netcdf import NETCDF_MAGICS
+from pipeline.reading.netcdf import NETCDF_MAGICS, read_netcdf
+from pipeline.reading.parquet import PARQUET_MAGIC
 from pipeline.reading.sheet import find_sheet, kind_of
 from pipeline.reading.text import delivered_text
 from pipeline.reading.zips import ZIP_ERRORS, ZIP_MAGICS
@@ -34,9 +35,9 @@ def survey_cruises(
     A survey refuses nothing: why a file cannot be used is told when it is read in full.
     """
     try:
-        if data.startswith(ZIP_MAGICS) and not is_workbook(data):
-            return _cruises_of_zip(data, limits)
-        if is_exchange(name, data):
+        if description is None and data.startswith(ZIP_MAGICS) and not is_workbook(data):
+            return _cruises_of_zip(data, limits, description)
+        if description is None and is_exchange(name, data):
             return tuple(sorted(_cruises_of_sheet(find_sheet(delivered_text(name, data), limits.columns))))
         return tuple(sorted(read_delivery(name, data, limits, description).cruises))
     except DeliveryProblem:
@@ -66,7 +67,7 @@ def _is_expocode(variable: Variable | None) -> bool:
     return variable is not None and variable.name == "expocode"
 
 
-def _cruises_of_zip(data: bytes, limits: ReadingSettings) -> tuple[str, ...]:
+def _cruises_of_zip(data: bytes, limits: ReadingSettings, description: Description | None) -> tuple[str, ...]:
     codes: set[str] = set()
     try:
         archive = zipfile.ZipFile(io.BytesIO(data))
@@ -77,6 +78,11 @@ def _cruises_of_zip(data: bytes, limits: ReadingSettings) -> tuple[str, ...]:
             try:
                 with archive.open(member) as stream:
                     head = stream.read(_HEAD_BYTES)
+                    if head.startswith(NETCDF_MAGICS) and member.file_size <= limits.unpacked_bytes:
+                        whole = head + stream.read(member.file_size)
+                        _, read = read_netcdf(member.filename, whole, limits, description)
+                        codes |= set(read.table.column("expocode").to_pylist())
+                        continue
                 codes |= _cruises_of_sheet(find_sheet(delivered_text(member.filename, head), limits.columns))
             except (DeliveryProblem, *ZIP_ERRORS):
                 continue  # the next member may be whole

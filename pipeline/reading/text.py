@@ -45,8 +45,8 @@ def delivered_text(name: str, data: bytes) -> DeliveredText:
     if b"\0" in data[:4096]:
         raise DeliveryProblem(
             "not-a-cruise-file",
-            f"{name}: found binary data; expected an exchange bottle or CTD file, or a zip of CTD files;"
-            " remove it from the inbox, or ask for the cruise in the exchange format.",
+            f"{name}: found binary data; expected an exchange bottle or CTD file, NetCDF, Parquet,"
+            " a spreadsheet (.xlsx) or a zip of CTD files; remove it from the inbox, or ask for one of these.",
         )
     try:
         data.decode("utf-8")

@@ -5,6 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
+import gsw
 import numpy as np
 import pyarrow as pa
 import pyarrow.compute as pc
@@ -12,7 +13,7 @@ import pyarrow.compute as pc
 from pipeline.findings import Finding, Severity, at
 from pipeline.reading.columns import Column, Use
 from pipeline.reading.numbers import missing_codes, to_flags, to_floats
-from pipeline.units import DensityAt, density, scaled
+from pipeline.units import LABORATORY_TEMPERATURE, DensityAt, density, scaled
 from pipeline.variables import REGISTRY, flag_name
 
 if TYPE_CHECKING:
@@ -37,6 +38,14 @@ class Unreadable:
     texts: tuple[str, ...]
 
 
+@dataclass(frozen=True, slots=True)
+class Surroundings:
+    """What conversions of unit need to know of n_row rows beside the measured columns."""
+
+    latitude: FloatArray  # (n_row,), NaN where not known
+    laboratory_temperature: float = LABORATORY_TEMPERATURE  # degC, where no column gives it
+
+
 @dataclass
 class Values:
     """Columns of n_row rows by their name in our table, with what could not be read."""
@@ -47,9 +56,12 @@ class Values:
     metadata: dict[str, dict[str, str]] = field(default_factory=dict)
     unreadable: list[Unreadable] = field(default_factory=list)
     unconverted: dict[str, int] = field(default_factory=dict)
+    pressure_from: str = ""  # the delivered column of depths from which the pressure was computed, if it was
 
 
-def read_values(columns: Sequence[Column], cells: Cells, *, decimal_comma: bool) -> Values:
+def read_values(
+    columns: Sequence[Column], cells: Cells, surroundings: Surroundings, *, decimal_comma: bool
+) -> Values:
     """Read every measured, flag and pass-through column.
 
     Flags are read first: a code such as -9 is missing only where the flag says so.
@@ -60,6 +72,8 @@ def read_values(columns: Sequence[Column], cells: Cells, *, decimal_comma: bool)
             flags, bad = to_flags(cells.columns[column.position])
             values.flags[column.name] = flags
             _keep_unreadable(values, column, bad, cells)
+            if column.conversion.words:
+                values.metadata[column.name] = {"conversion": column.conversion.words}
     for column in columns:
         if column.use is Use.VALUE:
             numbers = _numbers(values, column, cells, decimal_comma=decimal_comma)
@@ -67,7 +81,7 @@ def read_values(columns: Sequence[Column], cells: Cells, *, decimal_comma: bool)
         elif column.use is Use.EXTRA:
             values.extras[column.name] = _extra(cells.columns[column.position], decimal_comma=decimal_comma)
             values.metadata[column.name] = _as_delivered(column)
-    _convert(values, columns)
+    _convert(values, columns, surroundings)
     return values
 
 
@@ -98,28 +112,81 @@ def _as_delivered(column: Column) -> dict[str, str]:
     return {"long_name": f"{column.delivered}, as delivered", "units": column.unit}
 
 
-def _convert(values: Values, columns: Sequence[Column]) -> None:
+def _convert(values: Values, columns: Sequence[Column], surroundings: Surroundings) -> None:
     """Convert units in place; the delivered numbers stay beside them under the delivered name.
 
-    Temperature comes first, because densities need it.
+    Densities need temperature and pressure, and a pressure may have to be made from a depth: that is the order.
     """
     changing = [c for c in columns if c.use is Use.VALUE and c.conversion.changes]
-    for column in sorted(changing, key=lambda c: c.conversion.density is not DensityAt.NONE):
-        delivered = values.numbers[column.name]
-        kept = column.delivered if column.delivered not in REGISTRY else f"{column.delivered}_delivered"
-        values.extras[kept] = pa.array(delivered, from_pandas=True)
-        values.metadata[kept] = _as_delivered(column)
-        per_litre = None
+    for column in changing:
+        if column.conversion.density is DensityAt.NONE:
+            _set(
+                values,
+                column,
+                scaled(values.numbers[column.name], column.conversion),
+                column.conversion.words,
+            )
+    _pressure_from_depth(values, columns, surroundings)
+    for column in changing:
         if column.conversion.density is not DensityAt.NONE:
-            per_litre = density(column.conversion.density, *_hydrography(values, len(delivered)))
-        converted = scaled(delivered, column.conversion, per_litre)
-        values.numbers[column.name] = converted
-        values.metadata[column.name] = {
-            "delivered_units": column.unit, "conversion": column.conversion.words,
-        }  # fmt: skip
-        lost = int(np.count_nonzero(np.isnan(converted) & ~np.isnan(delivered)))
-        if lost:
-            values.unconverted[column.name] = lost
+            per_litre, words = _density(values, column.conversion.density, surroundings)
+            converted = scaled(values.numbers[column.name], column.conversion, per_litre)
+            _set(values, column, converted, column.conversion.words + words)
+
+
+def _set(values: Values, column: Column, converted: FloatArray, words: str) -> None:
+    """Put converted numbers in the place of the delivered ones, and these beside them."""
+    delivered = values.numbers[column.name]
+    _keep_delivered(values, column, delivered)
+    values.numbers[column.name] = converted
+    values.metadata[column.name] = {"delivered_units": column.unit, "conversion": words}
+    lost = int(np.count_nonzero(np.isnan(converted) & ~np.isnan(delivered)))
+    if lost:
+        values.unconverted[column.name] = lost
+
+
+def _keep_delivered(values: Values, column: Column, delivered: FloatArray) -> None:
+    kept = column.delivered if column.delivered not in REGISTRY else f"{column.delivered}_delivered"
+    values.extras[kept] = pa.array(delivered, from_pandas=True)
+    values.metadata[kept] = _as_delivered(column)
+
+
+def _pressure_from_depth(values: Values, columns: Sequence[Column], surroundings: Surroundings) -> None:
+    """Compute the pressure where only a depth was delivered; where both were, the depth passes through."""
+    column = next((c for c in columns if c.use is Use.VALUE and c.name == "depth"), None)
+    if column is None:
+        return
+    depth = values.numbers.pop("depth")
+    made = values.metadata.pop("depth", {}).get("conversion")
+    if made is None:
+        _keep_delivered(values, column, depth)
+    if "pressure" in values.numbers:
+        return
+    level = np.where((depth > -5.0) & (depth < 12_000.0), depth, np.nan)  # above that, gsw raises
+    north = np.where(np.abs(surroundings.latitude) <= 90.0, surroundings.latitude, np.nan)
+    values.numbers["pressure"] = np.asarray(gsw.p_from_z(-level, north), dtype=np.float64)
+    words = "; ".join(
+        part for part in (made, "depth (m) to pressure at the latitude, TEOS-10, gsw.p_from_z") if part
+    )
+    values.metadata["pressure"] = {"delivered_units": column.unit, "conversion": words}
+    values.pressure_from = column.delivered
+
+
+def _density(values: Values, at: DensityAt, surroundings: Surroundings) -> tuple[FloatArray, str]:
+    """Return the density (kg/l) of the volumes in which an amount was measured, (n_row,), and more of how in words."""
+    n_row = len(surroundings.latitude)
+    salinity, temperature, pressure = _hydrography(values, n_row)
+    if at is DensityAt.LABORATORY:
+        given = values.numbers.get("laboratory_temperature", np.full(n_row, np.nan))
+        warmth = np.where(np.isnan(given), surroundings.laboratory_temperature, given)
+        some, other = not np.isnan(given).all(), bool(np.isnan(given).any())
+        words = ["as delivered"] * some + [f"{surroundings.laboratory_temperature:g} degC"] * other
+        return density(at, salinity, warmth, pressure), f", {', else '.join(words)}"
+    potential = density(DensityAt.POTENTIAL, salinity, temperature, pressure)
+    if at is DensityAt.DRAW and "draw_temperature" in values.numbers:
+        draw = density(at, salinity, values.numbers["draw_temperature"], pressure)
+        return np.where(np.isnan(draw), potential, draw), ""
+    return potential, ""
 
 
 def _hydrography(values: Values, n_row: int) -> tuple[FloatArray, FloatArray, FloatArray]:

@@ -6,17 +6,20 @@ import io
 import re
 import zipfile
 import zlib
+from collections import Counter
 from typing import TYPE_CHECKING
 
 from pipeline.findings import Finding, Reject, Severity
 from pipeline.problems import DeliveryProblem
 from pipeline.reading.delivery import Delivery, DeliveryKind, stack
 from pipeline.reading.exchange import read_sheet
+from pipeline.reading.netcdf import NETCDF_MAGICS, read_netcdf
 from pipeline.reading.sheet import find_sheet, kind_of
 from pipeline.reading.text import delivered_text
 
 if TYPE_CHECKING:
     from pipeline.reading.assembly import ReadRows
+    from pipeline.reading.description import Description
     from pipeline.settings import ReadingSettings
 
 ZIP_MAGICS = (b"PK\x03\x04", b"PK\x05\x06")  # the second is an empty zip's
@@ -30,8 +33,10 @@ _LITTER = re.compile(r"(^|/)(__MACOSX/|\.DS_Store$|\._|Thumbs\.db$)")
 _GIGABYTE = 1e9
 
 
-def read_zip(name: str, data: bytes, sha256: str, limits: ReadingSettings) -> Delivery:
-    """Read a zip of CTD casts; a member that cannot be used is refused alone."""
+def read_zip(
+    name: str, data: bytes, sha256: str, limits: ReadingSettings, description: Description | None = None
+) -> Delivery:
+    """Read a zip of CTD casts; a member that cannot be used is refused alone. A description is of every cast."""
     try:
         archive = zipfile.ZipFile(io.BytesIO(data))
     except ZIP_ERRORS as error:
@@ -39,7 +44,9 @@ def read_zip(name: str, data: bytes, sha256: str, limits: ReadingSettings) -> De
             "broken-zip", f"{name}: the zip cannot be opened ({error}); ask for it to be sent again."
         ) from error
     with archive:
-        members = [m for m in archive.infolist() if not m.is_dir() and not _LITTER.search(m.filename)]
+        members = [
+            m for m in archive.infolist() if not m.filename.endswith("/") and not _LITTER.search(m.filename)
+        ]
         unpacked = sum(member.file_size for member in members)
         if unpacked > limits.unpacked_bytes:
             raise DeliveryProblem(
@@ -51,9 +58,11 @@ def read_zip(name: str, data: bytes, sha256: str, limits: ReadingSettings) -> De
         read: list[ReadRows] = []
         refused: list[tuple[str, DeliveryProblem]] = []
         findings: list[Finding] = []
+        times = Counter(member.filename for member in members)
         for member in sorted(members, key=lambda m: m.filename):
             try:
-                cast = _read_member(name, archive, member, limits)
+                _refuse_name(name, member.filename, times[member.filename])
+                cast = _read_member(name, archive, member, limits, description)
             except DeliveryProblem as problem:
                 refused.append((member.filename, problem))
                 continue
@@ -79,20 +88,14 @@ def read_zip(name: str, data: bytes, sha256: str, limits: ReadingSettings) -> De
 
 
 def _read_member(
-    name: str, archive: zipfile.ZipFile, member: zipfile.ZipInfo, limits: ReadingSettings
+    name: str,
+    archive: zipfile.ZipFile,
+    member: zipfile.ZipInfo,
+    limits: ReadingSettings,
+    description: Description | None,
 ) -> ReadRows | None:
     """Read one member; None where it is no exchange file at all."""
     shown = f"{name}:{member.filename}"
-    if (
-        ".." in member.filename.split("/")
-        or member.filename.startswith(("/", "\\"))
-        or "\\" in member.filename
-    ):
-        raise DeliveryProblem(
-            "member-path",
-            f"{name}: the member '{member.filename[:80]}' has a path in its name; expected plain file names; it was"
-            " not read; pack the casts without folders and deliver the zip again.",
-        )
     if member.flag_bits & _LOCKED:
         raise DeliveryProblem(
             "locked-member",
@@ -106,16 +109,46 @@ def _read_member(
             "broken-member",
             f"{shown}: the member cannot be unpacked ({error}); pack it again and deliver the zip.",
         ) from error
+    if data.startswith(NETCDF_MAGICS):
+        kind, read = read_netcdf(shown, data, limits, description)
+        _only_ctd(shown, kind)
+        return read
     text = delivered_text(shown, data)
-    kind = kind_of(text)
-    if kind is None:
+    of_sheet = kind_of(text)
+    if of_sheet is None:
         return None
+    _only_ctd(shown, of_sheet)
+    return read_sheet(find_sheet(text, limits.columns), limits, description)
+
+
+def _only_ctd(shown: str, kind: DeliveryKind) -> None:
+    """Refuse a member that is no CTD cast."""
     if kind is DeliveryKind.BOTTLE:
         raise DeliveryProblem(
             "bottle-in-zip",
             f"{shown}: found a bottle file in a zip of CTD casts; it was not read; deliver it beside the zip.",
         )
-    return read_sheet(find_sheet(text, limits.columns), limits)
+
+
+def _refuse_name(name: str, member: str, times: int) -> None:
+    """Refuse a member whose name is none, is a path, or is that of another member too."""
+    if not member:
+        raise DeliveryProblem(
+            "member-name",
+            f"{name}: a member of the zip has no name; it was not read; pack the casts again and deliver the zip.",
+        )
+    if ".." in member.split("/") or member.startswith(("/", "\\")) or "\\" in member:
+        raise DeliveryProblem(
+            "member-path",
+            f"{name}: the member '{member[:80]}' has a path in its name; expected plain file names; it was"
+            " not read; pack the casts without folders and deliver the zip again.",
+        )
+    if times > 1:
+        raise DeliveryProblem(
+            "repeated-member",
+            f"{name}: {times} members of the zip are called '{member[:80]}'; expected each name once, and nothing"
+            " tells which one stands; none of them was read; pack the casts again and deliver the zip.",
+        )
 
 
 def _not_a_cast(name: str, member: str) -> Finding:

@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from pipeline.tracers import nutrients, oxygen
+from pipeline.tracers.samples import SampleTracers, sample_tracers
 from pipeline.tracers.stoichiometry import stoichiometry
 
 if TYPE_CHECKING:
@@ -14,6 +15,8 @@ if TYPE_CHECKING:
 
     from pipeline.settings import TracerSettings
     from pipeline.tables import FloatArray
+
+__all__ = ["SampleTracers", "columns", "forms", "sample_tracers"]
 
 # A kilogram of pure water holds 5.55e7 umol of it. What claims to be more of a solute than that is no
 # concentration, and is kept out before its products overflow.

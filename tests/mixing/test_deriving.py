@@ -230,8 +230,16 @@ def test_no_covariance_when_none_is_wanted() -> None:
 def test_faults_of_what_is_found() -> None:
     assert sentence(cruise(sigma2=np.full(N, 30.0))) == (
         "source 'NOR': found no sample for which all of its conditions hold; of 40 samples each alone holds: sigma2 "
-        "for 0, latitude for 40, mixed_layer for 40; expected at least 5 samples; widen the narrowest."
+        "for 0, latitude for 40; expected at least 5 samples; widen the narrowest."
     )
+    for written, told in (
+        ("", "being below the mixed layer (which holds unless mixed_layer = 'include' is written) for 40"),
+        ('mixed_layer = "exclude"', "being below the mixed layer for 40"),
+    ):
+        without = (('mixed_layer = "include"', written),)
+        assert f"latitude for 40, {told}; expected" in sentence(
+            cruise(sigma2=np.full(N, 30.0)), changes=without
+        )
     assert "found 4 samples; expected at least 5; widen" in sentence(cruise(count=4))
     assert "found no sample of 40 with po4_star that may be used" in sentence(cruise(po4_star=[None] * N))
     few = [1.0, 1.1, 1.2, 1.3] + [None] * 36
@@ -249,10 +257,12 @@ def test_faults_of_what_is_found() -> None:
         ("sigma2", "sigmatwo", "line 9: source 'NOR': found the column 'sigmatwo' in where"),
         ("sigma2", "leading_share", "line 9: source 'NOR': found the column 'leading_share' in where"),
         ("sigma2 = [36.0, 37.0]", "aou = [3.0, 2.0]", "line 9: source 'NOR': found the empty range [3, 2] of aou"),
-        ("sigma2 = [36.0, 37.0]", "sigma2 = 36.0", "line 9: 'source.0.where.sigma2' is 36.0"),
-        ("sigma2 = [36.0, 37.0]", 'aou = ["a", 2.0]', "line 9: 'source.0.where.aou.0' is 'a'"),
-        ("[source.where]", "[source.wher]", "found the key 'source.0.wher', which is not known here"),
-        ('title = "Found"', "", "line 1: the key 'rules.title' is missing; add it."),
+        ("sigma2 = [36.0, 37.0]", "sigma2 = 36.0", "line 9: found 36.0 as 'sigma2' of source 'NOR', where; expected"),
+        ("sigma2 = [36.0, 37.0]", 'aou = ["a", 2.0]', "line 9: found ['a', 2.0] as 'aou' of source 'NOR', where; exp"),
+        ("sigma2 = [36.0, 37.0]", "aou = []", "line 9: found [] as 'aou' of source 'NOR', where; expected two numbers"),
+        ("[source.where]", "[source.wher]", "found the unknown key 'wher' in source 'NOR'; expected one of code, name"),
+        ('title = "Found"', "", "line 1: found no 'title' in [rules]; expected text; add it."),
+        ('code = "NOR"', 'cod = "NOR"', "line 5: found no 'code' in source 1; expected 1 to 12 of the characters"),
         ("po4_star", "sigma0", "line 3: found the property 'sigma0', which does not mix in proportion"),
         ("po4_star", "po4_stir", "line 3: found the property 'po4_stir', which is no name of the registry"),
         ("po4_star", "oxygen", "line 3: found the property 'oxygen' twice"),
@@ -260,8 +270,9 @@ def test_faults_of_what_is_found() -> None:
         ('"oxygen"]\n', '"oxygen", "nitrate"]\n', "found no nitrate; expected every property of the set 'all'"),
         ('code = "NOR"', 'code = "mixed"', "found a code that is a tag"),
         ("[[set]]", EXTREMUM.replace("aou", "tag"), "found the column 'tag' in extremum"),
-        ("[[set]]", EXTREMUM.replace("maximum", "most"), "'source.0.extremum.kind' is 'most'"),
-        ('["NOR"]', "[]", "line 15: 'set.0.sources' is []; expected at least 1 in it; add some."),
+        ("[[set]]", EXTREMUM.replace("maximum", "most"), "found 'most' as 'kind' of source 'NOR', extremum"),
+        ('["NOR"]', "[]", "line 15: found [] as 'sources' of set 'all'; expected a list of 1 to 12 source codes;"),
+        ("[[set]]", "[[sett]]", "found no 'set' in the rules; expected at least one table [[set]]; add it."),
         ("[rules]", "[rules", "found text that is not TOML"),
     ],
 )  # fmt: skip

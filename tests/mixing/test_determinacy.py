@@ -274,6 +274,28 @@ def test_a_source_that_is_a_mixture_of_others_is_told_as_such() -> None:
     assert unsolved.startswith("the condition number of the weighted system is infinite")
 
 
+def test_what_stays_uncertain_when_a_pair_is_joined_has_reasons_of_its_own() -> None:
+    half = tuple((a + b) / 2 for a, b in zip(SOUTH, WARM, strict=True))
+    of = made_of(
+        NOR=NORTH,
+        NOE=(2.01, 35.0, 290.2, 1.0, 24.0),
+        SOU=SOUTH,
+        WAR=WARM,
+        HAL=(half[0] + 0.05, *half[1:4], 90.0),
+    )
+    joined = told_of(made_of(NOR=NORTH, SOU=SOUTH, WAR=WARM, HAL=(half[0] + 0.05, *half[1:4], 90.0)))
+    pair, others, *_ = said_of(of)
+    assert pair.startswith(
+        "NOR and NOE cannot be told apart with these properties and uncertainties: share moved from"
+    )
+    assert others.startswith(
+        "once those alike are joined, the shares of SOU, WAR and HAL are not known at all, since "
+    )
+    assert (joined.share_uncertainty[1:] > 1).all()
+    assert "NOE" not in others
+    assert " can look like 0.50 SOU and 0.50 WAR; add silicate" in others
+
+
 def test_a_share_known_only_vaguely_names_what_it_can_be_mistaken_for() -> None:
     (said,) = said_of(
         INVENTED, "conservative_temperature", "preformed_salinity", "oxygen", "phosphate", "nitrate"

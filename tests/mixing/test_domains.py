@@ -133,7 +133,7 @@ def test_a_star_is_what_its_rays_say(radii: list[float], centre: float, turned: 
         ),
         (
             "[[0, 0], [1, 1], [2, 2]]",
-            f"{CROSSES}, from [0, 0] to [1, 1] and from [2, 2] to [0, 0]; {ORDER}",
+            "found a polygon without an area: its vertices lie on one line; expected some beside it; correct one.",
         ),
         (
             "[[0, 0], [5, 0], [5, 5], [0, 0]]",
@@ -177,7 +177,27 @@ def test_regions_that_cannot_be_used(region: str, sentence: str) -> None:
         ),
         (
             "months = [13]",
-            "found 13 as 'months' of set 'deep', valid; expected a list of months, 1 to 12; correct it.",
+            "found [13] as 'months' of set 'deep', valid; expected a list of months, 1 to 12; correct it.",
+        ),
+        (
+            "months = [13, 14, 0]",
+            "found [13, 14, 0] as 'months' of set 'deep', valid; expected a list of months, 1 to 12; correct it.",
+        ),
+        (
+            "months = [12, 12, 1]",
+            "set 'deep': found the month 12 twice; expected it once; remove one.",
+        ),
+        (
+            "latitude = [100.0, -100.0]",
+            "set 'deep': found 100 and -100 as an end of the latitudes it is valid in; expected -90 to 90; correct it.",
+        ),
+        (
+            "pressure = [nan, nan]",
+            "found [nan, nan] as 'pressure' of set 'deep', valid; expected two numbers, [low, high]; correct it.",
+        ),
+        (
+            "pressure = []",
+            "found [] as 'pressure' of set 'deep', valid; expected two numbers, [low, high]; correct it.",
         ),
         (
             "sigma2 = [37.1, 36.9]",
@@ -195,8 +215,9 @@ def test_regions_that_cannot_be_used(region: str, sentence: str) -> None:
         ),
         (
             "region = [[0, 0], [1, nan], [1, 1]]",
-            "found nan as 'region' of set 'deep', valid; expected 3 to 500 vertices, [[longitude, latitude], ...], "
-            "from -180 to 360 and -90 to 90 degrees; correct it.",
+            "found [[0, 0], [1, nan], [1, 1]] as 'region' of set 'deep', valid; expected 3 to 500 vertices, "
+            "[[longitude, "
+            "latitude], ...], from -180 to 360 and -90 to 90 degrees; correct it.",
         ),
         (
             'mixed_layer = "no"',

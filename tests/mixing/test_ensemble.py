@@ -14,7 +14,8 @@ from pipeline.mixing.members import Noise, keys_of, measurement_noise, perturbed
 from pipeline.mixing.problem import MixingProblem
 from pipeline.mixing.solver import solve
 from pipeline.mixing.status import MixingStatus
-from pipeline.settings import MixingSettings, Settings
+from pipeline.problems import SettingsProblem
+from pipeline.settings import MixingSettings, Settings, read_settings
 from tests.coverage import cases_of, within
 
 from .catalogues import catalogue
@@ -292,11 +293,27 @@ def test_without_members_the_uncertainty_is_that_of_first_order() -> None:
     assert columns["leading_share_uncertainty"][0] == mixtures["share_uncertainty"][0]
 
 
-def test_one_member_has_percentiles_and_no_spread() -> None:
-    columns, mixtures = _interior(members=1)
-    assert mixtures["share_uncertainty"] == [None, None]
-    assert mixtures["share_p16"] == mixtures["share_p84"]
-    assert columns["leading_probability"][0] == 1.0
+def test_without_members_a_share_that_a_bound_holds_has_no_uncertainty() -> None:
+    beyond = resolve(samples(mixed(1.4)), catalogue(), settings(members=0))
+    assert beyond.mixtures.column("share").to_pylist() == [1.0, 0.0]
+    assert beyond.mixtures.column("share_uncertainty").to_pylist() == [None, None]
+    assert np.isnan(beyond.columns["leading_share_uncertainty"][0])
+    unrespired = resolve(samples(mixed(0.6, -0.5)), catalogue(), settings(members=0)).columns
+    assert unrespired["respiration"][0] == 0.0
+    for name in ("respiration_uncertainty", "oxygen_from_respiration_uncertainty"):
+        assert np.isnan(unrespired[name][0]), name
+    assert unrespired["leading_share_uncertainty"][0] > 0
+
+
+@pytest.mark.parametrize("members", [-1, 1, 9, 10_001, 20.5])
+def test_an_ensemble_too_small_to_have_percentiles_is_refused(members: float) -> None:
+    with pytest.raises(SettingsProblem) as refusal:
+        read_settings(None, {"SEAWHENCE_MIXING__MEMBERS": str(members)})
+    assert str(refusal.value) == (
+        f"the environment variable SEAWHENCE_MIXING__MEMBERS: 'mixing.members' is {members}; expected 0 for "
+        "first-order uncertainty, or a whole number from 10 to 10000; correct it."
+    )
+    assert settings(members=10).mixing.members == 10
 
 
 def test_measurement_uncertainty_of_a_cruise_stands_in_place_of_the_usual() -> None:

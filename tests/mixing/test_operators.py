@@ -1,13 +1,27 @@
 from __future__ import annotations
 
-import os
-import subprocess
-import sys
+from typing import TYPE_CHECKING
 
 import numpy as np
 import pytest
 
-from pipeline.mixing.operators import singular_values, support_operators
+from pipeline.mixing.making import UNUSABLE, slot_of
+from pipeline.mixing.operators import (
+    equations_of,
+    everything,
+    inside,
+    no_operators,
+    operator_of,
+    singular_values,
+)
+
+if TYPE_CHECKING:
+    from numpy.typing import NDArray
+
+    from pipeline.mixing.blocks import Equations
+
+    FloatArray = NDArray[np.float64]
+    BoolArray = NDArray[np.bool_]
 
 RANDOM = np.random.default_rng(31)
 A = RANDOM.normal(size=(6, 4))
@@ -17,9 +31,22 @@ ALL = np.ones(4, dtype=bool)
 NONE = np.zeros(4, dtype=bool)
 
 
+def _equations(columns: FloatArray, constrained: BoolArray, summed: BoolArray) -> Equations:
+    return equations_of(columns, constrained, summed, np.ones(len(columns)))
+
+
+def _values(equations: Equations, support: int) -> FloatArray:
+    operator = operator_of(equations, support)
+    assert operator is not None
+    return np.asarray(operator.matrix @ B[: equations.weight.size] + operator.constant)
+
+
+def _usable(equations: Equations) -> list[bool]:
+    return [operator_of(equations, support) is not None for support in range(everything(equations) + 1)]
+
+
 def test_an_operator_without_a_sum_is_least_squares_on_its_columns() -> None:
-    operators = support_operators(A, ALL, NONE)
-    values = B @ operators.matrix[0b1011] + operators.constant[0b1011]
+    values = _values(_equations(A, ALL, NONE), 0b1011)
     part = [0, 1, 3]
     expected, *_ = np.linalg.lstsq(A[:, part], B, rcond=None)
     np.testing.assert_allclose(values[part], expected, rtol=1e-12)
@@ -28,8 +55,7 @@ def test_an_operator_without_a_sum_is_least_squares_on_its_columns() -> None:
 
 
 def test_an_operator_with_a_sum_holds_it_and_levels_the_gradients() -> None:
-    operators = support_operators(A, ALL, SHARES)
-    values = B @ operators.matrix[0b1101] + operators.constant[0b1101]
+    values = _values(_equations(A, ALL, SHARES), 0b1101)
     part = [0, 2, 3]
     x = values[part]
     assert x[0] + x[1] == pytest.approx(1, abs=1e-14)
@@ -39,33 +65,59 @@ def test_an_operator_with_a_sum_holds_it_and_levels_the_gradients() -> None:
     assert values[1] == pytest.approx((gradient[1] - gradient[0]) / (A[:, 1] @ A[:, 1]), abs=1e-12)
 
 
+def test_weights_and_the_row_of_a_weighted_sum_are_taken_in() -> None:
+    weight, mass = np.array([2.0, 1.0, 0.5, 3.0, 1.0]), 7.0
+    weighted = np.vstack([A[:5] * weight[:, None], mass * SHARES])
+    values = _values(equations_of(weighted, ALL, NONE, weight, mass), 0b1111)
+    expected, *_ = np.linalg.lstsq(weighted, np.r_[weight * B[:5], mass], rcond=None)
+    np.testing.assert_allclose(values, expected, rtol=1e-11)
+
+
 def test_the_empty_choice() -> None:
-    free = support_operators(A, ALL, NONE)
-    np.testing.assert_allclose(B @ free.matrix[0], -(A.T @ B) / (A**2).sum(axis=0), rtol=1e-12)
-    assert free.usable[0]
-    held = support_operators(A, ALL, SHARES)
-    assert not held.usable[0], "nothing adds up to one"
-    assert not held.usable[0b1000], "a process is no share"
-    assert held.usable.sum() == 14
+    free = _equations(A, ALL, NONE)
+    np.testing.assert_allclose(_values(free, 0), -(A.T @ B) / (A**2).sum(axis=0), rtol=1e-12)
+    held = _usable(_equations(A, ALL, SHARES))
+    assert not held[0], "nothing adds up to one"
+    assert not held[0b1000], "a process is no share"
+    assert sum(held) == 14
 
 
 def test_a_free_unknown_always_takes_part() -> None:
-    operators = support_operators(A, SHARES, NONE)
-    assert operators.inside.shape == (8, 4)
-    assert operators.inside[:, 3].all()
+    equations = _equations(A, SHARES, NONE)
+    assert everything(equations) == 0b111
+    for support in range(8):
+        operator = operator_of(equations, support)
+        assert operator is not None
+        assert operator.inside[3]
 
 
 def test_dependent_columns_make_a_choice_unusable() -> None:
     doubled = np.column_stack([A[:, :3], A[:, 0]])
-    operators = support_operators(doubled, ALL, NONE)
     together = (np.arange(16) & 0b1001) == 0b1001
-    np.testing.assert_array_equal(operators.usable, ~together)
-    assert np.isfinite(operators.matrix).all()
+    np.testing.assert_array_equal(_usable(_equations(doubled, ALL, NONE)), ~together)
 
 
 def test_more_unknowns_than_equations_are_unusable() -> None:
-    operators = support_operators(A[:2], ALL, NONE)
-    np.testing.assert_array_equal(operators.usable, operators.inside.sum(axis=1) <= 2)
+    equations = _equations(A[:2], ALL, NONE)
+    counts = inside(equations.bit, np.arange(16)).sum(axis=1)
+    np.testing.assert_array_equal(_usable(equations), counts <= 2)
+
+
+def test_an_operator_is_the_same_whatever_was_made_before_it() -> None:
+    equations = _equations(A, ALL, SHARES)
+    for order in (range(16), reversed(range(16)), RANDOM.permutation(16)):
+        operators = no_operators(equations, 0)
+        for support in order:
+            slot = slot_of(operators, int(support))
+            alone = operator_of(equations, int(support))
+            assert slot_of(operators, int(support)) == slot
+            if alone is None:
+                assert slot == UNUSABLE
+                continue
+            np.testing.assert_array_equal(operators.matrix[4 * slot : 4 * slot + 4], alone.matrix)
+            np.testing.assert_array_equal(operators.constant[4 * slot : 4 * slot + 4], alone.constant)
+            assert operators.support[slot] == support
+        assert operators.n_made[0] == 14
 
 
 def test_singular_values_on_the_plane_of_the_sum() -> None:
@@ -80,30 +132,4 @@ def test_singular_values_on_the_plane_of_the_sum() -> None:
 def test_too_many_unknowns_are_refused() -> None:
     many = np.ones(15, dtype=bool)
     with pytest.raises(ValueError, match="15 constrained unknowns; at most 14 can be solved"):
-        support_operators(np.eye(15), many, ~many)
-
-
-def _python(code: str, **environment: str) -> str:
-    finished = subprocess.run(
-        [sys.executable, "-c", code],
-        capture_output=True,
-        text=True,
-        check=True,
-        env={**os.environ, **environment},
-    )
-    return finished.stdout.strip()
-
-
-def test_importing_the_room_neither_loads_numba_nor_compiles() -> None:
-    code = (
-        "import sys, pipeline.mixing; print('numba' in sys.modules, 'pipeline.mixing.kernel' in sys.modules)"
-    )
-    assert _python(code) == "False False"
-
-
-def test_where_machine_code_cannot_be_kept_it_is_compiled_each_time() -> None:
-    code = (
-        "from pipeline.mixing import kernel; import numpy as np; v = np.zeros(2); "
-        "print(kernel._judge(np.array([1, 2]), 0.0, np.array([-1.0, 3.0])))"
-    )
-    assert _python(code, NUMBA_CACHE_LOCATOR_CLASSES="IPythonCacheLocator") == "(1, -1.0)"
+        _equations(np.eye(15), many, ~many)

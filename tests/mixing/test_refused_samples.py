@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-from dataclasses import replace
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import pytest
 
-from pipeline.mixing.operators import support_operators
+from pipeline.mixing.making import UNUSABLE
+from pipeline.mixing.operators import no_operators
 from pipeline.mixing.problem import MixingProblem
 from pipeline.mixing.solver import solve
 from pipeline.mixing.status import STATUS_WORDS, MixingStatus
@@ -18,7 +18,7 @@ from .invented import problem, random_problem, random_samples
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
-    from pipeline.mixing.operators import SupportOperators
+    from pipeline.mixing.blocks import Equations, Operators
 
 RANDOM = np.random.default_rng(21)
 OF = random_problem(RANDOM, n_source=4, n_property=6, signs=("non_negative",))
@@ -129,11 +129,12 @@ def test_a_process_that_does_nothing_leaves_no_support() -> None:
 
 
 def test_an_answer_that_is_no_optimum_is_not_given(monkeypatch: pytest.MonkeyPatch) -> None:
-    def first_source_only(*system: NDArray[Any]) -> SupportOperators:
-        operators = support_operators(*system)
-        return replace(operators, usable=np.arange(operators.usable.size) == 1)
+    def first_source_only(equations: Equations, first_choice: int) -> Operators:
+        operators = no_operators(equations, first_choice)
+        operators.slot[np.arange(operators.slot.size) != 1] = UNUSABLE
+        return operators
 
-    monkeypatch.setattr("pipeline.mixing.solver.support_operators", first_source_only)
+    monkeypatch.setattr("pipeline.mixing.solver.no_operators", first_source_only)
     solution = solve(problem(OF.sources, OF.uncertainty), OF.sources)
     assert list(solution.status) == [MixingStatus.SOLVED] + [MixingStatus.NOT_OPTIMAL] * 3
     assert np.isnan(solution.shares[1:]).all()

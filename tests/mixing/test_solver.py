@@ -6,6 +6,7 @@ import numpy as np
 import pytest
 from scipy.optimize import LinearConstraint, lsq_linear, minimize, nnls
 
+from pipeline.mixing.problem import weighted_system
 from pipeline.mixing.solver import solve
 from pipeline.mixing.status import MixingStatus
 
@@ -74,9 +75,24 @@ def test_worked_case_to_the_printed_digits(
 
 
 def test_condition_numbers_of_the_worked_case() -> None:
+    """The whole system's, the row of the sum included; samples are judged without that row."""
+    for extended, expected in ((False, 6.580), (True, 7.474)):
+        whole = weighted_system(_worked(50.0, extended=extended), np.arange(6)).A
+        assert np.linalg.cond(whole) == pytest.approx(expected, abs=5e-4)
+
+
+@pytest.mark.parametrize("extended", [False, True])
+def test_the_weight_of_the_sum_says_nothing_of_what_the_properties_can_tell(extended: bool) -> None:
+    """With centred rows the sum has a direction of its own, so its weight is no matter of the sources."""
     sample = np.array([RESPIRED])
-    assert solve(_worked(50.0, extended=False), sample).condition_number[0] == pytest.approx(6.580, abs=5e-4)
-    assert solve(_worked(50.0, extended=True), sample).condition_number[0] == pytest.approx(7.474, abs=5e-4)
+    exact = solve(_worked(None, extended=extended), sample)
+    for mass_weight in (1e-3, 1.0, 50.0, 1e6):
+        weighted = solve(_worked(mass_weight, extended=extended), sample)
+        assert weighted.status[0] == MixingStatus.SOLVED, mass_weight
+        assert weighted.condition_number[0] == pytest.approx(exact.condition_number[0], rel=1e-6)
+        np.testing.assert_allclose(weighted.shares.sum(), 1.0, atol=1e-9)
+    beyond = solve(_worked(1e13, extended=extended), sample)
+    assert beyond.status[0] == MixingStatus.UNDETERMINED, "rounding would decide"
 
 
 CASES: list[tuple[int, int, tuple[Sign, ...], float | None]] = [
@@ -235,7 +251,50 @@ def test_no_degrees_of_freedom_means_no_chi_square() -> None:
     of = random_problem(np.random.default_rng(17), n_source=3, n_property=2)
     solution = solve(of, np.array([0.5, 0.3, 0.2]) @ of.sources[None])
     assert solution.status[0] == MixingStatus.SOLVED
+    assert solution.degrees_of_freedom[0] == 0
     assert np.isnan(solution.reduced_chi_square[0])
+
+
+def test_degrees_of_freedom_are_equations_less_unknowns_that_take_part() -> None:
+    random = np.random.default_rng(19)
+    of = random_problem(random, n_source=4, n_property=7, signs=("non_negative", "free"))
+    samples = random_samples(random, of, 300)
+    samples[::3, 2] = np.nan
+    samples[1::3, :5] = np.nan
+    solution = solve(of, samples)
+    solved = solution.status == MixingStatus.SOLVED
+    assert 0 < solved.sum() < 300
+    part = np.count_nonzero(_unknowns(solution), axis=1)
+    expected = (~np.isnan(samples)).sum(axis=1) + 1 - part
+    np.testing.assert_array_equal(solution.degrees_of_freedom[solved], expected[solved])
+    assert np.isnan(solution.degrees_of_freedom[~solved]).all()
+    misfit = ((solution.residuals / of.uncertainty) ** 2)[solved]
+    np.testing.assert_allclose(
+        np.nansum(misfit, axis=1),
+        (solution.reduced_chi_square * solution.degrees_of_freedom)[solved],
+        rtol=1e-9,
+    )
+
+
+@pytest.mark.parametrize("mass_weight", [None, 20.0])
+def test_a_share_is_zero_just_where_its_bound_holds_it_and_has_no_first_order_uncertainty(
+    mass_weight: float | None,
+) -> None:
+    random = np.random.default_rng(20)
+    of = random_problem(random, n_source=4, n_property=7, signs=("non_negative",), mass_weight=mass_weight)
+    solution = solve(of, random_samples(random, of, 2_000))
+    inside = (solution.support[:, None] >> np.arange(5)) & 1 == 1
+    unknowns = _unknowns(solution)
+    np.testing.assert_array_equal(unknowns > 0, inside)
+    known = ~np.isnan(np.hstack([solution.share_uncertainty, solution.process_uncertainty]))
+    held = ~inside
+    if mass_weight is None:
+        alone = inside[:, :4] & (inside[:, :4].sum(axis=1) == 1)[:, None]
+        assert (solution.shares[alone] == 1.0).all()
+        held[:, :4] |= alone
+    assert 0 < held.sum() < held.size
+    np.testing.assert_array_equal(known, ~held)
+    assert (np.hstack([solution.share_uncertainty, solution.process_uncertainty])[known] > 0).all()
 
 
 def test_residuals_are_fitted_less_observed() -> None:

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from operator import attrgetter
+
 import numpy as np
 import pytest
 
@@ -11,10 +13,15 @@ from pipeline.mixing.status import MixingStatus
 
 from .invented import kkt_violation, problem, random_problem, random_samples
 
-ARRAYS = ("shares", "processes", "residuals", "reduced_chi_square", "optimality", "support", "status")
+ARRAYS = (
+    "shares", "processes", "residuals", "reduced_chi_square", "optimality", "support", "status",
+    "share_uncertainty", "process_uncertainty", "condition_number", "hull.distance", "hull.side", "hull.active",
+)  # fmt: skip
 
 
-@pytest.mark.parametrize(("n_source", "n_property", "mass"), [(3, 6, None), (5, 7, 20.0), (11, 13, None)])
+@pytest.mark.parametrize(
+    ("n_source", "n_property", "mass"), [(3, 6, None), (5, 7, 20.0), (11, 13, None), (12, 14, 5.0)]
+)
 def test_however_a_long_batch_is_cut_and_ordered_the_bits_are_the_same(
     n_source: int, n_property: int, mass: float | None
 ) -> None:
@@ -31,8 +38,9 @@ def test_however_a_long_batch_is_cut_and_ordered_the_bits_are_the_same(
     cuts = np.sort(random.integers(4_000, size=20))
     parts = [solve(of, part) for part in np.split(samples[order], cuts)]
     for name in ARRAYS:
-        joined = np.concatenate([getattr(part, name) for part in parts])
-        np.testing.assert_array_equal(joined, getattr(together, name)[order], err_msg=name)
+        values = attrgetter(name)
+        joined = np.concatenate([values(part) for part in parts])
+        np.testing.assert_array_equal(joined, values(together)[order], err_msg=name)
 
 
 def test_more_samples_than_there_is_room_to_wait_for_one_support() -> None:

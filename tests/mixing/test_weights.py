@@ -151,3 +151,10 @@ def test_what_mixes_in_proportion(name: str) -> None:
 )  # fmt: skip
 def test_what_does_not(name: str) -> None:
     assert not mixes_in_proportion(name)
+
+
+@pytest.mark.parametrize("size", [1e-300, 1e6])
+def test_an_absurd_uncertainty_of_a_measurement_breaks_nothing(size: float) -> None:
+    read = catalogue()
+    problem = mixing_problem(read, read.set[0], RATIOS, {"nitrate": size})
+    assert np.isfinite(problem.weight).all()

@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from pipeline.mixing.problem import MixingProblem
+from pipeline.mixing.problem import MixingProblem, weighted_system
 from pipeline.mixing.solver import solve
 
 from .check import Check, Status
@@ -97,8 +97,9 @@ def cost_of_ddof(sample: str) -> float:
 
 
 def condition_number(mass_weight: float, unknowns: float) -> float:
-    solution = _solution("0.5 0.3 0.2", mass_weight, extended=unknowns > len(SOURCES))
-    return float(solution.condition_number[0])
+    """Return that of the whole system, the row of the sum included; samples are judged without that row."""
+    problem = _problem(mass_weight, extended=unknowns > len(SOURCES))
+    return float(np.linalg.cond(weighted_system(problem, np.arange(len(SCALED_WEIGHTS))).A))
 
 
 def nnls(right: str, unknown: float) -> float:

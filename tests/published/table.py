@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
-from . import casts, cruises, eos80, mixing, oxygen, scales, teos10, tracers
+from . import carbonate, casts, crossovers, cruises, eos80, isotopes, mixing, oxygen, scales, teos10, tracers
 
 if TYPE_CHECKING:
     from .check import Check
@@ -15,7 +15,10 @@ TABLE: tuple[Check, ...] = (
     *teos10.ROWS,
     *casts.ROWS,
     *cruises.ROWS,
+    *crossovers.ROWS,
     *oxygen.ROWS,
     *tracers.ROWS,
+    *carbonate.ROWS,
+    *isotopes.ROWS,
     *mixing.ROWS,
 )

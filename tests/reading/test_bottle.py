@@ -275,7 +275,7 @@ def test_two_cruises_in_one_file() -> None:
         (b"", "empty-file", "found an empty file; expected a cruise file"),
         (b" \n \n", "empty-file", "found an empty file"),
         (b"station,depth\n1,2\n", "not-a-cruise-file", "line 1: found 'station,depth'"),
-        (b"\x89HDF\r\n\x1a\n\0\0\0", "not-a-cruise-file", "found binary data"),
+        (b"\x89HDF\r\n\x1a\n\0\0\0", "broken-netcdf", "the NetCDF file is cut or spoiled"),
         (b"," * 10_000_000, "not-a-cruise-file", "line 1: found"),
         (
             b"BOTTLE,2026\n" + b"EXPOCODE,STNNBR" + b"," * 10_000_000,
@@ -351,3 +351,8 @@ def test_numbers_come_back_as_written(values: list[float], pad: int) -> None:
 
 def test_row_template_is_complete() -> None:
     assert list(ROW) == NAMES
+
+
+def test_a_last_line_of_nothing_but_a_quote_is_no_row() -> None:
+    delivery = read(bottle_file({}, {}, end='"\n'))
+    assert delivery.rows == delivery.table.num_rows == 2

@@ -1,12 +1,13 @@
 from __future__ import annotations
 
+import io
 import zipfile
 
 import pytest
 
 from pipeline.problems import DeliveryProblem
 from pipeline.reading import read_delivery, survey_cruises
-from pipeline.reading.files import ZIP_MAGICS
+from pipeline.reading.zips import ZIP_MAGICS
 from pipeline.settings import ReadingSettings
 from tests.invented import EXPOCODE, bottle_file, cast_file, checks, one, read, zipped
 
@@ -135,7 +136,7 @@ def test_a_survey_goes_on_behind_a_broken_member() -> None:
 
 def test_a_spreadsheet_is_called_one() -> None:
     data = zipped({"[Content_Types].xml": b"<Types/>", "xl/workbook.xml": b"<workbook/>"})
-    with pytest.raises(DeliveryProblem, match="found a spreadsheet and no cruise.toml"):
+    with pytest.raises(DeliveryProblem, match="found a spreadsheet and no cruise"):
         read(data, "cruise.xlsx")
 
 
@@ -148,3 +149,22 @@ def test_an_empty_zip_holds_no_cast() -> None:
 
 def test_zip_fixture_is_a_zip() -> None:
     assert zipfile.is_zipfile(__import__("io").BytesIO(zipped({"a": b"b"})))
+
+
+def test_a_member_without_a_name_is_refused_alone() -> None:
+    data = zipped({"a_ct1.csv": cast_file(), "b_ct1.csv": cast_file(header={"STNNBR": "2"})})
+    delivery = read(data.replace(b"b_ct1.csv", b"\0_ct1.csv"), "casts_ct1.zip")
+    assert [reject.reason for reject in delivery.rejects] == ["member-name"]
+    assert delivery.table.num_rows == 2
+
+
+@pytest.mark.filterwarnings("ignore:Duplicate name")
+def test_members_of_one_name_are_refused_because_nothing_tells_which_stands() -> None:
+    packed = io.BytesIO()
+    with zipfile.ZipFile(packed, "w") as archive:
+        archive.writestr("a_ct1.csv", cast_file())
+        for station in ("2", "3"):
+            archive.writestr("b_ct1.csv", cast_file(header={"STNNBR": station}))
+    delivery = read(packed.getvalue(), "casts_ct1.zip")
+    assert [reject.reason for reject in delivery.rejects] == ["repeated-member", "repeated-member"]
+    assert delivery.table.column("station").unique().to_pylist() == ["1"]

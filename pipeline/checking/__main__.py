@@ -1,0 +1,10 @@
+"""Print the table of all checks as Markdown: ``python -m pipeline.checking``."""
+
+from __future__ import annotations
+
+import sys
+
+from pipeline.checking import CHECKS
+from pipeline.checking.table import markdown
+
+sys.stdout.write(markdown(CHECKS.values()) + "\n")

@@ -1,0 +1,1 @@
+"""Broken files by the thousand: mutations of whole ones, read in processes that may die."""
