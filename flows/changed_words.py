@@ -9,6 +9,7 @@ import pyarrow.compute as pc
 
 from flows.pages import Block, Grid, Heading, Paragraph, Sentences
 from pipeline.archive.listing import Change
+from pipeline.findings import at
 from pipeline.tables import TABLE_NAMES
 
 if TYPE_CHECKING:
@@ -206,7 +207,7 @@ def _again(row: Mapping[str, Any]) -> str:
 
 
 def _line(row: Mapping[str, Any]) -> str:
-    return f" ({row['file']}, line {row['line']})" if row["file"] and row["line"] else ""
+    return f" ({at(row['file'], row['line'])})" if row["file"] and row["line"] else ""
 
 
 def _columns(differences: Sequence[ColumnDifference]) -> list[tuple[str, ...]]:

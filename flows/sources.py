@@ -12,6 +12,7 @@ from flows.showing import aligned
 from pipeline.mixing import read_catalogue
 from pipeline.mixing.advice import problems, warnings
 from pipeline.mixing.determinacy import determinacy
+from pipeline.mixing.products import usable_together
 from pipeline.problems import UsageProblem
 from pipeline.settings import read_settings
 
@@ -70,7 +71,7 @@ def _refuse_strangers(catalogue: Catalogue, properties: Sequence[str]) -> None:
 def _judge(
     catalogue: Catalogue, chosen: SourceSet, properties: Sequence[str] | None, settings: Settings
 ) -> Judged:
-    left = tuple(name for name in chosen.properties if not properties or name in properties)
+    left = usable_together([name for name in chosen.properties if not properties or name in properties])
     if not left:
         sentence = f"none of its properties is left; it needs some of {', '.join(chosen.properties)}."
         return Judged(chosen.name, None, (sentence,), ())
@@ -102,7 +103,7 @@ def _as_text(catalogue: Catalogue, judged: Sequence[Judged], settings: Settings)
 def _set_as_text(told: Determinacy, settings: Settings) -> list[str]:
     codes, propagation = told.chosen.sources, told.propagation
     respired = told.respiration_uncertainty
-    unknowns = _counted(len(codes), "share") + (" and respiration" if respired is not None else "")
+    unknowns = told.chosen.unknowns
     properties = _counted(len(told.chosen.properties), "property", "properties")
     lines = [
         f"{told.chosen.name}: {unknowns} from {properties} and the sum of the shares",
@@ -129,6 +130,10 @@ def _set_as_text(told: Determinacy, settings: Settings) -> list[str]:
     if respired is not None:
         shown = f"{respired:.3f} umol/kg of phosphate" if math.isfinite(respired) else "unknown"
         lines.append(f"    respiration  {shown}")
+    dissolved = told.process_uncertainty("calcium_carbonate")
+    if dissolved is not None:
+        shown = f"{dissolved:.1f} umol/kg" if math.isfinite(dissolved) else "unknown"
+        lines.append(f"    calcium carbonate  {shown}")
     if told.worth:
         least_last = sorted(told.worth, key=lambda worth: -worth.share_uncertainty)
         lines.append("  without one property, the one that tells most first")

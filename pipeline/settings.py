@@ -87,10 +87,12 @@ class CheckSettings(WaterChecks):
         24.0, description="hours between the first and last time given within one cast"
     )
     before_departure: Positive = Field(
-        3.0, description="days before the expocode's departure that a cast may be dated (our choice, no source)"
+        3.0,
+        description="days before the expocode's departure that a cast may be dated (our choice, no source)",
     )
     after_departure: Positive = Field(
-        400.0, description="days after the expocode's departure that a cast may be dated (our choice, no source)"
+        400.0,
+        description="days after the expocode's departure that a cast may be dated (our choice, no source)",
     )
     same_place: Positive = Field(10.0, description="nautical miles within which a station is in one place")
     upper_pressure: Positive = Field(

@@ -77,11 +77,13 @@ def cast_file(
 
 
 def zipped(members: Mapping[str, bytes]) -> bytes:
-    """Return a zip of ``members``."""
+    """Return a zip of ``members``, the same bytes at any time of day."""
     buffer = io.BytesIO()
     with zipfile.ZipFile(buffer, "w", zipfile.ZIP_DEFLATED) as archive:
         for name, data in members.items():
-            archive.writestr(name, data)
+            member = zipfile.ZipInfo(name)
+            member.compress_type = zipfile.ZIP_DEFLATED
+            archive.writestr(member, data)
     return buffer.getvalue()
 
 

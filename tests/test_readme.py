@@ -3,14 +3,16 @@
 from __future__ import annotations
 
 import re
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, get_args
 
 import pytest
 
 from pipeline.mixing import read_catalogue
+from pipeline.mixing.entries import SourceSet
 from pipeline.mixing.rules import parse_rules
 from pipeline.mixing.tags import tag_table
-from pipeline.tables import TABLE_NAMES
+from pipeline.settings import MixingSettings
+from pipeline.tables import MIXING, MIXTURES, TABLE_NAMES
 from tests.flows.conftest import FIXTURES, ROOT, call
 
 if TYPE_CHECKING:
@@ -61,6 +63,35 @@ def test_there_are_examples_for_each_reader() -> None:
 
 def test_every_table_is_described() -> None:
     assert all(f"| `{name}` |" in TEXT for name in TABLE_NAMES)
+
+
+def test_the_defaults_are_those_of_the_code() -> None:
+    shown = re.search(r"\| setting `mixing.` \| default \| \|\n\|---\|---\|---\|\n((?:\|.*\|\n)+)", TEXT)
+    assert shown
+    rows = [[cell.strip() for cell in line.strip("|").split(" | ")][:2] for line in shown[1].splitlines()]
+    stated = {
+        name: value
+        for names, values in rows
+        if values != "the registry's"
+        for name, value in zip(re.findall(r"`(\w+)`", names), values.split(", "), strict=True)
+    }
+    assert set(stated) == {
+        "tag_share", "tag_probability", "unexplained_chi_square", "condition_limit", "members", "seed",
+    }  # fmt: skip
+    assert {name: float(value) for name, value in stated.items()} == {
+        name: getattr(MixingSettings(), name) for name in stated
+    }
+
+
+def test_every_key_of_a_set_is_told_with_its_choices() -> None:
+    section = TEXT[TEXT.index("## Source waters") : TEXT.index("## Settings")]
+    for name, field in SourceSet.model_fields.items():
+        assert re.search(rf"`{name}|\b{name} = |\[set\.{name}\]", section), name
+        for choice in get_args(field.annotation):
+            if isinstance(choice, str):
+                assert f'`"{choice}"`' in section, (name, choice)
+    for name in (*MIXING, *MIXTURES[7:]):
+        assert f"`{name}`" in TEXT or name.endswith("_uncertainty"), name
 
 
 def test_the_tags_are_those_of_the_code() -> None:

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from pipeline.findings import Finding, Severity
+from pipeline.findings import Finding, Severity, at
 from pipeline.usable import CHECK_DOUBT, CHECK_FAULT, CHECK_GOOD, CHECK_MISSING
 from pipeline.variables import MEASURED, REGISTRY, check_name
 
@@ -126,7 +126,7 @@ def _finding(table: pa.Table, mark: Mark, members: IntArray, *, rest_of: bool = 
     more = f" (and {count - 1} more rows)" if count > 1 and not mark.together else ""
     return Finding(
         mark.check, mark.severity,
-        f"{file}, line {line}: {name} {mark.words.format(value=value)}{more}; expected {limit}.",
+        f"{at(file, line)}: {name} {mark.words.format(value=value)}{more}; expected {limit}.",
         variable=mark.variable, value=value, limit=limit, file=file, line=line,
         station=None if rest_of else table.column("station")[row].as_py(),
         cast=None if rest_of else table.column("cast")[row].as_py(),

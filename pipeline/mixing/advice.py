@@ -8,7 +8,14 @@ import numpy as np
 
 from pipeline.mixing.determinacy import determinacy, with_another
 from pipeline.mixing.magnitudes import doubtful
-from pipeline.mixing.properties import LISTED_AS, PROPERTIES, ratios_of, respiration_ratios, same_quantity
+from pipeline.mixing.properties import (
+    AMOUNT_OF,
+    LISTED_AS,
+    PROPERTIES,
+    ratios_of,
+    respiration_ratios,
+    same_quantity,
+)
 from pipeline.variables import TRACERS
 
 if TYPE_CHECKING:
@@ -80,8 +87,8 @@ def _with_pairs_joined(told: Determinacy, catalogue: Catalogue, settings: Settin
 
 
 def _too_few(told: Determinacy) -> str:
-    n_source, n_property = len(told.chosen.sources), len(told.chosen.properties)
-    shares = f"{n_source} shares" + (" and respiration" if told.chosen.respiration != "none" else "")
+    n_property = len(told.chosen.properties)
+    shares = told.chosen.unknowns
     properties = "property" if n_property == 1 else "properties"
     return (
         f"there are {told.n_unknown} unknowns ({shares}) for {told.n_equation} equations ({n_property} {properties} "
@@ -179,6 +186,7 @@ def _helpful(
         for name in PROPERTIES
         if name not in TRACERS
         and name not in LISTED_AS
+        and AMOUNT_OF.get(name, name) in {name, *chosen.properties}
         and all(name in source.properties for source in sources)
         and not any(same_quantity(name, other) for other in chosen.properties)
     ]

@@ -12,7 +12,8 @@ from pipeline.mixing import notices
 from pipeline.mixing.answers import Attempt, answer_of
 from pipeline.mixing.domains import validity
 from pipeline.mixing.members import sample_keys
-from pipeline.mixing.properties import respiration_ratios
+from pipeline.mixing.products import rows_of
+from pipeline.mixing.properties import calcium_carbonate_ratios, respiration_ratios
 from pipeline.mixing.solver import solve
 from pipeline.mixing.status import MixingStatus
 from pipeline.mixing.tags import tags
@@ -110,12 +111,14 @@ def _cruise(samples: pa.Table) -> str | None:
 
 def _attempt(samples: pa.Table, catalogue: Catalogue, chosen: SourceSet, settings: Settings) -> Attempt:
     ratios = respiration_ratios(settings.tracers, chosen.silicate_per_phosphate)
-    problem = mixing_problem(catalogue, chosen, ratios, settings.mixing.uncertainty)
+    dissolution = calcium_carbonate_ratios(settings.tracers)
+    problem = mixing_problem(catalogue, chosen, ratios, settings.mixing.uncertainty, dissolution)
     inside, unknown = validity(samples, chosen.valid, settings)
     rows = np.flatnonzero(inside)
-    observed = np.stack([usable(samples, name, settings.use)[rows] for name in chosen.properties], axis=1)
+    listed = np.stack([usable(samples, name, settings.use)[rows] for name in chosen.properties], axis=1)
+    observed = rows_of(chosen.properties, listed)
     solution = solve(problem, observed, condition_limit=settings.mixing.condition_limit)
-    return Attempt(chosen, ratios, problem, rows, unknown, observed, solution)
+    return Attempt(chosen, ratios, dissolution, problem, rows, unknown, observed, solution)
 
 
 def _pick(attempts: Sequence[Attempt], n_sample: int) -> tuple[NDArray[np.int8], IntArray, IntArray]:

@@ -2,13 +2,15 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 import numpy as np
 
+from pipeline.mixing.carbon_parts import CALCIUM_CARBONATE, carbonate_parts, isotope_parts
 from pipeline.mixing.ensemble import run_ensemble
 from pipeline.mixing.members import measurement_noise, perturbed_sources
+from pipeline.mixing.products import covariance_in_rows, listed_residuals, parts_in_rows, rows_of
 from pipeline.mixing.properties import ratios_of
 from pipeline.mixing.split import (
     first_order_uncertainty,
@@ -17,7 +19,7 @@ from pipeline.mixing.split import (
     source_values,
     split,
 )
-from pipeline.mixing.weights import measurement_uncertainty
+from pipeline.mixing.weights import measured_in_rows
 from pipeline.variables import residual_name
 
 if TYPE_CHECKING:
@@ -41,10 +43,11 @@ class Attempt:
 
     chosen: SourceSet
     ratios: Mapping[str, float]  # change of each property per umol/kg of phosphate released
+    dissolution: Mapping[str, float]  # and per umol/kg of calcium carbonate dissolved
     problem: MixingProblem
     rows: IntArray  # (n_valid,) samples
     unknown: BoolArray  # (n_sample,) whether it is valid cannot be told: a coordinate is missing
-    observed: FloatArray  # (n_valid, n_property)
+    observed: FloatArray  # (n_valid, n_property) as they stand in the equations
     solution: MixingSolution  # of n_valid samples
 
 
@@ -105,9 +108,10 @@ def answer_of(
     )
 
     none = np.full(len(rows), np.nan)
-    respired = bool(attempt.problem.signs)
-    respiration = solution.processes[kept, 0] if respired else none
-    of_respiration = found.processes[:, 0] if respired else none
+    processes = {name: solution.processes[kept, place] for place, name in enumerate(chosen.processes)}
+    of_processes = {name: found.processes[:, place] for place, name in enumerate(chosen.processes)}
+    respiration = processes.get("respiration", none)
+    of_respiration = of_processes.get("respiration", none)
     hull = solution.hull
     per_sample = {
         "leading_share": _at(shares, leading),
@@ -128,8 +132,15 @@ def answer_of(
         per_sample[f"{name}_from_respiration_uncertainty"] = of_respiration * abs(ratios[q])
     if settings.oxygen_utilisation_rate is not None:
         per_sample["pseudo_age"] = pseudo_age(respiration, attempt.ratios, settings.oxygen_utilisation_rate)
+    if CALCIUM_CARBONATE in processes:
+        per_sample |= carbonate_parts(
+            processes[CALCIUM_CARBONATE], of_processes[CALCIUM_CARBONATE], attempt.dissolution
+        )
+    changes = {"respiration": attempt.ratios, CALCIUM_CARBONATE: attempt.dissolution}
+    per_sample |= isotope_parts(catalogue, chosen, shares, processes, changes)
+    residuals = listed_residuals(chosen.properties, attempt.observed[kept], solution.residuals[kept])
     for position, name in enumerate(chosen.properties):
-        per_sample[residual_name(name)] = solution.residuals[kept, position]
+        per_sample[residual_name(name)] = residuals[:, position]
     per_share = {"share": shares, "share_uncertainty": found.shares}
     for index, name in enumerate(("share_p16", "share_p50", "share_p84")):
         per_share[name] = found.percentiles[:, index]
@@ -155,13 +166,15 @@ def _by_members(
     sources = perturbed_sources(
         catalogue, attempt.chosen, (*properties, *names), seed=settings.seed, members=settings.members
     )
+    noise = measurement_noise(keys, properties, settings.uncertainty)
+    absolute, relative = parts_in_rows(properties, noise.absolute, noise.relative, attempt.problem.reference)
     ensemble = run_ensemble(
         attempt.problem,
         attempt.observed[kept],
         attempt.solution.support[kept],
         leading,
-        measurement_noise(keys, properties, settings.uncertainty),
-        sources[:, :, : len(properties)],
+        replace(noise, absolute=absolute, relative=relative),
+        rows_of(properties, sources[:, :, : len(properties)]),
         sources[:, :, len(properties) :],
     )
     return _Uncertain(
@@ -186,8 +199,10 @@ def _to_first_order(
     each = (*properties, *names)
     once = sorted({*each})
     places = [once.index(name) for name in each]
+    sources = [catalogue.sources[code] for code in attempt.chosen.sources]
     covariances = [
-        catalogue.sources[code].covariance_of(once)[np.ix_(places, places)] for code in attempt.chosen.sources
+        covariance_in_rows(once, source.values_of(once), source.covariance_of(once))[np.ix_(places, places)]
+        for source in sources
     ]
     return _Uncertain(
         solution.share_uncertainty[kept],
@@ -197,7 +212,7 @@ def _to_first_order(
             observed,
             solution.support[kept],
             shares,
-            measurement_uncertainty(properties, observed, settings.uncertainty),
+            measured_in_rows(properties, observed, settings.uncertainty),
             np.array(covariances),
             carried,
         ),

@@ -13,8 +13,9 @@ import numpy as np
 
 from pipeline.mixing.operators import RANK_TOLERANCE
 from pipeline.mixing.problem import weighted_system
-from pipeline.mixing.properties import respiration_ratios
-from pipeline.mixing.weights import measurement_uncertainty, mixing_problem
+from pipeline.mixing.products import covariance_in_rows, usable_together
+from pipeline.mixing.properties import calcium_carbonate_ratios, respiration_ratios
+from pipeline.mixing.weights import measured_in_rows, mixing_problem
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -77,8 +78,12 @@ class Determinacy:
     @property
     def respiration_uncertainty(self) -> float | None:
         """Standard uncertainty of respiration, umol/kg of phosphate; None where the set knows none."""
-        processes = self.propagation.unknown[len(self.chosen.sources) :]
-        return float(processes[0]) if len(processes) else None
+        return self.process_uncertainty("respiration")
+
+    def process_uncertainty(self, name: str) -> float | None:
+        """Return the standard uncertainty of a further unknown, in its unit; None where the set does not know it."""
+        known = zip(self.chosen.processes, self.propagation.unknown[len(self.chosen.sources) :], strict=True)
+        return next((float(spread) for process, spread in known if process == name), None)
 
 
 def determinacy(catalogue: Catalogue, chosen: SourceSet, settings: Settings) -> Determinacy:
@@ -94,8 +99,11 @@ def determinacy(catalogue: Catalogue, chosen: SourceSet, settings: Settings) -> 
     """
     propagation, condition = _judge(catalogue, chosen, settings)
     worth = []
-    for name in chosen.properties if len(chosen.properties) > 1 else ():
-        without, number = _judge(catalogue, _having(chosen, chosen.properties, without=name), settings)
+    for name in chosen.properties:
+        fewer = _having(chosen, chosen.properties, without=name)
+        if not fewer.properties:
+            continue
+        without, number = _judge(catalogue, fewer, settings)
         worth.append(Worth(name, number, _largest_share(without)))
     n_unknown = len(propagation.unknown)
     return Determinacy(
@@ -124,7 +132,8 @@ def _judge(catalogue: Catalogue, chosen: SourceSet, settings: Settings) -> tuple
         # Such a sum has no weight, and its row would tell no source from another either.
         chosen = chosen.model_copy(update={"mass": "exact", "mass_weight": None})
     ratios = respiration_ratios(settings.tracers, chosen.silicate_per_phosphate)
-    problem = mixing_problem(catalogue, chosen, ratios, settings.mixing.uncertainty)
+    dissolution = calcium_carbonate_ratios(settings.tracers)
+    problem = mixing_problem(catalogue, chosen, ratios, settings.mixing.uncertainty, dissolution)
     system = weighted_system(problem, np.arange(len(chosen.properties)))
     misfit = misfit_at_centre(catalogue, chosen, problem, settings)
     weight = np.zeros(len(system.A))  # the row of a weighted sum is without error
@@ -146,8 +155,11 @@ def misfit_at_centre(
     The measurement's, and that of every source times its share squared, 1 / n_source**2.
     """
     names = chosen.properties
-    measured = measurement_uncertainty(names, problem.reference, settings.mixing.uncertainty)
-    sources = [catalogue.sources[code].covariance_of(names) for code in chosen.sources]
+    measured = measured_in_rows(names, problem.reference, settings.mixing.uncertainty)
+    each = [catalogue.sources[code] for code in chosen.sources]
+    sources = [
+        covariance_in_rows(names, source.values_of(names), source.covariance_of(names)) for source in each
+    ]
     return np.asarray(np.diag(measured**2) + np.sum(sources, axis=0) / len(sources) ** 2)
 
 
@@ -231,7 +243,8 @@ def _directions(summed: BoolArray) -> FloatArray:
 
 
 def _having(chosen: SourceSet, properties: Sequence[str], without: str | None = None) -> SourceSet:
-    return chosen.model_copy(update={"properties": tuple(name for name in properties if name != without)})
+    left = usable_together([name for name in properties if name != without])
+    return chosen.model_copy(update={"properties": left})
 
 
 def _all_the_same(catalogue: Catalogue, chosen: SourceSet) -> bool:

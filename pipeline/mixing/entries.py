@@ -29,6 +29,7 @@ Latitude = Annotated[float, Field(strict=True, ge=-90, le=90, allow_inf_nan=Fals
 Longitude = Annotated[float, Field(strict=True, ge=-180, le=360, allow_inf_nan=False)]
 Month = Annotated[int, Field(strict=True, ge=1, le=12)]
 Vertex = tuple[Longitude, Latitude]
+Sign = Literal["none", "non_negative", "free"]
 
 
 class _Entry(BaseModel):
@@ -73,6 +74,17 @@ class Source(_Entry):
     note: Annotated[str, Field(max_length=2_000)] = ""
     properties: Annotated[dict[str, SourceValue], Field(min_length=1)]
     covariance: Covariance | None = None  # its diagonal repeats the uncertainties
+
+    def values_of(self, names: Sequence[str]) -> NDArray[np.float64]:
+        """Return the source's values of ``names``, (n,), in property units.
+
+        Raises
+        ------
+        KeyError
+            Where the source does not give one of the properties.
+
+        """
+        return np.array([self.properties[name].value for name in names])
 
     def covariance_of(self, names: Sequence[str]) -> NDArray[np.float64]:
         """Return the covariance of the source's values of ``names``, (n, n), in property units.
@@ -120,13 +132,27 @@ class SourceSet(_Entry):
     name: Name
     sources: Annotated[tuple[str, ...], Field(min_length=1, max_length=MOST_SOURCES)]
     properties: Annotated[tuple[str, ...], Field(min_length=1)]
-    respiration: Literal["none", "non_negative", "free"] = "none"
+    respiration: Sign = "none"
     silicate_per_phosphate: Number = 0.0
+    calcium_carbonate: Sign = "none"  # that dissolved, beside respiration
     mass: Literal["exact", "weighted"] = "exact"
     weights: Literal["uncertainty", "variance", "given"] = "uncertainty"
     given_weights: dict[str, Positive] | None = None  # per property, and "mass" for a weighted sum
     mass_weight: Positive | None = None
     valid: Domain = Domain()
+
+    @property
+    def processes(self) -> Mapping[str, Literal["non_negative", "free"]]:
+        """What changes samples beside mixing, in the order of the further unknowns, and of which sign it can be."""
+        each = (("respiration", self.respiration), ("calcium_carbonate", self.calcium_carbonate))
+        return {name: sign for name, sign in each if sign != "none"}
+
+    @property
+    def unknowns(self) -> str:
+        """What the set is solved for in words, such as ``2 shares and respiration``."""
+        n_source = len(self.sources)
+        words = [f"{n_source} share{'s' if n_source != 1 else ''}", *(name.replace("_", " ") for name in self.processes)]
+        return " and ".join([", ".join(words[:-1]), words[-1]]) if len(words) > 1 else words[0]
 
 
 class CatalogueFile(_Entry):

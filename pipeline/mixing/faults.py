@@ -12,7 +12,7 @@ from pipeline.mixing.conversion import asked_of, converted_source
 from pipeline.mixing.domain_faults import domain_faults
 from pipeline.mixing.entries import ReferenceState, Source, SourceSet
 from pipeline.mixing.form import Fault
-from pipeline.mixing.properties import LISTED_AS, ratios_of, respiration_ratios
+from pipeline.mixing.properties import AMOUNT_OF, LISTED_AS, ratios_of, respiration_ratios
 from pipeline.mixing.source_faults import gaps, no_property, source_faults
 from pipeline.settings import TracerSettings
 
@@ -145,6 +145,7 @@ def _set_faults(
                 ),
             )
     yield from _counting(chosen)
+    yield from _carbon(chosen)
     yield from _weighting(chosen)
     yield from ((("valid", key), words) for key, words in domain_faults(chosen.valid))
     whole = [by_code[code] for code in dict.fromkeys(chosen.sources) if code in by_code]
@@ -157,9 +158,9 @@ def _set_faults(
 
 def _counting(chosen: SourceSet) -> Iterator[tuple[Location, str]]:
     respired = chosen.respiration != "none"
-    n_unknown, n_equation = len(chosen.sources) + respired, len(chosen.properties) + 1
+    n_unknown, n_equation = len(chosen.sources) + len(chosen.processes), len(chosen.properties) + 1
     if n_unknown > n_equation:
-        shares = f"{len(chosen.sources)} shares" + (" and respiration" if respired else "")
+        shares = chosen.unknowns
         yield (
             ("sources",),
             (
@@ -175,6 +176,27 @@ def _counting(chosen: SourceSet) -> Iterator[tuple[Location, str]]:
             (
                 f"found respiration = '{chosen.respiration}' and no property that respiration changes; expected "
                 f"oxygen, phosphate, nitrate or dic among them; add one, or set respiration = 'none'."
+            ),
+        )
+
+
+def _carbon(chosen: SourceSet) -> Iterator[tuple[Location, str]]:
+    """Judge isotope ratios and calcium carbonate, which need carbon among the properties."""
+    for name, amount in AMOUNT_OF.items():
+        if name in chosen.properties and amount not in chosen.properties:
+            yield (
+                ("properties",),
+                (
+                    f"found {name} without {amount}; expected both, since a mixture has the mean of their product and "
+                    f"not that of the ratio; add {amount}, to the sources too, or take {name} away."
+                ),
+            )
+    if chosen.calcium_carbonate != "none" and not {"dic", "alkalinity"} & {*chosen.properties}:
+        yield (
+            ("calcium_carbonate",),
+            (
+                f"found calcium_carbonate = '{chosen.calcium_carbonate}' and no property that it changes; expected "
+                f"alkalinity or dic among them; add one, or set calcium_carbonate = 'none'."
             ),
         )
 

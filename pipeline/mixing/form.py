@@ -36,6 +36,7 @@ _EXPECTED = {
     "properties": "a list of at least one property",
     "respiration": '"none", "non_negative" or "free"',
     "silicate_per_phosphate": _NUMBER,
+    "calcium_carbonate": '"none", "non_negative" or "free"',
     "mass": '"exact" or "weighted"',
     "weights": '"uncertainty", "variance" or "given"',
     "mass_weight": _POSITIVE,

@@ -119,6 +119,12 @@ def _outside_hull(answer: Answer, settings: MixingSettings) -> Finding | None:
         code = answer.chosen.sources[side]
         where = f"the share of {code} would have to be negative"
         why = f"a source water is missing on the side away from {code}, or values of {code} or the samples are off"
+    elif [*answer.chosen.processes][side - len(answer.chosen.sources)] == "calcium_carbonate":
+        where = "less than no calcium carbonate would have to be dissolved"
+        why = (
+            "a source with less alkalinity is missing there, calcium carbonate was made and not dissolved "
+            '(calcium_carbonate = "free" allows it), or values are off'
+        )
     else:
         where = "respiration would have to be negative"
         why = (

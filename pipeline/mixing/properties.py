@@ -1,4 +1,4 @@
-"""Which quantities of the registry can be properties of a mixture, and what respiration does to them."""
+"""Which quantities of the registry can be properties of a mixture, and what else than mixing changes them."""
 
 from __future__ import annotations
 
@@ -8,6 +8,8 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from pipeline.tracers import nutrients
+from pipeline.tracers.anomalies import ALKALINITY_PER_CALCIUM_CARBONATE, alkalinity_per_nitrate
+from pipeline.tracers.isotopes import organic_delta
 from pipeline.tracers.stoichiometry import stoichiometry
 from pipeline.variables import MEASURED, REGISTRY, SEAWATER, TRACERS, Kind
 
@@ -67,7 +69,12 @@ LISTED_AS: Mapping[str, str] = MappingProxyType(
     {"potential_temperature": "conservative_temperature", "practical_salinity": "preformed_salinity"}
 )
 
-PROPERTIES: tuple[str, ...] = tuple(name for name in REGISTRY if mixes_in_proportion(name))
+# Isotope ratios, and the amount in proportion to which each mixes: its row in the equations is the product of both.
+AMOUNT_OF: Mapping[str, str] = MappingProxyType({"delta_carbon_13": "dic"})
+
+PROPERTIES: tuple[str, ...] = tuple(
+    name for name in REGISTRY if mixes_in_proportion(name) or name in AMOUNT_OF
+)
 
 
 def same_quantity(one: str, other: str) -> bool:
@@ -78,14 +85,15 @@ def same_quantity(one: str, other: str) -> bool:
 def respiration_ratios(settings: TracerSettings, silicate_per_phosphate: float = 0.0) -> Mapping[str, float]:
     """Return the change of each property per umol/kg of phosphate that respiration releases.
 
-    Properties that are not named do not change. Alkalinity falls by as much as nitrate rises, so that
-    their sum is kept (Brewer et al. 1975, from memory). Opal dissolves beside respiration and not because
-    of it: its ratio is the catalogue's choice.
+    Properties that are not named do not change. Alkalinity falls as nitrate rises, by as much as the settings'
+    form of potential alkalinity puts back, which so is kept (Brewer et al. 1975, 1 per nitrate, from memory). Opal
+    dissolves beside respiration and not because of it: its ratio is the catalogue's choice. Of an isotope
+    ratio it is the product with its amount that changes: by the carbon of organic matter times its carbon-13.
 
     Parameters
     ----------
     settings
-        Names the stoichiometry and the form of N*.
+        Names the stoichiometry, the forms of N* and of potential alkalinity, and the carbon-13 of organic matter.
     silicate_per_phosphate
         umol/kg of silicic acid per umol/kg of phosphate.
 
@@ -101,13 +109,29 @@ def respiration_ratios(settings: TracerSettings, silicate_per_phosphate: float =
             "nitrate": nitrate,
             "nitrate_plus_nitrite": nitrate,
             "dic": chosen.carbon.value,
-            "alkalinity": -nitrate,
+            "alkalinity": -nitrate * alkalinity_per_nitrate(settings.potential_alkalinity),
+            "delta_carbon_13": chosen.carbon.value * organic_delta(settings),
             "silicate": silicate_per_phosphate,
             "broecker_no": _change(nutrients.no_broecker_1974, oxygen, nitrate),
             "broecker_po": _change(nutrients.po_broecker_1974, oxygen, phosphate),
             "po4_star": _change(nutrients.po4_star_broecker_1991, oxygen, phosphate),
             "n_star": _change(nutrients.N_STAR[nutrients.NStarForm(settings.n_star)], nitrate, phosphate),
             "si_star": _change(nutrients.si_star_sarmiento_2004, silicate_per_phosphate, nitrate),
+        }
+    )
+
+
+def calcium_carbonate_ratios(settings: TracerSettings) -> Mapping[str, float]:
+    """Return the change of each property per umol/kg of calcium carbonate that dissolves.
+
+    Carbon and charge are exact. Calcium carbonate has the carbon-13 of the mean ocean's DIC, without
+    significant fractionation (Humphreys et al. 2016); that is what the product of DIC and carbon-13 changes by.
+    """
+    return MappingProxyType(
+        {
+            "dic": 1.0,
+            "alkalinity": ALKALINITY_PER_CALCIUM_CARBONATE,
+            "delta_carbon_13": settings.mean_delta_carbon_13,
         }
     )
 

@@ -8,7 +8,7 @@ import numpy as np
 
 from pipeline.mixing.conversion import MADE_FROM, has_counterpart, obstacle
 from pipeline.mixing.magnitudes import impossible
-from pipeline.mixing.properties import LISTED_AS, mixes_in_proportion
+from pipeline.mixing.properties import LISTED_AS, PROPERTIES
 from pipeline.mixing.tags import Tag
 from pipeline.variables import REGISTRY
 
@@ -41,7 +41,7 @@ def no_property(name: str) -> str | None:
     """Return why a name is no property of a mixture, None where it is one."""
     if name not in REGISTRY:
         return f"found the property '{name}', which is no name of the registry; correct its spelling or remove it."
-    if not mixes_in_proportion(name):
+    if name not in PROPERTIES:
         return (
             f"found the property '{name}', which does not mix in proportion; expected a concentration, a "
             f"salinity or conservative_temperature; replace it."

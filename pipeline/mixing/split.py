@@ -1,7 +1,8 @@
 """What came with the source waters and what respiration added, per sample, for quantities that respiration changes.
 
 The first is the mean of the sources' values, weighted by the shares; the second the fixed ratio times the
-phosphate released, negative for oxygen. Together they are the fitted value. A quantity need not be among
+phosphate released, negative for oxygen. Together, with what
+calcium carbonate added, they are the fitted value. A quantity need not be among
 the properties that the shares were found from: it is enough that every source of the set gives it.
 """
 
@@ -26,7 +27,7 @@ if TYPE_CHECKING:
     FloatArray = NDArray[np.float64]
     IntArray = NDArray[np.int64]
 
-QUANTITIES = ("phosphate", "nitrate", "silicate", "oxygen", "dic")
+QUANTITIES = ("phosphate", "nitrate", "silicate", "oxygen", "dic", "alkalinity")
 
 
 def quantities_of(catalogue: Catalogue, chosen: SourceSet) -> tuple[str, ...]:

@@ -10,7 +10,9 @@ import numpy as np
 
 from pipeline.mixing.faults import MASS
 from pipeline.mixing.problem import MixingProblem
-from pipeline.mixing.properties import ratios_of
+from pipeline.mixing.products import listed_of, rows_of, uncertainty_in_rows
+from pipeline.mixing.properties import calcium_carbonate_ratios, ratios_of
+from pipeline.settings import TracerSettings
 from pipeline.variables import REGISTRY, Uncertainty
 
 if TYPE_CHECKING:
@@ -74,6 +76,25 @@ def measurement_uncertainty(
     return np.asarray(np.hypot(absolute, relative * values))
 
 
+def measured_in_rows(
+    properties: Sequence[str], rows: FloatArray, given: Mapping[str, float] = _NONE_GIVEN
+) -> FloatArray:
+    """Return the standard uncertainty of measurements as they stand in the equations, (..., n_property).
+
+    Parameters
+    ----------
+    properties
+        Registry names.
+    rows
+        Values as they stand in the equations, (..., n_property).
+    given
+        As ``measurement_parts`` takes them.
+
+    """
+    listed = listed_of(properties, rows)
+    return uncertainty_in_rows(properties, listed, measurement_uncertainty(properties, listed, given))
+
+
 def joined_uncertainty(
     properties: Sequence[str],
     values: FloatArray,
@@ -90,12 +111,12 @@ def joined_uncertainty(
     properties
         Registry names.
     values, uncertainties
-        Of the sources and their standard uncertainties, both (n_source, n_property), in property units.
+        Of the sources and their standard uncertainties, both (n_source, n_property), as they stand in the equations.
     given
         Of measurements, as ``measurement_parts`` takes them.
 
     """
-    measured = measurement_uncertainty(properties, values.mean(axis=0), given)
+    measured = measured_in_rows(properties, values.mean(axis=0), given)
     return np.asarray(np.sqrt(measured**2 + (uncertainties**2).mean(axis=0)))
 
 
@@ -169,6 +190,7 @@ def mixing_problem(
     chosen: SourceSet,
     ratios: Mapping[str, float],
     given: Mapping[str, float] = _NONE_GIVEN,
+    dissolution: Mapping[str, float] | None = None,
 ) -> MixingProblem:
     """Return the problem that a set of the catalogue poses.
 
@@ -180,6 +202,8 @@ def mixing_problem(
         Change of each property per umol/kg of phosphate that respiration releases; none for the others.
     given
         Uncertainties of measurements, as ``measurement_parts`` takes them.
+    dissolution
+        Change of each property per umol/kg of calcium carbonate that dissolves; that of the default settings if None.
 
     """
     entries = [
@@ -187,13 +211,18 @@ def mixing_problem(
     ]
     values = np.array([[one.value for one in row] for row in entries])
     uncertainties = np.array([[one.uncertainty for one in row] for row in entries])
+    uncertainties = uncertainty_in_rows(chosen.properties, values, uncertainties)
+    values = rows_of(chosen.properties, values)
     weights = weights_of(chosen, values, uncertainties, given)
-    respired = chosen.respiration != "none"
+    if dissolution is None:
+        dissolution = calcium_carbonate_ratios(TracerSettings())
+    changes = {"respiration": ratios, "calcium_carbonate": dissolution}
+    processes = [ratios_of(chosen.properties, changes[name]) for name in chosen.processes]
     return MixingProblem(
         sources=values,
         uncertainty=weights.uncertainty,
         weight=weights.per_unit,
-        processes=np.array([ratios_of(chosen.properties, ratios)] * respired).reshape(-1, values.shape[1]),
-        signs=(chosen.respiration,) if chosen.respiration != "none" else (),
+        processes=np.array(processes).reshape(-1, values.shape[1]),
+        signs=tuple(chosen.processes.values()),
         mass_weight=mass_weight(chosen, weights),
     )

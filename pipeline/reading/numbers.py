@@ -23,6 +23,8 @@ _NUMBER = r"^[+-]?([0-9]+\.?[0-9]*|\.[0-9]+)([eE][+-]?[0-9]+)?$"
 # -999 is the format's code; the others are as found in files (common practice, no source).
 _CODES = np.array([-999.0, -999.9, -999.99, -9999.0, -9999.9, -99999.0, -999999.0])
 _HUGE = 1e9  # fill values such as -1e10 or 9.97e36: no quantity of the registry comes near
+_FILL = -1e10  # of a column that the registry does not know, this and what is beyond the largest count
+_BEYOND_COUNTING = 1e30
 # These can be honest values, so they are codes only where a flag or the plausible range says so.
 _SHORT_CODES = np.array([-9.0, -99.0])
 _MISSING_FLAGS = (1, 5, 9)  # WHP: not received or not calibrated, not reported, not sampled
@@ -61,7 +63,9 @@ def missing_codes(values: FloatArray, variable: Variable | None, flags: FloatArr
         The delivered flags of the column, NaN where there are none, or None.
 
     """
-    codes: BoolArray = np.abs(values) >= _HUGE
+    codes: BoolArray = np.abs(values) >= (_HUGE if variable is not None else _BEYOND_COUNTING)
+    if variable is None:
+        codes |= values == _FILL
     candidates = np.flatnonzero(values <= _SHORT_CODES.max())  # few, or one comparison has settled it
     codes[candidates] |= np.isin(values[candidates], _CODES)
     short = np.zeros(len(values), dtype=bool)

@@ -78,6 +78,9 @@ def read_values(
         if column.use is Use.VALUE:
             numbers = _numbers(values, column, cells, decimal_comma=decimal_comma)
             values.numbers[column.name] = numbers
+            values.metadata[column.name] = {
+                "delivered_name": column.delivered, "delivered_units": column.unit,
+            }  # fmt: skip
         elif column.use is Use.EXTRA:
             values.extras[column.name] = _extra(cells.columns[column.position], decimal_comma=decimal_comma)
             values.metadata[column.name] = _as_delivered(column)
@@ -139,7 +142,7 @@ def _set(values: Values, column: Column, converted: FloatArray, words: str) -> N
     delivered = values.numbers[column.name]
     _keep_delivered(values, column, delivered)
     values.numbers[column.name] = converted
-    values.metadata[column.name] = {"delivered_units": column.unit, "conversion": words}
+    values.metadata[column.name] |= {"conversion": words}
     lost = int(np.count_nonzero(np.isnan(converted) & ~np.isnan(delivered)))
     if lost:
         values.unconverted[column.name] = lost
@@ -168,7 +171,9 @@ def _pressure_from_depth(values: Values, columns: Sequence[Column], surroundings
     words = "; ".join(
         part for part in (made, "depth (m) to pressure at the latitude, TEOS-10, gsw.p_from_z") if part
     )
-    values.metadata["pressure"] = {"delivered_units": column.unit, "conversion": words}
+    values.metadata["pressure"] = {
+        "delivered_name": column.delivered, "delivered_units": column.unit, "conversion": words,
+    }  # fmt: skip
     values.pressure_from = column.delivered
 
 

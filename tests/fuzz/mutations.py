@@ -101,5 +101,6 @@ def broken(data: bytes, random: Random) -> bytes:
     """Return ``data`` after one to three mutations."""
     for _ in range(random.choice((1, 1, 1, 2, 3))):
         if data:
-            data = random.choice(MUTATIONS)(data, random)
+            mutation: Mutation = random.choice(MUTATIONS)
+            data = mutation(data, random)
     return data

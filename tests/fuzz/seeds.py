@@ -2,14 +2,21 @@
 
 from __future__ import annotations
 
+import io
+import re
+import zipfile
 from dataclasses import dataclass
 from functools import cache
 from typing import TYPE_CHECKING
 
 from tests.invented import bottle_file, cast_file, zipped
+from tests.reading import netcdf_files, tables
 
 if TYPE_CHECKING:
     from pipeline.reading import Description
+
+# A workbook says when it was made; a seed must be the same tomorrow.
+_INSTANT = re.compile(rb"\d{4}-\d\d-\d\dT\d\d:\d\d:\d\dZ")
 
 
 @dataclass(frozen=True, slots=True)
@@ -36,4 +43,25 @@ def seeds() -> tuple[Seed, ...]:
         Seed("semicolons_hy1.csv", semicolons),
         Seed("cast_ct1.csv", cast),
         Seed("casts_ct1.zip", zipped({"a_ct1.csv": cast, "b_ct1.csv": second})),
+        Seed("table.csv", tables.as_text(), tables.description()),
+        Seed("table.xlsx", _undated(tables.as_workbook()), tables.description()),
+        Seed("table.parquet", tables.as_parquet(), tables.description()),
+        Seed("classic.nc", _netcdf("NETCDF3_CLASSIC")),
     )
+
+
+@cache
+def slow_seed() -> Seed:
+    """Return the seed that is read in a process of its own, which takes a hundred times as long."""
+    return Seed("hdf5.nc", _netcdf("NETCDF4"))
+
+
+def _netcdf(form: str) -> bytes:
+    return netcdf_files.netcdf_bytes(netcdf_files.rows(), netcdf_files.Plan(format=form))
+
+
+def _undated(workbook: bytes) -> bytes:
+    with zipfile.ZipFile(io.BytesIO(workbook)) as archive:
+        return zipped(
+            {name: _INSTANT.sub(b"2009-02-14T00:00:00Z", archive.read(name)) for name in archive.namelist()}
+        )

@@ -5,11 +5,11 @@ from __future__ import annotations
 from pipeline.reading import read_delivery
 from tests.fuzz.cases import SETTINGS, Outcome, case
 from tests.fuzz.running import run_cases
-from tests.fuzz.seeds import seeds
+from tests.fuzz.seeds import seeds, slow_seed
 
 
 def test_the_seeds_are_whole() -> None:
-    for seed in seeds():
+    for seed in (*seeds(), slow_seed()):
         delivery = read_delivery(seed.name, seed.data, SETTINGS.reading, seed.description)
         assert delivery.rows == delivery.table.num_rows > 0
 

@@ -262,6 +262,11 @@ def test_a_fit_without_degrees_of_freedom_yields_to_one_with() -> None:
     )
     answer = resolved(mixed(0.6), of=catalogue(end=SECOND + tight))
     assert list(answer.columns["mixing_set"]) == ["deep"]
+    first = catalogue(end=SECOND + tight)
+    first = first.model_copy(update={"set": first.set[::-1]})
+    off = resolved(mixed(0.1), mixed(0.1, conservative_temperature=9.0), of=first)
+    assert list(off.columns["mixing_set"]) == ["deep", "deep"], "even one that can be seen not to explain it"
+    assert off.columns["tag"][1] == "unexplained"
     only = resolved(mixed(0.6, pressure=10.0, oxygen=258.0), of=catalogue(end=SECOND + tight))
     assert list(only.columns["mixing_set"]) == ["tight"]
     assert np.isnan(only.columns["reduced_chi_square"][0])

@@ -216,8 +216,7 @@ def test_regions_that_cannot_be_used(region: str, sentence: str) -> None:
         (
             "region = [[0, 0], [1, nan], [1, 1]]",
             "found [[0, 0], [1, nan], [1, 1]] as 'region' of set 'deep', valid; expected 3 to 500 vertices, "
-            "[[longitude, "
-            "latitude], ...], from -180 to 360 and -90 to 90 degrees; correct it.",
+            "[[longitude, latitude], ...], from -180 to 360 and -90 to 90 degrees; correct it.",
         ),
         (
             'mixed_layer = "no"',

@@ -356,3 +356,15 @@ def test_row_template_is_complete() -> None:
 def test_a_last_line_of_nothing_but_a_quote_is_no_row() -> None:
     delivery = read(bottle_file({}, {}, end='"\n'))
     assert delivery.rows == delivery.table.num_rows == 2
+
+
+def test_large_numbers_of_a_column_nobody_knows_pass_through() -> None:
+    delivery = read(bottle_file({"CODE": "201312261234"}, {"CODE": "-1e10"}, extra={"CODE": ""}))
+    assert delivery.table.column("CODE").to_pylist() == [201312261234.0, None]
+
+
+def test_every_measured_column_says_how_the_file_calls_it() -> None:
+    table = read(bottle_file(units={"NITRAT": "UMOL/L"})).table
+    assert table.schema.field("nitrate").metadata[b"delivered_name"] == b"NITRAT"
+    assert table.schema.field("nitrate").metadata[b"delivered_units"] == b"UMOL/L"
+    assert table.schema.field("phosphate").metadata[b"delivered_units"] == b"UMOL/KG"
