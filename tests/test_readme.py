@@ -11,7 +11,8 @@ from pipeline.mixing import read_catalogue
 from pipeline.mixing.entries import SourceSet
 from pipeline.mixing.rules import parse_rules
 from pipeline.mixing.tags import tag_table
-from pipeline.settings import MixingSettings
+from pipeline.reading import read_cruise_file
+from pipeline.settings import MixingSettings, read_settings
 from pipeline.tables import MIXING, MIXTURES, TABLE_NAMES
 from tests.flows.conftest import FIXTURES, ROOT, call
 
@@ -48,8 +49,17 @@ def test_reading_examples(
     assert any(word in said for word in ("OVF", "ZZV120090306", "overflow", "umol kg-1"))
 
 
+def test_the_cruise_file_and_the_correction_shown_can_be_read(tmp_path: Path) -> None:
+    described, corrected = re.findall(r"```toml\n(.*?)```", TEXT, re.DOTALL)[:2]
+    said = read_cruise_file("README.md", described.encode())
+    assert said.of("nutrients.xlsx") is not None
+    assert said.stands == ("bottles_2_hy1.csv",)
+    (tmp_path / "settings.toml").write_text(corrected, encoding="utf-8")
+    assert read_settings(tmp_path / "settings.toml").corrections["ZZV220210218"]["bottle_oxygen"].add == -3.0
+
+
 def test_the_catalogue_shown_can_be_read(tmp_path: Path) -> None:
-    shown, rules = re.findall(r"```toml\n(.*?)```", TEXT, re.DOTALL)
+    shown, rules = re.findall(r"```toml\n(.*?)```", TEXT, re.DOTALL)[2:]
     assert parse_rules(rules, "README.md").rules.source[0].code == "OVF"
     (tmp_path / "sources.toml").write_text(shown, encoding="utf-8")
     assert read_catalogue(tmp_path / "sources.toml").title == "Source waters of an invented sea"

@@ -204,18 +204,22 @@ def _to_first_order(
         covariance_in_rows(once, source.values_of(once), source.covariance_of(once))[np.ix_(places, places)]
         for source in sources
     ]
+    of_shares = solution.share_uncertainty[kept]
+    of_carried = first_order_uncertainty(
+        attempt.problem,
+        observed,
+        solution.support[kept],
+        shares,
+        measured_in_rows(properties, observed, settings.uncertainty),
+        np.array(covariances),
+        carried,
+    )
+    if shares.shape[1] > 1:  # where bounds hold all shares, they hold what these carry
+        of_carried[np.isnan(of_shares).all(axis=1)] = np.nan
     return _Uncertain(
-        solution.share_uncertainty[kept],
+        of_shares,
         solution.process_uncertainty[kept],
-        first_order_uncertainty(
-            attempt.problem,
-            observed,
-            solution.support[kept],
-            shares,
-            measured_in_rows(properties, observed, settings.uncertainty),
-            np.array(covariances),
-            carried,
-        ),
+        of_carried,
         percentiles=np.full((len(shares), 3, shares.shape[1]), np.nan),
         leading_probability=np.full(len(shares), np.nan),
     )

@@ -34,7 +34,7 @@ if TYPE_CHECKING:
 
 RELATIVE = (
     "The sources are samples of the archive and may be mixtures themselves: shares and respiration are relative to "
-    "these samples, and say nothing of how much purer a water was where it formed."
+    "these samples."
 )
 _DIGITS = 4  # of an uncertainty; a value is given to a thousandth of its uncertainty or finer
 _COVARIANCE_DIGITS = 6

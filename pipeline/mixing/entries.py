@@ -151,7 +151,10 @@ class SourceSet(_Entry):
     def unknowns(self) -> str:
         """What the set is solved for in words, such as ``2 shares and respiration``."""
         n_source = len(self.sources)
-        words = [f"{n_source} share{'s' if n_source != 1 else ''}", *(name.replace("_", " ") for name in self.processes)]
+        words = [
+            f"{n_source} share{'s' if n_source != 1 else ''}",
+            *(name.replace("_", " ") for name in self.processes),
+        ]
         return " and ".join([", ".join(words[:-1]), words[-1]]) if len(words) > 1 else words[0]
 
 

@@ -206,6 +206,14 @@ def test_the_published_practice_has_its_own_uncertainties() -> None:
     assert np.isfinite(weighted.condition_number)
 
 
+def test_the_weight_of_the_sum_makes_no_set_undetermined() -> None:
+    exact = told_of(made_of(NOR=NORTH, SOU=SOUTH, WAR=WARM))
+    for mass_weight in ("1e-2", "50.0", "1e6"):
+        of = made_of(more=f'mass = "weighted"\nmass_weight = {mass_weight}', NOR=NORTH, SOU=SOUTH, WAR=WARM)
+        assert told_of(of).condition_number == pytest.approx(exact.condition_number, rel=1e-6)
+        assert said_of(of) == []
+
+
 def test_the_condition_number_is_the_one_that_samples_are_left_unsolved_by() -> None:
     told = told_of(INVENTED)
     ratios = respiration_ratios(SETTINGS.tracers)

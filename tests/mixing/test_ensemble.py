@@ -297,7 +297,8 @@ def test_without_members_a_share_that_a_bound_holds_has_no_uncertainty() -> None
     beyond = resolve(samples(mixed(1.4)), catalogue(), settings(members=0))
     assert beyond.mixtures.column("share").to_pylist() == [1.0, 0.0]
     assert beyond.mixtures.column("share_uncertainty").to_pylist() == [None, None]
-    assert np.isnan(beyond.columns["leading_share_uncertainty"][0])
+    for name in ("leading_share_uncertainty", "oxygen_from_sources_uncertainty"):
+        assert np.isnan(beyond.columns[name][0]), name
     unrespired = resolve(samples(mixed(0.6, -0.5)), catalogue(), settings(members=0)).columns
     assert unrespired["respiration"][0] == 0.0
     for name in ("respiration_uncertainty", "oxygen_from_respiration_uncertainty"):
