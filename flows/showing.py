@@ -16,7 +16,7 @@ from pipeline.tables import TABLE_NAMES
 
 if TYPE_CHECKING:
     import argparse
-    from collections.abc import Mapping, Sequence
+    from collections.abc import Iterator, Mapping, Sequence
 
     from pipeline.archive import Contents, CruiseContents, DeliveredFile, Provenance, Store, Verified
 
@@ -123,6 +123,7 @@ def _cruise(cruise: CruiseContents, store: Store) -> list[str]:
             else "no sources"
         ),
         f"  fingerprint {made.fingerprint[:16]}",
+        *(f"  corrected  {words}" for words in _corrections(made)),
         "",
         "rows",
         *aligned([(f"  {name}", str(cruise.rows.get(name, "missing"))) for name in TABLE_NAMES]),
@@ -135,10 +136,7 @@ def _cruise(cruise: CruiseContents, store: Store) -> list[str]:
         (f"  {tag or 'none (no source waters given)'}", str(count), f"{100 * count / total:.1f} %")
         for tag, count in tags.items()
     ]
-    wanted = ["check", "message"]
-    notices = (
-        notices_in(read_table(store, cruise.expocode, "findings", columns=wanted)) if cruise.is_whole else []
-    )
+    notices = _notices(cruise, store)
     told = ["", *(f"note  {notice}" for notice in notices)] if notices else []
     return [*lines, *(["", "samples by tag", *aligned(rows)] if rows else []), *told]
 
@@ -204,7 +202,22 @@ def _cruise_as_json(cruise: CruiseContents, store: Store) -> dict[str, Any]:
         "fingerprint": made.fingerprint,
         "made_from": json.loads(made.to_json()),
         "tags": {tag or "none": count for tag, count in _tags(cruise, store).items()},
+        "notices": _notices(cruise, store),
     }
+
+
+def _corrections(made: Provenance) -> Iterator[str]:
+    """Yield in words what the settings corrected: what stands in the tables beside the delivered values."""
+    for quantity, how in made.corrections.items():
+        change = f"x {how['factor']:g}" if "factor" in how else f"{how['add']:+g}"
+        yield f"{quantity} {change}: {how['reason']}"
+
+
+def _notices(cruise: CruiseContents, store: Store) -> list[str]:
+    """Return what the mixing analysis has to say of a whole cruise."""
+    if not cruise.is_whole:
+        return []
+    return notices_in(read_table(store, cruise.expocode, "findings", columns=["check", "message"]))
 
 
 def _earlier(expocode: str, made: Provenance, store: Store) -> list[int]:

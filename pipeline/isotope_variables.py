@@ -67,10 +67,8 @@ MIXED_CARBON: tuple[Variable, ...] = (
     *_with_uncertainty("calcium_carbonate", f"{_DISSOLVED.capitalize()} (negative: was made)", "umol kg-1"),
     *_with_uncertainty("dic_from_calcium_carbonate", f"Dissolved inorganic carbon of {_DISSOLVED}", "umol kg-1"),
     *_with_uncertainty("alkalinity_from_calcium_carbonate", f"Alkalinity of {_DISSOLVED}", "umol kg-1"),
-    Variable("delta_carbon_13_from_sources", "Carbon-13 of the DIC that came with the source waters", "1e-3",
-             source=_MIXING),
-    Variable("delta_carbon_13_from_respiration", "By how much respiration changed carbon-13 of DIC", "1e-3",
-             source=_MIXING),
-    Variable("delta_carbon_13_from_calcium_carbonate", "By how much calcium carbonate, after respiration, changed"
-             " carbon-13 of DIC", "1e-3", source=_MIXING),
+    *_with_uncertainty("delta_carbon_13_from_sources", "Carbon-13 of the DIC that came with the source waters", "1e-3"),
+    *_with_uncertainty("delta_carbon_13_from_respiration", "By how much respiration changed carbon-13 of DIC", "1e-3"),
+    *_with_uncertainty("delta_carbon_13_from_calcium_carbonate",
+                       "By how much calcium carbonate, after respiration, changed carbon-13 of DIC", "1e-3"),
 )  # fmt: skip

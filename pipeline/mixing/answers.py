@@ -7,11 +7,11 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from pipeline.mixing.carbon_parts import CALCIUM_CARBONATE, carbonate_parts, isotope_parts
+from pipeline.mixing.carbon_parts import CALCIUM_CARBONATE, carbonate_parts, carried_of, isotope_parts
 from pipeline.mixing.ensemble import run_ensemble
 from pipeline.mixing.members import measurement_noise, perturbed_sources
-from pipeline.mixing.products import covariance_in_rows, listed_residuals, parts_in_rows, rows_of
-from pipeline.mixing.properties import ratios_of
+from pipeline.mixing.products import listed_residuals, parts_in_rows, rows_of
+from pipeline.mixing.properties import PROCESS_UNITS, ratios_of
 from pipeline.mixing.split import (
     first_order_uncertainty,
     pseudo_age,
@@ -23,10 +23,11 @@ from pipeline.mixing.weights import measured_in_rows
 from pipeline.variables import residual_name
 
 if TYPE_CHECKING:
-    from collections.abc import Mapping, Sequence
+    from collections.abc import Mapping
 
     from numpy.typing import NDArray
 
+    from pipeline.mixing.carbon_parts import Carried
     from pipeline.mixing.entries import Catalogue, SourceSet
     from pipeline.mixing.problem import MixingProblem
     from pipeline.mixing.solver import MixingSolution
@@ -100,16 +101,17 @@ def answer_of(
     rows, shares = attempt.rows[kept], solution.shares[kept]
     leading = shares.argmax(axis=1)
     names = quantities_of(catalogue, chosen)
-    carried = source_values(catalogue, chosen, names)
+    carried = carried_of(catalogue, chosen, names)
     found = (
-        _by_members(catalogue, attempt, kept, keys[rows], leading, names, settings)
+        _by_members(catalogue, attempt, kept, keys[rows], leading, carried, settings)
         if settings.members
-        else _to_first_order(catalogue, attempt, kept, carried, names, settings)
+        else _to_first_order(catalogue, attempt, kept, carried, settings)
     )
 
     none = np.full(len(rows), np.nan)
-    processes = {name: solution.processes[kept, place] for place, name in enumerate(chosen.processes)}
-    of_processes = {name: found.processes[:, place] for place, name in enumerate(chosen.processes)}
+    places = {name: (place, PROCESS_UNITS[name]) for place, name in enumerate(chosen.processes)}
+    processes = {name: unit * solution.processes[kept, place] for name, (place, unit) in places.items()}
+    of_processes = {name: unit * found.processes[:, place] for name, (place, unit) in places.items()}
     respiration = processes.get("respiration", none)
     of_respiration = of_processes.get("respiration", none)
     hull = solution.hull
@@ -124,7 +126,8 @@ def answer_of(
         "hull_distance": hull.distance[kept],
     }
     ratios = ratios_of(names, attempt.ratios)
-    from_sources, from_respiration = split(shares, respiration, carried, ratios)
+    brought = source_values(catalogue, chosen, names)
+    from_sources, from_respiration = split(shares, respiration, brought, ratios)
     for q, name in enumerate(names):
         per_sample[f"{name}_from_sources"] = from_sources[:, q]
         per_sample[f"{name}_from_sources_uncertainty"] = found.carried[:, q]
@@ -137,7 +140,9 @@ def answer_of(
             processes[CALCIUM_CARBONATE], of_processes[CALCIUM_CARBONATE], attempt.dissolution
         )
     changes = {"respiration": attempt.ratios, CALCIUM_CARBONATE: attempt.dissolution}
-    per_sample |= isotope_parts(catalogue, chosen, shares, processes, changes)
+    if carried.has_ratio:
+        both = {name: (processes[name], of_processes[name]) for name in processes}
+        per_sample |= isotope_parts(carried, shares, found.carried[:, -1], both, changes)
     residuals = listed_residuals(chosen.properties, attempt.observed[kept], solution.residuals[kept])
     for position, name in enumerate(chosen.properties):
         per_sample[residual_name(name)] = residuals[:, position]
@@ -159,13 +164,14 @@ def _by_members(
     kept: BoolArray,
     keys: NDArray[np.uint64],
     leading: IntArray,
-    names: Sequence[str],
+    carried: Carried,
     settings: MixingSettings,
 ) -> _Uncertain:
     properties = attempt.chosen.properties
-    sources = perturbed_sources(
-        catalogue, attempt.chosen, (*properties, *names), seed=settings.seed, members=settings.members
+    perturbed = perturbed_sources(
+        catalogue, attempt.chosen, carried.names, seed=settings.seed, members=settings.members
     )
+    sources = rows_of(carried.names, perturbed)
     noise = measurement_noise(keys, properties, settings.uncertainty)
     absolute, relative = parts_in_rows(properties, noise.absolute, noise.relative, attempt.problem.reference)
     ensemble = run_ensemble(
@@ -174,8 +180,8 @@ def _by_members(
         attempt.solution.support[kept],
         leading,
         replace(noise, absolute=absolute, relative=relative),
-        rows_of(properties, sources[:, :, : len(properties)]),
-        sources[:, :, len(properties) :],
+        sources[:, :, list(carried.listed)],
+        sources @ carried.combined.T,
     )
     return _Uncertain(
         ensemble.share_uncertainty,
@@ -190,20 +196,11 @@ def _to_first_order(
     catalogue: Catalogue,
     attempt: Attempt,
     kept: BoolArray,
-    carried: FloatArray,
-    names: Sequence[str],
+    carried: Carried,
     settings: MixingSettings,
 ) -> _Uncertain:
     properties, solution, observed = attempt.chosen.properties, attempt.solution, attempt.observed[kept]
     shares = solution.shares[kept]
-    each = (*properties, *names)
-    once = sorted({*each})
-    places = [once.index(name) for name in each]
-    sources = [catalogue.sources[code] for code in attempt.chosen.sources]
-    covariances = [
-        covariance_in_rows(once, source.values_of(once), source.covariance_of(once))[np.ix_(places, places)]
-        for source in sources
-    ]
     of_shares = solution.share_uncertainty[kept]
     of_carried = first_order_uncertainty(
         attempt.problem,
@@ -211,8 +208,8 @@ def _to_first_order(
         solution.support[kept],
         shares,
         measured_in_rows(properties, observed, settings.uncertainty),
-        np.array(covariances),
-        carried,
+        carried.covariances(catalogue, attempt.chosen),
+        carried.values,
     )
     if shares.shape[1] > 1:  # where bounds hold all shares, they hold what these carry
         of_carried[np.isnan(of_shares).all(axis=1)] = np.nan

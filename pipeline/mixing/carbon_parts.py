@@ -1,16 +1,17 @@
-"""What calcium carbonate did to the samples of a mixture, and where the carbon-13 of their DIC came from."""
+"""What source waters bring along, calcium carbonate among what changes it, and where carbon-13 of DIC came from."""
 
 from __future__ import annotations
 
+from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 import numpy as np
 
-from pipeline.mixing.products import rows_of
+from pipeline.mixing.products import covariance_in_rows, rows_of
 from pipeline.mixing.properties import AMOUNT_OF
 
 if TYPE_CHECKING:
-    from collections.abc import Mapping
+    from collections.abc import Mapping, Sequence
 
     from numpy.typing import NDArray
 
@@ -19,7 +20,68 @@ if TYPE_CHECKING:
     FloatArray = NDArray[np.float64]
 
 CALCIUM_CARBONATE, RATIO = "calcium_carbonate", "delta_carbon_13"
+AMOUNT = AMOUNT_OF[RATIO]
 QUANTITIES = ("dic", "alkalinity")  # that calcium carbonate changes
+
+
+@dataclass(frozen=True, eq=False)
+class Carried:
+    """Quantities that the sources of a set bring along, as combinations of rows.
+
+    Where every source gives carbon-13 and DIC, the last is the ratio of a mixture to first order about the mean of
+    the sources: (P - ratio D) / D, of the products P and amounts D, with ratio and divisor those of the mean.
+    """
+
+    names: tuple[str, ...]  # properties whose rows are combined, those of the set and others
+    listed: tuple[int, ...]  # places of the set's properties among them
+    combined: FloatArray  # (n_quantity, n_name)
+    rows: FloatArray  # of the sources, (n_source, n_name)
+    has_ratio: bool
+
+    @property
+    def values(self) -> FloatArray:
+        """Values of the quantities in the sources, (n_source, n_quantity)."""
+        return np.asarray(self.rows @ self.combined.T)
+
+    def row(self, name: str) -> FloatArray:
+        """Return the rows of one property in the sources, (n_source,)."""
+        return self.rows[:, self.names.index(name)]
+
+    def covariances(self, catalogue: Catalogue, chosen: SourceSet) -> FloatArray:
+        """Return the covariance of the rows of the set's properties and of the quantities, of every source."""
+        each = np.concatenate([np.eye(len(self.names))[list(self.listed)], self.combined])
+        sources = [catalogue.sources[code] for code in chosen.sources]
+        of_rows = [
+            covariance_in_rows(self.names, one.values_of(self.names), one.covariance_of(self.names))
+            for one in sources
+        ]
+        return np.array([each @ covariance @ each.T for covariance in of_rows])
+
+
+def carried_of(catalogue: Catalogue, chosen: SourceSet, quantities: Sequence[str]) -> Carried:
+    """Return what the sources of a set bring along.
+
+    Parameters
+    ----------
+    catalogue, chosen
+        The catalogue and the set.
+    quantities
+        Amounts that every source of it gives.
+
+    """
+    sources = [catalogue.sources[code] for code in chosen.sources]
+    has_ratio = all(name in source.properties for source in sources for name in (AMOUNT, RATIO))
+    names = tuple(sorted({*chosen.properties, *quantities, *((AMOUNT, RATIO) if has_ratio else ())}))
+    rows = np.array([rows_of(names, source.values_of(names)) for source in sources])
+    combined = np.zeros((len(quantities) + has_ratio, len(names)))
+    combined[np.arange(len(quantities)), [names.index(name) for name in quantities]] = 1.0
+    if has_ratio:
+        amount, product = names.index(AMOUNT), names.index(RATIO)
+        mean = rows.mean(axis=0)
+        combined[-1, product] = 1.0 / mean[amount]
+        combined[-1, amount] = -mean[product] / mean[amount] ** 2
+    listed = tuple(names.index(name) for name in chosen.properties)
+    return Carried(names, listed, combined, rows, has_ratio)
 
 
 def carbonate_parts(
@@ -43,42 +105,44 @@ def carbonate_parts(
 
 
 def isotope_parts(
-    catalogue: Catalogue,
-    chosen: SourceSet,
+    carried: Carried,
     shares: FloatArray,
-    amounts: Mapping[str, FloatArray],
+    of_ratio: FloatArray,
+    processes: Mapping[str, tuple[FloatArray, FloatArray]],
     changes: Mapping[str, Mapping[str, float]],
 ) -> dict[str, FloatArray]:
     """Return the carbon-13 that came with the sources and what each process changed of it, (n_sample,) each.
 
-    Empty where not every source gives it and DIC. Carbon of a process adds to the product of DIC and ratio and to
-    DIC; the processes come one after the other, since a ratio has no parts that add up in any order.
+    Carbon of a process adds to the product of DIC and ratio and to DIC; the processes come one after the other, since
+    a ratio has no parts that add up in any order. The uncertainty of a change is that of the process alone.
 
     Parameters
     ----------
-    catalogue, chosen
-        The catalogue and the set.
+    carried
+        What the sources bring along, the ratio among it.
     shares
         (n_sample, n_source).
-    amounts
-        Of every process of the set in the order of its further unknowns, (n_sample,).
+    of_ratio
+        Standard uncertainty of the ratio among what is carried, (n_sample,).
+    processes
+        Of every process of the set, in the order of its further unknowns, its amount and the standard uncertainty
+        of that, (n_sample,) each.
     changes
         Of every process: change of each property, of the ratio the product's, per unit of the process.
 
     """
-    names = (AMOUNT_OF[RATIO], RATIO)
-    given = [catalogue.sources[code].properties for code in chosen.sources]
-    if not all(name in properties for properties in given for name in names):
-        return {}
-    values = np.array([[properties[name].value for name in names] for properties in given])
-    dic, product = (shares @ rows_of(names, values)).T
+    dic, product = shares @ carried.row(AMOUNT), shares @ carried.row(RATIO)
     parts = {}
     with np.errstate(all="ignore"):
         before = product / dic
         parts[f"{RATIO}_from_sources"] = before
-        for process, amount in amounts.items():
-            dic = dic + amount * changes[process][names[0]]
-            product = product + amount * changes[process][RATIO]
+        parts[f"{RATIO}_from_sources_uncertainty"] = of_ratio * (carried.row(AMOUNT).mean() / dic)
+        for process, (amount, uncertainty) in processes.items():
+            change = changes[process]
+            dic = dic + amount * change[AMOUNT]
+            product = product + amount * change[RATIO]
+            slope = (change[RATIO] - before * change[AMOUNT]) / dic
             parts[f"{RATIO}_from_{process}"] = product / dic - before
+            parts[f"{RATIO}_from_{process}_uncertainty"] = np.abs(slope) * uncertainty
             before = product / dic
     return parts

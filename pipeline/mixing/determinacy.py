@@ -14,7 +14,7 @@ import numpy as np
 from pipeline.mixing.operators import RANK_TOLERANCE
 from pipeline.mixing.problem import weighted_system
 from pipeline.mixing.products import covariance_in_rows, usable_together
-from pipeline.mixing.properties import calcium_carbonate_ratios, respiration_ratios
+from pipeline.mixing.properties import PROCESS_UNITS, calcium_carbonate_ratios, respiration_ratios
 from pipeline.mixing.weights import measured_in_rows, mixing_problem
 
 if TYPE_CHECKING:
@@ -81,9 +81,10 @@ class Determinacy:
         return self.process_uncertainty("respiration")
 
     def process_uncertainty(self, name: str) -> float | None:
-        """Return the standard uncertainty of a further unknown, in its unit; None where the set does not know it."""
+        """Return the standard uncertainty of a further unknown, in umol/kg; None where the set does not know it."""
         known = zip(self.chosen.processes, self.propagation.unknown[len(self.chosen.sources) :], strict=True)
-        return next((float(spread) for process, spread in known if process == name), None)
+        spreads = (float(PROCESS_UNITS[name] * spread) for process, spread in known if process == name)
+        return next(spreads, None)
 
 
 def determinacy(catalogue: Catalogue, chosen: SourceSet, settings: Settings) -> Determinacy:

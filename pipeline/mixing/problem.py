@@ -39,7 +39,8 @@ class MixingProblem:
         the uncertainty makes the shares the most likely ones.
     processes
         Change of every property per unit of each further unknown, (n_process, n_property). Respiration
-        is the first: umol/kg of each property per umol/kg of phosphate released.
+        is the first where there is any: umol/kg of each property per umol/kg of phosphate released. Calcium
+        carbonate comes after it, in hundreds of umol/kg dissolved.
     signs
         Whether each process can only add or be of either sign, (n_process,).
     mass_weight

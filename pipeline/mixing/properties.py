@@ -121,6 +121,11 @@ def respiration_ratios(settings: TracerSettings, silicate_per_phosphate: float =
     )
 
 
+# In how many umol/kg each further unknown is counted in the equations: about as much as waters differ by, so that the
+# condition number, which depends on it, weighs it like a share (our choice, no source).
+PROCESS_UNITS: Mapping[str, float] = MappingProxyType({"respiration": 1.0, "calcium_carbonate": 100.0})
+
+
 def calcium_carbonate_ratios(settings: TracerSettings) -> Mapping[str, float]:
     """Return the change of each property per umol/kg of calcium carbonate that dissolves.
 

@@ -11,7 +11,7 @@ import numpy as np
 from pipeline.mixing.faults import MASS
 from pipeline.mixing.problem import MixingProblem
 from pipeline.mixing.products import listed_of, rows_of, uncertainty_in_rows
-from pipeline.mixing.properties import calcium_carbonate_ratios, ratios_of
+from pipeline.mixing.properties import PROCESS_UNITS, calcium_carbonate_ratios, ratios_of
 from pipeline.settings import TracerSettings
 from pipeline.variables import REGISTRY, Uncertainty
 
@@ -217,7 +217,9 @@ def mixing_problem(
     if dissolution is None:
         dissolution = calcium_carbonate_ratios(TracerSettings())
     changes = {"respiration": ratios, "calcium_carbonate": dissolution}
-    processes = [ratios_of(chosen.properties, changes[name]) for name in chosen.processes]
+    processes = [
+        PROCESS_UNITS[name] * np.array(ratios_of(chosen.properties, changes[name])) for name in chosen.processes
+    ]
     return MixingProblem(
         sources=values,
         uncertainty=weights.uncertainty,

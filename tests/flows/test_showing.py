@@ -206,3 +206,14 @@ def test_check_does_not_wait_for_a_pipe(tmp_path: Path) -> None:
         "refused: pipe_hy1.csv: found no regular file; give a delivered file.",
         f"refused: {tmp_path.name}: found no regular file; give a delivered file.",
     ]
+
+
+def test_show_tells_what_the_settings_corrected(tmp_path: Path) -> None:
+    inbox, archive, chosen = tmp_path / "inbox", tmp_path / "archive", tmp_path / "settings.toml"
+    inbox.mkdir()
+    (inbox / "cruise_hy1.csv").write_bytes(bottle_file({}, {}))
+    chosen.write_text(
+        f'[corrections.{EXPOCODE}.bottle_oxygen]\nadd = -3.0\nreason = "crossovers"\n', encoding="utf-8"
+    )
+    assert call("run", inbox, "--archive", archive, "--settings", chosen).status == 0
+    assert "  corrected  bottle_oxygen -3: crossovers" in call("show", archive, EXPOCODE).out
