@@ -218,7 +218,8 @@ def mixing_problem(
         dissolution = calcium_carbonate_ratios(TracerSettings())
     changes = {"respiration": ratios, "calcium_carbonate": dissolution}
     processes = [
-        PROCESS_UNITS[name] * np.array(ratios_of(chosen.properties, changes[name])) for name in chosen.processes
+        PROCESS_UNITS[name] * np.array(ratios_of(chosen.properties, changes[name]))
+        for name in chosen.processes
     ]
     return MixingProblem(
         sources=values,

@@ -87,7 +87,7 @@ def change_length(data: bytes, random: Random) -> bytes:
     """Overwrite a few bytes with the numbers that stand for lengths and counts in binary formats."""
     number = random.choice((0, 1, 255, 65_535, 2**31 - 1, 2**32 - 1, 2**62, 2**64 - 1))
     size = random.choice((1, 2, 4, 8))
-    piece = (number % 256**size).to_bytes(size, random.choice(("big", "little")))
+    piece: bytes = (number % (1 << 8 * size)).to_bytes(size, random.choice(("big", "little")))
     there = random.randrange(len(data))
     return data[:there] + piece + data[there + size :]
 
