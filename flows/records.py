@@ -2,12 +2,20 @@
 
 from __future__ import annotations
 
+from collections import Counter
 from dataclasses import asdict, dataclass
 from enum import IntEnum, StrEnum
+from statistics import median
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
+
+
+# A cruise is told as slow that took this long, seconds, and so many times the median of the cruises made (our choice).
+SLOW_SECONDS = 10.0
+SLOW_RATIO = 5.0
+FEWEST_TO_COMPARE = 5
 
 
 class State(StrEnum):
@@ -55,7 +63,8 @@ class CruiseRecord:
     resolved: bool = False  # whether a source catalogue was there to resolve with
     refusals: tuple[Refusal, ...] = ()
     message: str = ""
-    storage_fault: bool = False  # worth trying again
+    storage_fault: bool = False  # of the storage or the inbox, and may pass: worth trying again
+    seconds: float = 0.0  # that making it took; none for one that is unchanged
 
     def line(self) -> str:
         """Return the cruise's one line of the summary."""
@@ -88,6 +97,22 @@ class RunSummary:
     cruises: tuple[CruiseRecord, ...]
     refusals: tuple[Refusal, ...]  # of files that belong to no cruise
     same_bytes: tuple[tuple[str, str], ...] = ()  # a file that is the same as another, and that other
+    delivered: int | None = None  # files in the inbox
+
+    @property
+    def counts(self) -> dict[str, int]:
+        """Cruises by what became of them, and refused files or members."""
+        found = Counter(cruise.state for cruise in self.cruises)
+        return {**{state.value: found[state] for state in State}, "refusals": len(self.all_refusals)}
+
+    @property
+    def slow(self) -> tuple[CruiseRecord, ...]:
+        """Cruises whose seconds stand out among those that this run made, the slowest first."""
+        made = sorted((c for c in self.cruises if c.seconds), key=lambda c: -c.seconds)
+        if len(made) < FEWEST_TO_COMPARE:
+            return ()
+        least = max(SLOW_SECONDS, SLOW_RATIO * median(c.seconds for c in made))
+        return tuple(c for c in made if c.seconds > least)
 
     @property
     def all_refusals(self) -> tuple[Refusal, ...]:
@@ -109,17 +134,24 @@ class RunSummary:
         lines = [cruise.line() for cruise in self.cruises]
         lines += [f"refused  {refusal.message}" for refusal in self.all_refusals]
         lines += [f"note  {file}: the same bytes as {other}; read once." for file, other in self.same_bytes]
-        lines.append(self._closing())
+        lines += self.slow_lines()
+        lines.append(self.closing())
         return lines
 
-    def _closing(self) -> str:
+    def slow_lines(self) -> list[str]:
+        """Return a line for each cruise whose seconds stand out."""
+        return [f"slow  {c.expocode}: took {c.seconds:.0f} s, far more than the others." for c in self.slow]
+
+    def closing(self) -> str:
+        """Return the sentences that end the summary."""
         changed = [c for c in self.cruises if c.state in {State.NEW, State.REVISED}]
         failed = [c for c in self.cruises if c.state is State.FAILED]
         words = []
         if changed:
             words.append(f"{_count(len(changed), 'cruise')} written")
         elif not failed:
-            words.append("Nothing was new")
+            empty = "The inbox holds no file; see that its disk or network share is there"
+            words.append(empty if self.delivered == 0 else "Nothing was new")
         if self.all_refusals:
             words.append(f"{_count(len(self.all_refusals), 'delivery', 'deliveries')} refused")
         if failed:
@@ -131,6 +163,8 @@ class RunSummary:
         return {
             "archive": self.archive,
             "exit_status": int(self.exit_status),
+            "counts": self.counts,
+            "slow": [cruise.expocode for cruise in self.slow],
             "cruises": [asdict(cruise) for cruise in self.cruises],
             "refused": [asdict(refusal) for refusal in self.all_refusals],
             "same_bytes": [{"file": file, "same_as": other} for file, other in self.same_bytes],

@@ -62,6 +62,18 @@ def check_flags(data: Rows, measured: Iterable[str], marks: Iterable[Mark]) -> d
     return {check_name(name): column for name, column in flags.items()}
 
 
+def raised(data: Rows, marks: Iterable[Mark]) -> dict[str, IntArray]:
+    """Return the check columns that marks made after the checks make graver, (n_row,) each."""
+    doubted = [
+        mark for mark in marks if mark.severity in _FLAG_OF and check_name(mark.variable) in data.names
+    ]
+    columns = {}
+    for name, flags in check_flags(data, {mark.variable for mark in doubted}, doubted).items():
+        before = data.floats(name).astype(np.int64)
+        columns[name] = np.where(before == CHECK_MISSING, before, np.maximum(before, flags))
+    return columns
+
+
 def once(data: Rows, marks: Sequence[Mark]) -> list[Mark]:
     """Return the marks to be told: where a whole column is doubted in one sentence, not again each of its values.
 

@@ -260,7 +260,7 @@ def _settle(
     deviation, rows, scale, tried = block
     n_settled = n_other = 0
     for t in range(n):
-        clear = lowest[t] >= _MARGIN * scale[t]
+        clear = scale[t] < np.inf and lowest[t] >= _MARGIN * scale[t]
         settled[n_settled] = t
         n_settled += clear
         other[n_other] = t

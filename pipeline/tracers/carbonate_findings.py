@@ -15,7 +15,7 @@ from pipeline.tracers.equilibria import TEMPERATURE, validity
 from pipeline.variables import REGISTRY
 
 if TYPE_CHECKING:
-    from collections.abc import Iterator
+    from collections.abc import Iterator, Sequence
 
     from pipeline.carbonate_settings import CarbonateSettings
     from pipeline.tables import FloatArray
@@ -25,16 +25,20 @@ if TYPE_CHECKING:
 _RESIDUALS = (("ph_residual", "ph"), ("fco2_residual", "fco2"))
 
 
-def carbonate_findings(
-    data: Rows, system: CarbonateSystem, settings: CarbonateSettings
-) -> tuple[Finding, ...]:
-    """Return what is to be told of the carbonate system of a cruise's samples."""
-    marks = [
+def carbonate_marks(data: Rows, system: CarbonateSystem, settings: CarbonateSettings) -> tuple[Mark, ...]:
+    """Return what is to be told of single values, as the checks do."""
+    return (
         *_without_temperature(data, settings),
         *_impossible(data),
         *_unsolvable(data, system),
         *_inconsistent(system, settings),
-    ]
+    )
+
+
+def carbonate_findings(
+    data: Rows, marks: Sequence[Mark], system: CarbonateSystem, settings: CarbonateSettings
+) -> tuple[Finding, ...]:
+    """Return in words what is to be told of the carbonate system of a cruise's samples."""
     return (
         *findings_of(data, marks),
         *_agreement(system),

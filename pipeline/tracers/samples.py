@@ -5,15 +5,18 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
+from pipeline.checking.marks import raised
+from pipeline.tables import with_columns
 from pipeline.tracers.anomalies import anomalies, anomaly_forms
 from pipeline.tracers.carbonate import carbonate_forms, system
-from pipeline.tracers.carbonate_findings import carbonate_findings
+from pipeline.tracers.carbonate_findings import carbonate_findings, carbonate_marks
 from pipeline.tracers.carbonate_inputs import measured_here
 from pipeline.tracers.extremes import extremes
 from pipeline.tracers.horizons import MINERALS, horizon_findings, horizons
 from pipeline.tracers.isotope_components import MEASURED as CARBON_13
 from pipeline.tracers.isotope_components import components
 from pipeline.tracers.profiles import station_groups
+from pipeline.usable import Rows
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
@@ -22,7 +25,6 @@ if TYPE_CHECKING:
     from pipeline.settings import Settings
     from pipeline.tables import FloatArray
     from pipeline.tracers.carbonate import CarbonateSystem
-    from pipeline.usable import Rows
 
 
 @dataclass(frozen=True, slots=True)
@@ -57,7 +59,11 @@ def sample_tracers(data: Rows, settings: Settings) -> SampleTracers:
     if measured_here(data.names):
         carbon = system(data, settings.carbonate)
         columns |= carbon.columns
-        findings = carbonate_findings(data, carbon, settings.carbonate)
+        marks = carbonate_marks(data, carbon, settings.carbonate)
+        findings = carbonate_findings(data, marks, carbon, settings.carbonate)
+        doubted = raised(data, marks)
+        columns |= doubted
+        data = Rows(with_columns(data.table, doubted), settings.use)
         for mineral in MINERALS:
             of_mineral = horizons(station, depth, *_saturation(carbon, mineral), settings.profiles)
             columns[f"{mineral}_saturation_depth"] = of_mineral.depth

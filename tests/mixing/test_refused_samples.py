@@ -25,6 +25,15 @@ OF = random_problem(RANDOM, n_source=4, n_property=6, signs=("non_negative",))
 SAMPLES = random_samples(RANDOM, OF, 9)
 
 
+def test_no_infinite_value_of_any_property_is_solved() -> None:
+    for first in range(6):
+        for second in range(6):
+            for one, other in ((np.inf, np.inf), (np.inf, -np.inf), (-np.inf, -np.inf)):
+                samples = SAMPLES.copy()
+                samples[4, first], samples[4, second] = one, other
+                assert solve(OF, samples).status[4] == MixingStatus.ABSURD, (first, second, one, other)
+
+
 @pytest.mark.parametrize(
     ("value", "status"),
     [

@@ -20,7 +20,7 @@ from pipeline.findings import Severity
 from pipeline.process import process_cruise
 from pipeline.settings import Settings
 from pipeline.tracers.carbonate import system
-from pipeline.tracers.carbonate_findings import carbonate_findings
+from pipeline.tracers.carbonate_findings import carbonate_findings, carbonate_marks
 from pipeline.tracers.samples import sample_tracers
 from pipeline.variables import CARBONATE, EXTREMES, HORIZONS
 from tests.invented import EXPOCODE, bottle_file, read
@@ -44,7 +44,8 @@ def solved(samples: list[dict[str, Any]], **chosen: Any) -> Mapping[str, Any]:
 def told(samples: list[dict[str, Any]], **chosen: Any) -> list[Finding]:
     choice = CarbonateSettings.model_validate(chosen)
     data = rows(samples)
-    return list(carbonate_findings(data, system(data, choice), choice))
+    found = system(data, choice)
+    return list(carbonate_findings(data, carbonate_marks(data, found, choice), found, choice))
 
 
 def of(findings: list[Finding], check: str) -> list[Finding]:
@@ -103,6 +104,11 @@ def test_a_cruise_with_carbon_has_every_column_and_a_cast_has_none() -> None:
     assert metadata[b"form"].startswith(b"constants lueker_2000, boron lee_2010")
     assert samples.schema.field("carbonate_uncertainty").metadata[b"uncertainty"] == b"measurements"
     assert any(f.check == "carbon-consistency" for f in made.findings)
+    assert [samples[f"{name}_check"].to_pylist() for name in ("ph_total", "dic", "alkalinity")] == [
+        [3],
+        [1],
+        [1],
+    ]
 
 
 def test_a_sample_with_one_quantity_has_no_carbonate_system() -> None:
