@@ -10,8 +10,7 @@ from pipeline.problems import DeliveryProblem
 from pipeline.reading import CRUISE_FILE, CruiseFile, read_cruise_file
 
 if TYPE_CHECKING:
-    from pathlib import Path
-
+    from flows.places import Place
     from pipeline.reading import Description
 
 
@@ -36,7 +35,7 @@ NOTHING = Beside()
 class Folder:
     """The ``cruise.toml`` of one folder, if it has one: read once for all files beside it."""
 
-    def __init__(self, folder: Path, shown: str) -> None:
+    def __init__(self, folder: Place, shown: str) -> None:
         self._text = b""
         self._fault = ""
         self._said: CruiseFile | None = None

@@ -19,12 +19,16 @@ if TYPE_CHECKING:
 # Command: the module of this package and its function, which takes the arguments and returns the exit status.
 COMMANDS = {
     "run": ("running", "run"),
+    "nightly": ("serving", "nightly"),
     "check": ("looking", "check"),
     "mapping": ("mapping", "mapping"),
     "show": ("showing", "show"),
     "changes": ("changes", "changes"),
     "sources": ("sources", "sources"),
     "crossovers": ("crossovers", "crossovers"),
+    "census": ("census", "census"),
+    "export": ("exporting", "export"),
+    "dictionary": ("dictionary", "dictionary"),
     "speciation": ("speciation", "print_speciation"),
 }
 

@@ -1,29 +1,38 @@
-"""The direct driver: a run by hand, in this process, with no Prefect anywhere."""
+"""A whole run, whoever drives it, and the direct driver: by hand, in this process, with no Prefect anywhere."""
 
 from __future__ import annotations
 
-from pathlib import Path
+import sys
+from contextlib import closing
+from dataclasses import replace
+from functools import partial
 from typing import TYPE_CHECKING
 
+from flows.apart import Apart
+from flows.places import place
 from flows.plan import list_inbox, plan_run
 from flows.records import CruiseRecord, Refusal, RunSummary, State, merged
 from flows.remembered import with_remembered_sources
+from flows.retrying import make_with_retries
 from flows.stopping import stoppable
 from flows.work import refuse_file, run_job, tagged_samples
 from pipeline.archive import clean_staging, locked, open_archive, read_contents, read_table
+from pipeline.problems import ArchiveProblem
 
 if TYPE_CHECKING:
-    from collections.abc import Callable, Iterable
+    from collections.abc import Callable, Iterable, Sequence
 
+    from flows.places import Place
     from flows.plan import Job, Plan
     from flows.work import RunConfig
-    from pipeline.archive import CruiseContents, Store
+    from pipeline.archive import Contents, CruiseContents, Store
 
     Progress = Callable[[Iterable[Job]], Iterable[Job]]
+    MakeAll = Callable[[Sequence[Job], RunConfig], Iterable[CruiseRecord]]
 
 
-def run_directly(inbox: Path, config: RunConfig, progress: Progress = iter) -> RunSummary:
-    """Bring the archive up to date with an inbox, one cruise after the other.
+def bring_archive_up_to_date(inbox: Place, config: RunConfig, make_all: MakeAll) -> RunSummary:
+    """Bring the archive up to date with an inbox.
 
     Parameters
     ----------
@@ -31,8 +40,8 @@ def run_directly(inbox: Path, config: RunConfig, progress: Progress = iter) -> R
         The directory of delivered files.
     config
         Archive, settings and catalogue.
-    progress
-        Wraps the jobs, to show how far the run is.
+    make_all
+        Makes the cruises that are due, in its own way; the order of their records does not matter.
 
     Raises
     ------
@@ -40,24 +49,67 @@ def run_directly(inbox: Path, config: RunConfig, progress: Progress = iter) -> R
         Where the run cannot start: no such inbox, an archive that cannot be used or is busy.
 
     """
-    files = list_inbox(inbox, Path(config.archive))
+    files = list_inbox(inbox, place(config.archive))
     store = open_archive(config.archive, create=True)
-    with locked(store):
-        clean_staging(store)
-        contents = read_contents(store)
-        config = with_remembered_sources(config, contents, store)
-        plan = plan_run(files, contents, config.settings, config.catalogue)
-        records = []
-        with stoppable() as stop_if_asked:
-            for job in progress(plan.jobs):
-                records.append(run_job(job, config))
-                stop_if_asked()
-        return summarise(plan, records, config, store)
+    summary = None
+    try:
+        with locked(store, config.settings.run.lock_seconds):
+            clean_staging(store)
+            contents = read_contents(store)
+            config = with_remembered_sources(config, contents, store)
+            plan = plan_run(files, contents, config.settings, config.catalogue)
+            summary = summarise(plan, make_all(plan.jobs, config), contents, config, store)
+    except ArchiveProblem as problem:
+        if summary is None:
+            raise
+        summary = replace(summary, trouble=str(problem))  # what was done is told all the same
+    return replace(summary, delivered=len(files))
 
 
-def summarise(plan: Plan, records: Iterable[CruiseRecord], config: RunConfig, store: Store) -> RunSummary:
+def run_directly(inbox: Place, config: RunConfig, progress: Progress = iter) -> RunSummary:
+    """Bring the archive up to date with an inbox, one cruise after the other.
+
+    A cruise is made in this process; in one apart where the settings limit its seconds, since nothing else ends a
+    library's call.
+
+    Parameters
+    ----------
+    inbox, config
+        As ``bring_archive_up_to_date`` takes them.
+    progress
+        Wraps the jobs, to show how far the run is.
+
+    Raises
+    ------
+    Problem
+        Where the run cannot start.
+
+    """
+    limit = config.settings.run.cruise_seconds
+    with closing(Apart()) as apart:
+        make = run_job if limit is None else partial(apart.make, seconds=limit)
+
+        def make_all(jobs: Sequence[Job], config: RunConfig) -> Iterable[CruiseRecord]:
+            with stoppable() as stop_if_asked:
+
+                def make_one(job: Job) -> CruiseRecord:
+                    record = make(job, config)
+                    stop_if_asked()
+                    return record
+
+                return make_with_retries(progress(jobs), make_one, config.settings.run.waits, _tell)
+
+        return bring_archive_up_to_date(inbox, config, make_all)
+
+
+def _tell(sentence: str) -> None:
+    print(f"seawhence: {sentence}", file=sys.stderr)
+
+
+def summarise(
+    plan: Plan, records: Iterable[CruiseRecord], contents: Contents, config: RunConfig, store: Store
+) -> RunSummary:
     """Put together what was done, what was current already, and what belongs to no cruise."""
-    contents = read_contents(store)
     unchanged = [unchanged_record(contents.cruises[code], store) for code in plan.unchanged]
     return RunSummary(
         archive=config.archive,
@@ -69,6 +121,13 @@ def summarise(plan: Plan, records: Iterable[CruiseRecord], config: RunConfig, st
 
 def unchanged_record(cruise: CruiseContents, store: Store) -> CruiseRecord:
     """Return the record of a cruise that is in the archive as it is; parts refused before are told again."""
+    try:
+        return _as_it_is(cruise, store)
+    except ArchiveProblem as problem:
+        return CruiseRecord(cruise.expocode, State.FAILED, message=str(problem))
+
+
+def _as_it_is(cruise: CruiseContents, store: Store) -> CruiseRecord:
     provenance = cruise.provenance
     deliveries = provenance.deliveries if provenance else ()
     return CruiseRecord(

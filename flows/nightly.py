@@ -1,100 +1,163 @@
-"""The Prefect flow: the same work as the direct driver, in batches that Prefect starts, retries and records."""
+"""The Prefect flow: the same work as the direct driver, in batches that Prefect starts and records."""
 
 from __future__ import annotations
 
+from contextlib import contextmanager
+from functools import partial
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from prefect import flow, task
-from prefect.artifacts import create_table_artifact
+from prefect.artifacts import create_markdown_artifact, create_table_artifact
 from prefect.cache_policies import NO_CACHE
-from prefect.runtime import task_run
+from prefect.logging import get_run_logger
+from prefect.runtime import deployment
+from prefect.states import Completed, Failed
 from prefect.task_runners import TaskRunner, ThreadPoolTaskRunner
 
-from flows.direct import summarise
-from flows.plan import list_inbox, pack, plan_run
-from flows.remembered import with_remembered_sources
-from flows.work import RunConfig, run_batch
-from pipeline.archive import clean_staging, locked, open_archive, read_contents
-from pipeline.mixing import Catalogue
-from pipeline.settings import Settings
+from flows import telling
+from flows.apart import Apart
+from flows.direct import bring_archive_up_to_date
+from flows.notifying import message, notify, whom
+from flows.places import place
+from flows.plan import pack
+from flows.records import CruiseRecord, ExitStatus, RunSummary
+from flows.retrying import make_with_retries
+from flows.work import RunConfig
+from pipeline.mixing import read_catalogue
+from pipeline.problems import Problem
+from pipeline.settings import read_settings
 
 if TYPE_CHECKING:
-    from flows.plan import Job
-    from flows.records import CruiseRecord, RunSummary
+    from collections.abc import Iterator, Sequence
 
-# A task should be seconds of work, and the embedded server keeps few of many short ones.
+    from prefect.client.schemas.objects import FlowRun, State
+    from prefect.flows import Flow
+
+    from flows.places import Place
+    from flows.plan import Job
+
+# A task should be seconds of work, and a server records few of many short ones in good time.
 MOST_BATCHES = 40
 LEAST_BYTES = 20_000_000
-ARTIFACT_KEY = "seawhence-run"
-
-RUNNER: TaskRunner[Any] = ThreadPoolTaskRunner(max_workers=2)
-
-# Waits before a batch that met a fault of storage is tried again, seconds.
-WAITS: list[float] = [5, 30]
+TABLE_KEY, PAGE_KEY = "seawhence-run", "seawhence-summary"
+# That a cruise may take where the settings say nothing: nobody is there who would stop it.
+CRUISE_SECONDS = 3600.0
+RETRY_SECONDS = 5.0
 
 
-class StorageFaultError(RuntimeError):
-    """A batch met a fault of storage; raised so that Prefect tries it again."""
+def task_runner() -> TaskRunner[Any]:
+    """Return what runs the batches: the one place where that is chosen."""
+    return ThreadPoolTaskRunner(max_workers=2)
 
 
-@task(name="cruises", cache_policy=NO_CACHE, retries=len(WAITS), retry_delay_seconds=WAITS)
+class _Processes:
+    """The processes in which this one has cruises made: those of its batches share them."""
+
+    apart: Apart | None = None
+
+
+@contextmanager
+def _processes() -> Iterator[None]:
+    """Keep the processes for as long as a flow runs; an interrupt gives up the cruises under way at once."""
+    _Processes.apart = Apart()
+    try:
+        yield
+    finally:
+        _Processes.apart.close()
+        _Processes.apart = None
+
+
+@task(name="cruises", cache_policy=NO_CACHE, retries=1, retry_delay_seconds=RETRY_SECONDS)
 def cruise_batch(jobs: tuple[Job, ...], config: RunConfig) -> list[CruiseRecord]:
-    """Make a batch of cruises. A refused cruise is a record; a fault of storage makes the batch try again."""
-    records = run_batch(jobs, config)
-    faults = [record for record in records if record.storage_fault]
-    if faults and (task_run.run_count or 1) <= len(WAITS):
-        raise StorageFaultError("; ".join(f"{record.expocode}: {record.message}" for record in faults))
-    return records
+    """Make a batch of cruises. What became of each is in its record; a fault of ours makes the batch try again."""
+    if _Processes.apart is None:  # in a process that the task runner started elsewhere: kept until that ends
+        _Processes.apart = Apart()
+    limit = config.settings.run.cruise_seconds or CRUISE_SECONDS
+    make = partial(_Processes.apart.make, config=config, seconds=limit)
+    return make_with_retries(jobs, make, config.settings.run.waits, get_run_logger().warning)
 
 
-@flow(name="seawhence", task_runner=RUNNER, validate_parameters=False)
+def make_in_batches(jobs: Sequence[Job], config: RunConfig) -> list[CruiseRecord]:
+    """Make all cruises of a run as tasks."""
+    futures = [cruise_batch.submit(batch, config) for batch in pack(jobs, MOST_BATCHES, LEAST_BYTES)]
+    return [record for future in futures for record in future.result()]
+
+
+def tell_of_crash(
+    flow: Flow[Any, Any],  # noqa: ARG001 - Prefect gives it
+    flow_run: FlowRun,
+    state: State[Any],
+) -> None:
+    """Notify of a run whose process ended: called by who started it."""
+    archive = str((flow_run.parameters or {}).get("archive", ""))
+    why = state.message or state.name
+    words = f"the run's process ended before it was done ({why}); the next run goes on from there."
+    notify(whom(), message(archive, None, words, ExitStatus.FAULT))
+
+
+@flow(name="seawhence", task_runner=task_runner(), validate_parameters=False, on_crashed=[tell_of_crash])
 def bring_up_to_date(
-    inbox: str, archive: str, settings: dict[str, Any], catalogue: dict[str, Any] | None
-) -> RunSummary:
+    inbox: str, archive: str, sources: str | None = None, settings: str | None = None
+) -> State[RunSummary | Problem]:
     """Bring an archive up to date with an inbox.
 
     Parameters
     ----------
     inbox, archive
-        Directories.
-    settings, catalogue
-        As plain data, so that Prefect can show them.
+        Their places.
+    sources, settings
+        TOML files, read when the run begins.
 
     """
-    config = RunConfig(
-        archive,
-        Settings.model_validate(settings),
-        Catalogue.model_validate(catalogue) if catalogue is not None else None,
-    )
-    files = list_inbox(Path(inbox), Path(archive))
-    store = open_archive(archive, create=True)
-    with locked(store):
-        clean_staging(store)
-        contents = read_contents(store)
-        config = with_remembered_sources(config, contents, store)
-        plan = plan_run(files, contents, config.settings, config.catalogue)
-        futures = [cruise_batch.submit(batch, config) for batch in pack(plan.jobs, MOST_BATCHES, LEAST_BYTES)]
-        records = [record for future in futures for record in future.result()]
-        summary = summarise(plan, records, config, store)
+    log = get_run_logger()
+    try:
+        config = RunConfig(
+            archive,
+            read_settings(Path(settings) if settings else None),
+            read_catalogue(Path(sources)) if sources else None,
+        )
+        with _processes():
+            summary = bring_archive_up_to_date(place(inbox), config, make_in_batches)
+    except Problem as problem:
+        _notify_if_deployed(archive, None, str(problem))
+        return Failed(message=str(problem), data=problem)
+    for line in telling.brief_lines(summary):
+        log.info(line)
     _record(summary)
-    return summary
+    _notify_if_deployed(archive, summary)
+    outcome = Failed if summary.exit_status is ExitStatus.FAULT else Completed
+    return outcome(message=summary.closing(), data=summary)
 
 
 def _record(summary: RunSummary) -> None:
     """Keep the summary with the flow run, where people look at runs."""
-    rows = [
-        {"cruise": cruise.expocode, "state": cruise.state, "line": cruise.line()}
-        for cruise in summary.cruises
-    ]
-    create_table_artifact(table=rows, key=ARTIFACT_KEY, description="What this run did, cruise by cruise")
-
-
-def run_as_flow(inbox: Path, config: RunConfig) -> RunSummary:
-    """Run the flow once in this process, against the configured server or the embedded one."""
-    return bring_up_to_date(
-        str(inbox),
-        config.archive,
-        config.settings.model_dump(mode="json"),
-        config.catalogue.model_dump(mode="json") if config.catalogue else None,
+    create_markdown_artifact(markdown=telling.page(summary), key=PAGE_KEY, description="What this run did")
+    create_table_artifact(
+        table=telling.rows(summary), key=TABLE_KEY, description="What this run did, cruise by cruise"
     )
+
+
+def _notify_if_deployed(archive: str, summary: RunSummary | None, problem: str = "") -> None:
+    """Notify of a run that a server started; of one by hand the command does."""
+    if deployment.id is not None:
+        notify(whom(), message(archive, summary, problem, ExitStatus.USAGE))
+
+
+def run_as_flow(inbox: Place, archive: Place, sources: Path | None, settings: Path | None) -> RunSummary:
+    """Run the flow once in this process, against the server that Prefect is set to.
+
+    Raises
+    ------
+    Problem
+        As the direct driver does.
+
+    """
+    paths = [str(path) if path is not None else None for path in (inbox, archive, sources, settings)]
+    state = bring_up_to_date(*paths, return_state=True)
+    outcome = state.result(raise_on_failure=False)
+    if isinstance(outcome, BaseException):
+        raise outcome
+    if not isinstance(outcome, RunSummary):
+        raise TypeError(f"the flow ended in the state {state.name} and gave no summary")
+    return outcome

@@ -5,6 +5,8 @@ from __future__ import annotations
 import argparse
 from pathlib import Path
 
+from flows.places import place
+from flows.table_parsers import add_tables
 from pipeline.version import VERSION
 
 DESCRIPTION = """\
@@ -21,6 +23,15 @@ example:
 
 prints one line per cruise and where the tables are. Run it again after a new delivery: only what changed is
 made anew."""
+
+NIGHTLY_EXAMPLE = """\
+example:
+  seawhence nightly deliveries --archive archive --at 02:30 --timezone UTC
+  seawhence nightly deliveries --archive archive --once
+
+runs as a Prefect flow at that time of every day until it is stopped, or once, now. Where PREFECT_API_URL names no
+server it starts one of its own, on this machine alone. With --pool the server's workers run it, and the command ends.
+Whom to notify may also stand in SEAWHENCE_NOTIFY_COMMAND and SEAWHENCE_NOTIFY_URL."""
 
 CHECK_EXAMPLE = """\
 example:
@@ -120,25 +131,13 @@ def parser() -> argparse.ArgumentParser:
         description="Bring an archive up to date with a directory of delivered files.",
         epilog=RUN_EXAMPLE + "\n\n" + STATUSES, formatter_class=_Plain,
     )  # fmt: skip
-    run.add_argument(
-        "inbox", type=Path, metavar="INBOX", help="directory of delivered files, with its folders"
-    )
-    run.add_argument(
-        "--archive", type=Path, required=True, metavar="DIR", help="the archive; made if there is none"
-    )
-    run.add_argument(
-        "--sources",
-        type=Path,
-        metavar="FILE.toml",
-        help="source waters; without it those of the archive, if any",
-    )
-    run.add_argument("--settings", type=Path, metavar="FILE.toml", help="settings; the defaults without it")
-    run.add_argument("--summary", type=Path, metavar="FILE.json", help="write the summary there as JSON too")
+    _add_what_is_run(run)
     run.add_argument(
         "--flow", action="store_true",
         help="run as a Prefect flow; always so where PREFECT_API_URL names a server; the tables are the same",
     )  # fmt: skip
 
+    _add_nightly(commands)
     check = commands.add_parser(
         "check", help="read and check files, write nothing",
         description="Read delivered files and tell what was understood and what is doubtful. Nothing is written.",
@@ -154,7 +153,7 @@ def parser() -> argparse.ArgumentParser:
         description="Tell what is in an archive, or of one cruise: revision, provenance, rows, tags.",
         epilog=SHOW_EXAMPLE + "\n\n" + SHOW_STATUSES, formatter_class=_Plain,
     )  # fmt: skip
-    show.add_argument("archive", type=Path, metavar="ARCHIVE", help="the archive's directory")
+    show.add_argument("archive", type=place, metavar="ARCHIVE", help="the archive's directory")
     show.add_argument("cruise", nargs="?", metavar="CRUISE", help="expocode of a cruise")
     show.add_argument("--format", choices=("text", "json"), default="text", help="default: text")
     show.add_argument(
@@ -164,7 +163,45 @@ def parser() -> argparse.ArgumentParser:
     _add_sources(commands)
     _add_crossovers(commands)
     _add_speciation(commands)
+    add_tables(commands)
     return top
+
+
+def _add_what_is_run(run: argparse.ArgumentParser) -> None:
+    """Add the arguments that every run has, whenever it comes."""
+    run.add_argument(
+        "inbox", type=place, metavar="INBOX", help="directory of delivered files, with its folders"
+    )
+    run.add_argument(
+        "--archive", type=place, required=True, metavar="DIR", help="the archive; made if there is none"
+    )
+    run.add_argument(
+        "--sources",
+        type=Path,
+        metavar="FILE.toml",
+        help="source waters; without it those of the archive, if any",
+    )
+    run.add_argument("--settings", type=Path, metavar="FILE.toml", help="settings; the defaults without it")
+    run.add_argument("--summary", type=Path, metavar="FILE.json", help="write the summary there as JSON too")
+    run.add_argument(
+        "--notify-command", metavar="COMMAND", help="run it after the run, the summary as JSON on its standard input"
+    )
+    run.add_argument("--notify-url", metavar="URL", help="post the summary there as JSON after the run")
+
+
+def _add_nightly(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> None:
+    """Add the parser of ``seawhence nightly``."""
+    nightly = commands.add_parser(
+        "nightly", help="bring an archive up to date every night, by itself",
+        description="Bring an archive up to date with a directory of delivered files, at a time of day.",
+        epilog=NIGHTLY_EXAMPLE + "\n\n" + STATUSES, formatter_class=_Plain,
+    )  # fmt: skip
+    _add_what_is_run(nightly)
+    when = nightly.add_mutually_exclusive_group(required=True)
+    when.add_argument("--at", metavar="HH:MM", help="time of day, or the five fields of cron")
+    when.add_argument("--once", action="store_true", help="run once, now, and end")
+    nightly.add_argument("--timezone", default="UTC", metavar="NAME", help="of --at; default: UTC")
+    nightly.add_argument("--pool", metavar="NAME", help="deploy to this work pool of the server, and end")
 
 
 def _add_mapping(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> None:
@@ -190,7 +227,7 @@ def _add_changes(commands: argparse._SubParsersAction[argparse.ArgumentParser]) 
         description="Tell what differs between two revisions of a cruise, the last two where nothing else is said.",
         epilog=CHANGES_EXAMPLE + "\n\n" + CHANGES_STATUSES, formatter_class=_Plain,
     )  # fmt: skip
-    changes.add_argument("archive", type=Path, metavar="ARCHIVE", help="the archive's directory")
+    changes.add_argument("archive", type=place, metavar="ARCHIVE", help="the archive's directory")
     changes.add_argument("cruise", metavar="CRUISE", help="expocode of a cruise")
     changes.add_argument("--from", dest="earlier", type=int, metavar="N", help="the earlier revision")
     changes.add_argument("--to", dest="later", type=int, metavar="M", help="the later one; the last without it")
@@ -226,7 +263,7 @@ def _add_sources(commands: argparse._SubParsersAction[argparse.ArgumentParser]) 
         description="Find source waters in an archive by rules, and write them as a catalogue.",
         epilog=SOURCES_DERIVE_EXAMPLE + "\n\n" + SOURCES_DERIVE_STATUSES, formatter_class=_Plain,
     )  # fmt: skip
-    derive.add_argument("archive", type=Path, metavar="ARCHIVE", help="the archive's directory")
+    derive.add_argument("archive", type=place, metavar="ARCHIVE", help="the archive's directory")
     derive.add_argument("--rules", type=Path, required=True, metavar="FILE.toml", help="a rule per source")
     derive.add_argument(
         "--out", type=Path, required=True, metavar="CATALOGUE.toml", help="where the catalogue is written"
@@ -243,7 +280,7 @@ def _add_crossovers(commands: argparse._SubParsersAction[argparse.ArgumentParser
         description="Compare the deep values of the cruises of an archive, and propose corrections.",
         epilog=CROSSOVERS_EXAMPLE + "\n\n" + CROSSOVERS_STATUSES, formatter_class=_Plain,
     )  # fmt: skip
-    crossovers.add_argument("archive", type=Path, metavar="ARCHIVE", help="the archive's directory")
+    crossovers.add_argument("archive", type=place, metavar="ARCHIVE", help="the archive's directory")
     crossovers.add_argument(
         "--out", type=Path, required=True, metavar="DIR", help="where the tables and the page are written"
     )

@@ -6,16 +6,19 @@ import hashlib
 import os
 from dataclasses import dataclass
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 from flows.beside import NOTHING, Beside, Folder
+from flows.bucket_inbox import paths_in_bucket
+from flows.places import place
 from pipeline.archive import DeliveredFile, content_of, fingerprint, is_archive, judge
 from pipeline.problems import UsageProblem
 from pipeline.reading import CRUISE_FILE, survey_cruises
 
 if TYPE_CHECKING:
-    from collections.abc import Iterable
+    from collections.abc import Iterable, Sequence
 
+    from flows.places import Place
     from pipeline.archive import Contents, CruiseContents
     from pipeline.mixing import Catalogue
     from pipeline.settings import Settings
@@ -61,7 +64,7 @@ class Plan:
     same_bytes: tuple[tuple[str, str], ...]
 
 
-def list_inbox(inbox: Path, archive: Path) -> list[InboxFile]:
+def list_inbox(inbox: Place, archive: Place) -> list[InboxFile]:
     """Return the files of an inbox and its folders, sorted by name; hidden ones are not deliveries.
 
     A ``cruise.toml`` is none either: it is read for what it says of the files beside it. Archives inside
@@ -73,9 +76,20 @@ def list_inbox(inbox: Path, archive: Path) -> list[InboxFile]:
         Where the inbox is no directory that can be read, or lies in the archive.
 
     """
+    paths: Sequence[Place] = (
+        sorted(_paths(inbox, archive)) if isinstance(inbox, Path) else paths_in_bucket(inbox, archive)
+    )
+    said = {
+        folder: Folder(folder, _shown_path(folder / CRUISE_FILE, inbox))
+        for folder in {path.parent for path in paths}
+    }
+    return [_inbox_file(path, inbox, said[path.parent].says(path.name)) for path in paths]
+
+
+def _paths(inbox: Path, archive: Place) -> list[Path]:
     if not inbox.is_dir():
         raise UsageProblem(f"{inbox}: there is no such directory; give the directory of the delivered files.")
-    kept_out = archive.resolve()
+    kept_out = Path(archive).resolve()
     if inbox.resolve().is_relative_to(kept_out):
         raise UsageProblem(
             f"{inbox}: the inbox lies in the archive {archive}; give each a directory of its own."
@@ -93,25 +107,21 @@ def list_inbox(inbox: Path, archive: Path) -> list[InboxFile]:
             if not f.startswith(".") and (here / f).resolve() != kept_out and not is_archive(here / f)
         ]
         paths += [here / name for name in names if not name.startswith(".") and name != CRUISE_FILE]
-    said = {
-        folder: Folder(folder, _shown_path(folder / CRUISE_FILE, inbox))
-        for folder in {p.parent for p in paths}
-    }
-    return [_inbox_file(path, inbox, said[path.parent].says(path.name)) for path in sorted(paths)]
+    return paths
 
 
-def _shown_path(path: Path, inbox: Path) -> str:
+def _shown_path(path: Any, inbox: Place) -> str:
     return shown_name(path.relative_to(inbox).as_posix())
 
 
-def _inbox_file(path: Path, inbox: Path, beside: Beside) -> InboxFile:
+def _inbox_file(path: Place, inbox: Place, beside: Beside) -> InboxFile:
     """Return a file with its hash; "" for one that cannot be read, of which it is told when its turn comes."""
     sha256, size = "", 0
     try:
         if path.is_file():  # a pipe would wait for ever
             with path.open("rb") as stream:
                 sha256 = hashlib.file_digest(stream, "sha256").hexdigest()
-            size = path.stat().st_size
+                size = stream.seek(0, os.SEEK_END)
     except OSError:
         pass
     return InboxFile(_shown_path(path, inbox), str(path), size, sha256, beside)
@@ -133,8 +143,9 @@ def plan_run(
     distinct, same_bytes = _without_doubles(files)
     cruises: dict[str, list[InboxFile]] = {}
     unknown = []
+    known = contents.cruises_by_content()
     for file in distinct:
-        codes = contents.delivered_with(file.content) or _survey(file, settings)
+        codes = known.get(file.content) or _survey(file, settings)
         for code in codes:
             cruises.setdefault(code, []).append(file)
         if not codes:
@@ -167,7 +178,7 @@ def _survey(file: InboxFile, settings: Settings) -> tuple[str, ...]:
     if not file.sha256 or file.beside.fault:
         return ()
     try:
-        data = Path(file.path).read_bytes()
+        data = place(file.path).read_bytes()
     except OSError:
         return ()
     return survey_cruises(file.name, data, settings.reading, file.beside.description)

@@ -98,6 +98,7 @@ class RunSummary:
     refusals: tuple[Refusal, ...]  # of files that belong to no cruise
     same_bytes: tuple[tuple[str, str], ...] = ()  # a file that is the same as another, and that other
     delivered: int | None = None  # files in the inbox
+    trouble: str = ""  # of the archive after the last cruise
 
     @property
     def counts(self) -> dict[str, int]:
@@ -123,7 +124,7 @@ class RunSummary:
     @property
     def exit_status(self) -> ExitStatus:
         """What the command line returns."""
-        if any(cruise.state is State.FAILED for cruise in self.cruises):
+        if self.trouble or any(cruise.state is State.FAILED for cruise in self.cruises):
             return ExitStatus.FAULT
         if self.all_refusals or any(cruise.state is State.REFUSED for cruise in self.cruises):
             return ExitStatus.REFUSED
@@ -135,6 +136,7 @@ class RunSummary:
         lines += [f"refused  {refusal.message}" for refusal in self.all_refusals]
         lines += [f"note  {file}: the same bytes as {other}; read once." for file, other in self.same_bytes]
         lines += self.slow_lines()
+        lines += [f"failed  {self.trouble}"] if self.trouble else []
         lines.append(self.closing())
         return lines
 
@@ -165,6 +167,7 @@ class RunSummary:
             "exit_status": int(self.exit_status),
             "counts": self.counts,
             "slow": [cruise.expocode for cruise in self.slow],
+            "trouble": self.trouble,
             "cruises": [asdict(cruise) for cruise in self.cruises],
             "refused": [asdict(refusal) for refusal in self.all_refusals],
             "same_bytes": [{"file": file, "same_as": other} for file, other in self.same_bytes],

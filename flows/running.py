@@ -1,16 +1,20 @@
-"""The command ``seawhence run``."""
+"""The command ``seawhence run``: one run, what it has to say, and to whom."""
 
 from __future__ import annotations
 
 import json
+import os
 import sys
 from typing import TYPE_CHECKING
 
 from flows.direct import run_directly
-from flows.embedded import prepare_environment, server_is_configured
+from flows.embedded import Server, prepare_environment, server_is_configured
+from flows.notifying import message, notify, whom
+from flows.records import ExitStatus
+from flows.telling import brief_lines
 from flows.work import RunConfig
 from pipeline.mixing import read_catalogue
-from pipeline.problems import UsageProblem
+from pipeline.problems import Problem, UsageProblem
 from pipeline.settings import read_settings
 
 if TYPE_CHECKING:
@@ -18,26 +22,53 @@ if TYPE_CHECKING:
     from collections.abc import Iterable, Iterator
     from pathlib import Path
 
+    from flows.notifying import Notify
     from flows.plan import Job
     from flows.records import RunSummary
     from pipeline.settings import Settings
 
 
 def run(chosen: argparse.Namespace) -> int:
-    """Run once and print the summary."""
-    config = RunConfig(
-        archive=str(chosen.archive),
-        settings=read_settings(chosen.settings),
-        catalogue=read_catalogue(chosen.sources) if chosen.sources else None,
-    )
-    if chosen.flow or server_is_configured():
-        summary = _run_as_flow(chosen.inbox, config)
-    else:
-        summary = run_directly(chosen.inbox, config, progress=_with_bar)
-    for line in summary.lines():
+    """Run once, directly or as a flow."""
+    to = whom(chosen.notify_command, chosen.notify_url)
+    return run_once(chosen, to, as_flow=chosen.flow or server_is_configured())
+
+
+def run_once(chosen: argparse.Namespace, to: Notify, *, as_flow: bool, brief: bool = False) -> int:
+    """Run, print the summary, write it where it is wanted and notify.
+
+    Parameters
+    ----------
+    chosen
+        The arguments: inbox, archive, sources, settings, summary.
+    to
+        Whom to notify, of a run that could not be made too.
+    as_flow
+        Whether Prefect drives it.
+    brief
+        Whether the cruises that are unchanged are counted and not listed.
+
+    """
+    try:
+        settings = read_settings(chosen.settings)
+        config = RunConfig(
+            archive=str(chosen.archive),
+            settings=settings,
+            catalogue=read_catalogue(chosen.sources) if chosen.sources else None,
+        )
+        summary = _run_as_flow(chosen) if as_flow else run_directly(chosen.inbox, config, progress=_with_bar)
+    except Problem as problem:
+        notify(to, message(str(chosen.archive), None, str(problem), ExitStatus.USAGE))
+        raise
+    except Exception as error:
+        words = f"a fault of seawhence, not of the files: {type(error).__name__}: {error}"
+        notify(to, message(str(chosen.archive), None, words, ExitStatus.FAULT))
+        raise
+    for line in brief_lines(summary) if brief else summary.lines():
         print(line)
-    for sentence in _corrections_not_made(config.settings, summary):
+    for sentence in _corrections_not_made(settings, summary):
         print(f"seawhence: {sentence}", file=sys.stderr)
+    notify(to, message(str(chosen.archive), summary))
     if chosen.summary:
         _write_summary(chosen.summary, summary)
     return summary.exit_status
@@ -53,11 +84,21 @@ def _corrections_not_made(settings: Settings, summary: RunSummary) -> Iterator[s
         )
 
 
-def _run_as_flow(inbox: Path, config: RunConfig) -> RunSummary:
-    prepare_environment()
-    from flows.nightly import run_as_flow  # noqa: PLC0415 - Prefect takes two seconds to load
+def _run_as_flow(chosen: argparse.Namespace) -> RunSummary:
+    """Run as a flow, against the server that is named or one of the run's own, which loads while Prefect does."""
+    # What the user is told, the command tells; the server keeps the rest.
+    os.environ.setdefault("PREFECT_LOGGING_HANDLERS_CONSOLE_LEVEL", "WARNING")
+    places = (chosen.inbox, chosen.archive, chosen.sources, chosen.settings)
+    if server_is_configured():
+        prepare_environment()
+        from flows.nightly import run_as_flow  # noqa: PLC0415 - Prefect takes two seconds to load
 
-    return run_as_flow(inbox, config)
+        return run_as_flow(*places)
+    server = Server(one_run=True)
+    from flows.nightly import run_as_flow  # noqa: PLC0415
+
+    server.wait()
+    return run_as_flow(*places)
 
 
 def _with_bar(jobs: Iterable[Job]) -> Iterator[Job]:

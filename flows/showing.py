@@ -245,7 +245,8 @@ def _verified(verified: Verified | None) -> list[str]:
     lines += [f"note  {stranger}: not a delivered file of the archive." for stranger in verified.strangers]
     files = f"{verified.deliveries} kept file{'s' if verified.deliveries != 1 else ''}"
     tables = f"{verified.tables} table{'s' if verified.tables != 1 else ''}"
-    return ["", *lines, f"verified: {files} hashed and {tables} read are as they were written."]
+    seen = f"{files} hashed, each what its name says; {tables} read to the end, each whole and of the right revision."
+    return ["", *lines, f"verified: {seen}"]
 
 
 def aligned(rows: Sequence[Sequence[str]]) -> list[str]:

@@ -6,20 +6,23 @@ Safe to run again: a cruise that is published already is published as it is.
 from __future__ import annotations
 
 import logging
+import time
 from dataclasses import dataclass, replace
-from pathlib import Path, PurePosixPath
+from pathlib import PurePosixPath
 from typing import TYPE_CHECKING
 
 import pyarrow.compute as pc
 
+from flows.places import place
 from flows.records import CruiseRecord, Refusal, State
+from flows.retrying import may_pass
 from pipeline.archive import DeliveredFile, Provenance, open_archive, publish, read_cruise, vault
 from pipeline.problems import ArchiveProblem, DeliveryProblem
 from pipeline.process import process_cruise, settle_editions, shared_rows
 from pipeline.reading import read_cruise_file, read_delivery
 
 if TYPE_CHECKING:
-    from collections.abc import Iterable, Mapping, Sequence
+    from collections.abc import Mapping, Sequence
 
     import pyarrow as pa
 
@@ -41,22 +44,39 @@ class RunConfig:
     catalogue: Catalogue | None = None
 
 
-def run_batch(jobs: Iterable[Job], config: RunConfig) -> list[CruiseRecord]:
-    """Make the cruises of a batch, one after the other; none takes another down with it."""
-    return [run_job(job, config) for job in jobs]
+class _InboxFault(Exception):  # noqa: N818 - it names what it is
+    """A file that was there when the run was planned cannot be read now; its cruise is left as it is."""
 
 
 def run_job(job: Job, config: RunConfig) -> CruiseRecord:
     """Make one cruise and publish it. Never raises: what went wrong is in the record."""
+    began = time.monotonic()
+    return replace(_attempt(job, config), seconds=round(time.monotonic() - began, 3))
+
+
+def _attempt(job: Job, config: RunConfig) -> CruiseRecord:
     refusals: list[Refusal] = []
     try:
         return _make(job, config, refusals)
     except DeliveryProblem as problem:
         refusals.append(Refusal(", ".join(file.name for file in job.files), problem.reason, str(problem)))
         return CruiseRecord(job.expocode, State.REFUSED, refusals=tuple(refusals), message=_first(refusals))
+    except _InboxFault as fault:
+        passing = may_pass(fault)
+        return CruiseRecord(
+            job.expocode,
+            State.FAILED if passing else State.REFUSED,
+            refusals=tuple(refusals),
+            message=str(fault),
+            storage_fault=passing,
+        )
     except ArchiveProblem as problem:
         return CruiseRecord(
-            job.expocode, State.FAILED, refusals=tuple(refusals), message=str(problem), storage_fault=True
+            job.expocode,
+            State.FAILED,
+            refusals=tuple(refusals),
+            message=str(problem),
+            storage_fault=may_pass(problem),
         )
     except Exception as error:  # noqa: BLE001 - the run goes on; the record and the log tell
         _log.exception("cruise %s", job.expocode)
@@ -67,13 +87,15 @@ def run_job(job: Job, config: RunConfig) -> CruiseRecord:
 def refuse_file(file: InboxFile, config: RunConfig) -> Refusal:
     """Keep a file in which no cruise was found, and say why it is refused."""
     try:
-        vault.keep(open_archive(config.archive), Path(file.path))
+        vault.keep(open_archive(config.archive), place(file.path))
         if file.beside.fault:
             return Refusal(file.name, "broken-description", _not_described(file))
-        data = Path(file.path).read_bytes()
+        data = place(file.path).read_bytes()
         read_delivery(file.name, data, config.settings.reading, file.beside.description)
     except DeliveryProblem as problem:
         return Refusal(file.name, problem.reason, str(problem))
+    except ArchiveProblem as problem:
+        return Refusal(file.name, "not-kept", f"{file.name}: it was not looked at, because of {problem}")
     except OSError as error:
         return Refusal(file.name, "unreadable", _unreadable(file.name, error))
     return Refusal(file.name, "no-cruise", f"{file.name}: no cruise was found in it; nothing was used.")
@@ -142,7 +164,7 @@ def _read_inbox(job: Job, config: RunConfig, store: Store, refusals: list[Refusa
     delivered = []
     for file in job.files:
         try:
-            data = Path(file.path).read_bytes()
+            data = place(file.path).read_bytes()
             vault.keep(store, data)
             if file.beside.fault:
                 refusals.append(Refusal(file.name, "broken-description", _not_described(file)))
@@ -154,8 +176,8 @@ def _read_inbox(job: Job, config: RunConfig, store: Store, refusals: list[Refusa
             refusals.append(Refusal(file.name, problem.reason, str(problem)))
             continue
         except OSError as error:
-            refusals.append(Refusal(file.name, "unreadable", _unreadable(file.name, error)))
-            continue
+            refusals.append(Refusal(file.name, "unreadable", _gone(file.name, error)))
+            raise _InboxFault(_gone(file.name, error)) from error
         part = replace(delivery, described_by=file.beside.sha256).of_cruise(job.expocode)
         refusals += [
             Refusal(f"{file.name}:{r.raw}", r.reason, r.message) for r in part.rejects if r.line is None
@@ -223,6 +245,13 @@ def _provenance(
 def _unreadable(name: str, error: OSError) -> str:
     return (
         f"{name}: the file cannot be read ({error.strerror}); check that it is still there and may be read."
+    )
+
+
+def _gone(name: str, error: OSError) -> str:
+    return (
+        f"{name}: it was there when the run began and cannot be read now ({error.strerror}); nothing of its cruise was"
+        " changed; see to it that it can be read, and run again."
     )
 
 

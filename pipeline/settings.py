@@ -18,6 +18,7 @@ from pydantic import AfterValidator, BeforeValidator, Field, ValidationError
 
 from pipeline.carbon_tracer_settings import CarbonTracers
 from pipeline.carbonate_settings import CarbonateSettings, ProfileSettings
+from pipeline.census_settings import CensusSettings
 from pipeline.crossover_settings import Correction, CrossoverSettings, Quantity
 from pipeline.limits import (
     BottleSpikes,
@@ -227,6 +228,24 @@ class MixingSettings(Section):
         return self.model_copy(update={"uncertainty": {**self.uncertainty, **own}, "cruise_uncertainty": {}})
 
 
+class RunSettings(Section):
+    """How a run goes on where something takes long or fails. No table depends on it."""
+
+    cruise_seconds: Positive | None = Field(
+        None,
+        description="seconds that a cruise may take before it is skipped; without it no limit in a run by hand, and an"
+        " hour in one by Prefect",
+    )
+    waits: tuple[Annotated[float, Field(ge=0, le=3600)], ...] = Field(
+        (5.0, 30.0),
+        description="seconds before cruises that met a fault of disk or network are tried again, one for each attempt"
+        " (our choice, no source)",
+    )
+    lock_seconds: Annotated[float, Field(ge=0)] = Field(
+        0.0, description="seconds to wait for another run that holds the archive, before this one is given up"
+    )
+
+
 class Settings(Section):
     """All settings of the pipeline. Frozen; the same values give the same hash."""
 
@@ -238,6 +257,8 @@ class Settings(Section):
     profiles: ProfileSettings = ProfileSettings()
     mixing: MixingSettings = MixingSettings()
     crossovers: CrossoverSettings = CrossoverSettings()
+    census: CensusSettings = CensusSettings()
+    run: RunSettings = RunSettings()
     corrections: dict[str, dict[Quantity, Correction]] = Field(
         {}, description="by cruise and quantity; nothing is corrected that does not stand here"
     )
@@ -249,7 +270,12 @@ class Settings(Section):
         own = {expocode: uncertain[expocode]} if uncertain.get(expocode) else {}
         mixing = self.mixing.model_copy(update={"cruise_uncertainty": own})
         return self.model_copy(
-            update={"crossovers": CrossoverSettings(), "corrections": mine, "mixing": mixing}
+            update={
+                "crossovers": CrossoverSettings(),
+                "census": CensusSettings(),
+                "corrections": mine,
+                "mixing": mixing,
+            }
         )
 
     def corrections_of(self, expocode: str) -> dict[str, dict[str, Any]]:
@@ -259,8 +285,9 @@ class Settings(Section):
 
     @property
     def text(self) -> bytes:
-        """The effective values as JSON, the same bytes for the same values."""
-        return json.dumps(self.model_dump(mode="json"), sort_keys=True, separators=(",", ":")).encode()
+        """The effective values as JSON, the same bytes for the same values, less those that no table depends on."""
+        values = self.model_dump(mode="json", exclude={"run"})
+        return json.dumps(values, sort_keys=True, separators=(",", ":")).encode()
 
     @property
     def sha256(self) -> str:

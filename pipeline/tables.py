@@ -60,6 +60,12 @@ PROPOSALS = (
     "expocode", "variable", "kind", "correction", "correction_uncertainty", "correction_limit", "difference_unit",
     "crossovers", "group", "proposed", "why_not",
 )  # fmt: skip
+# How much of a section each source makes up: made when it is asked for, no table of the archive.
+CENSUS = (
+    "expocode", "other_expocode", "census_part", "density_column", "density_class", "density_from", "density_below",
+    "source", "area", "area_uncertainty", "area_share", "area_share_uncertainty", "other_area_share",
+    "area_share_change", "area_share_change_uncertainty", "unresolved_reason", "unresolved_samples",
+)  # fmt: skip
 
 # Always there, in this order, whatever was delivered: a reader may rely on them.
 SAMPLES_CORE = (

@@ -2,7 +2,7 @@
 
 Everything else (schemas, reader maps, range checks, field metadata, plot labels) is derived from here.
 A quantity is added by one entry. This module imports the form of its rows, and the rows
-of carbon and of crossovers, and nothing else of ours; nothing registers into it.
+of carbon, of crossovers and of the census, and nothing else of ours; nothing registers into it.
 
 Plausible ranges are those of the parameter list of the exchange format, version 1.2.0, where it has one;
 ``None`` where it has none. What is made of delivered values has theirs, made a little wider (our choice).
@@ -16,6 +16,7 @@ from types import MappingProxyType
 from typing import TYPE_CHECKING
 
 from pipeline.carbon_variables import CARBONATE, EXTREMES, HORIZONS, STATION_CARBON
+from pipeline.census_variables import CENSUS
 from pipeline.crossover_variables import CROSSOVERS
 from pipeline.isotope_variables import ANOMALIES, ISOTOPES, MIXED_CARBON, SAMPLE_CARBON
 from pipeline.variable import FlagScheme, Kind, Uncertainty, Variable
@@ -320,7 +321,7 @@ _NOTICES = (
 
 BASE: tuple[Variable, ...] = (
     *_IDENTITY, *_CTD, *_WATER, *_SEAWATER, *_TRACERS, *STATION_CARBON, *SAMPLE_CARBON, *_MIXING, *MIXED_CARBON,
-    *_NOTICES, *CROSSOVERS, *_LEDGER,
+    *_NOTICES, *CROSSOVERS, *CENSUS, *_LEDGER,
 )  # fmt: skip
 
 MEASURED: tuple[str, ...] = tuple(v.name for v in (*_CTD, *_WATER))

@@ -13,10 +13,10 @@ ROOT = Path(__file__).parent.parent
 # In the order in which a module may import those before it.
 LAYERS = (
     ("variable",),
-    ("crossover_variables", "carbon_variables", "isotope_variables"),
+    ("crossover_variables", "carbon_variables", "isotope_variables", "census_variables"),
     ("variables", "problems", "findings", "version"),
     ("toml_text", "tables", "units", "limits"),
-    ("crossover_settings", "carbonate_settings", "carbon_tracer_settings"),
+    ("crossover_settings", "carbonate_settings", "carbon_tracer_settings", "census_settings"),
     ("settings",),
     ("usable", "corrections"),
     ("working",),
@@ -27,6 +27,8 @@ LAYERS = (
     ("mixing",),
     ("crossovers",),
     ("archive",),
+    ("census",),
+    ("opening", "exporting", "dictionary"),
     ("process",),
 )
 LEVEL = {name: level for level, names in enumerate(LAYERS) for name in names}

@@ -16,7 +16,7 @@ DATE TIME LATITUDE LONGITUDE DEPTH
 # Units that UDUNITS reads, or that stand for no unit.
 UNITS = {
     "", "1", "1e-3", "degree_C", "degree_north", "degree_east", "dbar", "m", "s-2", "kg m-3", "g kg-1", "percent",
-    "umol kg-1", "nmol kg-1", "pmol kg-1", "fmol kg-1", "ug kg-1", "mg m-3", "uatm", "tritium_unit", "year",
+    "umol kg-1", "nmol kg-1", "pmol kg-1", "fmol kg-1", "ug kg-1", "mg m-3", "uatm", "tritium_unit", "year", "km2",
 }  # fmt: skip
 
 # CF table v93 has no name for these, and none may be invented.

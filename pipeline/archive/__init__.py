@@ -22,6 +22,8 @@ from pipeline.archive.contents import (
     revisions,
 )
 from pipeline.archive.currency import Currency, Reason, judge
+from pipeline.archive.delivered_objects import ObjectPath, objects_below
+from pipeline.archive.endpoint import bucket_path, is_bucket
 from pipeline.archive.lock import locked
 from pipeline.archive.provenance import DeliveredFile, Provenance, content_of, fingerprint
 from pipeline.archive.publishing import clean_staging, publish
@@ -35,20 +37,24 @@ __all__ = [
     "Currency",
     "DeliveredFile",
     "Disk",
+    "ObjectPath",
     "Provenance",
     "Reason",
     "RevisionChanges",
     "Store",
     "Verified",
     "accounts",
+    "bucket_path",
     "clean_staging",
     "compare_revisions",
     "content_of",
     "fingerprint",
     "is_archive",
+    "is_bucket",
     "is_listing",
     "judge",
     "locked",
+    "objects_below",
     "open_archive",
     "publish",
     "read_contents",

@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass, field
+from functools import partial
 from typing import TYPE_CHECKING, Any
 
 import pyarrow as pa
@@ -10,7 +12,7 @@ import pyarrow.parquet as pq
 
 from pipeline.archive import layout
 from pipeline.archive.footers import Footer, observe, read_footer, read_published
-from pipeline.archive.refusals import refused
+from pipeline.archive.refusals import is_of_storage, refused
 from pipeline.problems import ArchiveProblem
 from pipeline.tables import TABLE_NAMES
 
@@ -48,13 +50,17 @@ class Contents:
     cruises: Mapping[str, CruiseContents]
     strangers: tuple[str, ...] = field(default=())
 
+    def cruises_by_content(self) -> dict[str, tuple[str, ...]]:
+        """Return, for the content (``content_of``) of every file delivered, the cruises that it went into."""
+        found: dict[str, dict[str, None]] = {}
+        for expocode, cruise in self.cruises.items():
+            for file in cruise.provenance.deliveries if cruise.provenance else ():
+                found.setdefault(file.content, {})[expocode] = None
+        return {content: tuple(expocodes) for content, expocodes in found.items()}
+
     def delivered_with(self, content: str) -> tuple[str, ...]:
-        """Return the cruises that a file of this content (``content_of``) went into."""
-        return tuple(
-            expocode
-            for expocode, cruise in self.cruises.items()
-            if cruise.provenance and any(file.content == content for file in cruise.provenance.deliveries)
-        )
+        """Return the cruises that a file of this content went into."""
+        return self.cruises_by_content().get(content, ())
 
 
 def read_contents(store: Store) -> Contents:
@@ -75,9 +81,13 @@ def read_contents(store: Store) -> Contents:
     # A cruise whose publication was cut short may have earlier revisions only.
     aside = (layout.expocode_of(name) for name in store.names(layout.SUPERSEDED))
     expocodes.update(expocode for expocode in aside if expocode is not None)
-    return Contents(
-        {expocode: read_cruise(store, expocode) for expocode in sorted(expocodes)}, tuple(strangers)
-    )
+    in_order = sorted(expocodes)
+    if store.width == 1:
+        read = [read_cruise(store, expocode) for expocode in in_order]
+    else:
+        with ThreadPoolExecutor(store.width) as pool:
+            read = list(pool.map(partial(read_cruise, store), in_order))
+    return Contents(dict(zip(in_order, read, strict=True)), tuple(strangers))
 
 
 def read_cruise(store: Store, expocode: str) -> CruiseContents:
@@ -150,7 +160,10 @@ def read_table(
     place = store.where(key)
     with refused(place, "read"):
         try:
-            with pq.ParquetFile(store.source(key), page_checksum_verification=True) as file:
+            source = store.source(key)
+            # What a disk reads in many small steps would be as many requests elsewhere.
+            ahead = not isinstance(source, str)
+            with pq.ParquetFile(source, page_checksum_verification=True, pre_buffer=ahead) as file:
                 return file.read(columns=None if columns is None else list(columns))
         except FileNotFoundError as error:
             raise ArchiveProblem(
@@ -158,10 +171,10 @@ def read_table(
                 f"{'' if revision is None else f' in revision {revision}'}; 'seawhence show' lists what it has."
             ) from error
         except pa.ArrowException as error:
-            raise _spoiled(place, error) from error
+            raise _spoiled(place, error, earlier=layout.is_superseded(key)) from error
         except OSError as error:
-            if error.errno is None:  # not the system's word but the decoder's
-                raise _spoiled(place, error) from error
+            if not is_of_storage(error):  # not the system's word but the decoder's
+                raise _spoiled(place, error, earlier=layout.is_superseded(key)) from error
             raise
 
 
@@ -175,8 +188,11 @@ def _key(store: Store, expocode: str, table: str, revision: int | None) -> str:
     return layout.superseded_key(expocode, revision, table)
 
 
-def _spoiled(place: str, error: Any) -> ArchiveProblem:
+def _spoiled(place: str, error: Any, *, earlier: bool) -> ArchiveProblem:
     said = str(error).partition("\n")[0].rstrip(". ")
-    return ArchiveProblem(
-        f"{place}: damaged, it cannot be read ({said}); remove it and run again to make it anew."
+    remedy = (
+        "no run makes an earlier revision again; put it back from a copy"
+        if earlier
+        else "remove it and run again to make it anew"
     )
+    return ArchiveProblem(f"{place}: damaged, it cannot be read ({said}); {remedy}.")

@@ -10,7 +10,7 @@ import pyarrow.parquet as pq
 
 from pipeline.archive import layout
 from pipeline.archive.provenance import RECORD, Provenance
-from pipeline.archive.refusals import refused
+from pipeline.archive.refusals import is_of_storage, refused
 from pipeline.archive.standing import Mark, Standing
 from pipeline.problems import ArchiveProblem
 from pipeline.tables import TABLE_NAMES
@@ -50,17 +50,15 @@ def read_footer(store: Store, key: str) -> Footer | Damaged | None:
 
     """
     place = store.where(key)
-    if store.size(key) is None:
-        return None
     with refused(place, "read"):
         try:
             found = pq.read_metadata(store.source(key))
         except FileNotFoundError:
-            return None  # moved aside between the two looks at it
+            return None
         except pa.ArrowException as error:
             return _damaged(place, error)
         except OSError as error:
-            if error.errno is None:  # not the system's word but the decoder's
+            if not is_of_storage(error):  # not the system's word but the decoder's
                 return _damaged(place, error)
             raise
     metadata = found.metadata or {}

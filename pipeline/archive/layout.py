@@ -93,6 +93,11 @@ def table_key(table: str, expocode: str) -> str:
     return f"{_known(table)}/{safe_name(expocode)}{SUFFIX}"
 
 
+def is_superseded(key: str) -> bool:
+    """Return whether a key is that of an earlier revision."""
+    return key.startswith(f"{SUPERSEDED}/")
+
+
 def superseded_key(expocode: str, revision: int | None = None, table: str | None = None) -> str:
     """Return where earlier revisions of a cruise lie: all of them, one, or one table of one."""
     key = f"{SUPERSEDED}/{safe_name(expocode)}"

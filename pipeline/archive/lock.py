@@ -11,7 +11,7 @@ import fcntl
 import os
 import socket
 import time
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 from datetime import UTC, datetime
 from typing import TYPE_CHECKING
 
@@ -57,15 +57,19 @@ def hold(path: Path, patience: float = 0.0, *, fleeting: bool = False) -> Iterat
     try:
         with refused(path, "lock"):
             os.ftruncate(descriptor, 0)
-            os.pwrite(descriptor, _who().encode(), 0)
+            os.pwrite(descriptor, who().encode(), 0)
         yield
     finally:
         # The words go first: an unlocked file that names a holder would mislead.
-        os.ftruncate(descriptor, 0)
+        with suppress(OSError):  # on a share that is lost; the lock ends all the same
+            os.ftruncate(descriptor, 0)
         if fleeting:
-            path.unlink(missing_ok=True)
-        fcntl.flock(descriptor, fcntl.LOCK_UN)  # explicitly, since a forked child may share the descriptor
-        os.close(descriptor)
+            with suppress(OSError):
+                path.unlink(missing_ok=True)
+        with suppress(OSError):  # explicitly, since a forked child may share the descriptor
+            fcntl.flock(descriptor, fcntl.LOCK_UN)
+        with suppress(OSError):
+            os.close(descriptor)
 
 
 @contextmanager
@@ -92,13 +96,13 @@ def _acquire(path: Path, patience: float) -> int:
         try:
             fcntl.flock(descriptor, fcntl.LOCK_EX | fcntl.LOCK_NB)
         except OSError as error:
-            who = os.pread(descriptor, WORDS, 0).decode(errors="replace").strip()
+            holder = os.pread(descriptor, WORDS, 0).decode(errors="replace").strip()
             os.close(descriptor)
             if not isinstance(error, BlockingIOError):
                 raise
             if time.monotonic() >= until:
                 raise ArchiveBusy(
-                    f"{path}: held by {who or 'another run'}; "
+                    f"{path}: held by {holder or 'another run'}; "
                     "wait for it to end, or end it, and run again: what is published can be read meanwhile."
                 ) from error
             time.sleep(wait)
@@ -116,6 +120,7 @@ def _is_still(path: Path, descriptor: int) -> bool:
         return False
 
 
-def _who() -> str:
+def who() -> str:
+    """Return which process this is, in words for those who wait for it."""
     started = datetime.now(UTC).strftime("%Y-%m-%d %H:%M:%S UTC")
     return f"process {os.getpid()} on {socket.gethostname()} since {started}\n"

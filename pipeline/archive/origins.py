@@ -92,5 +92,5 @@ def _flat(values: Mapping[str, Any], prefix: str = "") -> Iterator[tuple[str, An
     for name, value in values.items():
         if isinstance(value, dict) and value:
             yield from _flat(value, f"{prefix}{name}.")
-        else:
+        elif value != {}:
             yield f"{prefix}{name}", value

@@ -10,9 +10,10 @@ import os
 from contextlib import suppress
 from dataclasses import dataclass
 from pathlib import Path
-from typing import IO, TYPE_CHECKING, Any, Protocol
+from typing import IO, TYPE_CHECKING, Any, ClassVar, Protocol, overload
 
 from pipeline.archive import layout, lock
+from pipeline.archive.endpoint import is_bucket
 from pipeline.archive.refusals import refused
 from pipeline.problems import ArchiveProblem
 from pipeline.tables import TABLE_NAMES
@@ -21,11 +22,15 @@ if TYPE_CHECKING:
     from collections.abc import Callable, Iterable
     from contextlib import AbstractContextManager
 
+    from pipeline.archive.delivered_objects import ObjectPath
+
 BUFFER = 1 << 20
 
 
 class Store(Protocol):
     """What an archive needs of the place it lies in. Every failure is an ``ArchiveProblem``."""
+
+    width: ClassVar[int]  # how many operations are best done at once
 
     def where(self, key: str) -> str:
         """Return the place of ``key`` as the user knows it."""
@@ -65,6 +70,7 @@ class Disk:
     """An archive in a directory. Can be handed to another process."""
 
     root: Path
+    width: ClassVar[int] = 1
 
     def _path(self, key: str) -> Path:
         return self.root / key
@@ -151,13 +157,21 @@ def is_archive(place: Path) -> bool:
     return all((place / name).is_dir() for name in TABLE_NAMES)
 
 
-def open_archive(place: Path | str, *, create: bool = False) -> Disk:
-    """Return the archive in the directory ``place``.
+@overload
+def open_archive(place: Path, *, create: bool = False) -> Disk: ...
+
+
+@overload
+def open_archive(place: Path | str | ObjectPath, *, create: bool = False) -> Store: ...
+
+
+def open_archive(place: Path | str | ObjectPath, *, create: bool = False) -> Store:
+    """Return the archive at ``place``.
 
     Parameters
     ----------
     place
-        The archive's directory.
+        The archive's directory, or ``s3://BUCKET/PATH``.
     create
         Whether it is made where there is none.
 
@@ -168,6 +182,10 @@ def open_archive(place: Path | str, *, create: bool = False) -> Disk:
         archive.
 
     """
+    if not isinstance(place, Path) and is_bucket(str(place)):
+        from pipeline.archive.bucket import open_bucket  # noqa: PLC0415 - for storage of this kind only
+
+        return open_bucket(str(place), create=create)
     root = Path(place).absolute()
     with refused(root, "read"):
         if root.exists() and not root.is_dir():
@@ -175,19 +193,31 @@ def open_archive(place: Path | str, *, create: bool = False) -> Disk:
                 f"{root}: found a file, expected the directory of an archive; give another place."
             )
         found = {path.name for path in root.iterdir()} if root.exists() else set()
-    ours = {*layout.PLACES, layout.LOCK}
-    if found - ours and not found.issuperset(TABLE_NAMES):
-        other = min(found - ours)
-        raise ArchiveProblem(
-            f"{root}: holds other things ('{other}') and no archive; give an empty or new directory, "
-            "or that of an archive."
-        )
-    if not create and not found.issuperset(TABLE_NAMES):
-        raise ArchiveProblem(
-            f"{root}: there is no archive here; give the directory that 'seawhence run' was given as --archive."
-        )
+    see_archive(str(root), found, create=create)
     if create:
         for name in layout.PLACES:
             with refused(root / name, "write"):
                 (root / name).mkdir(parents=True, exist_ok=True)
     return Disk(root)
+
+
+def see_archive(place: str, found: set[str], *, create: bool) -> None:
+    """See that a place in which these names were ``found`` is an archive, or can be made one.
+
+    Raises
+    ------
+    ArchiveProblem
+        As ``open_archive``.
+
+    """
+    ours = {*layout.PLACES, layout.LOCK}
+    if found - ours and not found.issuperset(TABLE_NAMES):
+        other = min(found - ours)
+        raise ArchiveProblem(
+            f"{place}: holds other things ('{other}') and no archive; give an empty or new directory, "
+            "or that of an archive."
+        )
+    if not create and not found.issuperset(TABLE_NAMES):
+        raise ArchiveProblem(
+            f"{place}: there is no archive here; give the directory that 'seawhence run' was given as --archive."
+        )

@@ -11,6 +11,8 @@ from pathlib import Path
 from typing import IO, TYPE_CHECKING
 
 from pipeline.archive import layout
+from pipeline.archive.delivered_objects import ObjectPath
+from pipeline.archive.refusals import is_of_storage, words_of
 from pipeline.problems import ArchiveProblem, DeliveryProblem, Problem
 
 if TYPE_CHECKING:
@@ -19,7 +21,7 @@ if TYPE_CHECKING:
 BLOCK = 1 << 20
 
 
-def keep(store: Store, delivered: bytes | Path) -> str:
+def keep(store: Store, delivered: bytes | Path | ObjectPath) -> str:
     """Keep delivered bytes and return their SHA-256; bytes that are kept already are not written again.
 
     Parameters
@@ -44,6 +46,12 @@ def keep(store: Store, delivered: bytes | Path) -> str:
                     "not-a-file", f"{delivered}: found no regular file; deliver the cruise as a file."
                 )
             with delivered.open("rb") as file:
+                return _keep(store, file, str(delivered))
+        except OSError as error:
+            raise _unreadable(str(delivered), error) from error
+    if isinstance(delivered, ObjectPath):
+        try:
+            with delivered.open() as file:
                 return _keep(store, file, str(delivered))
         except OSError as error:
             raise _unreadable(str(delivered), error) from error
@@ -113,7 +121,7 @@ def _block(file: IO[bytes], name: str) -> bytes:
 
 
 def _unreadable(name: str, error: OSError) -> DeliveryProblem:
-    said = error.strerror or str(error)
+    said = error.strerror or (words_of(error)[0] if is_of_storage(error) else str(error))
     return DeliveryProblem(
         "unreadable-file", f"{name}: cannot be read ({said}); see to it that it can, and run again."
     )

@@ -42,9 +42,12 @@ def verify(store: Store, contents: Contents, cruise: str | None = None) -> Verif
     """
     troubles: list[str] = []
     strangers: list[str] = []
+    codes = list(contents.cruises) if cruise is None else [cruise]
+    for expocode in codes:
+        troubles += _lost_revisions(store, contents, expocode)
     made: list[Provenance] = []
     tables = 0
-    for expocode in contents.cruises if cruise is None else (cruise,):
+    for expocode in codes:
         for key, revision, table in _places(store, expocode):
             try:
                 footer = read_footer(store, key)
@@ -69,6 +72,19 @@ def verify(store: Store, contents: Contents, cruise: str | None = None) -> Verif
     known = {sentence for one in contents.cruises.values() for sentence in one.troubles}
     news = tuple(sentence for sentence in dict.fromkeys(troubles) if sentence not in known)
     return Verified(good, tables, news, tuple(strangers))
+
+
+def _lost_revisions(store: Store, contents: Contents, expocode: str) -> Iterator[str]:
+    """Yield a sentence for each table of an earlier revision that is no longer there."""
+    made = contents.cruises[expocode].provenance
+    for revision in range(1, made.revision if made else 1):
+        for table in TABLE_NAMES:
+            key = layout.superseded_key(expocode, revision, table)
+            if store.size(key) is None:
+                yield (
+                    f"{store.where(key)}: the {table} of revision {revision} are no longer there; no run makes an"
+                    " earlier revision again; put the file back from a copy."
+                )
 
 
 def _places(store: Store, expocode: str) -> Iterator[tuple[str, int | None, str]]:

@@ -1,108 +1,103 @@
-"""The flow under Prefect, with its embedded server and with a real one on loopback: the same bytes as without."""
+"""A run by hand as a Prefect flow: the same bytes as without, nobody called, and stopped by an interrupt."""
 
 from __future__ import annotations
 
-import json
 import os
-import socket
+import signal
 import subprocess
-import sys
 import time
-import urllib.request
 from typing import TYPE_CHECKING
 
 import pytest
 
-from tests.flows.conftest import FIXTURES, ROOT, Outcome, hashes
+from tests.flows.conftest import FIXTURES, ROOT, Outcome, call, hashes
+from tests.flows.prefect_server import COMMAND, environment, started, wait_for
 
 if TYPE_CHECKING:
-    from collections.abc import Iterator
     from pathlib import Path
 
-START_SECONDS = 120.0
-
-
-def environment(home: Path, **more: str) -> dict[str, str]:
-    """Return an environment in which Prefect keeps everything below ``home``."""
-    kept = {name: value for name, value in os.environ.items() if not name.startswith("PREFECT_")}
-    return {
-        **kept,
-        "PREFECT_HOME": str(home),
-        "PREFECT_SERVER_ANALYTICS_ENABLED": "false",
-        "DO_NOT_TRACK": "1",
-        **more,
-    }
+# Written beside the tests' own files and found by every Python process that is started: what it connects to, listens
+# on and looks up.
+LISTENER = """
+import os, sys
+def _listen(event, arguments):
+    if event in ("socket.connect", "socket.bind", "socket.sendto"):
+        where = arguments[1]
+    elif event == "socket.getaddrinfo":
+        where = arguments[0]
+    else:
+        return
+    name = where[0] if isinstance(where, tuple) else where
+    with open(os.environ["LISTENER_FILE"], "a") as file:
+        file.write(f"{event} {name!r}\\n")
+sys.addaudithook(_listen)
+"""
 
 
 def run_flow(archive: Path, env: dict[str, str], *more: str) -> subprocess.CompletedProcess[str]:
     """Run the command over the invented cruises in a process of its own."""
-    code = "import sys; from flows.cli import main; sys.exit(main(sys.argv[1:]))"
     arguments = ["run", str(FIXTURES / "inbox"), "--archive", str(archive), "--sources"]
     return subprocess.run(
-        [sys.executable, "-c", code, *arguments, str(FIXTURES / "sources.toml"), *more],
+        [*COMMAND, *arguments, str(FIXTURES / "sources.toml"), *more],
         capture_output=True, text=True, check=False, cwd=ROOT, env=env, timeout=300,
     )  # fmt: skip
 
 
-def test_the_embedded_server_needs_no_set_up(tmp_path: Path, demonstration: tuple[Path, Outcome]) -> None:
+@pytest.fixture(scope="module")
+def home(tmp_path_factory: pytest.TempPathFactory) -> Path:
+    """Return a directory for Prefect, in which its server has run once."""
+    return tmp_path_factory.mktemp("prefect")
+
+
+def servers(home: Path) -> list[str]:
+    """Return the processes that work with a directory of Prefect."""
+    found = []
+    for process in os.listdir("/proc"):
+        try:
+            with open(f"/proc/{process}/environ", "rb") as file:
+                if f"PREFECT_HOME={home}\0".encode() in file.read():
+                    found.append(process)
+        except OSError:
+            continue
+    return found
+
+
+def test_it_needs_no_set_up_gives_the_same_bytes_and_calls_nobody(
+    home: Path, tmp_path: Path, demonstration: tuple[Path, Outcome]
+) -> None:
     archive, direct = demonstration
-    done = run_flow(tmp_path / "archive", environment(tmp_path / "prefect"), "--flow")
+    (tmp_path / "sitecustomize.py").write_text(LISTENER, encoding="utf-8")
+    env = environment(home, LISTENER_FILE=str(tmp_path / "heard"))
+    env["PYTHONPATH"] = f"{tmp_path}{os.pathsep}{ROOT}"
+    done = run_flow(tmp_path / "archive", env, "--flow")
     assert done.returncode == 0, done.stderr
     assert done.stdout.splitlines()[:-1] == direct.out.splitlines()[:-1]
-    assert "Traceback" not in done.stderr
+    assert done.stderr == ""
     assert hashes(tmp_path / "archive") == hashes(archive)
+    assert servers(home) == []
+    heard = set((tmp_path / "heard").read_text(encoding="utf-8").splitlines())
+    assert "socket.bind '127.0.0.1'" in heard
+    assert "socket.connect '127.0.0.1'" in heard
+    allowed = {"'127.0.0.1'", "b'127.0.0.1'", "'localhost'", "''", "None"}
+    assert {line for line in heard if line.split(" ", 1)[1] not in allowed} == set()
+    assert "socket.bind ''" not in heard, "everywhere"
 
 
-@pytest.fixture
-def server(tmp_path: Path) -> Iterator[str]:
-    """Start a Prefect server on loopback and return the address of its interface."""
-    with socket.socket() as free:
-        free.bind(("127.0.0.1", 0))
-        port = free.getsockname()[1]
-    log = (tmp_path / "server.log").open("wb")
-    process = subprocess.Popen(
-        [sys.executable, "-m", "prefect", "server", "start", "--host", "127.0.0.1", "--port", str(port)],
-        stdout=log, stderr=log, env=environment(tmp_path / "server"),
-    )  # fmt: skip
-    address = f"http://127.0.0.1:{port}/api"
-    try:
-        _wait_until_healthy(address, process)
-        yield address
-    finally:
-        process.terminate()
-        process.wait(timeout=30)
-        log.close()
-
-
-def _wait_until_healthy(address: str, process: subprocess.Popen[bytes]) -> None:
-    until = time.monotonic() + START_SECONDS
-    while time.monotonic() < until:
-        assert process.poll() is None, "the server ended at once"
-        try:
-            with urllib.request.urlopen(f"{address}/health", timeout=2) as answer:  # noqa: S310 - loopback
-                if answer.status == 200:
-                    return
-        except OSError:
-            time.sleep(0.2)
-    pytest.fail("the Prefect server did not start")
-
-
-def test_a_configured_server_is_used_and_keeps_the_summary(
-    server: str, tmp_path: Path, demonstration: tuple[Path, Outcome]
+def test_an_interrupt_stops_it_within_seconds_and_nothing_is_left(
+    home: Path, tmp_path: Path, demonstration: tuple[Path, Outcome]
 ) -> None:
-    done = run_flow(tmp_path / "archive", environment(tmp_path / "client", PREFECT_API_URL=server))
-    assert done.returncode == 0, done.stderr
-    assert hashes(tmp_path / "archive") == hashes(demonstration[0])
-    (flow_run,) = _ask(f"{server}/flow_runs/filter")
-    assert flow_run["state_name"] == "Completed"
-    (artifact,) = _ask(f"{server}/artifacts/filter")
-    assert [row["cruise"] for row in json.loads(artifact["data"])][:2] == ["ZZV120090306", "ZZV220210218"]
-
-
-def _ask(address: str) -> list[dict[str, str]]:
-    request = urllib.request.Request(  # noqa: S310 - loopback
-        address, data=b"{}", headers={"Content-Type": "application/json"}
-    )
-    with urllib.request.urlopen(request, timeout=10) as answer:  # noqa: S310
-        rows: list[dict[str, str]] = json.loads(answer.read())
-    return rows
+    archive = tmp_path / "archive"
+    arguments = ["run", str(FIXTURES / "inbox"), "--archive", str(archive), "--sources"]
+    arguments.append(str(FIXTURES / "sources.toml"))
+    with started([*COMMAND, *arguments, "--flow"], environment(home), tmp_path / "log") as run:
+        wait_for(lambda: list(archive.glob("raw/*/*")), 120.0)  # the first cruise is being made
+        began = time.monotonic()
+        os.killpg(run.pid, signal.SIGINT)  # as a terminal does, to all that it started
+        assert run.wait(timeout=60) == 130
+        assert time.monotonic() - began < 20.0
+    said = (tmp_path / "log").read_text(encoding="utf-8")
+    assert "seawhence: stopped; the archive is whole, and the next run goes on from here." in said.splitlines()
+    assert "Traceback" not in said
+    assert servers(home) == []
+    assert call(*arguments).status == 0
+    assert hashes(archive) == hashes(demonstration[0])

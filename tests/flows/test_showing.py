@@ -127,7 +127,8 @@ def test_a_whole_archive_is_verified(archive: Path) -> None:
     assert outcome.status == 0
     # two editions of the bottle file, the zip, settings and sources; five tables of two revisions
     assert outcome.out.endswith(
-        "\nverified: 5 kept files hashed and 10 tables read are as they were written.\n"
+        "\nverified: 5 kept files hashed, each what its name says; 10 tables read to the end, each whole and of the"
+        " right revision.\n"
     )
     verified = told(archive, "--verify")["verified"]
     assert verified == {"deliveries": 5, "tables": 10, "troubles": [], "strangers": []}
@@ -217,3 +218,16 @@ def test_show_tells_what_the_settings_corrected(tmp_path: Path) -> None:
     )
     assert call("run", inbox, "--archive", archive, "--settings", chosen).status == 0
     assert "  corrected  bottle_oxygen -3: crossovers" in call("show", archive, EXPOCODE).out
+
+
+def test_verify_tells_of_an_earlier_revision_that_is_gone(tmp_path: Path) -> None:
+    inbox, archive = tmp_path / "inbox", tmp_path / "archive"
+    inbox.mkdir()
+    for nitrate in ("30.00", "31.00"):
+        (inbox / "cruise_hy1.csv").write_bytes(bottle_file({"NITRAT": nitrate}))
+        assert call("run", inbox, "--archive", archive).status == 0
+    assert call("show", archive, "--verify").status == 0
+    (archive / f"superseded/{EXPOCODE}/r0001/samples.parquet").unlink()
+    told = call("show", archive, "--verify")
+    assert told.status == 1
+    assert "the samples of revision 1 are no longer there; no run makes an earlier revision again" in told.out

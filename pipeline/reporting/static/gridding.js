@@ -1,0 +1,84 @@
+// Values on a grid over a section: straight between data that are near each other, nothing anywhere else.
+"use strict";
+
+const DEPTH_GAP = {metres: 100, part: 0.15}; // may be interpolated over along a cast: metres, and part of the depth
+const DENSITY_GAP = 0.08; // the same against density, part of the range
+const CAST_GAP = 3; // usual distances between casts that may be interpolated over
+
+/**
+ * Return one profile per place: [{x, y: sorted, v}], of samples with x, y and v; of equal y the mean.
+ */
+function profilesAt(x, y, v) {
+  const places = new Map();
+  for (let k = 0; k < x.length; k++) {
+    if (!Number.isFinite(x[k]) || !Number.isFinite(y[k]) || !Number.isFinite(v[k])) continue;
+    if (!places.has(x[k])) places.set(x[k], []);
+    places.get(x[k]).push([y[k], v[k]]);
+  }
+  return [...places.keys()].sort((a, b) => a - b).map((at) => {
+    const pairs = places.get(at).sort((a, b) => a[0] - b[0]), profile = {x: at, y: [], v: []};
+    for (let k = 0, n; k < pairs.length; k += n) {
+      let sum = 0;
+      for (n = 0; k + n < pairs.length && pairs[k + n][0] === pairs[k][0]; n++) sum += pairs[k + n][1];
+      profile.y.push(pairs[k][0]);
+      profile.v.push(sum / n);
+    }
+    return profile;
+  });
+}
+
+/** Return a profile at the levels, NaN outside its data and where they are farther apart than gap(middle) allows. */
+function atLevels(profile, levels, gap) {
+  const {y, v} = profile, values = new Float64Array(levels.length).fill(NaN);
+  let k = 0;
+  for (let j = 0; j < levels.length; j++) {
+    const level = levels[j];
+    while (k + 1 < y.length && y[k + 1] < level) k++;
+    if (!(level >= y[k]) || k + 1 >= y.length || level > y[k + 1]) continue;
+    const span = y[k + 1] - y[k];
+    if (span <= gap((y[k] + y[k + 1]) / 2)) values[j] = v[k] + ((level - y[k]) / span) * (v[k + 1] - v[k]);
+  }
+  return values;
+}
+
+/** Return the usual distance between neighbouring places, their median. */
+function usualDistance(places) {
+  const steps = sorted(places.slice(1).map((x, k) => x - places[k]).filter((step) => step > 0));
+  return steps.length ? quantile(steps, 0.5) : 1;
+}
+
+/**
+ * Return {values, nx, ny}: a grid of nx columns over [x0, x1] and ny levels over [y0, y1], row by row from y0,
+ * NaN where no data are near.
+ */
+function gridded(profiles, {x0, x1, y0, y1, nx, ny, gap}) {
+  const dx = (x1 - x0) / nx, dy = (y1 - y0) / ny;
+  const levels = Float64Array.from({length: ny}, (_, j) => y0 + (j + 0.5) * dy);
+  const places = profiles.map((profile) => profile.x), usual = usualDistance(places);
+  const columns = profiles.map((profile) => atLevels(profile, levels, gap));
+  const values = new Float64Array(nx * ny).fill(NaN);
+  for (let i = 0, k = -1; i < nx && places.length; i++) {
+    const x = x0 + (i + 0.5) * dx;
+    while (k + 1 < places.length && places[k + 1] <= x) k++;
+    const before = k >= 0 ? k : null, after = k + 1 < places.length ? k + 1 : null;
+    const near = before !== null && after !== null && places[after] - places[before] <= CAST_GAP * usual;
+    for (let j = 0; j < ny; j++) {
+      const a = before === null ? NaN : columns[before][j], b = after === null ? NaN : columns[after][j];
+      let value = NaN;
+      if (near && Number.isFinite(a) && Number.isFinite(b)) {
+        value = a + ((x - places[before]) / (places[after] - places[before])) * (b - a);
+      } else {
+        const toA = Number.isFinite(a) ? x - places[before] : Infinity;
+        const toB = Number.isFinite(b) ? places[after] - x : Infinity;
+        if (Math.min(toA, toB) <= usual / 2) value = toA <= toB ? a : b;
+      }
+      values[j * nx + i] = value;
+    }
+  }
+  return {values, nx, ny};
+}
+
+/** Return how far apart two samples of a cast may be at a depth, metres. */
+function depthGap(depth) {
+  return DEPTH_GAP.metres + DEPTH_GAP.part * depth;
+}
