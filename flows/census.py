@@ -3,7 +3,9 @@
 from __future__ import annotations
 
 import json
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, TypeVar
+
+from pydantic import BaseModel
 
 from flows.census_words import blocks_of
 from flows.pages import as_markdown, as_text
@@ -23,6 +25,8 @@ if TYPE_CHECKING:
     from pipeline.archive import Contents, Provenance, Store
     from pipeline.census import Census
     from pipeline.census_settings import CensusSettings
+
+Model = TypeVar("Model", bound=BaseModel)
 
 
 def census(chosen: argparse.Namespace) -> int:
@@ -70,7 +74,9 @@ def _asked(chosen: argparse.Namespace) -> CensusSettings:
             f"--boundaries {' '.join(f'{one:g}' for one in boundaries)}: expected densities from the lightest to the"
             " densest, each once; order them."
         )
-    return settings.model_copy(update={**given, "boundaries": tuple(given.get("boundaries", settings.boundaries))})
+    return settings.model_copy(
+        update={**given, "boundaries": tuple(given.get("boundaries", settings.boundaries))}
+    )
 
 
 def _resolved(
@@ -92,19 +98,19 @@ def _resolved(
     samples = read_table(store, cruise, "samples")
     if not samples.num_rows:
         raise UsageProblem(f"{cruise}: it has no bottle samples, so there is nothing to take a census of.")
-    settings = Settings.model_validate(_kept(store, made, made.settings_sha256, "settings"))
-    catalogue = Catalogue.model_validate(_kept(store, made, made.catalogue_sha256, "source waters"))
+    settings = _kept(store, made, made.settings_sha256, Settings, "settings")
+    catalogue = _kept(store, made, made.catalogue_sha256, Catalogue, "source waters")
     return Resolved(cruise, samples, catalogue, settings.model_copy(update={"census": asked}))
 
 
-def _kept(store: Store, made: Provenance, sha256: str, what: str) -> Any:
+def _kept(store: Store, made: Provenance, sha256: str, model: type[Model], what: str) -> Model:
     """Return what a cruise was made with, which the archive keeps beside the delivered bytes."""
     try:
-        return json.loads(vault.read(store, sha256))
+        return model.model_validate_json(vault.read(store, sha256))
     except (ArchiveProblem, ValueError) as problem:
         raise ArchiveProblem(
-            f"{made.expocode}: the {what} that its tables were made with are no longer in the archive; run again to"
-            " make them anew."
+            f"{made.expocode}: the {what} that its tables were made with are not in the archive, or this version does"
+            " not know them; run again to make the tables anew."
         ) from problem
 
 

@@ -59,7 +59,7 @@ def _census(census: Census) -> Iterator[Block]:
             ("not resolved, because", "samples", *(("km2",) if layout.has_width else ()), "of all"),
             *(
                 (_REASONS.get(reason, reason.replace("_", " ")), str(section.unresolved.get(reason, "-")),
-                 *((_size(census, area),) if layout.has_width else ()), f"{100 * area / whole:.1f} %")
+                 *((_size(census, area),) if layout.has_width else ()), _of_all(area, whole))
                 for reason in reasons
                 for area in [float(layout.unresolved[reason][0]) if reason in layout.unresolved else 0.0]
             ),
@@ -73,8 +73,8 @@ def _extent(census: Census) -> str:
     count, samples = len(section.names), section.n_resolved
     if not layout.has_width:
         return (
-            f"{samples} resolved samples of {_count(count, 'station')}, no two of them near enough to each other to"
-            " make a section: shares are those of the columns of water taken together, and there is no area."
+            f"{samples} resolved samples of {_count(count, 'station')}, and no two stations near enough to each other"
+            " to make a section: shares are those of the columns of water taken together, and there is no area."
         )
     filled = float(section.lengths[section.filled].sum())
     return (
@@ -133,8 +133,12 @@ def _change(found: Comparison) -> Iterator[Block]:
                 for row in rows
             ),
         ])  # fmt: skip
-        if clear := [_clear(found, row, k) for row in rows[1:] for k in range(len(one.sources)) if _ratio(found, row, k)
-                     >= _CLEAR]:
+        if clear := [
+            _clear(found, row, k)
+            for row in rows[1:]
+            for k in range(len(one.sources))
+            if _ratio(found, row, k) >= _CLEAR
+        ]:
             yield Paragraph(
                 f"More than twice the uncertainty, of {(len(rows) - 1) * len(one.sources)} changes by class (of which"
                 f" chance alone makes 5 % so large): {'; '.join(clear)}."
@@ -151,8 +155,14 @@ def _ratio(found: Comparison, row: int, k: int) -> float:
 
 
 def _clear(found: Comparison, row: int, k: int) -> str:
-    cell = _percent(float(found.change.difference[row, k]), float(found.change.uncertainty[row, k]), signed=True)
+    cell = _percent(
+        float(found.change.difference[row, k]), float(found.change.uncertainty[row, k]), signed=True
+    )
     return f"{found.one.sources[k]} {_class(found.one, row)} {cell}"
+
+
+def _of_all(area: float, whole: float) -> str:
+    return f"{100 * area / whole:.1f} %" if whole > 0 else "-"
 
 
 def _of(part: float) -> str:

@@ -29,6 +29,7 @@ COMMANDS = {
     "census": ("census", "census"),
     "export": ("exporting", "export"),
     "dictionary": ("dictionary", "dictionary"),
+    "report": ("reporting", "report"),
     "speciation": ("speciation", "print_speciation"),
 }
 

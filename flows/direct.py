@@ -16,6 +16,7 @@ from flows.remembered import with_remembered_sources
 from flows.retrying import make_with_retries
 from flows.stopping import stoppable
 from flows.work import refuse_file, run_job, tagged_samples
+from flows.workers import make_at_once, usual_workers
 from pipeline.archive import clean_staging, locked, open_archive, read_contents, read_table
 from pipeline.problems import ArchiveProblem
 
@@ -63,14 +64,17 @@ def bring_archive_up_to_date(inbox: Place, config: RunConfig, make_all: MakeAll)
         if summary is None:
             raise
         summary = replace(summary, trouble=str(problem))  # what was done is told all the same
-    return replace(summary, delivered=len(files))
+    notes = dict.fromkeys(note for file in files for note in file.beside.notes)
+    return replace(summary, delivered=len(files), notes=tuple(notes))
 
 
-def run_directly(inbox: Place, config: RunConfig, progress: Progress = iter) -> RunSummary:
-    """Bring the archive up to date with an inbox, one cruise after the other.
+def run_directly(
+    inbox: Place, config: RunConfig, progress: Progress = iter, workers: int | None = None
+) -> RunSummary:
+    """Bring the archive up to date with an inbox: one cruise after the other, or several at once.
 
-    A cruise is made in this process; in one apart where the settings limit its seconds, since nothing else ends a
-    library's call.
+    One after the other they are made in this process; in one apart where the settings limit a cruise's seconds,
+    since nothing else ends a library's call.
 
     Parameters
     ----------
@@ -78,6 +82,8 @@ def run_directly(inbox: Place, config: RunConfig, progress: Progress = iter) -> 
         As ``bring_archive_up_to_date`` takes them.
     progress
         Wraps the jobs, to show how far the run is.
+    workers
+        How many cruises are made at once, in processes of their own; as the machine and the work allow, if None.
 
     Raises
     ------
@@ -90,6 +96,9 @@ def run_directly(inbox: Place, config: RunConfig, progress: Progress = iter) -> 
         make = run_job if limit is None else partial(apart.make, seconds=limit)
 
         def make_all(jobs: Sequence[Job], config: RunConfig) -> Iterable[CruiseRecord]:
+            at_once = min(usual_workers(jobs) if workers is None else workers, len(jobs))
+            if at_once > 1:
+                return make_at_once(jobs, config, at_once, progress, _tell)
             with stoppable() as stop_if_asked:
 
                 def make_one(job: Job) -> CruiseRecord:

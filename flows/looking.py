@@ -84,17 +84,24 @@ def _look(path: Path, settings: Settings) -> Look | Refused:
         message = f"{shown}: the file cannot be read ({error.strerror}); give another file."
         return Refused(Refusal(shown, "unreadable", message))
     sha256 = hashlib.sha256(data).hexdigest()
-    beside = Folder(path.parent, CRUISE_FILE).says(path.name)
+    beside = Folder(path.parent, CRUISE_FILE, _names(path.parent)).says(path.name)
     if beside.fault:
         message = f"{name}: not used, because the {CRUISE_FILE} beside it cannot be: {beside.fault}"
         return Refused(Refusal(name, "broken-description", message), len(data), sha256)
     try:
         delivery = read_delivery(name, data, settings.reading, beside.description)
     except DeliveryProblem as problem:
-        return Refused(Refusal(name, problem.reason, str(problem)), len(data), sha256)
+        return Refused(Refusal(name, problem.reason, beside.explained(problem)), len(data), sha256)
     delivery = replace(delivery, described_by=beside.sha256)
     checked = check_table(delivery.table, settings, delivery.findings)
     return Look(delivery, in_line_order([*delivery.findings, *checked.findings]))
+
+
+def _names(folder: Path) -> set[str]:
+    try:
+        return {path.name for path in folder.iterdir()}
+    except OSError:
+        return set()
 
 
 def in_line_order(findings: Sequence[Finding]) -> tuple[Finding, ...]:

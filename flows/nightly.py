@@ -25,7 +25,7 @@ from flows.records import CruiseRecord, ExitStatus, RunSummary
 from flows.retrying import make_with_retries
 from flows.work import RunConfig
 from pipeline.mixing import read_catalogue
-from pipeline.problems import Problem
+from pipeline.problems import Problem, UsageProblem
 from pipeline.settings import read_settings
 
 if TYPE_CHECKING:
@@ -98,7 +98,11 @@ def tell_of_crash(
 
 @flow(name="seawhence", task_runner=task_runner(), validate_parameters=False, on_crashed=[tell_of_crash])
 def bring_up_to_date(
-    inbox: str, archive: str, sources: str | None = None, settings: str | None = None
+    inbox: str,
+    archive: str,
+    sources: str | None = None,
+    settings: str | None = None,
+    summary: str | None = None,
 ) -> State[RunSummary | Problem]:
     """Bring an archive up to date with an inbox.
 
@@ -108,6 +112,8 @@ def bring_up_to_date(
         Their places.
     sources, settings
         TOML files, read when the run begins.
+    summary
+        Where the summary is written as JSON too.
 
     """
     log = get_run_logger()
@@ -118,16 +124,21 @@ def bring_up_to_date(
             read_catalogue(Path(sources)) if sources else None,
         )
         with _processes():
-            summary = bring_archive_up_to_date(place(inbox), config, make_in_batches)
+            done = bring_archive_up_to_date(place(inbox), config, make_in_batches)
     except Problem as problem:
         _notify_if_deployed(archive, None, str(problem))
         return Failed(message=str(problem), data=problem)
-    for line in telling.brief_lines(summary):
+    for line in telling.brief_lines(done):
         log.info(line)
-    _record(summary)
-    _notify_if_deployed(archive, summary)
-    outcome = Failed if summary.exit_status is ExitStatus.FAULT else Completed
-    return outcome(message=summary.closing(), data=summary)
+    _record(done)
+    _notify_if_deployed(archive, done)
+    if summary:
+        try:
+            telling.write_summary(Path(summary), done)
+        except UsageProblem as problem:
+            log.warning(str(problem))
+    outcome = Failed if done.exit_status is ExitStatus.FAULT else Completed
+    return outcome(message=done.closing(), data=done)
 
 
 def _record(summary: RunSummary) -> None:

@@ -9,6 +9,8 @@ from flows.places import place
 from flows.table_parsers import add_tables
 from pipeline.version import VERSION
 
+_MOST_WORKERS = 256
+
 DESCRIPTION = """\
 Turn what research cruises deliver, bottle and CTD files, into an archive of Parquet tables in which every
 sample is checked, converted to TEOS-10, given its tracers and resolved into the source waters it was mixed
@@ -105,6 +107,18 @@ example:
 tells how carbon is divided into carbon dioxide, bicarbonate and carbonate over pH, with the constants of the
 settings, and where ocean water lies."""
 
+REPORT_EXAMPLE = """\
+example:
+  seawhence report archive --out pages
+  seawhence report archive ZZV120090306 --out pages
+
+writes a page of the archive and one of each cruise, which open from the disk: no server, no network. The data of
+every figure lie beside them as CSV files."""
+
+REPORT_STATUSES = """\
+exit status: 0 every page was written; 1 cruises were left out (each is told why); 2 wrong usage, or an archive that
+cannot be read; 3 a fault of ours"""
+
 SPECIATION_STATUSES = """\
 exit status: 0 the table was made; 2 wrong usage; 3 a fault of ours"""
 
@@ -136,6 +150,10 @@ def parser() -> argparse.ArgumentParser:
         "--flow", action="store_true",
         help="run as a Prefect flow; always so where PREFECT_API_URL names a server; the tables are the same",
     )  # fmt: skip
+    run.add_argument(
+        "--workers", type=_number_of_workers, metavar="N",
+        help="how many cruises are made at once; as the machine and the work allow without it; the tables are the same",
+    )  # fmt: skip
 
     _add_nightly(commands)
     check = commands.add_parser(
@@ -162,6 +180,7 @@ def parser() -> argparse.ArgumentParser:
     _add_changes(commands)
     _add_sources(commands)
     _add_crossovers(commands)
+    _add_report(commands)
     _add_speciation(commands)
     add_tables(commands)
     return top
@@ -187,6 +206,20 @@ def _add_what_is_run(run: argparse.ArgumentParser) -> None:
         "--notify-command", metavar="COMMAND", help="run it after the run, the summary as JSON on its standard input"
     )
     run.add_argument("--notify-url", metavar="URL", help="post the summary there as JSON after the run")
+
+
+def _number_of_workers(text: str) -> int:
+    """Return a number of processes.
+
+    Raises
+    ------
+    ArgumentTypeError
+        Where it is none that can be started.
+
+    """
+    if not text.isdecimal() or not 0 < int(text) <= _MOST_WORKERS:
+        raise argparse.ArgumentTypeError(f"found '{text}'; expected a whole number from 1 to {_MOST_WORKERS}")
+    return int(text)
 
 
 def _add_nightly(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> None:
@@ -286,6 +319,26 @@ def _add_crossovers(commands: argparse._SubParsersAction[argparse.ArgumentParser
     )
     crossovers.add_argument(
         "--settings", type=Path, metavar="FILE.toml", help="settings; the defaults without it"
+    )
+
+
+def _add_report(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> None:
+    """Add the parser of ``seawhence report``."""
+    report = commands.add_parser(
+        "report", help="write pages to look at",
+        description="Write pages of an archive and its cruises, with figures, sentences and the data as CSV files.",
+        epilog=REPORT_EXAMPLE + "\n\n" + REPORT_STATUSES, formatter_class=_Plain,
+    )  # fmt: skip
+    report.add_argument("archive", type=Path, metavar="ARCHIVE", help="the archive's directory")
+    report.add_argument(
+        "cruises", nargs="*", metavar="CRUISE", help="expocodes of the cruises that get a page; all without it"
+    )
+    report.add_argument("--out", type=Path, required=True, metavar="DIR", help="where the pages are written")
+    report.add_argument(
+        "--settings",
+        type=Path,
+        metavar="FILE.toml",
+        help="whose [use] decides which values are shown; the defaults without it",
     )
 
 

@@ -79,9 +79,11 @@ def list_inbox(inbox: Place, archive: Place) -> list[InboxFile]:
     paths: Sequence[Place] = (
         sorted(_paths(inbox, archive)) if isinstance(inbox, Path) else paths_in_bucket(inbox, archive)
     )
+    names: dict[Any, set[str]] = {}
+    for path in paths:
+        names.setdefault(path.parent, set()).add(path.name)
     said = {
-        folder: Folder(folder, _shown_path(folder / CRUISE_FILE, inbox))
-        for folder in {path.parent for path in paths}
+        folder: Folder(folder, _shown_path(folder / CRUISE_FILE, inbox), here) for folder, here in names.items()
     }
     return [_inbox_file(path, inbox, said[path.parent].says(path.name)) for path in paths]
 
@@ -96,7 +98,10 @@ def _paths(inbox: Path, archive: Place) -> list[Path]:
         )
 
     def unreadable(error: OSError) -> None:
-        raise UsageProblem(f"{error.filename}: the inbox cannot be read ({error.strerror}).") from error
+        raise UsageProblem(
+            f"{error.filename}: the inbox cannot be read ({error.strerror}); see that its disk or share is there"
+            " and may be read, and run again."
+        ) from error
 
     paths: list[Path] = []
     for folder, folders, names in os.walk(inbox, onerror=unreadable):

@@ -98,6 +98,7 @@ class RunSummary:
     refusals: tuple[Refusal, ...]  # of files that belong to no cruise
     same_bytes: tuple[tuple[str, str], ...] = ()  # a file that is the same as another, and that other
     delivered: int | None = None  # files in the inbox
+    notes: tuple[str, ...] = ()  # on what is said of files that are not there
     trouble: str = ""  # of the archive after the last cruise
 
     @property
@@ -133,7 +134,10 @@ class RunSummary:
     def lines(self) -> list[str]:
         """Return the summary as lines for a reader."""
         lines = [cruise.line() for cruise in self.cruises]
-        lines += [f"refused  {refusal.message}" for refusal in self.all_refusals]
+        told = {cruise.message for cruise in self.cruises if cruise.state is State.REFUSED}
+        refused = dict.fromkeys(refusal.message for refusal in self.all_refusals)
+        lines += [f"refused  {message}" for message in refused if message not in told]
+        lines += [f"note  {sentence}" for sentence in self.notes]
         lines += [f"note  {file}: the same bytes as {other}; read once." for file, other in self.same_bytes]
         lines += self.slow_lines()
         lines += [f"failed  {self.trouble}"] if self.trouble else []
@@ -170,6 +174,7 @@ class RunSummary:
             "trouble": self.trouble,
             "cruises": [asdict(cruise) for cruise in self.cruises],
             "refused": [asdict(refusal) for refusal in self.all_refusals],
+            "notes": list(self.notes),
             "same_bytes": [{"file": file, "same_as": other} for file, other in self.same_bytes],
         }
 

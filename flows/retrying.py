@@ -32,7 +32,7 @@ def make_with_retries(
     make: Callable[[Job], CruiseRecord],
     waits: Sequence[float],
     tell: Callable[[str], None],
-    sleep: Callable[[float], None] = time.sleep,
+    sleep: Callable[[float], object] = time.sleep,
 ) -> list[CruiseRecord]:
     """Make cruises one after the other, then those again that met a fault which may pass.
 

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import json
 import os
 import sys
 from typing import TYPE_CHECKING
@@ -11,16 +10,15 @@ from flows.direct import run_directly
 from flows.embedded import Server, prepare_environment, server_is_configured
 from flows.notifying import message, notify, whom
 from flows.records import ExitStatus
-from flows.telling import brief_lines
+from flows.telling import brief_lines, write_summary
 from flows.work import RunConfig
 from pipeline.mixing import read_catalogue
-from pipeline.problems import Problem, UsageProblem
+from pipeline.problems import Problem
 from pipeline.settings import read_settings
 
 if TYPE_CHECKING:
     import argparse
     from collections.abc import Iterable, Iterator
-    from pathlib import Path
 
     from flows.notifying import Notify
     from flows.plan import Job
@@ -40,7 +38,7 @@ def run_once(chosen: argparse.Namespace, to: Notify, *, as_flow: bool, brief: bo
     Parameters
     ----------
     chosen
-        The arguments: inbox, archive, sources, settings, summary.
+        The arguments: inbox, archive, sources, settings, summary, and workers of a run that Prefect does not drive.
     to
         Whom to notify, of a run that could not be made too.
     as_flow
@@ -56,7 +54,9 @@ def run_once(chosen: argparse.Namespace, to: Notify, *, as_flow: bool, brief: bo
             settings=settings,
             catalogue=read_catalogue(chosen.sources) if chosen.sources else None,
         )
-        summary = _run_as_flow(chosen) if as_flow else run_directly(chosen.inbox, config, progress=_with_bar)
+        summary = (
+            _run_as_flow(chosen) if as_flow else run_directly(chosen.inbox, config, _with_bar, chosen.workers)
+        )
     except Problem as problem:
         notify(to, message(str(chosen.archive), None, str(problem), ExitStatus.USAGE))
         raise
@@ -70,7 +70,7 @@ def run_once(chosen: argparse.Namespace, to: Notify, *, as_flow: bool, brief: bo
         print(f"seawhence: {sentence}", file=sys.stderr)
     notify(to, message(str(chosen.archive), summary))
     if chosen.summary:
-        _write_summary(chosen.summary, summary)
+        write_summary(chosen.summary, summary)
     return summary.exit_status
 
 
@@ -111,13 +111,3 @@ def _with_bar(jobs: Iterable[Job]) -> Iterator[Job]:
     from rich.progress import track  # noqa: PLC0415
 
     yield from track(jobs, description="cruises", console=Console(stderr=True), transient=True)
-
-
-def _write_summary(path: Path, summary: RunSummary) -> None:
-    text = json.dumps(summary.to_json(), indent=2, ensure_ascii=False) + "\n"
-    try:
-        path.write_text(text, encoding="utf-8")
-    except OSError as error:
-        raise UsageProblem(
-            f"{path}: the summary cannot be written ({error.strerror}); give another file. The archive is done."
-        ) from error

@@ -106,7 +106,7 @@ def _deployment(chosen: argparse.Namespace, cron: str) -> RunnerDeployment:
 
     from flows.nightly import bring_up_to_date  # noqa: PLC0415
 
-    places = {name: getattr(chosen, name) for name in ("inbox", "archive", "sources", "settings")}
+    places = {name: getattr(chosen, name) for name in ("inbox", "archive", "sources", "settings", "summary")}
     pool: dict[str, Any] = {}
     if chosen.pool:
         environment = {name: os.environ[name] for name in _FOR_EVERY_RUN}
@@ -185,6 +185,8 @@ def _serve(chosen: argparse.Namespace, cron: str) -> int:
     lost = threading.Event()
     if own is not None:
         threading.Thread(target=_end_with, args=(own, lost), daemon=True).start()
+    # Asked to end, the runner ends its runs and says so to the server; interrupted, it says nothing.
+    signal.signal(signal.SIGINT, lambda *_: signal.raise_signal(signal.SIGTERM))
     # The server refuses a second run of the deployment; left to this process it would only wait for the first.
     serve(deployment, pause_on_shutdown=False, print_starting_message=False)
     if lost.is_set():
@@ -225,7 +227,8 @@ def _see_to_dead_runs() -> None:
             AutomationCore(
                 name=DEAD_RUNS,
                 trigger=EventTrigger(
-                    after={"prefect.flow-run.heartbeat"},
+                    # The first heartbeat comes half a minute after the start.
+                    after={"prefect.flow-run.Running", "prefect.flow-run.heartbeat"},
                     expect={"prefect.flow-run.heartbeat", *ends},
                     match={"prefect.resource.id": "prefect.flow-run.*"},
                     match_related={

@@ -46,14 +46,20 @@ def add_tables(commands: argparse._SubParsersAction[argparse.ArgumentParser]) ->
     )  # fmt: skip
     census.add_argument("archive", type=place, metavar="ARCHIVE", help="the archive's directory")
     census.add_argument("cruise", metavar="CRUISE", help="expocode of a cruise")
-    census.add_argument("other", nargs="?", metavar="CRUISE2", help="another occupation, compared with the first")
+    census.add_argument(
+        "other", nargs="?", metavar="CRUISE2", help="another occupation, compared with the first"
+    )
     census.add_argument("--density", choices=("sigma0", "sigma2", "sigma4"), help="what the classes are of")
     census.add_argument(
         "--boundaries", type=float, nargs="+", metavar="SIGMA", help="kg/m3 between the density classes"
     )
     census.add_argument("--settings", type=Path, metavar="FILE.toml", help="settings; of it [census] is used")
-    census.add_argument("--format", choices=("text", "json", "markdown"), default="text", help="default: text")
-    census.add_argument("--out", type=Path, metavar="FILE.parquet", help="write the census there as a table too")
+    census.add_argument(
+        "--format", choices=("text", "json", "markdown"), default="text", help="default: text"
+    )
+    census.add_argument(
+        "--out", type=Path, metavar="FILE.parquet", help="write the census there as a table too"
+    )
 
     export = commands.add_parser(
         "export", help="write a cruise as a CF NetCDF file",

@@ -1,14 +1,17 @@
-"""What a run that nobody watched did, for those who look later: a few lines, a Markdown page, rows of a table."""
+"""What a run that nobody watched did, for those who look later: a few lines, a Markdown page, rows of a table, JSON."""
 
 from __future__ import annotations
 
+import json
 from typing import TYPE_CHECKING, Any
 
 from flows.markdown import escaped, table
 from flows.records import State
+from pipeline.problems import UsageProblem
 
 if TYPE_CHECKING:
     from collections.abc import Iterable
+    from pathlib import Path
 
     from flows.records import CruiseRecord, RunSummary
 
@@ -59,11 +62,30 @@ def page(summary: RunSummary) -> str:
         "",
     ]
     lines += _section("Failed", (c.line() for c in by_state[State.FAILED]))
-    lines += _section("Refused", (refusal.message for refusal in summary.all_refusals))
+    lines += _section("Refused", dict.fromkeys(refusal.message for refusal in summary.all_refusals))
+    lines += _section("Notes", summary.notes)
     lines += _section("New", map(_with_seconds, by_state[State.NEW]))
     lines += _section("Revised", map(_with_seconds, by_state[State.REVISED]))
     lines += _section("Slow", summary.slow_lines())
     return "\n".join(lines)
+
+
+def write_summary(path: Path, summary: RunSummary) -> None:
+    """Write the summary as JSON.
+
+    Raises
+    ------
+    UsageProblem
+        If the file cannot be written.
+
+    """
+    text = json.dumps(summary.to_json(), indent=2, ensure_ascii=False) + "\n"
+    try:
+        path.write_text(text, encoding="utf-8")
+    except OSError as error:
+        raise UsageProblem(
+            f"{path}: the summary cannot be written ({error.strerror}); give another file. The archive is done."
+        ) from error
 
 
 def _with_seconds(cruise: CruiseRecord) -> str:

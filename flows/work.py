@@ -13,12 +13,13 @@ from typing import TYPE_CHECKING
 
 import pyarrow.compute as pc
 
+from flows.large import way_of
 from flows.places import place
 from flows.records import CruiseRecord, Refusal, State
 from flows.retrying import may_pass
 from pipeline.archive import DeliveredFile, Provenance, open_archive, publish, read_cruise, vault
 from pipeline.problems import ArchiveProblem, DeliveryProblem
-from pipeline.process import process_cruise, settle_editions, shared_rows
+from pipeline.process import settle_editions, shared_rows
 from pipeline.reading import read_cruise_file, read_delivery
 
 if TYPE_CHECKING:
@@ -26,6 +27,7 @@ if TYPE_CHECKING:
 
     import pyarrow as pa
 
+    from flows.large import Way
     from flows.plan import InboxFile, Job
     from pipeline.archive import Account, CruiseContents, Store
     from pipeline.mixing import Catalogue
@@ -59,7 +61,7 @@ def _attempt(job: Job, config: RunConfig) -> CruiseRecord:
     try:
         return _make(job, config, refusals)
     except DeliveryProblem as problem:
-        refusals.append(Refusal(", ".join(file.name for file in job.files), problem.reason, str(problem)))
+        refusals += [Refusal(file.name, problem.reason, str(problem)) for file in job.files]
         return CruiseRecord(job.expocode, State.REFUSED, refusals=tuple(refusals), message=_first(refusals))
     except _InboxFault as fault:
         passing = may_pass(fault)
@@ -93,7 +95,7 @@ def refuse_file(file: InboxFile, config: RunConfig) -> Refusal:
         data = place(file.path).read_bytes()
         read_delivery(file.name, data, config.settings.reading, file.beside.description)
     except DeliveryProblem as problem:
-        return Refusal(file.name, problem.reason, str(problem))
+        return Refusal(file.name, problem.reason, file.beside.explained(problem))
     except ArchiveProblem as problem:
         return Refusal(file.name, "not-kept", f"{file.name}: it was not looked at, because of {problem}")
     except OSError as error:
@@ -104,16 +106,26 @@ def refuse_file(file: InboxFile, config: RunConfig) -> Refusal:
 def _make(job: Job, config: RunConfig, refusals: list[Refusal]) -> CruiseRecord:
     store = open_archive(config.archive)
     config = replace(config, settings=config.settings.for_cruise(job.expocode))
-    delivered = _read_inbox(job, config, store, refusals)
+    with way_of(job, store, config.settings.reading) as way:
+        return _make_in(way, job, config, store, refusals)
+
+
+def _make_in(way: Way, job: Job, config: RunConfig, store: Store, refusals: list[Refusal]) -> CruiseRecord:
+    delivered = _read_inbox(way, job, config, store, refusals)
     if not delivered:
         return CruiseRecord(job.expocode, State.REFUSED, refusals=tuple(refusals), message=_first(refusals))
-    delivered = settle_editions(delivered, {file.name for file in job.files if file.beside.stands})
-    deliveries = [*delivered, *_read_archived(job, config, store, delivered)]
+    delivered = settle_editions(
+        delivered,
+        {file.name for file in job.files if file.beside.stands},
+        sorted({name for file in job.files for name in file.beside.absent}),
+    )
+    deliveries = [*delivered, *_read_archived(way, job, config, store, delivered)]
     deliveries.sort(key=lambda delivery: (delivery.kind, delivery.name))
-    processed = process_cruise(job.expocode, deliveries, config.settings, config.catalogue)
+    processed = way.process(job.expocode, deliveries, config.settings, config.catalogue)
     _keep_choices(config, store)
     before = read_cruise(store, job.expocode)
-    made_from = _provenance(job.expocode, deliveries, processed.accounts, config)
+    files = _delivered_files(way, deliveries, processed.accounts)
+    made_from = _provenance(job.expocode, files, config)
     revision = publish(store, made_from, processed.tables)
     known = before.provenance is not None or revision > 1
     samples = processed.tables["samples"]
@@ -122,9 +134,9 @@ def _make(job: Job, config: RunConfig, refusals: list[Refusal]) -> CruiseRecord:
         State.REVISED if known else State.NEW,
         revision,
         files=tuple(delivery.name for delivery in deliveries),
-        rows=sum(delivery.rows for delivery in deliveries),
-        kept=sum(delivery.table.num_rows for delivery in deliveries),
-        rejected=sum(len(delivery.rejects) for delivery in deliveries),
+        rows=sum(file.rows for file in files),
+        kept=sum(file.kept for file in files),
+        rejected=sum(file.rejected for file in files),
         findings=len(processed.findings),
         samples=samples.num_rows,
         tagged=tagged_samples(samples),
@@ -159,7 +171,9 @@ def tagged_samples(samples: pa.Table) -> int:
     return int(pc.sum(same).as_py() or 0)
 
 
-def _read_inbox(job: Job, config: RunConfig, store: Store, refusals: list[Refusal]) -> list[Delivery]:
+def _read_inbox(
+    way: Way, job: Job, config: RunConfig, store: Store, refusals: list[Refusal]
+) -> list[Delivery]:
     """Keep and read the inbox's files of a cruise; one that is refused is told and left out."""
     delivered = []
     for file in job.files:
@@ -171,9 +185,9 @@ def _read_inbox(job: Job, config: RunConfig, store: Store, refusals: list[Refusa
                 continue
             if file.beside.text:
                 vault.keep(store, file.beside.text)
-            delivery = read_delivery(file.name, data, config.settings.reading, file.beside.description)
+            delivery = way.read(file.name, data, config.settings.reading, file.beside.description)
         except DeliveryProblem as problem:
-            refusals.append(Refusal(file.name, problem.reason, str(problem)))
+            refusals.append(Refusal(file.name, problem.reason, file.beside.explained(problem)))
             continue
         except OSError as error:
             refusals.append(Refusal(file.name, "unreadable", _gone(file.name, error)))
@@ -188,14 +202,14 @@ def _read_inbox(job: Job, config: RunConfig, store: Store, refusals: list[Refusa
 
 
 def _read_archived(
-    job: Job, config: RunConfig, store: Store, delivered: Sequence[Delivery]
+    way: Way, job: Job, config: RunConfig, store: Store, delivered: Sequence[Delivery]
 ) -> list[Delivery]:
     """Read what earlier runs delivered of the cruise and no file of the inbox replaces."""
     standing = []
     for file in job.archived:
         data = vault.read(store, file.sha256)
         description = _kept_description(file, store)
-        delivery = read_delivery(file.name, data, config.settings.reading, description)
+        delivery = way.read(file.name, data, config.settings.reading, description)
         delivery = replace(delivery, described_by=file.described_by).of_cruise(job.expocode)
         if not any(shared_rows(delivery, other) for other in delivered):
             standing.append(delivery)
@@ -214,27 +228,31 @@ def _not_described(file: InboxFile) -> str:
     return f"{file.name}: not used, because the cruise.toml beside it cannot be: {file.beside.fault}"
 
 
-def _provenance(
-    expocode: str, deliveries: Sequence[Delivery], accounts: Sequence[Account], config: RunConfig
-) -> Provenance:
+def _delivered_files(
+    way: Way, deliveries: Sequence[Delivery], accounts: Sequence[Account]
+) -> tuple[DeliveredFile, ...]:
+    return tuple(
+        DeliveredFile(
+            name=d.name,
+            sha256=d.sha256,
+            size=d.size,
+            kind=d.kind.value,
+            rows=d.rows - d.table.num_rows + way.kept(d),
+            kept=way.kept(d),
+            rejected=len(d.rejects),
+            set_aside=d.set_aside,
+            described_by=d.described_by,
+            account=account,
+        )
+        for d, account in zip(deliveries, accounts, strict=True)
+    )
+
+
+def _provenance(expocode: str, files: tuple[DeliveredFile, ...], config: RunConfig) -> Provenance:
     catalogue = config.catalogue
     return Provenance(
         expocode=expocode,
-        deliveries=tuple(
-            DeliveredFile(
-                name=d.name,
-                sha256=d.sha256,
-                size=d.size,
-                kind=d.kind.value,
-                rows=d.rows,
-                kept=d.table.num_rows,
-                rejected=len(d.rejects),
-                set_aside=d.set_aside,
-                described_by=d.described_by,
-                account=account,
-            )
-            for d, account in zip(deliveries, accounts, strict=True)
-        ),
+        deliveries=files,
         settings_sha256=config.settings.sha256,
         catalogue_sha256=catalogue.sha256 if catalogue else None,
         catalogue_title=catalogue.title if catalogue else "",

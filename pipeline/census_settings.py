@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from itertools import pairwise
 from typing import Annotated, Literal
 
 from pydantic import AfterValidator, Field
@@ -12,7 +13,7 @@ DENSITIES = ("sigma0", "sigma2", "sigma4")
 
 
 def _rising(boundaries: tuple[float, ...]) -> tuple[float, ...]:
-    if any(after <= before for before, after in zip(boundaries, boundaries[1:], strict=False)):
+    if any(after <= before for before, after in pairwise(boundaries)):
         raise ValueError("densities from the lightest to the densest, each once, such as [36.7, 36.9]")
     return boundaries
 
@@ -33,7 +34,8 @@ class CensusSettings(Section):
         " and below the last one (our choice, no source)",
     )
     station_gap: Positive = Field(
-        200.0, description="km between stations across which the section is not filled (our choice, no source)"
+        200.0,
+        description="km between stations across which the section is not filled (our choice, no source)",
     )
     apart: Positive = Field(
         100.0,

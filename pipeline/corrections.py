@@ -34,7 +34,7 @@ def corrected(table: pa.Table, corrections: Mapping[str, Correction]) -> pa.Tabl
         From quantity to what is done to it.
 
     """
-    here = {name: one for name, one in sorted(corrections.items()) if name in table.column_names}
+    here = {name: one for name, one in sorted(corrections.items()) if name in table.schema.names}
     columns = {corrected_name(name): apply(floats(table, name), one) for name, one in here.items()}
     told = {
         corrected_name(name): {"correction": what_is_done(name, one), "correction_reason": one.reason}
@@ -78,7 +78,7 @@ def correction_findings(
         holding = [
             f"{t.num_rows} {kind}{'' if t.num_rows == 1 else 's'}"
             for kind, t in tables.items()
-            if name in t.column_names
+            if name in t.schema.names
         ]
         if holding:
             message = (

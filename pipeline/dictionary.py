@@ -71,7 +71,7 @@ class Entry:
 
 
 def columns_of(table: str) -> tuple[str, ...]:
-    """Return the registry columns that a table can have, in the registry's order, its key last for samples and casts."""
+    """Return the registry columns that a table can have, in the registry's order."""
     if table in LISTED:
         return LISTED[table]
     if table == "samples":
@@ -93,7 +93,8 @@ def entries() -> tuple[Entry, ...]:
 def meanings() -> dict[str, dict[str, str]]:
     """Return what the values of flags, tags and statuses mean, by the name of the table of meanings."""
     whp = {
-        f"WHP, {scheme}": {str(flag): words for flag, words in each.items()} for scheme, each in WHP_MEANINGS.items()
+        f"WHP, {scheme}": {str(flag): words for flag, words in each.items()}
+        for scheme, each in WHP_MEANINGS.items()
     }
     iode = {str(number): flag.meaning for number, flag in FLAGS[Scheme.IODE].items()}
     statuses = {status.label: words for status, words in STATUS_WORDS.items()}
@@ -133,7 +134,11 @@ def _uncertainty(absolute: float, relative: float, unit: str) -> str:
 
 def as_json() -> str:
     """Return the dictionary as JSON."""
-    told: dict[str, Any] = {"columns": [asdict(one) for one in entries()], "meanings": meanings(), "note": PASSED_ON}
+    told: dict[str, Any] = {
+        "columns": [asdict(one) for one in entries()],
+        "meanings": meanings(),
+        "note": PASSED_ON,
+    }
     return json.dumps(told, indent=1, ensure_ascii=False) + "\n"
 
 
@@ -150,7 +155,13 @@ def as_csv() -> str:
 def _cell(value: Any) -> str:
     if value is None:
         return ""
-    return " ".join(value) if isinstance(value, tuple) else f"{value:g}" if isinstance(value, float) else str(value)
+    return (
+        " ".join(value)
+        if isinstance(value, tuple)
+        else f"{value:g}"
+        if isinstance(value, float)
+        else str(value)
+    )
 
 
 def as_markdown() -> str:
@@ -166,7 +177,10 @@ def _page() -> Iterator[str]:
         yield f"## {table}\n"
         rows = [one for one in every if one.table == table]
         yield from _grid(
-            ("column", "is", "unit", "CF standard name", "source", "in exchange files", "plausible", "usual uncertainty"),
+            (
+                "column", "is", "unit", "CF standard name", "source", "in exchange files", "plausible",
+                "usual uncertainty",
+            ),
             [
                 (
                     f"`{one.name}`", one.long_name, one.units or one.kind, one.standard_name, one.source,

@@ -35,6 +35,7 @@ class Finding:
     cast: int | None = None
     sample: str | None = None
     count: int = 1
+    to_group: str = ""  # the sentence for those who made the file, where it is another than for the data manager
 
 
 @dataclass(frozen=True, slots=True)
@@ -47,6 +48,7 @@ class Reject:
     reason: str
     message: str
     expocode: str | None = None
+    to_group: str = ""  # as of a finding
 
 
 # What the rows of a file that is not made of lines are called.
@@ -58,3 +60,8 @@ def at(file: str, line: int | None) -> str:
     if line is None:
         return file
     return f"{file}, {_ROW_WORDS.get(PurePosixPath(file).suffix.lower(), 'line')} {line}"
+
+
+def rows_word(file: str) -> str:
+    """Return what several rows of a delivered file are called."""
+    return "records" if _ROW_WORDS.get(PurePosixPath(file).suffix.lower()) == "record" else "rows"

@@ -129,6 +129,17 @@ class MisfitFloor(Section):
     alkalinity: float = floor(10.0, "umol/kg (our choice, no source)")
 
 
+class CastOffset(Section):
+    """By how much a quantity of one cast may differ from the deep water of the casts around it (our choice, no source)."""
+
+    nitrate: float = floor(0.03, "part of it (accuracy is 1 %, from memory)")
+    nitrate_plus_nitrite: float = floor(0.03, "part of it (as nitrate)")
+    phosphate: float = floor(0.04, "part of it (accuracy is 1 to 2 %, from memory)")
+    silicate: float = floor(0.05, "part of it (accuracy is 1 to 3 %, from memory)")
+    dic: float = floor(8.0, "umol/kg (twice the least adjustment of Lauvset et al. 2024)")
+    alkalinity: float = floor(8.0, "umol/kg (twice the least adjustment of Lauvset et al. 2024)")
+
+
 class DeltaDeparture(Section):
     """By how much an isotope ratio differs from all samples beside it where it is doubted (our choice, no source)."""
 
@@ -204,6 +215,15 @@ class WaterChecks(Section):
     )
     whole_column_samples: int = Field(
         10, ge=3, description="fewest values by which a whole column or cruise is judged (our choice)"
+    )
+    cast_offset: CastOffset = Field(
+        CastOffset(), description="offsets of a cast from the deep water of those around it that are no news"
+    )
+    cast_offset_sigma: Positive = Field(
+        2.5, description="robust standard deviations of what casts of the cruise differ by (our choice)"
+    )
+    cast_offset_samples: int = Field(
+        4, ge=3, description="fewest deep samples of a cast by which its offset is judged (our choice)"
     )
     surface_alkalinity: Positive = Field(
         60.0, description="umol/kg from 2300 S/35 at the surface (common practice, no source)"

@@ -62,7 +62,7 @@ class View:
     def to_pandas(self) -> pd.DataFrame:
         """Return the rows as a data frame; ``frame.attrs["units"]`` has the units by column."""
         table = self.to_arrow()
-        frame = table.replace_schema_metadata(None).to_pandas()
+        frame: pd.DataFrame = table.replace_schema_metadata(None).to_pandas()
         frame.attrs["units"] = {one.name: _text(one, "units") for one in table.schema if _text(one, "units")}
         return frame
 
@@ -78,7 +78,9 @@ class View:
         try:
             import polars  # noqa: ICN001, PLC0415 - not a dependency: for whoever has it
         except ImportError as error:
-            raise UsageProblem("polars is not installed here; install it with: pip install polars.") from error
+            raise UsageProblem(
+                "polars is not installed here; install it with: pip install polars."
+            ) from error
         return polars.scan_pyarrow_dataset(self.dataset).select(self.columns)
 
 
@@ -138,10 +140,14 @@ class Archive:
 
         """
         if name not in TABLE_NAMES:
-            raise UsageProblem(f"{self.place}: there is no table '{name}'; its tables are: {', '.join(TABLE_NAMES)}.")
+            raise UsageProblem(
+                f"{self.place}: there is no table '{name}'; its tables are: {', '.join(TABLE_NAMES)}."
+            )
         chosen = self._chosen(cruises)
         if revision is not None and len(chosen) != 1:
-            raise UsageProblem(f"{self.place}: revision {revision} is asked for; name the one cruise it is of.")
+            raise UsageProblem(
+                f"{self.place}: revision {revision} is asked for; name the one cruise it is of."
+            )
         keys = [self._key(cruise, name, revision) for cruise in chosen]
         schemas = [self._schema(key) for key in keys]
         schema = united(schemas, name)
@@ -170,7 +176,9 @@ class Archive:
         """
         self._chosen([cruise])
         if revision is not None:
-            return Provenance.from_metadata(self._schema(self._key(cruise, "samples", revision)).metadata, cruise)
+            return Provenance.from_metadata(
+                self._schema(self._key(cruise, "samples", revision)).metadata, cruise
+            )
         found = read_cruise(self.store, cruise)
         if not found.is_whole or found.provenance is None:
             raise ArchiveProblem(" ".join(found.troubles))
@@ -225,7 +233,9 @@ class Archive:
 
     def _fragment(self, key: str) -> ds.Fragment:
         source = self.store.source(key)
-        return _FORMAT.make_fragment(source, filesystem=fs.LocalFileSystem() if isinstance(source, str) else None)
+        return _FORMAT.make_fragment(
+            source, filesystem=fs.LocalFileSystem() if isinstance(source, str) else None
+        )
 
     def _elsewhere(self, table: str, column: str, chosen: Sequence[str]) -> pa.Field:
         """Return the field of a column that the chosen cruises do not have and another one has."""
@@ -281,9 +291,13 @@ def united(schemas: Sequence[pa.Schema], table: str) -> pa.Schema:
     for schema in schemas:
         for one in schema:
             found.setdefault(one.name, []).append(one)
-    fields = pa.schema([pa.field(name, _type(each), metadata=_metadata(each)) for name, each in found.items()])
+    fields = pa.schema(
+        [pa.field(name, _type(each), metadata=_metadata(each)) for name, each in found.items()]
+    )
     metadata = schemas[0].metadata if len(schemas) == 1 else {f"{RECORD}.table": table}
-    ordered = fields if table in {"findings", "rejects", "mixtures"} else arranged(fields.empty_table()).schema
+    ordered = (
+        fields if table in {"findings", "rejects", "mixtures"} else arranged(fields.empty_table()).schema
+    )
     return ordered.with_metadata(metadata)
 
 
@@ -306,7 +320,7 @@ def _metadata(fields: Sequence[pa.Field]) -> dict[bytes, bytes]:
 
 
 def _text(one: pa.Field, name: str) -> str:
-    return (one.metadata or {}).get(name.encode(), b"").decode()
+    return str((one.metadata or {}).get(name.encode(), b"").decode())
 
 
 def _near(wanted: str, known: Sequence[str], words: str) -> str:

@@ -7,14 +7,14 @@ from __future__ import annotations
 
 from dataclasses import dataclass, replace
 from itertools import combinations
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import pyarrow as pa
 import pyarrow.compute as pc
 
 from pipeline import seawater, tracers
 from pipeline.archive import accounts
-from pipeline.checking import Checked, check
+from pipeline.checking import CHECKS, Checked, check
 from pipeline.corrections import corrected, correction_findings
 from pipeline.findings import Finding, Severity
 from pipeline.mixing import absent_properties, resolve
@@ -36,7 +36,7 @@ from pipeline.usable import Rows
 from pipeline.working import working_columns
 
 if TYPE_CHECKING:
-    from collections.abc import Collection, Mapping, Sequence
+    from collections.abc import Collection, Iterable, Mapping, Sequence
 
     from pipeline.archive import Account
     from pipeline.crossover_settings import Correction
@@ -56,8 +56,21 @@ class ProcessedCruise:
     accounts: tuple[Account, ...] = ()  # what became of the rows of each delivery, in their order
 
 
+@dataclass(frozen=True, slots=True)
+class Casts:
+    """The CTD levels of a cruise, described: their table as the archive keeps it, or what stands for a large one."""
+
+    table: Any  # has ``num_rows`` and ``schema``, as a table
+    findings: tuple[Finding, ...]
+    accounts: tuple[Account, ...]  # of each CTD delivery, in their order
+
+
 def process_cruise(
-    expocode: str, deliveries: Sequence[Delivery], settings: Settings, catalogue: Catalogue | None = None
+    expocode: str,
+    deliveries: Sequence[Delivery],
+    settings: Settings,
+    catalogue: Catalogue | None = None,
+    casts: Casts | None = None,
 ) -> ProcessedCruise:
     """Make the tables of one cruise.
 
@@ -71,11 +84,13 @@ def process_cruise(
         The effective settings.
     catalogue
         The source waters, or None: then no sample is resolved.
+    casts
+        The CTD levels, where they were described before; else they are here.
 
     """
     corrections = settings.corrections.get(expocode, {})
     samples, sample_findings = _described(deliveries, DeliveryKind.BOTTLE, settings, corrections)
-    casts, cast_findings = _described(deliveries, DeliveryKind.CTD, settings, corrections)
+    casts = casts or _casts(deliveries, settings, corrections)
     mixtures = empty(MIXTURES)
     mixing_findings: tuple[Finding, ...] = ()
     if catalogue is not None:
@@ -87,19 +102,26 @@ def process_cruise(
     else:
         samples = with_columns(samples, {name: [None] * samples.num_rows for name in MIXING})
     delivered = [finding for delivery in deliveries for finding in delivery.findings]
-    corrected_findings = correction_findings(expocode, {"sample": samples, "CTD level": casts}, corrections)
-    findings = (*delivered, *sample_findings, *cast_findings, *corrected_findings, *mixing_findings)
+    corrected_findings = correction_findings(expocode, {"sample": samples, "CTD level": casts.table}, corrections)
+    findings = (*delivered, *sample_findings, *casts.findings, *corrected_findings, *mixing_findings)
     return ProcessedCruise(
         tables={
             "samples": arranged(samples),
-            "casts": arranged(casts),
+            "casts": casts.table,
             "mixtures": mixtures,
             "findings": findings_table(expocode, findings),
             "rejects": rejects_table(expocode, [r for d in deliveries for r in d.rejects]),
         },
         findings=findings,
-        accounts=_accounts(deliveries, {DeliveryKind.BOTTLE: samples, DeliveryKind.CTD: casts}),
+        accounts=_in_order(deliveries, _accounts(deliveries, DeliveryKind.BOTTLE, samples), casts.accounts),
     )
+
+
+def _casts(
+    deliveries: Sequence[Delivery], settings: Settings, corrections: Mapping[str, Correction]
+) -> Casts:
+    table, findings = _described(deliveries, DeliveryKind.CTD, settings, corrections)
+    return Casts(arranged(table), findings, tuple(_accounts(deliveries, DeliveryKind.CTD, table)))
 
 
 def _described(
@@ -108,12 +130,37 @@ def _described(
     settings: Settings,
     corrections: Mapping[str, Correction],
 ) -> tuple[pa.Table, tuple[Finding, ...]]:
-    """Return the rows of one kind, checked as delivered, corrected, and with every quantity computed from them."""
+    """Return the rows of one kind, described; of a kind that nobody delivered a table without rows."""
     mine = [delivery for delivery in deliveries if delivery.kind is kind]
     tables = [delivery.table for delivery in mine]
     table = stack(tables) if tables else empty((*_CORES[kind], "pressure"))
     told = [finding for delivery in mine for finding in delivery.findings]
-    checked = check(table, settings, told) if tables else Checked({}, ())
+    return described(table, kind, settings, corrections, told, CHECKS if tables else ())
+
+
+def described(
+    table: pa.Table,
+    kind: DeliveryKind,
+    settings: Settings,
+    corrections: Mapping[str, Correction],
+    told: Sequence[Finding],
+    checks: Collection[str],
+) -> tuple[pa.Table, tuple[Finding, ...]]:
+    """Return rows checked as delivered, corrected, and with every quantity computed from them, and what was noticed.
+
+    Parameters
+    ----------
+    table
+        Whole casts, as read.
+    kind, settings, corrections
+        What they are, the effective settings, and its corrections of the cruise.
+    told
+        What reading noticed of them.
+    checks
+        Which checks are made; without any there are no check flags either.
+
+    """
+    checked = check(table, settings, told, checks) if checks else Checked({}, ())
     table = with_columns(table, checked.flags)
     table = corrected(table, corrections)
     table = with_columns(table, working_columns(Rows(table, settings.use)))
@@ -127,21 +174,23 @@ def _described(
     return table, (*checked.findings, *own.findings)
 
 
-def _accounts(deliveries: Sequence[Delivery], tables: Mapping[DeliveryKind, pa.Table]) -> tuple[Account, ...]:
-    """Return the account of every delivery; a table has its rows in the order of the deliveries."""
-    by_kind = {
-        kind: iter(
-            accounts(
-                table,
-                [
-                    (d.name, d.table.num_rows, [reject.reason for reject in d.rejects])
-                    for d in deliveries
-                    if d.kind is kind
-                ],
-            )
-        )
-        for kind, table in tables.items()
-    }
+def _accounts(deliveries: Sequence[Delivery], kind: DeliveryKind, table: pa.Table) -> list[Account]:
+    """Return the account of every delivery of a kind; the table has its rows in the order of the deliveries."""
+    return accounts(
+        table,
+        [
+            (d.name, d.table.num_rows, [reject.reason for reject in d.rejects])
+            for d in deliveries
+            if d.kind is kind
+        ],
+    )
+
+
+def _in_order(
+    deliveries: Sequence[Delivery], bottles: Iterable[Account], casts: Iterable[Account]
+) -> tuple[Account, ...]:
+    """Return the accounts of two kinds of delivery in the order of all deliveries."""
+    by_kind = {DeliveryKind.BOTTLE: iter(bottles), DeliveryKind.CTD: iter(casts)}
     return tuple(next(by_kind[delivery.kind]) for delivery in deliveries)
 
 
@@ -153,7 +202,9 @@ def shared_rows(one: Delivery, other: Delivery) -> int:
     return len(_row_keys(one.table, keys) & _row_keys(other.table, keys))
 
 
-def settle_editions(deliveries: Sequence[Delivery], standing: Collection[str] = ()) -> list[Delivery]:
+def settle_editions(
+    deliveries: Sequence[Delivery], standing: Collection[str] = (), absent: Sequence[str] = ()
+) -> list[Delivery]:
     """Settle which of the deliveries of one cruise that hold the same samples or casts stands.
 
     Parameters
@@ -162,6 +213,8 @@ def settle_editions(deliveries: Sequence[Delivery], standing: Collection[str] = 
         In any order.
     standing
         Names of the files of which a ``cruise.toml`` says that they stand.
+    absent
+        Names of which it says so too, and that no file has.
 
     Returns
     -------
@@ -179,18 +232,27 @@ def settle_editions(deliveries: Sequence[Delivery], standing: Collection[str] = 
         if shared:
             stands = [settled[i].name in standing for i in (one, other)]
             if stands[0] == stands[1]:
-                raise _two_editions(settled[one], settled[other], shared)
+                raise _two_editions(settled[one], settled[other], shared, _what_to_do(stands[0], absent))
             giving_way, stayer = (other, one) if stands[0] else (one, other)
             settled[giving_way] = _given_way(settled[giving_way], settled[stayer], shared)
     return settled
 
 
-def _two_editions(one: Delivery, other: Delivery, shared: int) -> DeliveryProblem:
+def _what_to_do(both: bool, absent: Sequence[str]) -> str:
+    """Return what is wrong with what is said of editions, or how to say which stands."""
+    if both:
+        return "cruise.toml says of both that they stand; leave one of them there"
+    if absent:
+        named = ", ".join(f"'{name}'" for name in absent)
+        return f"cruise.toml names {named} as the one that stands, and there is no such file; name one of these two there"
+    return "remove the one that does not stand, or name the one that does in a cruise.toml beside them (stands)"
+
+
+def _two_editions(one: Delivery, other: Delivery, shared: int, to_do: str) -> DeliveryProblem:
     return DeliveryProblem(
         "two-editions",
         f"{one.name} and {other.name}: both hold {shared} of the same {_rows_of(one)} of cruise"
-        f" {', '.join(one.cruises)}; expected one edition of a cruise; remove the one that does not stand, or name"
-        " the one that does in a cruise.toml beside them (stands).",
+        f" {', '.join(one.cruises)}; expected one edition of a cruise; {to_do}.",
     )
 
 

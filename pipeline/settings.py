@@ -46,6 +46,14 @@ class ReadingSettings(Section):
     """Limits that keep one broken delivery from hurting the run."""
 
     unpacked_bytes: int = Field(2_000_000_000, gt=0, description="most that a zip may unpack to")
+    levels_at_once: int = Field(
+        500_000,
+        gt=0,
+        description=(
+            "CTD levels that are checked and written together; a cruise with more is taken in blocks of whole casts"
+            " (bounds the memory; about 1.5 kB a level)"
+        ),
+    )
     columns: int = Field(2_000, gt=0, description="most columns that a delivered table may have")
     cells: int = Field(
         20_000_000, gt=0, description="most cells that a spreadsheet or another described table may have"

@@ -98,25 +98,29 @@ def arrow_field(variable: Variable, extra: Mapping[str, str] | None = None) -> p
     )
 
 
+_FIELDS: Mapping[str, pa.Field] = {name: arrow_field(variable) for name, variable in REGISTRY.items()}
+
+
 def registry_field(name: str) -> pa.Field:
     """Return the Arrow field of the registry column ``name``."""
     try:
-        return arrow_field(REGISTRY[name])
+        return _FIELDS[name]
     except KeyError as error:
         raise BrokenPromise(f"the column '{name}' is written but is not in the registry") from error
 
 
 def floats(table: pa.Table, name: str) -> FloatArray:
     """Return column ``name`` as float64, shape (n_row,), NaN where missing or no such column."""
-    if name not in table.column_names:
+    position = table.schema.get_field_index(name)
+    if position < 0:
         return np.full(table.num_rows, np.nan)
     # missing becomes NaN on the way; the array may be the table's own memory, so it is not to be written to
-    return np.asarray(table.column(name).to_numpy(), dtype=np.float64)
+    return np.asarray(table.column(position).to_numpy(), dtype=np.float64)
 
 
 def texts(table: pa.Table, name: str) -> list[str | None]:
     """Return column ``name`` as a list of text, None where missing or where there is no such column."""
-    if name not in table.column_names:
+    if table.schema.get_field_index(name) < 0:
         return [None] * table.num_rows
     return [None if text is None else str(text) for text in table.column(name).to_pylist()]
 
@@ -132,12 +136,13 @@ def with_columns(table: pa.Table, columns: Mapping[str, Any]) -> pa.Table:
         From registry name to an array, list or Arrow array of n_row values.
 
     """
-    named: dict[str, Any] = dict(zip(table.column_names, table.columns, strict=True))
-    listed = {f.name: f for f in table.schema}
+    names = table.schema.names
+    named: dict[str, Any] = dict(zip(names, table.itercolumns(), strict=True))
+    listed = dict(zip(names, table.schema, strict=True))
     for name, values in columns.items():
         listed[name] = registry_field(name)
         named[name] = as_arrow(values, listed[name].type)
-    return pa.table(list(named.values()), schema=pa.schema([listed[name] for name in named]))
+    return pa.table(list(named.values()), schema=pa.schema(list(listed.values())))
 
 
 def with_metadata(table: pa.Table, metadata: Mapping[str, Mapping[str, str]]) -> pa.Table:
@@ -148,13 +153,13 @@ def with_metadata(table: pa.Table, metadata: Mapping[str, Mapping[str, str]]) ->
         else field
         for field in table.schema
     ]
-    return table.cast(pa.schema(fields))
+    return pa.table(list(table.itercolumns()), schema=pa.schema(fields))
 
 
 def as_arrow(values: Any, kind: pa.DataType) -> pa.Array | pa.ChunkedArray:
     """Return ``values`` as an Arrow array of type ``kind``; NaN is missing."""
     if isinstance(values, pa.Array | pa.ChunkedArray):
-        return values.cast(kind)
+        return values if values.type == kind else values.cast(kind)
     return pa.array(values, type=kind, from_pandas=True)
 
 
@@ -202,7 +207,8 @@ def arranged(table: pa.Table) -> pa.Table:
 
     A measured value, its delivered flag and our check flag stand side by side.
     """
-    named = set(table.column_names)
+    names = table.schema.names
+    named = set(names)
     known = [name for name in REGISTRY if name in named and name not in _LEDGER]
-    others = [name for name in table.column_names if name not in REGISTRY]
+    others = [name for name in names if name not in REGISTRY]
     return table.select([*known, *others, *(name for name in _LEDGER if name in named)])

@@ -22,6 +22,7 @@ if TYPE_CHECKING:
     BoolArray = NDArray[np.bool_]
     IntArray = NDArray[np.int64]
 
+_MEASURED = frozenset(MEASURED)
 # IODE primary flags, IOC Manuals and Guides 54, vol. 3 (2013): what our own check columns hold.
 CHECK_GOOD, CHECK_NOT_DONE, CHECK_DOUBT, CHECK_FAULT, CHECK_MISSING = 1, 2, 3, 4, 9
 
@@ -40,11 +41,12 @@ class Rows:
 
     def __init__(self, table: pa.Table, use: UseSettings) -> None:
         self.table = table
-        self.names = frozenset(table.column_names)
+        self.names = frozenset(table.schema.names)
         self.is_bottle = "sample" in self.names
         self._use = use
         self._floats: dict[str, FloatArray] = {}
         self._may_use: dict[str, BoolArray] = {}
+        self._usable: dict[str, FloatArray] = {}
 
     def __len__(self) -> int:
         """Return n_row."""
@@ -66,10 +68,16 @@ class Rows:
 
         Where the table has the column with the settings' correction, its values stand for the delivered
         ones, under the same flags. A derived column is usable as it is: it was computed from usable values only.
+        Not to be written to.
         """
-        corrected = corrected_name(name)
-        values = self.floats(corrected if corrected in self.names else name)
-        return np.where(self.may_use(name), values, np.nan) if name in MEASURED else values
+        if name not in self._usable:
+            corrected = corrected_name(name)
+            values = self.floats(corrected if corrected in self.names else name)
+            if name in _MEASURED:
+                values = np.where(self.may_use(name), values, np.nan)
+                values.flags.writeable = False
+            self._usable[name] = values
+        return self._usable[name]
 
     def may_use(self, name: str) -> BoolArray:
         """Return where the delivered flags and our checks let a measured value be used, (n_row,)."""

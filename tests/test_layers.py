@@ -27,9 +27,11 @@ LAYERS = (
     ("mixing",),
     ("crossovers",),
     ("archive",),
+    ("reporting",),
     ("census",),
     ("opening", "exporting", "dictionary"),
     ("process",),
+    ("large_cruise",),
 )
 LEVEL = {name: level for level, names in enumerate(LAYERS) for name in names}
 

@@ -66,8 +66,8 @@ def test_the_catalogue_shown_can_be_read(tmp_path: Path) -> None:
 
 
 def test_there_are_examples_for_each_reader() -> None:
-    assert [re.findall(r"import (pandas|polars|duckdb|pyarrow)", text)[0] for text in EXAMPLES] == [
-        "pandas", "polars", "duckdb", "pyarrow",
+    assert [re.findall(r"import (pandas|polars|duckdb|pyarrow|pipeline)", text)[0] for text in EXAMPLES] == [
+        "pandas", "polars", "duckdb", "pyarrow", "pipeline",
     ]  # fmt: skip
 
 

@@ -56,3 +56,12 @@ def test_the_working_salinity_is_the_bottles_else_the_ctds_else_none() -> None:
     np.testing.assert_array_equal(columns["practical_salinity"], [35.1, 35.2, np.nan])
     assert columns["practical_salinity_source"].tolist() == ["bottle", "ctd", None]
     assert columns["oxygen_source"].tolist() == ["bottle"] * 3
+
+
+def test_usable_values_are_found_once_and_cannot_be_spoiled() -> None:
+    data = Rows(read(bottle_file({"NITRAT_FLAG_W": "4"}, {})).table, SETTINGS.use)
+    values = data.usable("nitrate")
+    assert data.usable("nitrate") is values
+    assert np.isnan(values).tolist() == [True, False]
+    with pytest.raises(ValueError, match="read-only"):
+        values[0] = 1.0

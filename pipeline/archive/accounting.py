@@ -140,17 +140,19 @@ def imbalances(one: Account, rows: int, kept: int, rejected: int) -> list[str]:
 def _worst_check(table: pa.Table) -> NDArray[np.float64]:
     """Return the gravest of our check flags that is a doubt or a fault, (n_row,), 0 where there is none."""
     worst = np.zeros(table.num_rows)
+    here = set(table.schema.names)
     for name in CHECKED:
-        if check_name(name) in table.column_names:
+        if check_name(name) in here:
             flags = floats(table, check_name(name))
-            for flag in (CHECK_DOUBT, CHECK_FAULT):
-                worst[(flags == flag) & (worst < flag)] = flag
+            grave = (flags == CHECK_DOUBT) | (flags == CHECK_FAULT)
+            if grave.any():
+                worst[grave] = np.maximum(worst[grave], flags[grave])
     return worst
 
 
 def _statuses(table: pa.Table) -> dict[str, int]:
     """Return how many rows have each status of the mixing analysis, sorted; none where it was not made."""
-    if "mixing_status" not in table.column_names:
+    if "mixing_status" not in table.schema.names:
         return {}
     found = pc.value_counts(table.column("mixing_status")).to_pylist()
     return dict(sorted((one["values"], one["counts"]) for one in found if one["values"] is not None))
@@ -158,5 +160,6 @@ def _statuses(table: pa.Table) -> dict[str, int]:
 
 def _filled(table: pa.Table, names: Iterable[str]) -> int:
     """Return how many rows have a value in at least one of the columns ``names``."""
-    filled = [pc.is_valid(table.column(name)) for name in names if name in table.column_names]
+    here = set(table.schema.names)
+    filled = [pc.is_valid(table.column(name)) for name in names if name in here]
     return int(pc.sum(functools.reduce(pc.or_, filled)).as_py() or 0) if filled else 0

@@ -92,7 +92,7 @@ class Bucket:
     ) -> AbstractContextManager[None]:
         """Hold ``key`` as ``lease.hold`` says; its object never stays."""
         del fleeting
-        return lease.hold(self._endpoint, self._path(key), patience)
+        return lease.hold(self._endpoint, self._path(key), patience, self._path(layout.STAGING))
 
 
 def open_bucket(place: str, *, create: bool = False) -> Bucket:

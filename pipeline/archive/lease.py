@@ -17,7 +17,7 @@ import uuid
 from contextlib import contextmanager, suppress
 from typing import TYPE_CHECKING
 
-from pipeline.archive import conditional, lock
+from pipeline.archive import conditional, layout, lock
 from pipeline.archive.refusals import refused
 from pipeline.problems import ArchiveBusy, ArchiveProblem
 
@@ -120,8 +120,17 @@ class _Lease:
 
 
 @contextmanager
-def hold(endpoint: Endpoint, path: str, patience: float = 0.0) -> Iterator[None]:
+def hold(endpoint: Endpoint, path: str, patience: float, probe: str) -> Iterator[None]:
     """Hold the object ``BUCKET/KEY`` against every other holder; it is removed when the hold ends.
+
+    Parameters
+    ----------
+    endpoint, path
+        The server and the object.
+    patience
+        Seconds to wait for another holder.
+    probe
+        A folder of the same bucket, in which once in a process is tried whether the storage keeps conditions.
 
     Raises
     ------
@@ -133,7 +142,7 @@ def hold(endpoint: Endpoint, path: str, patience: float = 0.0) -> Iterator[None]
     """
     lease = _Lease(endpoint, path)
     with refused(f"s3://{path}", "lock"):
-        _require_conditions(endpoint, path)
+        _require_conditions(endpoint, probe)
         lease.acquire(patience)
     try:
         yield
@@ -159,9 +168,9 @@ def require_trust(root: str) -> None:
 
 
 @functools.lru_cache(maxsize=16)
-def _require_conditions(endpoint: Endpoint, path: str) -> None:
+def _require_conditions(endpoint: Endpoint, folder: str) -> None:
     """See once in a process that the storage keeps conditions: without them two runs would both hold."""
-    probe = f"{path}-{uuid.uuid4().hex}"
+    probe = f"{folder}/{uuid.uuid4().hex}{layout.PART_SUFFIX}"
     conditional.put(endpoint, probe, b"probe\n", replacing=None)
     try:
         twice = conditional.put(endpoint, probe, b"other\n", replacing=None)
@@ -170,7 +179,7 @@ def _require_conditions(endpoint: Endpoint, path: str) -> None:
         conditional.remove(endpoint, probe)
     if twice is not None or wrong is not None:
         raise ArchiveProblem(
-            f"s3://{path}: the storage at {endpoint.address} puts objects whatever the condition (If-None-Match,"
+            f"s3://{folder}: the storage at {endpoint.address} puts objects whatever the condition (If-None-Match,"
             " If-Match), so two runs could not be kept apart; use storage that keeps them, or an archive on a disk."
         )
 

@@ -96,12 +96,20 @@ class Provenance:
 
     def to_metadata(self, table: str) -> dict[str, str]:
         """Return the file metadata of ``table``: the record, and plain keys that need no JSON to read."""
+        return self.metadata_of((table,))[table]
+
+    def metadata_of(self, tables: Iterable[str]) -> dict[str, dict[str, str]]:
+        """Return the file metadata of several tables, by their names."""
+        record = self.to_json()
         plain = {name: str(getattr(self, name)) for name in PLAIN}
         return {
-            RECORD: self.to_json(),
-            **{f"{RECORD}.{name}": text for name, text in plain.items()},
-            f"{RECORD}.table": table,
-            "PANDAS_ATTRS": json.dumps({**plain, "table": table}),  # what pandas shows as DataFrame.attrs
+            table: {
+                RECORD: record,
+                **{f"{RECORD}.{name}": text for name, text in plain.items()},
+                f"{RECORD}.table": table,
+                "PANDAS_ATTRS": json.dumps({**plain, "table": table}),  # what pandas shows as DataFrame.attrs
+            }
+            for table in tables
         }
 
     @classmethod

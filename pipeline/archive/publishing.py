@@ -36,11 +36,12 @@ if TYPE_CHECKING:
     from pipeline.archive.provenance import Provenance
     from pipeline.archive.standing import Standing
     from pipeline.archive.storage import Store
+    from pipeline.archive.writing import LargeTable
 
 PATIENCE = 60.0  # seconds to wait for another process that is publishing the same cruise
 
 
-def publish(store: Store, provenance: Provenance, tables: Mapping[str, pa.Table]) -> int:
+def publish(store: Store, provenance: Provenance, tables: Mapping[str, pa.Table | LargeTable]) -> int:
     """Publish the tables of a cruise and return their revision.
 
     Where the cruise is current with the same fingerprint nothing is written; where the last whole revision
@@ -98,7 +99,7 @@ def clean_staging(store: Store) -> None:
                 _unstage(store, expocode)
 
 
-def _counted(provenance: Provenance, tables: Mapping[str, pa.Table]) -> dict[str, int]:
+def _counted(provenance: Provenance, tables: Mapping[str, pa.Table | LargeTable]) -> dict[str, int]:
     """Return rows by table, after checking that no delivered row was lost on the way."""
     if set(tables) != set(TABLE_NAMES):
         raise BrokenPromise(f"{provenance.expocode}: found tables {sorted(tables)}, expected {TABLE_NAMES}")
@@ -125,7 +126,7 @@ def _counted(provenance: Provenance, tables: Mapping[str, pa.Table]) -> dict[str
 def _compare_resolved(provenance: Provenance, samples: pa.Table) -> None:
     """See that the samples are resolved that the files' accounts say are."""
     told = [file.account for file in provenance.deliveries if file.kind == "bottle"]
-    if None in told or "mixing_status" not in samples.column_names:
+    if None in told or "mixing_status" not in samples.schema.names:
         return
     expected = sum(one.resolved for one in told if one)
     found = pc.sum(pc.equal(samples.column("mixing_status"), SOLVED)).as_py() or 0
@@ -133,9 +134,9 @@ def _compare_resolved(provenance: Provenance, samples: pa.Table) -> None:
         raise BrokenPromise(f"{provenance.expocode}: found {found} samples resolved, expected {expected}")
 
 
-def _stage(store: Store, provenance: Provenance, tables: Mapping[str, pa.Table]) -> None:
-    for name in TABLE_NAMES:
-        fill = partial(write_table, tables[name], provenance.to_metadata(name))
+def _stage(store: Store, provenance: Provenance, tables: Mapping[str, pa.Table | LargeTable]) -> None:
+    for name, metadata in provenance.metadata_of(TABLE_NAMES).items():
+        fill = partial(write_table, tables[name], metadata)
         store.write(layout.staging_key(provenance.expocode, name), fill)
 
 

@@ -108,7 +108,8 @@ class Disk:
         """See ``Store``. What is half written when ``fill`` fails stays: write to the staging place."""
         path = self._path(key)
         with refused(path, "write"):
-            path.parent.mkdir(parents=True, exist_ok=True)
+            if not path.parent.exists():
+                path.parent.mkdir(parents=True, exist_ok=True)
             with path.open("wb", buffering=BUFFER) as file:
                 fill(file)
                 file.flush()
@@ -118,7 +119,8 @@ class Disk:
         """See ``Store``. On a disk this is one atomic step."""
         source, path = self._path(key), self._path(target)
         with refused(path, "write"):
-            path.parent.mkdir(parents=True, exist_ok=True)
+            if not path.parent.exists():
+                path.parent.mkdir(parents=True, exist_ok=True)
             source.replace(path)
         self._prune(source.parent)
 

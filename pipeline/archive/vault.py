@@ -90,16 +90,18 @@ def _keep(store: Store, file: io.BufferedReader | io.BytesIO, name: str) -> str:
         return sha256
     file.seek(0)
     part = layout.part_key(uuid.uuid4().hex)
+    in_memory = isinstance(file, io.BytesIO)  # what cannot change meanwhile need not be hashed again
     copied = hashlib.sha256()
 
     def fill(sink: IO[bytes]) -> None:
         while block := _block(file, name):
-            copied.update(block)
+            if not in_memory:
+                copied.update(block)
             sink.write(block)
 
     try:
         store.write(part, fill)
-        if copied.hexdigest() != sha256:
+        if not in_memory and copied.hexdigest() != sha256:
             raise DeliveryProblem(
                 "changing-file",
                 f"{name}: it changed while it was read; deliver it again when it is finished.",

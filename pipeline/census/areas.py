@@ -64,7 +64,7 @@ def column_weights(
 def station_widths(lengths: FloatArray, filled: NDArray[np.bool_]) -> FloatArray:
     """Return how much of a track each station stands for, km, (n_station,): half of each filled leg beside it."""
     half = np.where(filled, lengths, 0.0) / 2
-    return np.concatenate([half, [0.0]]) + np.concatenate([[0.0], half])
+    return np.asarray(np.concatenate([half, [0.0]]) + np.concatenate([[0.0], half]))
 
 
 def resolved_intervals(pieces: Pieces) -> FloatArray:

@@ -37,7 +37,9 @@ class Common:
     resolved: tuple[FloatArray, FloatArray]  # (1 + n_class,) km2; of the whole both are the same
     length: float  # km of track under which both are
     stations: tuple[int, int]  # that take part
-    off: float  # km, median of how far the second's stations lie off the first's track; NaN where none is near
+    off: (
+        float  # km, median of how far the second's stations lie off the first's track; NaN where none is near
+    )
 
 
 @dataclass(frozen=True, eq=False)
@@ -76,7 +78,10 @@ def find_common(one: Section, other: Section, boundaries: FloatArray, apart: flo
     """
     place, off = project(other.points, one.points, one.along, np.flatnonzero(one.filled))
     near = off <= apart
-    legs = [_Leg(float(one.along[k]), float(one.along[k + 1]), k, k + 1) for k in np.flatnonzero(one.filled)]
+    legs = [
+        _Leg(float(one.along[k]), float(one.along[k + 1]), k, k + 1)
+        for k in np.flatnonzero(one.filled).tolist()
+    ]
     others = [
         _Leg(float(place[a]), float(place[b]), int(a), int(b))
         for k in np.flatnonzero(other.filled)
@@ -93,7 +98,9 @@ def find_common(one: Section, other: Section, boundaries: FloatArray, apart: flo
         if both[0] is None or both[1] is None:
             continue
         length += end - start
-        depths = _shared([columns[side][k] for side, leg in enumerate(both) if leg for k in (leg.first, leg.last)])
+        depths = _shared(
+            [columns[side][k] for side, leg in enumerate(both) if leg for k in (leg.first, leg.last)]
+        )
         for side, leg in enumerate(both):
             if leg is None:  # cannot be
                 continue
@@ -132,15 +139,21 @@ def _shared(columns: Sequence[Pieces]) -> FloatArray:
 
 
 def _add(
-    pieces: Pieces, depths: FloatArray, boundaries: FloatArray, width: float, weights: FloatArray, heights: FloatArray
+    pieces: Pieces,
+    depths: FloatArray,
+    boundaries: FloatArray,
+    width: float,
+    weights: FloatArray,
+    heights: FloatArray,
 ) -> None:
     """Add what the levels of a station stand for between depths, over so many km, in every class."""
     for top, bottom in depths:
         for part, level in zip(
-            column_weights(pieces, boundaries, float(top), float(bottom)), (pieces.upper, pieces.lower), strict=True
+            column_weights(pieces, boundaries, float(top), float(bottom)),
+            (pieces.upper, pieces.lower),
+            strict=True,
         ):
-            for row, own in zip(weights, part, strict=True):
-                row += np.bincount(level, own * width, minlength=weights.shape[1])
+            weights += np.array([np.bincount(level, own * width, weights.shape[1]) for own in part])
             heights += part.sum(axis=1) * width
 
 

@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 import numpy as np
 
 from pipeline.census.comparing import change_of, find_common
-from pipeline.census.section import make_section
+from pipeline.census.section import in_order, make_section
 from pipeline.census.taking import lay_out, shares_of
 from pipeline.mixing.member_sums import member_sums
 from pipeline.problems import ArchiveProblem, UsageProblem
@@ -102,6 +102,7 @@ def take_census(cruise: Resolved) -> Census:
         If the shares in its tables are not those that this version computes.
 
     """
+    cruise = replace(cruise, samples=in_order(cruise.samples))
     (density, boundaries), settings = boundaries_of(cruise.settings, [cruise.catalogue]), cruise.settings
     section = make_section(cruise.expocode, cruise.samples, density, settings)
     layout = lay_out(section, boundaries)
@@ -132,9 +133,10 @@ def compare(one: Resolved, other: Resolved) -> Comparison:
     ):
         if mine != yours:
             raise UsageProblem(
-                f"{one.expocode} and {other.expocode} were made with different {what}, so that a change of shares is not"
-                " one of the water; run again with one catalogue and the same settings for both."
+                f"{one.expocode} and {other.expocode} were made with different {what}, so that a change of shares is"
+                " not one of the water; run again with one catalogue and the same settings for both."
             )
+    one, other = (replace(cruise, samples=in_order(cruise.samples)) for cruise in (one, other))
     censuses = take_census(one), take_census(other)
     common = find_common(
         censuses[0].section, censuses[1].section, censuses[0].boundaries, one.settings.census.apart
@@ -143,7 +145,7 @@ def compare(one: Resolved, other: Resolved) -> Comparison:
         _sums(cruise, census.section, weights)
         for cruise, census, weights in zip((one, other), censuses, common.weights, strict=True)
     ]
-    return Comparison(*censuses, common, change_of(*sums, common))
+    return Comparison(*censuses, common, change_of(sums[0], sums[1], common))
 
 
 def _sums(cruise: Resolved, section: Section, weights: FloatArray) -> MemberSums:

@@ -7,6 +7,7 @@ to those of the level below; what no level speaks for has a reason instead.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from itertools import pairwise
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -84,13 +85,13 @@ def _column(levels: Levels, gap: float) -> Iterator[_Piece]:
 
 
 def _spans(levels: Levels, gap: float) -> Iterator[tuple[float, float, int, int, str]]:
-    held = np.flatnonzero(levels.holds)
-    if not held.size:
+    held = np.flatnonzero(levels.holds).tolist()
+    if not held:
         yield from _gap(levels, 0.0, levels.floor)
         return
     first, last = held[0], held[-1]
     yield from _edge(levels, 0.0, float(levels.depth[first]), first, gap)
-    for above, below in zip(held[:-1], held[1:], strict=True):
+    for above, below in pairwise(held):
         top, bottom = float(levels.depth[above]), float(levels.depth[below])
         if bottom - top > gap:
             yield from _gap(levels, top, bottom)
@@ -119,8 +120,8 @@ def _edge(
 
 def _gap(levels: Levels, top: float, bottom: float) -> Iterator[tuple[float, float, int, int, str]]:
     """Yield what is not filled: each level in it speaks for what is nearest to it."""
-    inside = [k for k in np.flatnonzero(~levels.holds) if top <= levels.depth[k] <= bottom]
-    middles = [float(levels.depth[a] + levels.depth[b]) / 2 for a, b in zip(inside[:-1], inside[1:], strict=True)]
+    inside = [k for k in np.flatnonzero(~levels.holds).tolist() if top <= levels.depth[k] <= bottom]
+    middles = [float(levels.depth[a] + levels.depth[b]) / 2 for a, b in pairwise(inside)]
     ends = [top, *middles, bottom]
     reasons = [levels.reason[k] for k in inside] or [DEPTH_GAP]
     for above, below, reason in zip(ends[:-1], ends[1:], reasons, strict=True):

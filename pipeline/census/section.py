@@ -148,9 +148,14 @@ def _reasons(samples: pa.Table) -> NDArray[np.object_]:
     )  # fmt: skip
 
 
+def in_order(samples: pa.Table) -> pa.Table:
+    """Return samples in one order, whatever order they came in, so that sums over them are the same to the last bit."""
+    return samples.take(pa.array(np.argsort(_ranks(samples))))
+
+
 def _ranks(samples: pa.Table) -> IntArray:
     """Return the place of each row among all, (n_row,), by what tells rows apart: never by where it stands."""
-    keys = [texts(samples, name) for name in ("cast", "sample", "file")]
+    keys = [texts(samples, name) for name in ("station", "cast", "sample", "file")]
     lines = floats(samples, "line")
     order = sorted(range(samples.num_rows), key=lambda row: (*((key[row] or "") for key in keys), lines[row]))
     rank = np.empty(samples.num_rows, dtype=np.int64)
@@ -159,7 +164,12 @@ def _ranks(samples: pa.Table) -> IntArray:
 
 
 def _stations(
-    samples: pa.Table, placed: BoolArray, latitude: FloatArray, longitude: FloatArray, rank: IntArray, same_place: float
+    samples: pa.Table,
+    placed: BoolArray,
+    latitude: FloatArray,
+    longitude: FloatArray,
+    rank: IntArray,
+    same_place: float,
 ) -> list[tuple[str, IntArray]]:
     """Return the stations by name, each with its rows by rank; a name used again elsewhere is another station."""
     named = texts(samples, "station")

@@ -69,13 +69,13 @@ def lay_out(section: Section, boundaries: FloatArray) -> Layout:
     known = pieces.resolved
     weights = np.zeros((len(upper), section.n_level))
     for part, level in ((upper, pieces.upper), (lower, pieces.lower)):
-        for row, own in zip(weights, part, strict=True):
-            row += np.bincount(level[known], own[known], minlength=section.n_level)
+        weights += np.array([np.bincount(level[known], own[known], section.n_level) for own in part])
     height = upper + lower
     unresolved = {
-        reason: height[:, pieces.reason == reason].sum(axis=1) for reason in sorted(set(pieces.reason[~known]))
+        reason: height[:, pieces.reason == reason].sum(axis=1)
+        for reason in sorted(set(pieces.reason[~known]))
     }
-    gaps = ()
+    gaps: tuple[tuple[str, str, float], ...] = ()
     if has_width:
         far = np.flatnonzero(~section.filled)
         gaps = tuple((section.names[k], section.names[k + 1], float(lengths[k])) for k in far)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from itertools import pairwise
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -58,7 +59,9 @@ def _along(latitude: FloatArray, longitude: FloatArray) -> IntArray:
     return np.argsort(centred @ direction, kind="stable")
 
 
-def project(points: FloatArray, track: FloatArray, along: FloatArray, legs: IntArray) -> tuple[FloatArray, FloatArray]:
+def project(
+    points: FloatArray, track: FloatArray, along: FloatArray, legs: IntArray
+) -> tuple[FloatArray, FloatArray]:
     """Return where along a track points lie, and how far off it, km, (n_point,) each; NaN where it has no leg.
 
     Parameters
@@ -93,14 +96,14 @@ def _part_of_leg(points: FloatArray, start: FloatArray, end: FloatArray) -> Floa
         return np.zeros(len(points))
     across = np.cross(start, end)
     towards = np.cross(across / np.linalg.norm(across), start)
-    return np.clip(np.arctan2(points @ towards, points @ start) / whole, 0.0, 1.0)
+    return np.asarray(np.clip(np.arctan2(points @ towards, points @ start) / whole, 0.0, 1.0))
 
 
 def _between(start: FloatArray, end: FloatArray, part: FloatArray) -> FloatArray:
     """Return points on the leg, (n_part, 3)."""
     whole = float(_angle(start[None], end)[0])
     if whole == 0.0:
-        return np.broadcast_to(start, (len(part), 3))
+        return np.asarray(np.tile(start, (len(part), 1)), dtype=np.float64)
     weights = np.stack([np.sin((1 - part) * whole), np.sin(part * whole)], axis=1) / np.sin(whole)
     return np.asarray(weights @ np.stack([start, end]))
 
@@ -112,4 +115,4 @@ def _angle(one: FloatArray, other: FloatArray) -> FloatArray:
 
 def pairs(values: Sequence[float] | FloatArray) -> list[tuple[float, float]]:
     """Return neighbours of a rising list that are apart."""
-    return [(float(a), float(b)) for a, b in zip(values[:-1], values[1:], strict=True) if b > a]
+    return [(float(a), float(b)) for a, b in pairwise(values) if b > a]

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import sys
 
-from pipeline.checking import CHECKS
+from pipeline.checking import CHECKS, CONCLUSIONS
 from pipeline.checking.table import markdown
 
-sys.stdout.write(markdown(CHECKS.values()) + "\n")
+sys.stdout.write(markdown([*CHECKS.values(), *CONCLUSIONS.values()]) + "\n")

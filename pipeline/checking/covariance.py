@@ -45,8 +45,8 @@ def robust_shape(values: FloatArray) -> Shape:
         Without gaps, (n_sample, n_variable), with more samples than variables.
 
     """
-    middle = np.median(values, axis=0)
-    scale = SIGMA * np.median(np.abs(values - middle), axis=0)
+    middle = medians(values)
+    scale = SIGMA * medians(np.abs(values - middle))
     spread = values.std(axis=0)
     scale = np.where(scale > 0, scale, np.where(spread > 0, spread, 1.0))
     normal = (values - middle) / scale
@@ -91,6 +91,13 @@ def conditional_residuals(values: FloatArray, shape: Shape) -> tuple[FloatArray,
         residual[cells] = pulled / own
         normal[cells] = pulled / np.sqrt(own)
     return residual, normal
+
+
+def medians(values: FloatArray) -> FloatArray:
+    """Return the median of each column of values without gaps, (n_variable,): numpy's own, to the bit, and faster."""
+    columns = np.sort(np.ascontiguousarray(values.T), axis=1)
+    lower, upper = columns[:, (len(values) - 1) // 2], columns[:, len(values) // 2]
+    return np.asarray((lower + upper) / 2.0 if len(values) % 2 == 0 else upper)
 
 
 def _covariance(values: FloatArray) -> FloatArray:

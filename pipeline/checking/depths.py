@@ -53,7 +53,11 @@ def bottom_depth(data: Rows, settings: Settings) -> list[Mark]:
     excess = depth - floor - np.maximum(checks.bottom_depth, checks.bottom_share * floor)
     rows = _once_a_cast(data, np.where(judged, excess, -1.0))
     if len(rows):
-        values = [f"{floor[i]:.0f} m, and a sample of the cast lies at {depth[i]:.0f} m" for i in rows]
+        pressure = hydrography(data).pressure
+        values = [
+            f"{floor[i]:.0f} m, and the sample at CTDPRS {pressure[i]:g} of the cast would lie at {depth[i]:.0f} m"
+            for i in rows
+        ]
         limit = "a sea floor below the deepest sample"
         words = "is {value}"
         marks.append(Mark("bottom-depth", Severity.DOUBT, "bottom_depth", rows, values, words, limit))

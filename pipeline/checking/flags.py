@@ -39,33 +39,25 @@ def unknown_flag(data: Rows, settings: Settings) -> list[Mark]:
     """Flags outside the scheme of their column."""
     marks = []
     for name in (*MEASURED, "bottle"):
-        if flag_name(name) not in data.names:
-            continue
         scheme = REGISTRY[name].flags
-        if scheme is None:
+        if flag_name(name) not in data.names or scheme is None:
             continue
         flags = data.floats(flag_name(name))
         rows = np.flatnonzero(~np.isnan(flags) & ~one_of(flags, SCHEMES[scheme]))
         if len(rows):
             limit = f"a WHP {_NAMES[scheme]} flag, {SCHEMES[scheme][0]} to {SCHEMES[scheme][-1]}"
+            outcome = "what was drawn from the bottle is used all the same" if name == "bottle" else _unused(settings, "values under it are")
             marks.append(
-                Mark(
-                    "unknown-flag",
-                    Severity.DOUBT,
-                    name,
-                    rows,
-                    flags[rows].tolist(),
-                    "has flag {value}",
-                    limit,
-                )
-            )
+                Mark("unknown-flag", Severity.DOUBT, name, rows, flags[rows].tolist(), "has flag {value}", limit,
+                     outcome=outcome)
+            )  # fmt: skip
     return marks
 
 
 def igoss_flag(data: Rows, settings: Settings) -> list[Mark]:
     """Values that an IGOSS flag column, which stands in place of a WHP one, calls doubtful or erroneous."""
     marks = []
-    for column in data.table.column_names:
+    for column in data.table.schema.names:
         variable = EXCHANGE_NAMES.get(column.upper().removesuffix(_IGOSS_SUFFIX))
         if not column.upper().endswith(_IGOSS_SUFFIX) or variable is None or variable.name not in CHECKED:
             continue
@@ -76,7 +68,7 @@ def igoss_flag(data: Rows, settings: Settings) -> list[Mark]:
                 marks.append(
                     Mark(
                         "igoss-flag", severity, variable.name, rows, flags[rows].tolist(),
-                        f"is {word} by its IGOSS flag {{value}}", "a good value",
+                        f"is {word} by its IGOSS flag {{value}}", "a good value", outcome=_unused(settings, "it is"),
                     )
                 )  # fmt: skip
     return marks
@@ -108,7 +100,8 @@ def value_under_missing_flag(data: Rows, settings: Settings) -> list[Mark]:
             marks.append(
                 Mark(
                     "value-under-missing-flag", Severity.DOUBT, name, rows, values[rows].tolist(),
-                    "is {value} under a flag that says there is no value", "no value, or another flag",
+                    "is {value} under a flag that says there is no value", "no value, or another flag", alike=True,
+                    outcome=_unused(settings, "it is"),
                 )
             )  # fmt: skip
     return marks
@@ -121,16 +114,35 @@ def all_flagged_bad(data: Rows, settings: Settings) -> list[Mark]:
         rows = np.flatnonzero(~np.isnan(data.floats(name)))
         if len(rows) < _FEWEST_FOR_A_WHOLE or data.may_use(name)[rows].any():
             continue
-        flags = data.floats(flag_name(name))[rows]
+        flags, scheme = data.floats(flag_name(name))[rows], REGISTRY[name].flags
+        if scheme is not None and not one_of(flags, SCHEMES[scheme]).any():
+            continue  # the flags themselves are told of
+        flags, place = _as_delivered(data, name)
+        flags = flags[rows]
         common = np.bincount(flags[np.isfinite(flags) & (flags >= 0)].astype(int), minlength=1).argmax()
+        most = "all" if np.all(flags == common) else "most"
         marks.append(
             Mark(
-                "all-flagged-bad", Severity.NOTE, name, rows[:1], [int(common)],
-                f"has {len(rows)} values and none under a good flag (most have flag {{value}})",
-                "some good values, if the parameter is meant to be used",
+                "all-flagged-bad", Severity.NOTE, name, rows, [int(common)],
+                f"has {len(rows)} values and none under a good flag ({most} have flag {{value}}{place})",
+                "some good values, if the parameter is meant to be used", together=True,
             )
         )  # fmt: skip
     return marks
+
+
+def _as_delivered(data: Rows, name: str) -> tuple[NDArray[np.float64], str]:
+    """Return the flags of a quantity as the file has them, (n_row,), and in which column, where we read them as others."""
+    field = data.table.schema.field(flag_name(name))
+    column = (field.metadata or {}).get(b"delivered_name", b"").decode()
+    if column not in data.names or not pa.types.is_floating(data.table.schema.field(column).type):
+        return data.floats(flag_name(name)), ""
+    return data.floats(column), f" in {column}"
+
+
+def _unused(settings: Settings, words: str) -> str:
+    """Return what becomes of values that are doubted, nothing where the settings let them be used."""
+    return "" if settings.use.doubtful else f"{words} not used"
 
 
 def _flagged(data: Rows) -> list[str]:

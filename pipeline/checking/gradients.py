@@ -6,11 +6,11 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from pipeline.checking.figures import beyond, unit_of
 from pipeline.checking.marks import Mark
 from pipeline.checking.neighbours import plausible
 from pipeline.checking.profiles import LIMITED, ladder, limit_at
 from pipeline.findings import Severity
-from pipeline.variables import REGISTRY
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -67,7 +67,7 @@ def _marks(name: str, levels: Ladder, slope: FloatArray, most: FloatArray, steep
     told = np.zeros(n_level, dtype=bool)
     told[steep + 1] = True
     told &= ~doubted & ~np.roll(doubted, 1)
-    unit = "" if REGISTRY[name].unit == "1" else f"{REGISTRY[name].unit} "
+    unit = f"{unit_of(name)} ".lstrip()
     marks = []
     for severity, chosen in ((Severity.DOUBT, doubted), (Severity.NOTE, told)):
         at = np.flatnonzero(chosen)
@@ -75,10 +75,17 @@ def _marks(name: str, levels: Ladder, slope: FloatArray, most: FloatArray, steep
         if not len(at):
             continue
         step = np.where(above[at], at - 1, at)  # the step told of is the one above, if it is steep
+        figures = [beyond(abs(float(slope[i])), float(most[i])) for i in step]
         values = [
-            f"by {slope[i]:+.2g} {unit}per dbar from {levels.values[i]:g} to {levels.values[i + 1]:g}"
-            for i in step
+            f"by {'-' if slope[i] < 0 else '+'}{by} {unit}per dbar from {levels.values[i]:g} to {levels.values[i + 1]:g}"
+            for i, (by, _) in zip(step, figures, strict=True)
         ]
-        limits = [f"at most {most[i]:.2g} {unit}per dbar at {levels.pressure[i]:.0f} dbar" for i in step]
-        marks.append(Mark("gradient", severity, name, levels.rows[at], values, "changes {value}", limits))
+        limits = [
+            f"at most {limit} {unit}per dbar at {levels.pressure[i]:.0f} dbar"
+            for i, (_, limit) in zip(step, figures, strict=True)
+        ]
+        other = levels.rows[np.where(above[at], at - 1, at + 1)]
+        marks.append(
+            Mark("gradient", severity, name, levels.rows[at], values, "changes {value}", limits, beside=other)
+        )
     return marks

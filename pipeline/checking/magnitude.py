@@ -11,8 +11,10 @@ from typing import TYPE_CHECKING
 import gsw
 import numpy as np
 
+from pipeline.checking.figures import label, plain, unit_of
 from pipeline.checking.hydrography import hydrography
 from pipeline.checking.marks import Mark
+from pipeline.checking.relations import DEEP, Misplaced, misplaced
 from pipeline.checking.saturation import solubility
 from pipeline.findings import Severity
 from pipeline.units import OXYGEN_UMOL_PER_MG, OXYGEN_UMOL_PER_ML
@@ -51,6 +53,20 @@ class _Suspicion:
     own: tuple[float, float]
     below: float = 0.0
     reaches: float = -np.inf
+
+
+@dataclass(frozen=True, slots=True)
+class _Whole:
+    """The suspicion of a whole column: "has values from 1 to 2, <given>; expected <own>".
+
+    ``possible`` is what the column can have if the suspicion is right.
+    """
+
+    values: FloatArray  # (n_row,)
+    variable: str
+    given: str
+    own: str
+    possible: tuple[float, float] | None = None
 
 
 def _amounts(name: str, deep: tuple[float, float], molar_mass: float) -> tuple[_Suspicion, ...]:
@@ -92,6 +108,11 @@ _SUSPICIONS = (
         for name in ("dic", "alkalinity")
         for unit, factor in (("mol/kg", _UMOL_PER_MOL), ("mmol/kg", _UMOL_PER_MMOL), ("nmol/kg", 1e-3))
     ),
+    *(
+        _Suspicion(name, f"sea water has in {unit}", factor, 0.0, _CARBON, (700.0, 4500.0), 500.0)
+        for name in ("dic", "alkalinity")
+        for unit, factor in (("tens of umol/kg", 10.0), ("tenths of umol/kg", 0.1))
+    ),
     _Suspicion(
         "dic",
         "sea water has in mg of carbon per litre",
@@ -113,15 +134,26 @@ _EXCHANGED = (
 def wrong_unit(data: Rows, settings: Settings) -> list[Mark]:
     """Columns that look as if they were in another unit, or another column's."""
     share, fewest = settings.checks.whole_column, settings.checks.whole_column_samples
-    marks: dict[str, Mark] = {}
+    wrong: dict[str, _Whole] = {}
     with np.errstate(all="ignore"):  # values of any size are what is looked for
-        found = [mark for look in _LOOKS for mark in look(data, share, fewest)]
-    for mark in found:
-        marks.setdefault(mark.variable, mark)  # the first suspicion of a column is told
-    return list(marks.values())
+        for look in _LOOKS:
+            for whole in look(data, share, fewest):
+                wrong.setdefault(whole.variable, whole)  # the first suspicion of a column is told
+        for off in misplaced(data, wrong, share, fewest):
+            wrong[off.name] = _powers(data, off)
+    outcome = "" if settings.use.doubtful else "the column is not used"
+    return [mark for whole in wrong.values() for mark in _marks(whole, outcome)]
 
 
-def _units(data: Rows, share: float, fewest: int) -> Iterator[Mark]:
+def _powers(data: Rows, off: Misplaced) -> _Whole:
+    """Return the suspicion of a column that is a power of ten off."""
+    given = f"{off.times} what {off.by} of the same samples leave room for below {DEEP:g} dbar"
+    own = f"about {plain(off.fits[0])} to {plain(off.fits[1])} {unit_of(off.name)} there"
+    low, high = _plausible(off.name)
+    return _Whole(data.usable(off.name), off.name, given, own, (off.factor * low, off.factor * high))
+
+
+def _units(data: Rows, share: float, fewest: int) -> Iterator[_Whole]:
     pressure = hydrography(data).pressure
     for suspicion in _SUSPICIONS:
         if suspicion.variable not in data.names:
@@ -136,11 +168,13 @@ def _units(data: Rows, share: float, fewest: int) -> Iterator[Mark]:
         if _within(judged * suspicion.factor + suspicion.offset, suspicion.fits) >= share:
             where = f" from {suspicion.below:g} dbar down" if suspicion.below else ""
             low, high = suspicion.own if suspicion.variable == "delta_carbon_13" else suspicion.fits
-            own = f"about {low:g} to {high:g} {_unit(suspicion.variable)}".rstrip() + where
-            yield _whole(values, suspicion.variable, suspicion.unit, own)
+            own = f"about {low:g} to {high:g} {unit_of(suspicion.variable)}".rstrip() + where
+            ends = ((end - suspicion.offset) / suspicion.factor for end in _plausible(suspicion.variable))
+            low, high = sorted(ends)
+            yield _Whole(values, suspicion.variable, f"as {suspicion.unit}", own, (low, high))
 
 
-def _exchanged(data: Rows, share: float, fewest: int) -> Iterator[Mark]:
+def _exchanged(data: Rows, share: float, fewest: int) -> Iterator[_Whole]:
     """Yield two marks for each pair of columns of which each holds what the other should."""
     pressure = hydrography(data).pressure
     for (one, of_one), (other, of_other), below in _EXCHANGED:
@@ -157,12 +191,13 @@ def _exchanged(data: Rows, share: float, fewest: int) -> Iterator[Mark]:
                 (ones, one, other, of_one),
                 (others, other, one, of_other),
             ):
-                own = f"about {low:g} to {high:g} {_unit(name)} from {below:g} dbar down"
-                yield _whole(values, name, f"{_label(wrong)} has; the two columns may be exchanged", own)
+                own = f"about {low:g} to {high:g} {unit_of(name)} from {below:g} dbar down"
+                given = f"as {label(wrong)} has; the two columns may be exchanged"
+                yield _Whole(values, name, given, own, _plausible(wrong))
     yield from _carbon_exchanged(data, share, fewest)
 
 
-def _carbon_exchanged(data: Rows, share: float, fewest: int) -> Iterator[Mark]:
+def _carbon_exchanged(data: Rows, share: float, fewest: int) -> Iterator[_Whole]:
     """Yield marks where DIC lies above alkalinity everywhere, as it does in no sea."""
     carbon, alkalinity = data.usable("dic"), data.usable("alkalinity")
     rows = ~np.isnan(carbon + alkalinity)
@@ -171,11 +206,11 @@ def _carbon_exchanged(data: Rows, share: float, fewest: int) -> Iterator[Mark]:
     fits = (carbon[rows] - alkalinity[rows] > 20.0) & (np.abs(carbon[rows] - alkalinity[rows]) < 500.0)
     if fits.mean() >= share:
         own = "TCARBN below ALKALI, as in all oceans"
-        yield _whole(carbon, "dic", "ALKALI has; the two columns may be exchanged", own)
-        yield _whole(alkalinity, "alkalinity", "TCARBN has; the two columns may be exchanged", own)
+        for values, name, wrong in ((carbon, "dic", "alkalinity"), (alkalinity, "alkalinity", "dic")):
+            yield _Whole(values, name, f"as {label(wrong)} has; the two columns may be exchanged", own)
 
 
-def _oxygen(data: Rows, share: float, fewest: int) -> Iterator[Mark]:
+def _oxygen(data: Rows, share: float, fewest: int) -> Iterator[_Whole]:
     """Yield a mark where oxygen near the surface is that of air in another unit, and not in its own."""
     water = hydrography(data)
     units = {
@@ -183,6 +218,8 @@ def _oxygen(data: Rows, share: float, fewest: int) -> Iterator[Mark]:
         "mg/l": OXYGEN_UMOL_PER_MG * _LITRES_PER_KG,
         "mmol/kg": _UMOL_PER_MMOL,
         "mol/kg": _UMOL_PER_MOL,
+        "tenths of umol/kg": 0.1,
+        "tens of umol/kg": 10.0,
         "umol/kg when that is taken for ml/l and converted": 1.0 / (OXYGEN_UMOL_PER_ML * _LITRES_PER_KG),
     }
     for name in ("bottle_oxygen", "ctd_oxygen"):
@@ -205,10 +242,11 @@ def _oxygen(data: Rows, share: float, fewest: int) -> Iterator[Mark]:
             and _within(whole, (-2.0, 500.0)) >= share
         ):
             own = "oxygen near saturation close to the surface, 150 to 450 umol/kg"
-            yield _whole(values, name, f"sea water has in {unit}", own)
+            low, high = (end / units[unit] for end in _plausible(name))
+            yield _Whole(values, name, f"as sea water has in {unit}", own, (low, high))
 
 
-def _conductivity(data: Rows, share: float, fewest: int) -> Iterator[Mark]:
+def _conductivity(data: Rows, share: float, fewest: int) -> Iterator[_Whole]:
     """Yield a mark where salinity follows temperature as conductivity does, and is even when taken as that."""
     water = hydrography(data)
     for name in ("bottle_salinity", "ctd_salinity"):
@@ -235,13 +273,12 @@ def _conductivity(data: Rows, share: float, fewest: int) -> Iterator[Mark]:
                 continue
             salinity = gsw.SP_from_C(values[rows] * factor, water.temperature[rows], water.pressure[rows])
             if _within(salinity, (28.0, 41.0)) >= share and _spread(salinity) < 0.3 * own * factor:
-                yield _whole(
-                    values, name, f"the conductivity of sea water has in {unit}", "practical salinity"
-                )
+                given = f"as the conductivity of sea water has in {unit}"
+                yield _Whole(values, name, given, "practical salinity")
                 break
 
 
-def _pressure(data: Rows, share: float, fewest: int) -> Iterator[Mark]:
+def _pressure(data: Rows, share: float, fewest: int) -> Iterator[_Whole]:
     """Yield a mark where casts end at a tenth, a hundredth or ten times the depth of the sea floor."""
     pressure, bottom = data.usable("pressure"), data.floats("bottom_depth")
     with np.errstate(invalid="ignore"):
@@ -259,25 +296,33 @@ def _pressure(data: Rows, share: float, fewest: int) -> Iterator[Mark]:
             and (part > 2).all() | (part < 0.2).all()
         ):
             own = f"dbar: the casts end at {float(np.median(part)):.2g} of the depth of the sea floor"
-            yield _whole(pressure, "pressure", f"the casts would have in {unit}", own)
+            yield _Whole(pressure, "pressure", f"as the casts would have in {unit}", own)
             return
 
 
-def _whole(values: FloatArray, name: str, given: str, own: str) -> Mark:
-    """Return the doubt of a whole column that looks like what is ``given``, where sea water has its ``own``."""
+def _marks(whole: _Whole, outcome: str) -> Iterator[Mark]:
+    """Yield the doubt of a whole column, and the faults of values that are none in the other unit either."""
+    values, name = whole.values, whole.variable
     rows = np.flatnonzero(~np.isnan(values))
-    low, high = (f"{v:.4g}" for v in (values[rows].min(), values[rows].max()))
-    words = f"has {len(rows)} values from {{value}}, as {given}"
-    return Mark(_NAME, Severity.DOUBT, name, rows, [f"{low} to {high}"], words, own, together=True)
+    low, high = (f"{v:.4g}" for v in np.quantile(values[rows], [0.05, 0.95]))
+    words = f"has {len(rows)} values, nine tenths of them from {{value}}, {whole.given}"
+    yield Mark(_NAME, Severity.DOUBT, name, rows, [f"{low} to {high}"], words, whole.own, together=True, outcome=outcome)
+    if whole.possible is not None:
+        least, most = whole.possible
+        span = most - least
+        odd = np.flatnonzero((values < least - span) | (values > most + span))
+        limit = f"{least:.4g} to {most:.4g} in a column like that"
+        if len(odd):
+            yield Mark(
+                _NAME, Severity.FAULT, name, odd, values[odd].tolist(), "is {value}, which is none of these either", limit
+            )
 
 
-_LOOKS = (_exchanged, _units, _oxygen, _conductivity, _pressure)
+_LOOKS = (_exchanged, _conductivity, _units, _oxygen, _pressure)
 
 
-def _unit(name: str) -> str:
-    """Return the unit of a quantity as exchange files write it, in small letters."""
-    unit = REGISTRY[name].unit
-    return {"1": "", "1e-3": "per mil", "degree_C": "degC"}.get(unit, unit.replace(" kg-1", "/kg"))
+def _plausible(name: str) -> tuple[float, float]:
+    return REGISTRY[name].plausible or (-np.inf, np.inf)
 
 
 def _within(values: FloatArray, limits: tuple[float, float]) -> float:
@@ -291,6 +336,3 @@ def _spread(values: FloatArray) -> float:
     low, high = np.quantile(values, [0.05, 0.95])
     return float(high - low) if np.isfinite(high - low) else float("inf")
 
-
-def _label(name: str) -> str:
-    return REGISTRY[name].exchange[0]

@@ -142,10 +142,11 @@ def _told(
         suspect &= ~_ctd_agrees(data, floor)
     if not suspect.any():
         return []
+    rows = np.flatnonzero(suspect)
     with np.errstate(invalid="ignore"):
         # A water mass that follows other rules is met by more samples than one, and lies on its cast's curve.
-        suspect &= unlike(residual, neighbours(data, residual)) > np.abs(residual) / 2
-        rows = np.flatnonzero(suspect & _juts_out(data, name, residual))
+        alone = unlike(residual[rows], neighbours(data, residual, rows)) > np.abs(residual[rows]) / 2
+        rows = rows[alone & _juts_out(data, name, residual, rows)]
     if not len(rows):
         return []
     values = [
@@ -157,14 +158,15 @@ def _told(
     return [Mark(_NAME, Severity.DOUBT, name, rows, values, words, limit)]
 
 
-def _juts_out(data: Rows, name: str, residual: FloatArray) -> NDArray[np.bool_]:
-    """Return where a value lies off the line between the samples above and below to the side of its residual, (n_row,).
+def _juts_out(data: Rows, name: str, residual: FloatArray, rows: NDArray[np.int64]) -> NDArray[np.bool_]:
+    """Return which of some rows lie off the line between the samples above and below, to the side of their residual.
 
-    At the ends of a cast, off the casts before and after.
+    At the ends of a cast, off the casts before and after. Shape (n_suspect,).
     """
     values = plausible(data, name)
-    away = (values[:, None] - neighbours(data, values)) * np.sign(residual)[:, None]
-    off = away > np.abs(residual)[:, None] / 2
+    by = residual[rows, None]
+    away = (values[rows, None] - neighbours(data, values, rows)) * np.sign(by)
+    off = away > np.abs(by) / 2
     unknown = np.isnan(away)
     sides = (off | unknown)[:, BEFORE] & (off | unknown)[:, AFTER] & ~(unknown[:, BEFORE] & unknown[:, AFTER])
     return np.where(unknown[:, BETWEEN], sides, off[:, BETWEEN])

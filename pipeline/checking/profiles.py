@@ -56,11 +56,13 @@ def ladder(data: Rows, values: FloatArray) -> Ladder:
 def limit_at(limit: DepthLimit, pressure: FloatArray, checks: CheckSettings) -> FloatArray:
     """Return a limit at pressures in dbar, (n,): constant above and below, in equal ratios between."""
     span = max(checks.deep_pressure - checks.upper_pressure, 1.0)
-    part = np.clip((pressure - checks.upper_pressure) / span, 0.0, 1.0)
+    part = np.minimum(np.maximum((pressure - checks.upper_pressure) / span, 0.0), 1.0)
     return np.asarray(limit.upper * (limit.deep / limit.upper) ** part)
 
 
-def departure(cast: IntArray, pressure: FloatArray, values: FloatArray, stride: int = 1) -> FloatArray:
+def departure(
+    cast: IntArray, pressure: FloatArray, values: FloatArray, stride: int = 1, *, slopes: bool = True
+) -> FloatArray:
     """Return how far each level lies outside what the levels around it allow, (n_level,), signed.
 
     Allowed is all between the next level above and the next below, and all up to where the slope of the two
@@ -77,6 +79,8 @@ def departure(cast: IntArray, pressure: FloatArray, values: FloatArray, stride: 
         (n_level,) the quantity; no NaN.
     stride
         How many levels away the neighbours are taken from.
+    slopes
+        Whether what the slopes lead to is allowed as well: without it no departure is smaller.
 
     """
     out = np.zeros(len(values))
@@ -85,13 +89,11 @@ def departure(cast: IntArray, pressure: FloatArray, values: FloatArray, stride: 
     above, below = values[: -2 * stride], values[2 * stride :]
     here = values[stride:-stride]
     low, high = np.minimum(above, below), np.maximum(above, below)
-    for led, there in (
-        _led_to(cast, pressure, values, stride, above=True),
-        _led_to(cast, pressure, values, stride, above=False),
-    ):
+    inside = cast[: -2 * stride] == cast[2 * stride :]
+    for above_it in (True, False) if slopes else ():
+        led, there = _led_to(cast, pressure, values, stride, above=above_it)
         low = np.where(there, np.minimum(low, led), low)
         high = np.where(there, np.maximum(high, led), high)
-    inside = cast[: -2 * stride] == cast[2 * stride :]
     out[stride:-stride] = np.where(inside, np.maximum(here - high, 0.0) - np.maximum(low - here, 0.0), 0.0)
     return out
 
@@ -104,7 +106,7 @@ def _led_to(
     here = np.arange(stride, stride + n_inner)
     near = here - stride if above else here + stride
     beyond = near - stride if above else near + stride
-    far = np.clip(beyond, 0, len(values) - 1)
+    far = np.minimum(np.maximum(beyond, 0), len(values) - 1)
     away, apart = np.abs(pressure[here] - pressure[near]), np.abs(pressure[near] - pressure[far])
     there = (far == beyond) & (cast[far] == cast[here]) & (apart > _TOUCHING)
     ratio = np.minimum(away / np.where(there, apart, 1.0), FURTHEST_SLOPE)

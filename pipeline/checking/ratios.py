@@ -56,16 +56,14 @@ def nitrate_to_phosphate(data: Rows, settings: Settings) -> list[Mark]:
     with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
         ratio = nitrates / phosphates
         odd = (np.abs(star) > checks.n_star) | ((pressure > DEEP) & ((ratio < low) | (ratio > high)))
-    if not odd.any():
-        return []
+    rows = np.flatnonzero(odd)
     with np.errstate(invalid="ignore"):
         # N loss and N fixation are real, and seen by more samples than one.
-        odd &= unlike(star, neighbours(data, star)) > checks.n_star_departure
-    rows = np.flatnonzero(odd)
+        rows = rows[unlike(star[rows], neighbours(data, star, rows)) > checks.n_star_departure]
     if not len(rows):
         return []
-    of_nitrate = _departure(nitrates, neighbours(data, nitrates))[rows]
-    of_phosphate = N_PER_P * _departure(phosphates, neighbours(data, phosphates))[rows]
+    of_nitrate = _departure(nitrates[rows], neighbours(data, nitrates, rows))
+    of_phosphate = N_PER_P * _departure(phosphates[rows], neighbours(data, phosphates, rows))
     marks = []
     for variable, spared in (
         (name, of_phosphate > _CLEARLY * of_nitrate), ("phosphate", of_nitrate > _CLEARLY * of_phosphate),

@@ -6,11 +6,12 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from pipeline.checking.figures import unit_of
 from pipeline.checking.hydrography import hydrography
 from pipeline.checking.marks import Mark
 from pipeline.checking.neighbours import neighbours, plausible, unlike
 from pipeline.findings import Severity
-from pipeline.variables import MEASURED, REGISTRY
+from pipeline.variables import MEASURED
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -37,14 +38,12 @@ def regional_range(data: Rows, settings: Settings) -> list[Mark]:
                 continue
             values = plausible(data, name)
             with np.errstate(invalid="ignore"):
-                odd = inside & ((values < low) | (values > high))
-                if odd.any():
-                    odd &= unlike(values, neighbours(data, values)) > _ALONE * (high - low)
-            rows = np.flatnonzero(odd)
+                rows = np.flatnonzero(inside & ((values < low) | (values > high)))
+                if len(rows):
+                    rows = rows[unlike(values[rows], neighbours(data, values, rows)) > _ALONE * (high - low)]
             if len(rows):
-                unit = "" if REGISTRY[name].unit == "1" else f" {REGISTRY[name].unit}"
                 words = f"is {{value}} in {region.name}, and no sample beside it is like that"
-                limit = f"{low:g} to {high:g}{unit}"
+                limit = f"{low:g} to {high:g} {unit_of(name)}".rstrip()
                 marks.append(
                     Mark("regional-range", Severity.DOUBT, name, rows, values[rows].tolist(), words, limit)
                 )

@@ -60,7 +60,8 @@ def stuck_values(data: Rows, settings: Settings) -> list[Mark]:
         if name not in data.names:
             continue
         levels = ladder(data, plausible(data, name))
-        values, found = [], []
+        values: list[str] = []
+        found: list[IntArray] = []
         digit = _last_digit(levels.values)
         for start, stop in _runs(levels, fewest):
             others = others or _witnesses(data)
@@ -71,7 +72,8 @@ def stuck_values(data: Rows, settings: Settings) -> list[Mark]:
         if found:
             limit = "values that change as the water does"
             rows = np.concatenate(found)
-            marks.append(Mark("stuck-values", Severity.DOUBT, name, rows, values, "is {value}", limit))
+            run = np.repeat(np.arange(len(found)), [len(one) for one in found])
+            marks.append(Mark("stuck-values", Severity.DOUBT, name, rows, values, "is {value}", limit, groups=run))
     return marks
 
 

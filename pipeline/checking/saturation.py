@@ -81,13 +81,13 @@ def _supersaturated(
     """Return a doubt of what no neighbour and no second measurement supports: a bloom is seen by more than one."""
     most, usual = settings.checks.supersaturation, settings.checks.surface_saturation[1]
     with np.errstate(invalid="ignore"):
-        above = saturation > most
-        if not above.any():
+        rows = np.flatnonzero(saturation > most)
+        if not len(rows):
             return []
-        supported = np.any(neighbours(data, saturation) > usual, axis=1)
+        supported = np.any(neighbours(data, saturation, rows) > usual, axis=1)
         for other in others:
-            supported |= other > usual
-    rows = np.flatnonzero(above & ~supported)
+            supported |= other[rows] > usual
+    rows = rows[~supported]
     if not len(rows):
         return []
     values = [f"{oxygen:g} umol/kg, {part:.0f} %" for oxygen, part in
@@ -104,7 +104,8 @@ def _surface(data: Rows, name: str, saturation: FloatArray, usual: tuple[float, 
     marks = []
     if low.any():
         with np.errstate(invalid="ignore"):
-            rows = np.flatnonzero(low & (unlike(saturation, neighbours(data, saturation)) > _ALONE))
+            rows = np.flatnonzero(low)
+            rows = rows[unlike(saturation[rows], neighbours(data, saturation, rows)) > _ALONE]
         if len(rows):
             values = [f"{part:.0f} %" for part in saturation[rows]]
             words = "is {value} of saturation at the surface, and no sample beside it is like that"

@@ -7,11 +7,11 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from pipeline.checking.figures import beyond, label, plain, unit_of
 from pipeline.checking.hydrography import hydrography
 from pipeline.checking.marks import Mark
-from pipeline.checking.neighbours import ABOVE, AFTER, BEFORE, BELOW, BETWEEN, neighbours, plausible
+from pipeline.checking.neighbours import AFTER, BEFORE, BETWEEN, above_and_below, neighbours, plausible
 from pipeline.findings import Severity
-from pipeline.variables import REGISTRY
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -33,7 +33,11 @@ _MOST_CASTS_TOLD = 5
 _CONSTANT = 0.9
 # Of what stands around a sample, so many have to speak against the CTD before it is doubted and not the bottle.
 _WITNESSES = 2
-# What else of a bottle is compared, as it is called in files.
+# What each is compared with, and what else of a bottle is compared, as it is called in files.
+_BESIDE = {"bottle_salinity": "ctd_salinity", "ctd_salinity": "bottle_salinity", "bottle_oxygen": "ctd_oxygen",
+           "ctd_oxygen": "bottle_oxygen"}  # fmt: skip
+# Doubted samples of one quantity in a cast from which they are told together (our choice, no source).
+_MANY_OF_CAST = 5
 _OTHER_OF = {"bottle_salinity": "OXYGEN", "bottle_oxygen": "SALNTY"}
 # Scatter of a normal distribution in median absolute deviations.
 _SIGMA = 1.4826
@@ -52,8 +56,6 @@ class _Pairs:
     ctd_values: FloatArray
     difference: FloatArray
     limit: FloatArray
-    beside_bottle: FloatArray  # (n_row, 5)
-    beside_ctd: FloatArray  # (n_row, 5)
 
 
 def bottle_against_ctd(data: Rows, settings: Settings) -> list[Mark]:
@@ -68,7 +70,7 @@ def bottle_against_ctd(data: Rows, settings: Settings) -> list[Mark]:
     ):
         if bottle in data.names and ctd in data.names:
             marks += _compared(data, checks, _pairs(data, checks, bottle, ctd, steps))
-    return _of_the_bottle(marks)
+    return _by_cast(data, _of_the_bottle(marks))
 
 
 def _pairs(
@@ -76,24 +78,23 @@ def _pairs(
 ) -> _Pairs:
     pressure = hydrography(data).pressure
     bottle_values, ctd_values = plausible(data, bottle), plausible(data, ctd)
-    beside_bottle, beside_ctd = neighbours(data, bottle_values), neighbours(data, ctd_values)
     from_on, limits = np.array(sorted(steps), dtype=np.float64).T
     step = np.clip(np.searchsorted(from_on, pressure, side="right") - 1, 0, len(limits) - 1)
     # A bottle is flushed with water from above and below: where that differs, so may the bottle. Of the two
     # profiles the smoother one says how much: a wrong value must not excuse itself.
-    beside_pressure = neighbours(data, np.where(np.isnan(ctd_values), np.nan, pressure))
+    beside = above_and_below(data, np.where(np.isnan(ctd_values), np.nan, pressure))
     with np.errstate(invalid="ignore", divide="ignore"):
-        part = checks.bottle_ctd_reach / np.abs(beside_pressure - pressure[:, None])[:, [ABOVE, BELOW]]
-    blurred = np.fmin(_blurred(bottle_values, beside_bottle, part), _blurred(ctd_values, beside_ctd, part))
+        part = checks.bottle_ctd_reach / np.abs(beside - pressure[:, None])
+    blurred = np.fmin(_blurred(data, bottle_values, part), _blurred(data, ctd_values, part))
     difference = np.where(np.isnan(pressure), np.nan, bottle_values - ctd_values)
-    unit = "" if REGISTRY[bottle].unit == "1" else " umol/kg"
+    unit = f" {unit_of(bottle)}".rstrip()
     limit = limits[step] + blurred
-    return _Pairs(bottle, ctd, unit, bottle_values, ctd_values, difference, limit, beside_bottle, beside_ctd)
+    return _Pairs(bottle, ctd, unit, bottle_values, ctd_values, difference, limit)
 
 
-def _blurred(values: FloatArray, beside: FloatArray, part: FloatArray) -> FloatArray:
+def _blurred(data: Rows, values: FloatArray, part: FloatArray) -> FloatArray:
     """Return by how much water from ``part`` of the way to its neighbours may differ from each value, (n_row,)."""
-    around = np.abs(beside[:, [ABOVE, BELOW]] - values[:, None]) * np.minimum(part, 1.0)
+    around = np.abs(above_and_below(data, values) - values[:, None]) * np.minimum(part, 1.0)
     return np.asarray(np.where(np.isnan(around), 0.0, around).max(axis=1, initial=0.0))
 
 
@@ -144,8 +145,8 @@ def _samples(
     bottle, ctd = pairs.bottle_values[rows], pairs.ctd_values[rows]
     # What stands around a sample (in its cast, in the casts before and after) says which of the two is off by this.
     around = [BETWEEN, BEFORE, AFTER]
-    of_bottle = bottle[:, None] - pairs.beside_bottle[rows][:, around]
-    of_ctd = ctd[:, None] - pairs.beside_ctd[rows][:, around]
+    of_bottle = bottle[:, None] - neighbours(data, pairs.bottle_values, rows)[:, around]
+    of_ctd = ctd[:, None] - neighbours(data, pairs.ctd_values, rows)[:, around]
     by, near = residual[:, None], np.abs(residual[:, None]) / 2
     with np.errstate(invalid="ignore"):
         against_ctd = (np.abs(of_ctd + by) < near) & (np.abs(of_bottle) < near)
@@ -159,14 +160,17 @@ def _samples(
         mine = np.flatnonzero(chosen)
         if not len(mine):
             continue
-        texts = [
-            f"{value:g}, {abs(by):.2g}{pairs.unit} {'higher' if by > 0 else 'lower'}"
-            for value, by in zip(values[mine], away[mine], strict=True)
+        figures = [
+            beyond(abs(by), most) for by, most in zip(away[mine].tolist(), limit[mine].tolist(), strict=True)
         ]
-        words = f"is {{value}} than {_label(other)} and the cruise's other samples imply"
+        texts = [
+            f"{value:g}, {size}{pairs.unit} {'higher' if by > 0 else 'lower'}"
+            for value, by, (size, _) in zip(values[mine], away[mine], figures, strict=True)
+        ]
+        words = f"is {{value}} than {label(other)} and the cruise's other samples imply"
         if variable == pairs.ctd:
-            words += f", and {_label(other)} agrees with the samples around it"
-        limits = [f"the two to agree within {most:.2g}{pairs.unit} there" for most in limit[mine]]
+            words += f", and {label(other)} agrees with the samples around it"
+        limits = [f"the two to agree within {most}{pairs.unit} there" for _, most in figures]
         marks.append(Mark(_NAME, Severity.DOUBT, variable, rows[mine], texts, words, limits))
     return marks
 
@@ -196,6 +200,43 @@ def _of_the_bottle(marks: list[Mark]) -> list[Mark]:
     return parts
 
 
+def _by_cast(data: Rows, marks: list[Mark]) -> list[Mark]:
+    """Return the marks, of a cast in which many samples are doubted one mark for all of them."""
+    doubts = [mark for mark in marks if mark.severity is Severity.DOUBT]
+    told = [mark for mark in marks if mark.severity is not Severity.DOUBT]
+    whole: dict[int, dict[str, list[int]]] = {}
+    for name in dict.fromkeys(mark.variable for mark in doubts):
+        rows = np.concatenate([mark.rows for mark in doubts if mark.variable == name])
+        casts, count = np.unique(data.casts[rows], return_counts=True)
+        for cast in casts[count >= _MANY_OF_CAST].tolist():
+            whole.setdefault(cast, {})[name] = np.sort(rows[data.casts[rows] == cast]).tolist()
+    for mark in doubts:
+        single = np.array([mark.variable not in whole.get(cast, ()) for cast in data.casts[mark.rows].tolist()])
+        if single.any():
+            told.append(mark if single.all() else mark.kept(single))
+    return [*told, *(_of_cast(data, off) for _, off in sorted(whole.items()))]
+
+
+def _of_cast(data: Rows, off: dict[str, list[int]]) -> Mark:
+    """Return the doubt of a cast whose salinity or oxygen, from the CTD or the bottles, is off in many samples."""
+    names = tuple(off)
+    rows = np.array(sorted({row for some in off.values() for row in some}), dtype=np.int64)
+    station, cast = (data.table.column(column)[int(rows[0])].as_py() for column in ("station", "cast"))
+    sizes = []
+    for name in names:
+        by = np.abs(plausible(data, name) - plausible(data, _BESIDE[name]))[off[name]]
+        low, high = (plain(float(np.quantile(by, part)), 2) for part in (0.1, 0.9))
+        size = low if low == high else f"{low} to {high}"
+        sizes.append(f"by {size} {unit_of(name)}".rstrip() + f" from {label(_BESIDE[name])}")
+    ctd = all(name.startswith("ctd") for name in names)
+    cause = "the CTD was off there" if ctd else "bottles may have been numbered or closed out of order"
+    words = f"of station {station} cast {cast} {'differ' if len(names) > 1 else 'differs'} {{value}} in {len(rows)} samples"
+    return Mark(
+        _NAME, Severity.DOUBT, names[0], rows, [" and ".join(sizes)], f"{words}: {cause}",
+        "differences as in the cruise's other casts", together=True, also=names[1:],
+    )  # fmt: skip
+
+
 def _casts(data: Rows, pairs: _Pairs, known: NDArray[np.int64], offsets: FloatArray) -> list[Mark]:
     """Return a note for each cast whose samples all differ by the same; many such casts are told together."""
     limit = float(np.min(pairs.limit[known]))
@@ -204,7 +245,7 @@ def _casts(data: Rows, pairs: _Pairs, known: NDArray[np.int64], offsets: FloatAr
     by = [float(np.median(pairs.difference[members])) for members in rows]
     stations = [str(data.table.column("station")[int(members[0])].as_py()) for members in rows]
     expected = f"within {limit:.2g}{pairs.unit} of the cruise's other casts"
-    differs = f"differs from {_label(pairs.ctd)} by {{value}}{pairs.unit} throughout"
+    differs = f"differs from {label(pairs.ctd)} by {{value}}{pairs.unit} throughout"
     if len(casts) <= _MOST_CASTS_TOLD:
         sentences = [
             (members, f"{size:+.3g}", f"{differs} the {len(members)} samples of station {station}")
@@ -225,15 +266,12 @@ def _casts(data: Rows, pairs: _Pairs, known: NDArray[np.int64], offsets: FloatAr
 
 def _whole(pairs: _Pairs, known: NDArray[np.int64], by: float) -> Mark:
     words = (
-        f"differs from {_label(pairs.ctd)} by {{value}}{pairs.unit} in the median of all {len(known)} samples"
+        f"differs from {label(pairs.ctd)} by {{value}}{pairs.unit} in the median of all {len(known)} samples"
     )
     low, high = _ABSOLUTE_LESS_PRACTICAL
     if pairs.bottle == "bottle_salinity" and low <= abs(by) <= high:
         larger = pairs.bottle if by > 0 else pairs.ctd
-        words += f", as it would if {_label(larger)} were Absolute Salinity"
+        words += f", as it would if {label(larger)} were Absolute Salinity"
     limit = f"less than {float(np.min(pairs.limit[known])) / 2:.2g}{pairs.unit}"
     return Mark(_NAME, Severity.NOTE, pairs.bottle, known, [f"{by:+.3g}"], words, limit, together=True)
 
-
-def _label(name: str) -> str:
-    return REGISTRY[name].exchange[0]

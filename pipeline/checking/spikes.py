@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from pipeline.checking.figures import plain, unit_of
 from pipeline.checking.marks import Mark
 from pipeline.checking.neighbours import plausible
 from pipeline.checking.profiles import LIMITED, departure, ladder, limit_at
@@ -89,8 +90,12 @@ def spikes(
     """
     found: list[IntArray] = []
     for _ in range(_ROUNDS):
-        out = np.abs(departure(levels.cast, levels.pressure, levels.values, width))
         most = limit_at(limit, levels.pressure, checks)
+        if not (
+            np.abs(departure(levels.cast, levels.pressure, levels.values, width, slopes=False)) > most
+        ).any():
+            break
+        out = np.abs(departure(levels.cast, levels.pressure, levels.values, width))
         suspect = np.flatnonzero((out > most) & _near(levels.pressure, width))
         if quiet and len(suspect):
             suspect = suspect[out[suspect] > _TIMES_NOISE * _noise(levels, width, suspect)]
@@ -103,7 +108,9 @@ def spikes(
             worst[step:] &= score[step:] >= score[:-step]
             worst[:-step] &= score[:-step] >= score[step:]
         found.append(levels.rows[worst])
-        levels = levels.kept(~worst)
+        # A cast without a spike has none in the next round either; how quiet it is there is asked of all.
+        again = ~worst if quiet else ~worst & np.isin(levels.cast, levels.cast[worst])
+        levels = levels.kept(again)
     return np.concatenate(found) if found else np.empty(0, dtype=np.int64)
 
 
@@ -134,26 +141,27 @@ def _confirmed(data: Rows, name: str, rows: IntArray, checks: CheckSettings) -> 
     temperature or salinity beyond the limit of a spike there.
     """
     values = plausible(data, name)
-    confirmed = np.zeros(len(data), dtype=bool)
+    confirmed = np.zeros(len(rows), dtype=bool)
     other = _OTHER.get(name)
     if other is not None and other in data.names:
-        mine, theirs = _both_departures(data, values, plausible(data, other))
+        mine, theirs = _both_departures(data, values, plausible(data, other), rows)
         confirmed |= (mine * theirs > 0) & (np.abs(theirs) >= _SHARE_SEEN * np.abs(mine))
     if REGISTRY[name].flags is FlagScheme.WATER:
         for witness in ("temperature", "ctd_salinity"):
             limit: DepthLimit = getattr(checks.spike_bottle, LIMITED[witness])
-            most = limit_at(limit, data.floats("pressure"), checks)
-            confirmed |= np.abs(_both_departures(data, values, plausible(data, witness))[1]) > most
-    return confirmed[rows]
+            most = limit_at(limit, data.floats("pressure")[rows], checks)
+            confirmed |= np.abs(_both_departures(data, values, plausible(data, witness), rows)[1]) > most
+    return confirmed
 
 
-def _both_departures(data: Rows, mine: FloatArray, theirs: FloatArray) -> FloatArray:
-    """Return the departures of two quantities on the levels that have both, (2, n_row), zero elsewhere."""
+def _both_departures(data: Rows, mine: FloatArray, theirs: FloatArray, rows: IntArray) -> FloatArray:
+    """Return the departures of two quantities in some rows on the levels that have both, (2, n_found), else zero."""
     both = ladder(data, np.where(np.isnan(theirs), np.nan, mine))
+    both = both.kept(np.isin(both.cast, data.casts[rows]))
     out = np.zeros((2, len(data)))
     for place, values in enumerate((mine, theirs)):
         out[place, both.rows] = departure(both.cast, both.pressure, values[both.rows])
-    return out
+    return out[:, rows]
 
 
 def _mark(name: str, rows: IntArray, levels: Ladder, limit: DepthLimit, checks: CheckSettings) -> Mark:
@@ -163,7 +171,7 @@ def _mark(name: str, rows: IntArray, levels: Ladder, limit: DepthLimit, checks: 
     # The next sound level above and below: the ladder goes by cast and pressure, as these keys do.
     place = np.searchsorted(sound.cast * _CAST + sound.pressure, spots.cast * _CAST + spots.pressure)
     most = limit_at(limit, spots.pressure, checks)
-    unit = "" if REGISTRY[name].unit == "1" else f" {REGISTRY[name].unit}"
+    unit = f" {unit_of(name)}".rstrip()
     values, limits = [], []
     for i, value in enumerate(spots.values):
         beside = [
@@ -172,5 +180,5 @@ def _mark(name: str, rows: IntArray, levels: Ladder, limit: DepthLimit, checks: 
             if 0 <= j < len(sound.cast) and sound.cast[j] == spots.cast[i]
         ]
         values.append(f"{value:g} with {' and '.join(beside)}" if beside else f"{value:g}")
-        limits.append(f"at most {most[i]:.2g}{unit} beyond what its neighbours allow")
+        limits.append(f"at most {plain(float(most[i]), 2)}{unit} beyond what its neighbours allow")
     return Mark("spike", Severity.DOUBT, name, spots.rows, values, "is {value}", limits)

@@ -8,6 +8,7 @@ import gsw
 import numpy as np
 
 from pipeline import seawater
+from pipeline.checking.figures import beyond
 from pipeline.checking.hydrography import hydrography
 from pipeline.checking.marks import Mark
 from pipeline.checking.neighbours import plausible
@@ -16,6 +17,8 @@ from pipeline.findings import Severity
 from pipeline.variables import REGISTRY
 
 if TYPE_CHECKING:
+    from collections.abc import Sequence
+
     from numpy.typing import NDArray
 
     from pipeline.checking.hydrography import Hydrography
@@ -25,6 +28,9 @@ if TYPE_CHECKING:
     FloatArray = NDArray[np.float64]
     BoolArray = NDArray[np.bool_]
     IntArray = NDArray[np.int64]
+
+# Inversions of a cast, and part of its pairs that go the wrong way, where its pressures may stand in reverse (our choice, no source).
+_FEWEST_TURNED, _MOSTLY = 5, 0.8
 
 
 def density_inversion(data: Rows, settings: Settings) -> list[Mark]:
@@ -52,30 +58,97 @@ def density_inversion(data: Rows, settings: Settings) -> list[Mark]:
     found = np.flatnonzero(paired & (excess > most))
     if not len(found):
         return []
+    size, limit = excess[found], most[found]
     upper, lower = _culprits(data, water, levels, found, checks)
-    salinity_alone = _in_order_by_ctd(data, water, pair[0][found], pair[1][found], most[found])
-    told: dict[str, dict[int, int]] = {"temperature": {}, "bottle_salinity": {}, "ctd_salinity": {}}
-    for place, position in enumerate(found):
-        names = ["bottle_salinity"] if salinity_alone[place] else list(told)
-        for doubted, row in ((upper[place], pair[0][position]), (lower[place], pair[1][position])):
-            for name in names if doubted else ():
-                if name in data.names and not np.isnan(data.usable(name)[row]):
-                    told[name].setdefault(int(row), int(position))
-    words = {
-        int(
-            i
-        ): f"{excess[i]:.3f} kg/m3 between {water.pressure[pair[0][i]]:g} and {water.pressure[pair[1][i]]:g} dbar"
-        for i in found
-    }
-    return [
-        Mark(
-            "density-inversion", Severity.DOUBT, name, np.array(list(rows), dtype=np.int64),
-            [words[i] for i in rows.values()], "is part of a density inversion of {value}",
-            [f"at most {most[i]:.2g} kg/m3" for i in rows.values()],
+    turned = _turned(data, water, levels, found)
+    salinity_alone = _in_order_by_ctd(data, water, pair[0][found], pair[1][found], limit)
+    marks = _upside_down(data, levels, turned)
+    told = ~np.isin(data.casts[pair[0][found]], [cast for cast, _, _ in turned])
+    for alone in (False, True):
+        chosen = np.flatnonzero(told & (salinity_alone == alone))
+        names = ("bottle_salinity",) if alone else ("temperature", "bottle_salinity", "ctd_salinity")
+        ends = [
+            (row, beside, place)
+            for place in chosen.tolist()
+            for doubted, row, beside in (
+                (upper[place], pair[0][found[place]], pair[1][found[place]]),
+                (lower[place], pair[1][found[place]], pair[0][found[place]]),
+            )
+            if doubted
+        ]
+        marks += _marks(data, water, names, ends, size, limit)
+    return marks
+
+
+def _marks(
+    data: Rows,
+    water: Hydrography,
+    names: Sequence[str],
+    ends: Sequence[tuple[int, int, int]],
+    size: FloatArray,
+    limit: FloatArray,
+) -> list[Mark]:
+    """Return doubts of the levels of inverted pairs: a row, the other of its pair, and the place of the pair."""
+    of_names: dict[tuple[str, ...], list[tuple[int, int, int]]] = {}
+    delivered = [(name, data.usable(name)) for name in names if name in data.names]
+    for row, beside, place in ends:
+        there = tuple(name for name, values in delivered if not np.isnan(values[row]))
+        if there:
+            of_names.setdefault(there, []).append((row, beside, place))
+    marks = []
+    for there, members in of_names.items():
+        rows, beside, places = np.array(members, dtype=np.int64).T
+        figures = [beyond(float(size[i]), float(limit[i])) for i in places.tolist()]
+        between = [np.sort(water.pressure[[row, other]]) for row, other, _ in members]
+        marks.append(
+            Mark(
+                "density-inversion", Severity.DOUBT, there[0], rows,
+                [f"{by} kg/m3 between {a:g} and {b:g} dbar" for (by, _), (a, b) in zip(figures, between, strict=True)],
+                f"{'are' if len(there) > 1 else 'is'} part of a density inversion of {{value}}",
+                [f"at most {most} kg/m3" for _, most in figures],
+                also=there[1:], groups=places if data.is_bottle else None, beside=beside,
+            )
+        )  # fmt: skip
+    return marks
+
+
+def _turned(data: Rows, water: Hydrography, levels: IntArray, found: IntArray) -> list[tuple[int, int, int]]:
+    """Return the casts of bottles whose density goes the wrong way nearly throughout.
+
+    Each with the number of pairs where it does, and of all.
+    """
+    if not data.is_bottle:
+        return []
+    inverted = np.bincount(data.casts[levels[found]])
+    turned: list[tuple[int, int, int]] = []
+    for cast in np.flatnonzero(inverted >= _FEWEST_TURNED).tolist():
+        rows = levels[data.casts[levels] == cast]
+        reference = np.full(len(rows), float(np.median(water.pressure[rows])))
+        density = _density(water.absolute_salinity[rows], water.conservative_temperature[rows], reference)
+        lighter = np.count_nonzero(np.diff(density) < 0)
+        if lighter > _MOSTLY * (len(rows) - 1):
+            turned.append((cast, lighter, len(rows) - 1))
+    return turned
+
+
+def _upside_down(data: Rows, levels: IntArray, turned: Sequence[tuple[int, int, int]]) -> list[Mark]:
+    """Return a doubt of the pressures of each cast that is turned."""
+    marks = []
+    for cast, inverted, pairs in turned:
+        rows = np.sort(levels[data.casts[levels] == cast])
+        station, number = (data.table.column(name)[int(rows[0])].as_py() for name in ("station", "cast"))
+        words = (
+            f"of station {station} cast {number} seems to stand in reverse order: in {{value}} pairs of levels the upper"
+            " water is the heavier"
         )
-        for name, rows in told.items()
-        if rows
-    ]  # fmt: skip
+        limit = "density that increases downwards, as it does with the pressures the other way round"
+        marks.append(
+            Mark(
+                "density-inversion", Severity.DOUBT, "pressure", rows, [f"{inverted} of {pairs}"], words, limit,
+                together=True,
+            )
+        )  # fmt: skip
+    return marks
 
 
 def inversion(

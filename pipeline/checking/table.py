@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from pipeline.usable import Rows
 
     Check = Callable[[Rows, Settings], list[Mark]]
+    Conclusion = Callable[[Rows, Settings, Iterable[Mark]], list[Mark]]
 
 HEADINGS = ("check", "looks for", "severity", "limits")
 
@@ -31,14 +32,35 @@ class CheckEntry:
     severities: tuple[Severity, ...]
     limits: tuple[str, ...] = ()  # names of fields of the settings' section ``checks``
     beside: str = ""  # what it is judged by that is no setting
+    as_delivered: bool = False  # looks also at columns that another check took out of use as a whole
 
     @property
     def looks_for(self) -> str:
         """What the check looks for: the first line of its function's docstring."""
-        return (self.run.__doc__ or "").strip().partition("\n")[0].rstrip(".")
+        return _first_line(self.run.__doc__)
 
 
-def markdown(entries: Iterable[CheckEntry]) -> str:
+@dataclass(frozen=True, slots=True)
+class ConclusionEntry:
+    """One conclusion from what the checks found, listed as they are."""
+
+    name: str
+    run: Conclusion
+    severities: tuple[Severity, ...]
+    limits: tuple[str, ...] = ()
+    beside: str = ""
+
+    @property
+    def looks_for(self) -> str:
+        """What the conclusion is about: the first line of its function's docstring."""
+        return _first_line(self.run.__doc__)
+
+
+def _first_line(text: str | None) -> str:
+    return (text or "").strip().partition("\n")[0].rstrip(".")
+
+
+def markdown(entries: Iterable[CheckEntry | ConclusionEntry]) -> str:
     """Return the table of checks as Markdown, with the default of every limit."""
     rows = [HEADINGS, ("---",) * len(HEADINGS)]
     for entry in sorted(entries, key=lambda entry: entry.name):

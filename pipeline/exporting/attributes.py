@@ -6,11 +6,13 @@ import re
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
+import pyarrow as pa
 
 from pipeline.reading.schemes import FLAGS, WHP_MEANINGS, Scheme
 from pipeline.variables import (
     BASE,
     CHECKED,
+    MEASURED,
     REGISTRY,
     RESIDUAL_PREFIX,
     FlagScheme,
@@ -21,15 +23,19 @@ from pipeline.variables import (
 if TYPE_CHECKING:
     from collections.abc import Collection, Mapping
 
-    import pyarrow as pa
     from numpy.typing import NDArray
 
 CONVENTIONS = "CF-1.11, ACDD-1.3"
 COORDINATES = "time latitude longitude pressure"
 UNCERTAINTY = "_uncertainty"
+# Field metadata that names scales and units which the values no longer have: told in a global attribute, so that nobody
+# takes them for those of the variable.
+OF_THE_DELIVERY = ("delivered_name", "delivered_units", "delivered_flags", "conversion")
 _REFERENCE_PRESSURE = {"sigma0": 0.0, "sigma2": 2000.0, "sigma4": 4000.0}  # dbar
 # UDUNITS does not know the tritium unit: one tritium atom in 1e18 of hydrogen, by definition.
 _UNITS = {"tritium_unit": "1e-18"}
+_KNOWN_UNITS = frozenset(one.unit for one in BASE if one.unit)
+_OF_MEASURED = frozenset(name for one in MEASURED if (name := REGISTRY[one].standard_name))
 _FLAGGED = {flag_name(one.name): one.flags for one in BASE if one.flags is not None}
 _CHECKS = frozenset(check_name(name) for name in CHECKED)
 # A meaning of these that no reader of flags by their meanings would know is left out while it is not used.
@@ -47,15 +53,26 @@ def reference_name(name: str) -> str:
 
 
 def variable_name(column: str, taken: Collection[str]) -> str:
-    """Return the name of a column's variable: letters, digits and underscores, a letter first (CF 2.3)."""
+    """Return the name of a column's variable: letters, digits and underscores, a letter first (CF 2.3).
+
+    It is the column's own, but for measured quantities that CF has no name for: these are known by the name that the
+    exchange format has for them. What passed through under its delivered name is marked, lest it be taken for a
+    quantity in its usual unit.
+    """
+    variable = REGISTRY.get(column)
+    if variable is None:
+        column = f"delivered_{column}"
+    elif column in MEASURED and variable.standard_name is None and variable.exchange:
+        column = variable.exchange[0]
     name = re.sub(r"[^A-Za-z0-9_]", "_", column)
-    name = name if re.match(r"[A-Za-z]", name) else f"column_{name}"
     while name in taken:
         name += "_"
     return name
 
 
-def attributes_of(field: pa.Field, columns: Collection[str], used_flags: NDArray[np.int16] | None) -> dict[str, Any]:
+def attributes_of(
+    field: pa.Field, columns: Collection[str], used_flags: NDArray[np.int16] | None
+) -> dict[str, Any]:
     """Return the attributes of a column's variable, without those of its coordinates.
 
     Parameters
@@ -74,28 +91,50 @@ def attributes_of(field: pa.Field, columns: Collection[str], used_flags: NDArray
     references = told.pop("source", "")
     if not standard and field.name.endswith(UNCERTAINTY):
         standard = _error_of(field.name.removesuffix(UNCERTAINTY))
+    elif standard in _OF_MEASURED and field.name not in MEASURED:
+        standard = (
+            ""  # who reads by standard names would take for measured what was chosen, corrected or computed
+        )
     if standard:
         attributes["standard_name"] = standard
-    if units:
+    if units in _KNOWN_UNITS:
         attributes["units"] = _UNITS.get(units, units)
+    elif units:  # as delivered; UDUNITS may not know it
+        attributes["delivered_units"] = units
     if units == "degree_C":
         apart = field.name.startswith(RESIDUAL_PREFIX) or field.name.endswith(UNCERTAINTY)
         attributes["units_metadata"] = f"temperature: {'difference' if apart else 'on_scale'}"
+    attributes["coverage_content_type"] = _content(field)
     if references:
         attributes["references"] = references
     if used_flags is not None:
         attributes |= flag_attributes(field.name, used_flags)
     beside = (flag_name(field.name), check_name(field.name), f"{field.name}{UNCERTAINTY}")
-    if present := [name for name in beside if name in columns]:
+    if present := [variable_name(name, ()) for name in beside if name in columns]:
         attributes["ancillary_variables"] = " ".join(present)
-    for key, text in told.items():  # how it was converted or corrected, and in which form it was computed
+    for key, text in told.items():  # how it was corrected, and in which form it was computed
+        if key in OF_THE_DELIVERY:
+            continue
         attributes[f"seawhence_{re.sub(r'[^A-Za-z0-9_]', '_', key)}"] = text
     return attributes
 
 
 def _error_of(name: str) -> str:
     standard = REGISTRY[name].standard_name if name in REGISTRY else None
-    return f"{standard} standard_error" if standard else ""
+    return f"{standard} standard_error" if standard and standard not in _OF_MEASURED else ""
+
+
+def _content(field: pa.Field) -> str:
+    """Return what kind of thing a column holds, in the words of ACDD (ISO 19115-1)."""
+    if field.type == pa.int16() or field.name.endswith((UNCERTAINTY, "_error")):
+        return "qualityInformation"
+    if field.name in MEASURED:
+        return "physicalMeasurement"
+    if field.name in {"latitude", "longitude", "time", "date"}:
+        return "coordinate"
+    if pa.types.is_string(field.type) or field.name not in REGISTRY:
+        return "auxiliaryInformation"
+    return "modelResult"
 
 
 def flag_attributes(name: str, used: NDArray[np.int16]) -> dict[str, Any]:

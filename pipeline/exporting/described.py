@@ -5,14 +5,13 @@ from __future__ import annotations
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
+import pyarrow as pa
 import pyarrow.compute as pc
 
-from pipeline.exporting.attributes import CONVENTIONS
+from pipeline.exporting.attributes import CONVENTIONS, OF_THE_DELIVERY
 from pipeline.tables import floats
 
 if TYPE_CHECKING:
-    import pyarrow as pa
-
     from pipeline.archive import Provenance
 
 _VOCABULARY = "CF Standard Name Table v93"
@@ -60,11 +59,22 @@ def global_attributes(name: str, table: pa.Table, made: Provenance) -> dict[str,
         "seawhence_catalogue_sha256": made.catalogue_sha256 or "",
         "seawhence_catalogue_title": made.catalogue_title,
         "seawhence_provenance": made.to_json(),
+        "seawhence_deliveries": _delivered_as(table),
     }
-    sections = [one for one in table.column("section").unique().to_pylist() if one] if "section" in table.column_names else []
-    if len(sections) == 1:
-        attributes["section"] = sections[0]
+    if "section" in table.column_names:
+        sections = [one for one in table.column("section").unique().to_pylist() if one]
+        attributes["section"] = sections[0] if len(sections) == 1 else ""
     return {key: value for key, value in attributes.items() if value != ""}
+
+
+def _delivered_as(table: pa.Table) -> str:
+    """Return how columns were delivered and what was converted, a line each."""
+    lines = []
+    for field in table.schema:
+        told = {key: (field.metadata or {}).get(key.encode(), b"").decode() for key in OF_THE_DELIVERY}
+        words = [f"{key.replace('_', ' ')} {text}" for key, text in told.items() if text]
+        lines += [f"{field.name}: {'; '.join(words)}"] if words else []
+    return "\n".join(lines)
 
 
 def _extent(table: pa.Table) -> dict[str, Any]:
@@ -83,7 +93,13 @@ def _extent(table: pa.Table) -> dict[str, Any]:
             "geospatial_vertical_min": float(np.nanmin(depth)), "geospatial_vertical_max": float(np.nanmax(depth)),
             "geospatial_vertical_positive": "down", "geospatial_vertical_units": "m",
         }  # fmt: skip
-    if "date" in table.column_names and (ends := pc.min_max(table.column("date")).as_py())["min"]:
+    if "time" in table.column_names and not table.column("time").null_count:
+        ends = pc.min_max(table.column("time").cast(pa.timestamp("s"))).as_py()
+        told |= {
+            "time_coverage_start": f"{ends['min'].isoformat()}Z",
+            "time_coverage_end": f"{ends['max'].isoformat()}Z",
+        }
+    elif "date" in table.column_names and (ends := pc.min_max(table.column("date")).as_py())["min"]:
         told |= {
             "time_coverage_start": ends["min"].isoformat(),
             "time_coverage_end": ends["max"].isoformat(),

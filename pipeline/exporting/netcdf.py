@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import pyarrow as pa
+import pyarrow.compute as pc
 
 from pipeline.exporting.attributes import (
     COORDINATES,
@@ -14,6 +15,7 @@ from pipeline.exporting.attributes import (
     reference_pressures,
     variable_name,
 )
+from pipeline.exporting.classic import FILLS, ClassicFile
 from pipeline.exporting.described import global_attributes
 from pipeline.exporting.profiles import OF_A_CAST, SHARES, as_profiles, share_arrays
 from pipeline.problems import UsageProblem
@@ -28,13 +30,12 @@ if TYPE_CHECKING:
     from pipeline.archive import Provenance
     from pipeline.exporting.profiles import Profiles
 
+_WHOLE_IN_32_BITS = 2**31
 _EPOCH = "seconds since 1970-01-01 00:00:00"
-_FILLS = {"f8": np.nan, "i2": np.iinfo(np.int16).min, "i4": np.iinfo(np.int32).min, "i8": np.iinfo(np.int64).min}
-_FIRST_ROOM = 1 << 16  # bytes that the library starts with in memory
 
 
 def export_netcdf(name: str, table: pa.Table, mixtures: pa.Table, made: Provenance) -> bytes:
-    """Return a table as a NetCDF-4 file; the same table gives the same bytes.
+    """Return a table as a NetCDF file; the same table gives the same bytes.
 
     Parameters
     ----------
@@ -51,31 +52,28 @@ def export_netcdf(name: str, table: pa.Table, mixtures: pa.Table, made: Provenan
         If the table has no rows: there is no profile to write.
 
     """
-    import netCDF4  # noqa: PLC0415 - it takes a while to load
-
     if not table.num_rows:
         raise UsageProblem(
             f"{made.expocode}: it has no {name}, so there is no profile to write; 'seawhence show' tells what it has."
         )
     profiles = as_profiles(table)
-    file = netCDF4.Dataset("exported.nc", mode="w", memory=_FIRST_ROOM, format="NETCDF4")
-    file.setncatts(global_attributes(name, table, made))
+    file = ClassicFile(global_attributes(name, table, made))
     writer = _Writer(file, profiles)
     writer.write_profiles()
     writer.write_rows()
     if name == "samples" and mixtures.num_rows:
         writer.write_shares(mixtures)
     writer.write_references()
-    return bytes(file.close())
+    return file.as_bytes()
 
 
 class _Writer:
     """Writes the variables of one file."""
 
-    def __init__(self, file: Any, profiles: Profiles) -> None:
+    def __init__(self, file: ClassicFile, profiles: Profiles) -> None:
         self.file, self.profiles, self.table = file, profiles, profiles.table
-        file.createDimension("profile", len(profiles.sizes))
-        file.createDimension("obs", self.table.num_rows)
+        file.add_dimension("profile", len(profiles.sizes))
+        file.add_dimension("obs", self.table.num_rows)
 
     def write_profiles(self) -> None:
         """Write what a profile has one of, and how many rows are whose."""
@@ -86,36 +84,59 @@ class _Writer:
                   {"long_name": "Rows of the profile", "sample_dimension": "obs"})  # fmt: skip
         firsts = pa.array(profiles.firsts)
         for name in OF_A_CAST:
-            if name in self.table.column_names and self._is_wanted(name):
+            if name in self.table.column_names and (name != "date" or self._dates_are_of_casts):
                 field, column = self.table.schema.field(name), self.table.column(name).take(firsts)
                 self._column(name, field, column, ("profile",))
         if "time" not in self.table.column_names:
             missing = pa.chunked_array([pa.nulls(len(profiles.sizes), pa.timestamp("s", tz="UTC"))])
             self._column("time", arrow_field(REGISTRY["time"]), missing, ("profile",))
 
-    def _is_wanted(self, name: str) -> bool:
-        """Return whether a profile says so: the date only where some profile has it and not the time."""
-        if name != "date":
-            return True
-        return "time" not in self.table.column_names or self.table.column("time").null_count > 0
+    @property
+    def _dates_are_needed(self) -> bool:
+        """Whether the times do not say them: some are missing, or differ from row to row."""
+        names = self.table.column_names
+        return "date" in names and (
+            "time" not in self.profiles.constant or self.table.column("time").null_count > 0
+        )
+
+    @property
+    def _dates_are_of_casts(self) -> bool:
+        return self._dates_are_needed and "date" in self.profiles.constant
 
     def write_rows(self) -> None:
         """Write every column that is not the same in all rows of each cast."""
         for field in self.table.schema:
             if field.name == "expocode" or field.name in self.profiles.constant:
                 continue
-            name = f"{field.name}_of_row" if field.name in OF_A_CAST else field.name
-            self._column(name, field, self.table.column(field.name), ("obs",))
+            if field.name == "date" and not self._dates_are_needed:
+                continue
+            name = f"{field.name}_of_row" if field.name in OF_A_CAST and field.name != "date" else field.name
+            self._column(name, field, self._rows_of(field.name), ("obs",))
+
+    def _rows_of(self, name: str) -> pa.ChunkedArray:
+        """Return a column; dates are those of the instants where these are known."""
+        column = self.table.column(name)
+        if name == "date" and "time" in self.table.column_names:
+            return pc.coalesce(self.table.column("time").cast(pa.date32()), column)
+        return column
 
     def write_shares(self, mixtures: pa.Table) -> None:
         """Write the shares, by row and source."""
         sources, arrays = share_arrays(self.table, mixtures)
-        self.file.createDimension("source", len(sources))
-        self._add("source_water", np.array(sources, dtype=object), ("source",), {"long_name": "Source water, by its code"})
+        self.file.add_dimension("source", len(sources))
+        self._add(
+            "source_water",
+            np.array(sources, dtype=object),
+            ("source",),
+            {"long_name": "Source water, by its code"},
+        )
         for name in SHARES:
             attributes = attributes_of(mixtures.schema.field(name), set(SHARES), None)
             self._add(
-                name, arrays[name], ("obs", "source"), attributes | {"coordinates": f"{COORDINATES} source_water"}
+                name,
+                arrays[name],
+                ("obs", "source"),
+                attributes | {"coordinates": f"{COORDINATES} source_water"},
             )
 
     def write_references(self) -> None:
@@ -124,13 +145,15 @@ class _Writer:
             self._add(name, np.array(value), (), {"long_name": "Pressure that the density is referred to",
                                                   "standard_name": "reference_pressure", "units": "dbar"})  # fmt: skip
 
-    def _column(self, name: str, field: pa.Field, column: pa.ChunkedArray, dimensions: tuple[str, ...]) -> None:
+    def _column(
+        self, name: str, field: pa.Field, column: pa.ChunkedArray, dimensions: tuple[str, ...]
+    ) -> None:
         values, kind_of = _values(field, column)
         flags = values if field.type == pa.int16() else None
         attributes = attributes_of(field, set(self.table.column_names), flags) | kind_of
-        title = variable_name(name, self.file.variables)
+        title = name if name != field.name else variable_name(name, self.file.names)
         if title != name:
-            attributes["delivered_name"] = name
+            attributes["seawhence_column"] = name
         if name == "pressure":
             attributes |= {"axis": "Z", "positive": "down"}
         elif name == "depth":
@@ -147,17 +170,8 @@ class _Writer:
     def _add(
         self, name: str, values: NDArray[Any], dimensions: tuple[str, ...], attributes: Mapping[str, Any]
     ) -> None:
-        if values.dtype.kind == "O":
-            variable = self.file.createVariable(name, str, dimensions)
-        else:
-            kind = values.dtype.str[1:]
-            fill = None if name == "row_size" or not dimensions else _FILLS[kind]
-            variable = self.file.createVariable(
-                name, kind, dimensions, fill_value=fill, compression="zlib" if dimensions else None, shuffle=True
-            )
-            variable.set_auto_maskandscale(False)  # noqa: FBT003 - the library's own signature
-        variable.setncatts(dict(attributes))
-        variable[...] = values
+        filled = bool(dimensions) and name != "row_size"
+        self.file.add_variable(name, values, dimensions, attributes, filled=filled)
 
 
 def _values(field: pa.Field, column: pa.ChunkedArray) -> tuple[NDArray[Any], dict[str, str]]:
@@ -169,13 +183,11 @@ def _values(field: pa.Field, column: pa.ChunkedArray) -> tuple[NDArray[Any], dic
     if pa.types.is_floating(kind):
         return np.asarray(column.to_numpy(), dtype=np.float64), {}
     if pa.types.is_integer(kind):
-        numbers = [one for one in column.to_pylist() if one is not None]
-        small = "i2" if kind == pa.int16() else "i4" if _fits(numbers) else "i8"
-        filled = column.cast(pa.int64()).fill_null(int(_FILLS[small]))
-        return np.asarray(filled.to_numpy(), dtype=small), {}
+        if kind == pa.int16():
+            return np.asarray(column.fill_null(int(FILLS["i2"])).to_numpy(), dtype=np.int16), {}
+        numbers = column.cast(pa.int64())
+        if all(number is None or abs(number) < _WHOLE_IN_32_BITS for number in numbers.to_pylist()):
+            return np.asarray(numbers.fill_null(int(FILLS["i4"])).to_numpy(), dtype=np.int32), {}
+        return np.asarray(numbers.to_pandas(), dtype=np.float64), {}
     listed = texts(pa.table({"column": column.cast(pa.string())}), "column")
     return np.array([text or "" for text in listed], dtype=object), {}
-
-
-def _fits(numbers: list[int]) -> bool:
-    return all(-(2**31) < number < 2**31 for number in numbers)

@@ -46,6 +46,7 @@ _FURTHEST = (
     MixingStatus.SOLVED,
 )
 _HOW_FAR = np.argsort(_FURTHEST)  # by status
+_LABELS = np.array([MixingStatus(code).label for code in range(len(MixingStatus))], dtype=object)
 
 
 @dataclass(frozen=True, eq=False)
@@ -78,7 +79,11 @@ def resolve(samples: pa.Table, catalogue: Catalogue, settings: Settings) -> Reso
     settings = settings.model_copy(update={"mixing": settings.mixing.of_cruise(expocode)})
     attempts = [_attempt(samples, catalogue, chosen, settings) for chosen in catalogue.set]
     status, picked, told_of = _pick(attempts, samples.num_rows)
-    keys = sample_keys(samples, settings.mixing.seed)
+    keys = (  # asked for by members alone
+        sample_keys(samples, settings.mixing.seed)
+        if settings.mixing.members
+        else np.zeros(samples.num_rows, dtype=np.uint64)
+    )
     answers = [
         answer_of(catalogue, attempt, picked[attempt.rows] == index, keys, settings.mixing)
         for index, attempt in enumerate(attempts)
@@ -93,7 +98,7 @@ def resolve(samples: pa.Table, catalogue: Catalogue, settings: Settings) -> Reso
         settings.mixing,
     )
     columns["condition_number"] = _condition_numbers(attempts, told_of)
-    columns["mixing_status"] = np.array([MixingStatus(code).label for code in status], dtype=object)
+    columns["mixing_status"] = _LABELS[status]
     told = with_columns(samples, {name: columns[name] for name in ("tag", "reduced_chi_square")})
     findings = (*unused, *notices.unresolved(status), *notices.of_fits(answers, settings.mixing))
     return Resolution(columns, _mixtures(told, answers), findings)
@@ -101,7 +106,7 @@ def resolve(samples: pa.Table, catalogue: Catalogue, settings: Settings) -> Reso
 
 def _cruise(samples: pa.Table) -> str | None:
     """Return the cruise of a table of samples, None where it has no samples."""
-    if "expocode" not in samples.column_names:
+    if "expocode" not in samples.schema.names:
         return None
     cruises = [name for name in samples.column("expocode").unique().to_pylist() if name]
     if len(cruises) > 1:

@@ -87,7 +87,7 @@ def _months(samples: pa.Table) -> FloatArray:
     """Return the month of every sample, (n_sample,), of its date or else of its time; NaN if missing."""
     months = np.full(samples.num_rows, np.nan)
     for name in ("time", "date"):
-        if name in samples.column_names:
+        if name in samples.schema.names:
             found = floats(pa.table({name: pc.month(samples.column(name))}), name)
             months = np.where(np.isnan(found), months, found)
     return months

@@ -76,7 +76,8 @@ class Hull:
         """
         from scipy.special import chdtri  # noqa: PLC0415 - it takes long to import
 
-        limit = chdtri(np.maximum(self.active, 1), 1 - probability)
+        limits = chdtri(np.arange(1, self.active.max(initial=1) + 1), 1 - probability)  # by bounds, few
+        limit = limits[np.maximum(self.active, 1) - 1]
         return np.asarray((self.active > 0) & (self.distance**2 > limit))
 
 

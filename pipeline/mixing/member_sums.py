@@ -45,7 +45,9 @@ class MemberSums:
     sources: tuple[str, ...]  # codes, in the order of the catalogue
     best: FloatArray  # (n_sum, n_source)
     members: FloatArray  # (n_member, n_sum, n_source)
-    largest_difference: float  # of the leading shares from those in the table: rounding, for tables of this version
+    largest_difference: (
+        float  # of the leading shares from those in the table: rounding, for tables of this version
+    )
 
 
 def member_sums(

@@ -63,7 +63,7 @@ def sample_keys(samples: pa.Table, seed: int) -> KeyArray:
 
 def _text(samples: pa.Table, name: str) -> pa.Array | pa.ChunkedArray:
     """Return a column as text, blank where it is missing."""
-    if name not in samples.column_names:
+    if name not in samples.schema.names:
         return pa.array([""] * samples.num_rows, pa.string())
     return pc.fill_null(samples.column(name).cast(pa.string()), "")
 

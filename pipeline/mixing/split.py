@@ -14,6 +14,7 @@ import numpy as np
 
 from pipeline.mixing.operators import operator_of
 from pipeline.mixing.problem import equations_for, weighted_system
+from pipeline.mixing.solver import groups
 from pipeline.problems import BrokenPromise
 
 if TYPE_CHECKING:
@@ -21,11 +22,11 @@ if TYPE_CHECKING:
 
     from numpy.typing import NDArray
 
+    from pipeline.mixing.blocks import Equations
     from pipeline.mixing.entries import Catalogue, SourceSet
     from pipeline.mixing.problem import MixingProblem
 
     FloatArray = NDArray[np.float64]
-    IntArray = NDArray[np.int64]
 
 QUANTITIES = ("phosphate", "nitrate", "silicate", "oxygen", "dic", "alkalinity")
 
@@ -80,27 +81,25 @@ def first_order_uncertainty(
     n_sample, n_property = observed.shape
     n_source, n_quantity = carried.shape
     uncertainty = np.full((n_sample, n_quantity), np.nan)
-    there = ~np.isnan(observed)
-    alike = np.column_stack([there, support])
-    kinds, kind = np.unique(alike, axis=0, return_inverse=True)
-    for index, described in enumerate(kinds):
-        rows = np.flatnonzero(kind.ravel() == index)
-        columns = np.flatnonzero(described[:n_property])
-        own = np.zeros((n_quantity, covariances.shape[1]))
-        own[:, columns] = carried.T @ _response(problem, columns, int(described[n_property]))[:n_source]
-        of_measurement = (own[:, columns] ** 2) @ (measured[rows][:, columns] ** 2).T
-        own[np.arange(n_quantity), n_property + np.arange(n_quantity)] -= 1.0
-        of_source = np.einsum("qa,iab,qb->qi", own, covariances, own)  # per squared share
-        uncertainty[rows] = np.sqrt(of_measurement + of_source @ (shares[rows] ** 2).T).T
+    for columns, alike in groups(observed):
+        equations = equations_for(problem, weighted_system(problem, columns), columns)
+        for one in np.unique(support[alike]).tolist():
+            rows = alike[support[alike] == one]
+            own = np.zeros((n_quantity, covariances.shape[1]))
+            own[:, columns] = carried.T @ _response(equations, one)[:n_source]
+            of_measurement = (own[:, columns] ** 2) @ (measured[rows][:, columns] ** 2).T
+            own[np.arange(n_quantity), n_property + np.arange(n_quantity)] -= 1.0
+            of_source = np.einsum("qa,iab,qb->qi", own, covariances, own)  # per squared share
+            uncertainty[rows] = np.sqrt(of_measurement + of_source @ (shares[rows] ** 2).T).T
     return uncertainty
 
 
-def _response(problem: MixingProblem, columns: IntArray, support: int) -> FloatArray:
-    """Return how the unknowns of a support follow the properties ``columns``, (n_unknown, n_used).
+def _response(equations: Equations, support: int) -> FloatArray:
+    """Return how the unknowns of a support follow the properties of a system, (n_unknown, n_used).
 
     Zero for unknowns that take no part. The support is one that samples were solved with.
     """
-    operator = operator_of(equations_for(problem, weighted_system(problem, columns), columns), support)
+    operator = operator_of(equations, support)
     if operator is None:
         raise BrokenPromise(f"support {support} has been solved with and has no operator")
     return np.where(operator.inside[:, None], operator.matrix, 0.0)

@@ -2,30 +2,40 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import pyarrow as pa
 import pyarrow.compute as pc
 
-from pipeline.findings import Finding, Reject, Severity, at
+from pipeline.findings import Reject, Severity, at
 from pipeline.problems import DeliveryProblem
+from pipeline.reading import remarks
 from pipeline.reading.columns import Column, Use
 from pipeline.reading.delivery import DeliveryKind
-from pipeline.reading.identity import REASONS, Identity, identify, refuse_expocode, usable_expocode
+from pipeline.reading.identity import (
+    REASONS,
+    Identity,
+    departures,
+    identify,
+    refuse_expocode,
+    usable_expocode,
+)
 from pipeline.reading.instants import Instants, read_instants
 from pipeline.reading.numbers import is_number, missing_codes, to_floats
 from pipeline.reading.positions import Axis, to_degrees
-from pipeline.reading.values import Surroundings, Values, read_values, unreadable_findings
+from pipeline.reading.spread import Spread, flat
+from pipeline.reading.values import Surroundings, Values, read_values
 from pipeline.tables import CASTS_CORE, SAMPLES_CORE, as_arrow, registry_field
 from pipeline.variables import REGISTRY
 
 if TYPE_CHECKING:
-    from collections.abc import Sequence
+    from collections.abc import Mapping, Sequence
 
     from numpy.typing import NDArray
 
+    from pipeline.findings import Finding
     from pipeline.reading.grid import Grid
     from pipeline.settings import ReadingSettings
 
@@ -48,10 +58,12 @@ class ReadRows:
     rows: int
     rejects: tuple[Reject, ...]
     findings: tuple[Finding, ...]
+    spread: tuple[Spread, ...] = ()  # those of them that speak of many rows
+    words: Mapping[str, str] = field(default_factory=dict)  # quantity to what the file calls it
 
 
 def assemble(
-    grid: Grid, columns: Sequence[Column], limits: ReadingSettings, findings: Sequence[Finding] = ()
+    grid: Grid, columns: Sequence[Column], limits: ReadingSettings, findings: Sequence[Finding | Spread] = ()
 ) -> ReadRows:
     """Make the table of a file's rows.
 
@@ -84,12 +96,23 @@ def assemble(
     keep = ~np.any(list(unusable.values()), axis=0)
     if not keep.any():
         raise _nothing_usable(grid, rejects, rows)
-    instants = rows.instants()
-    found = [*findings, *rows.findings(identity, instants, values, keep)]
+    instants = rows.instants(identity)
+    told = remarks.conversions(grid, findings, values.unconverted)
+    told += rows.remarks(identity, instants, values, keep)
+    if not any(
+        one.check == "time-unit" and one.severity is Severity.FAULT
+        for one in findings
+        if not isinstance(one, Spread)
+    ):
+        told += rows.without_dates(identity, instants, keep)
     table = _table(grid, rows, identity, instants, values)
     if not keep.all():
         table = table.filter(pa.array(keep))
-    return ReadRows(table, len(cells.lines) + len(cells.misfits), tuple(rejects), tuple(found))
+    return ReadRows(
+        table, len(cells.lines) + len(cells.misfits), tuple(rejects), flat(told),
+        tuple(one for one in told if isinstance(one, Spread)),
+        {column.name: column.delivered for column in columns if column.use in {Use.IDENTITY, Use.VALUE}} | dict(grid.words),
+    )  # fmt: skip
 
 
 class _Rows:
@@ -105,6 +128,7 @@ class _Rows:
             for column in columns
             if column.use is Use.IDENTITY
         }
+        self.written: dict[Axis, NDArray[np.int64]] = {}  # rows whose position is no plain number
 
     def has(self, name: str) -> bool:
         return name in self._given or name in self.grid.constants
@@ -127,7 +151,9 @@ class _Rows:
         column = self._given.get(name, None) if name in self._given else self.text(name)
         numbers, unreadable = to_floats(column, decimal_comma=self.grid.decimal_comma)
         if len(unreadable) and name in {"latitude", "longitude"}:
-            numbers = np.where(np.isnan(numbers), to_degrees(column, Axis(name))[0], numbers)
+            degrees = to_degrees(column, Axis(name))[0]
+            self.written[Axis(name)] = unreadable[~np.isnan(degrees[unreadable])]
+            numbers = np.where(np.isnan(numbers), degrees, numbers)
         return np.where(missing_codes(numbers, REGISTRY[name], None), np.nan, numbers)
 
     def laboratory_temperature(self, limits: ReadingSettings) -> float:
@@ -144,12 +170,20 @@ class _Rows:
             self.numbers("longitude"),
         )
 
-    def instants(self) -> Instants:
-        return read_instants(self.text("date"), self.text("time"), self.grid.minutes_ahead)
+    def instants(self, identity: Identity) -> Instants:
+        return read_instants(
+            self.text("date"),
+            self.text("time"),
+            self.grid.minutes_ahead,
+            lambda: departures(identity.expocode),
+        )
 
     def sample(self) -> pa.Array:
         """Return the sample number; the bottle's where no sample number was given."""
-        sample, bottle = _blank_to_null(self.text("sample")), _blank_to_null(self.text("bottle"))
+        sample, bottle = (
+            remarks.blank_to_null(self.text("sample")),
+            remarks.blank_to_null(self.text("bottle")),
+        )
         return pc.coalesce(sample, bottle)
 
     def where(self) -> list[tuple[str, int, str | None]]:
@@ -158,81 +192,46 @@ class _Rows:
         casts = np.nan_to_num(cast, nan=0.0, posinf=0.0, neginf=0.0).astype(int).tolist()
         return list(zip(self.text("station").to_pylist(), casts, self.sample().to_pylist(), strict=True))
 
-    def findings(
+    def remarks(
         self, identity: Identity, instants: Instants, values: Values, keep: NDArray[np.bool_]
-    ) -> list[Finding]:
+    ) -> list[Finding | Spread]:
         """Tell what of the kept rows could not be read, or was read in a way worth knowing."""
-        name = self.grid.name
-        findings: list[Finding] = []
+        grid = self.grid
+        told: list[Finding | Spread] = []
         where = self.where() if values.unreadable else []
         for unreadable in values.unreadable:
-            findings += unreadable_findings(name, unreadable, self.lines, where)
-        for check, column, rows, wanted in (
-            ("impossible-date", "date", instants.impossible_dates, "a date YYYYMMDD that exists"),
-            ("impossible-time", "time", instants.impossible_times, "a time hhmm"),
-        ):
-            findings += self._impossible(check, column, rows[keep[rows]], wanted)
-        if instants.ambiguous:
-            findings.append(
-                Finding(
-                    "ambiguous-date", Severity.DOUBT,
-                    f"{name}: nothing in the file tells whether '{instants.ambiguous}' is written month first or"
-                    " day first; month first was taken; expected YYYYMMDD.",
-                    variable="date", value=instants.ambiguous, limit="YYYYMMDD", file=name,
-                )
-            )  # fmt: skip
-        if identity.shifted_longitudes:
-            findings.append(
-                Finding(
-                    "longitude-range", Severity.NOTE,
-                    f"{name}: {identity.shifted_longitudes} longitudes above 180 were read as degrees east and are"
-                    " kept as -180..180.",
-                    variable="longitude", limit="-180..180", file=name, count=identity.shifted_longitudes,
-                )
-            )  # fmt: skip
+            told += remarks.unreadable(grid, unreadable, where)
+        for quantity, rows in (("date", instants.impossible_dates), ("time", instants.impossible_times)):
+            wrong = rows[keep[rows]]
+            if len(wrong):
+                texts, codes = self.text(quantity).to_pylist(), identity.expocode.to_pylist()
+                told += remarks.impossible(grid, quantity, wrong, self.where(), texts, codes)
+        if instants.order:
+            told.append(remarks.date_order(grid, instants.order))
+        for axis, rows in self.written.items():
+            if len(rows):
+                degrees = float((identity.latitude if axis is Axis.LATITUDE else identity.longitude)[rows[0]])
+                text = self.text(axis)[int(rows[0])].as_py()
+                told.append(remarks.written_positions(grid, axis, grid.word(axis), rows, text, degrees))
+        if identity.shifted_longitudes.any():
+            told.append(remarks.shifted_longitudes(grid, identity.shifted_longitudes))
         if values.pressure_from:
-            findings.append(
-                Finding(
-                    "pressure-from-depth", Severity.NOTE,
-                    f"{name}: there is no pressure; it was computed from the depth in {values.pressure_from}, which is"
-                    " kept beside it.",
-                    variable="pressure", value=values.pressure_from, limit="a pressure", file=name,
-                )
-            )  # fmt: skip
-        for variable, count in values.unconverted.items():
-            findings.append(
-                Finding(
-                    "not-converted", Severity.DOUBT,
-                    f"{name}: {count} values of {self.grid.word(variable)} could not be converted to"
-                    f" {REGISTRY[variable].unit}, because the row has no salinity or temperature for its density.",
-                    variable=variable, file=name, count=count,
-                )
-            )  # fmt: skip
-        return findings
+            told.append(remarks.pressure_from_depth(grid, values.pressure_from))
+        told += [
+            remarks.unconverted(grid, lost, identity.expocode, keep)
+            for lost in values.unconverted
+            if (lost.rows & keep).any()
+        ]
+        return told
 
-    def _impossible(self, check: str, column: str, rows: NDArray[np.int64], wanted: str) -> list[Finding]:
-        """Tell each spelling of an impossible date or time once per cast."""
-        where, texts = (self.where(), self.text(column).to_pylist()) if len(rows) else ([], [])
-        told: dict[tuple[str, int, str], list[int]] = {}
-        for row in rows:
-            station, cast, _ = where[row]
-            told.setdefault((station, cast, texts[row]), []).append(int(row))
-        return [
-            Finding(
-                check, Severity.FAULT,
-                f"{at(self.grid.name, self.lines[same[0]])}: {self.grid.word(column)} is '{text[:30]}'"
-                f"{f' (and in {len(same) - 1} more rows)' if len(same) > 1 else ''}; expected {wanted}; it counts as"
-                " missing.",
-                variable=column, value=text[:30], limit=wanted, file=self.grid.name,
-                line=int(self.lines[same[0]]), station=station, cast=cast, count=len(same),
-            )
-            for (station, cast, text), same in told.items()
-        ]  # fmt: skip
-
-
-def _blank_to_null(column: pa.Array) -> pa.Array:
-    blank = pc.match_substring_regex(column, r"^(-999(\.0*)?)?$")
-    return pc.if_else(blank, pa.scalar(None, pa.string()), column)
+    def without_dates(self, identity: Identity, instants: Instants, keep: NDArray[np.bool_]) -> list[Spread]:
+        """Tell of cruises without any date."""
+        dated = ~np.isnat(instants.dates)
+        if dated[keep].all():
+            return []
+        told = np.zeros(self.n_row, dtype=bool)
+        told[instants.impossible_dates] = True
+        return remarks.without_dates(self.grid, identity.expocode, dated, told, keep)
 
 
 def _require_columns(grid: Grid, columns: Sequence[Column]) -> None:
@@ -268,21 +267,27 @@ def _row_rejects(
     for reason in REASONS:
         for row in np.flatnonzero(unusable[reason]).tolist():
             reason_of.setdefault(row, reason)
-    rejects = []
-    for row, reason in sorted(reason_of.items()):
-        line = int(rows.lines[row])
-        found = _found(rows, reason, row)
-        word = grid.word(reason.removeprefix("no-")) if reason in _NAMED else ""
-        code = usable_expocode(rows.text("expocode")[row].as_py())
-        rejects.append(
-            Reject(
-                grid.name, line, grid.raw(line)[: limits.raw_text], reason,
-                f"{at(grid.name, line)}: {REASONS[reason].format(value=found, word=word)}; correct the row and deliver"
-                " the file again.",
-                code,
-            )
-        )  # fmt: skip
-    return rejects
+    return [_reject(grid, rows, row, reason, limits) for row, reason in sorted(reason_of.items())]
+
+
+def _reject(grid: Grid, rows: _Rows, row: int, reason: str, limits: ReadingSettings) -> Reject:
+    line = int(rows.lines[row])
+    found = _found(rows, reason, row)
+    word = grid.word(reason.removeprefix("no-")) if reason in _NAMED else ""
+    fact = f"{at(grid.name, line)}: {REASONS[reason].format(value=found, word=word)}"
+    remedy = remarks.comma_remedy(grid) if _has_comma(rows, reason, row) else ""
+    return Reject(
+        grid.name, line, grid.raw(line)[: limits.raw_text], reason,
+        f"{fact}; {remedy or 'correct the row and deliver the file again'}.",
+        usable_expocode(rows.text("expocode")[row].as_py()),
+        f"{fact}; is the comma the decimal sign?" if remedy else "",
+    )  # fmt: skip
+
+
+def _has_comma(rows: _Rows, reason: str, row: int) -> bool:
+    """Return whether a needed number is one but for a comma."""
+    names = {"no-pressure": ("pressure", "depth"), "no-position": ("latitude", "longitude")}.get(reason, ())
+    return any(remarks.has_comma(rows.delivered(name, row)) for name in names)
 
 
 def _found(rows: _Rows, reason: str, row: int) -> str:
@@ -327,11 +332,11 @@ def _table(grid: Grid, rows: _Rows, identity: Identity, instants: Instants, valu
     bottle = grid.kind is DeliveryKind.BOTTLE
     columns: dict[str, Any] = {
         "expocode": identity.expocode,
-        "section": _blank_to_null(rows.text("section")),
+        "section": remarks.blank_to_null(rows.text("section")),
         "station": identity.station,
         "cast": identity.cast,
         "sample": rows.sample() if bottle else None,
-        "bottle": _blank_to_null(rows.text("bottle")) if bottle else None,
+        "bottle": remarks.blank_to_null(rows.text("bottle")) if bottle else None,
         "bottle_flag": values.flags.get("bottle_flag", np.full(rows.n_row, np.nan)) if bottle else None,
         "date": instants.dates,
         "time": instants.times,
@@ -349,9 +354,9 @@ def _table(grid: Grid, rows: _Rows, identity: Identity, instants: Instants, valu
             named[beside] = values.flags[beside]
     fields, arrays = [], []
     for name, column in {**named, **values.extras}.items():
-        field = registry_field(name) if name in REGISTRY else pa.field(name, column.type)
+        one = registry_field(name) if name in REGISTRY else pa.field(name, column.type)
         if name in values.metadata:
-            field = field.with_metadata({**(field.metadata or {}), **values.metadata[name]})
-        fields.append(field)
-        arrays.append(as_arrow(column, field.type))
+            one = one.with_metadata({**(one.metadata or {}), **values.metadata[name]})
+        fields.append(one)
+        arrays.append(as_arrow(column, one.type))
     return pa.table(arrays, schema=pa.schema(fields))

@@ -69,12 +69,14 @@ def read_cells(sheet: Sheet, numeric: tuple[bool, ...]) -> Cells:
 def column_texts(sheet: Sheet, position: int) -> set[str]:
     """Return the different texts of one delivered column, trimmed; rows of a wrong width do not count."""
     block, _ = _without_hollow_lines(sheet)
-    n_column = len(sheet.names)
-    padding = _padding(block, sheet.delimiter, n_column)
-    table, _ = _parse(
-        block.replace(b'"', b""), sheet.delimiter, n_column, padding, (False,) * n_column, [position]
-    )
-    return set(pc.unique(_trimmed(table.column(0).combine_chunks())).to_pylist())
+    delimiter, n_column = sheet.delimiter.encode(), len(sheet.names)
+    ends = n_column + _padding(block, sheet.delimiter, n_column) - 1
+    cells = {
+        line.split(delimiter, position + 1)[position]
+        for line in block.replace(b'"', b"").split(b"\n")
+        if line.count(delimiter) == ends
+    }
+    return {cell.decode().strip() for cell in cells}
 
 
 def _without_hollow_lines(sheet: Sheet) -> tuple[bytes, NDArray[np.int64]]:
@@ -104,9 +106,8 @@ def _parse(
     n_column: int,
     padding: int,
     numeric: tuple[bool, ...],
-    wanted: list[int] | None = None,
 ) -> tuple[pa.Table, list[tuple[int, int]]]:
-    """Return the ``wanted`` columns (all, if None) of the rows of the right width, and (row, fields) of the others."""
+    """Return the rows of the right width, and (row, fields) of the others."""
     names = [str(i) for i in range(n_column)] + [f"{_PADDING}{i}" for i in range(padding)]
     types = {name: pa.string() for name in names}
     types |= {str(i): pa.float64() for i in range(n_column) if numeric[i]}
@@ -136,7 +137,6 @@ def _parse(
         ),
         convert_options=csv.ConvertOptions(
             column_types=types,
-            include_columns=[str(i) for i in wanted] if wanted else None,
             strings_can_be_null=False,
             decimal_point="," if delimiter == ";" and b"." not in block else ".",
         ),

@@ -15,53 +15,27 @@ import numpy as np
 from pipeline.findings import Finding, Severity
 from pipeline.reading.cf_decoding import decode_numbers
 from pipeline.reading.cf_names import is_flag
-from pipeline.reading.schemes import Scheme, mapping_words, odd_flag_findings, to_whp
+from pipeline.reading.flag_words import agrees, fitting_meanings, named_scheme, plain, scheme_of_meanings
+from pipeline.reading.schemes import Scheme, fitting_scheme, mapping_words, odd_flag_findings, to_whp
 from pipeline.variables import REGISTRY, FlagScheme, flag_name
 
 if TYPE_CHECKING:
-    from collections.abc import Iterator, Mapping
+    from collections.abc import Iterator
 
     from numpy.typing import NDArray
 
     from pipeline.reading.cf_names import Recognised
     from pipeline.reading.description import Description
     from pipeline.reading.netcdf_bytes import StoredFile, StoredVariable
+    from pipeline.reading.spread import Spread
 
     FloatArray = NDArray[np.float64]
 
 QUESTIONABLE, MISSING = 3.0, 9.0  # WHP
+# Attributes of a flag variable that may name a scheme.
+_NAMING = ("conventions", "Conventions", "flag_scheme", "references", "long_name", "comment")
 UNREAD_WORDS = "flags whose meaning is not known: every value counts as questionable"
 
-_GOOD = r"good(_data|_value)?|pass(ed)?|acceptable|ok|no_problems?_noted|passed_required_qc_test"
-_UNKNOWN = (
-    r"not_evaluated|unknown|not_available|no_qc(_performed)?|not_checked|no_quality_control|unevaluated"
-)
-_DOUBTFUL = r"questionable|suspect|doubtful|questionable_suspect|questionable_or_suspect|of_high_interest"
-_BAD = r"bad(_data|_value)?|fail(ed)?|known_bad"
-_MISSING = r"missing(_data|_value)?|not_sampled.*|not_drawn|samples?_not_drawn"
-_IODE = {
-    1: _GOOD, 2: f".*({_UNKNOWN}).*", 3: f".*({_DOUBTFUL}).*", 4: _BAD, 9: _MISSING,
-}  # fmt: skip
-_ARGO = {
-    0: f".*({_UNKNOWN}).*", 1: _GOOD, 2: r"probably_good(_data|_value)?",
-    3: r"(probably_bad|bad_data_that_are_potentially_correctable|potentially_correctable|bad_.*correctable).*",
-    4: _BAD, 5: r"(value_)?changed(_value)?", 8: r"(estimated|interpolated).*", 9: _MISSING,
-}  # fmt: skip
-_WATER = {
-    1: r".*(not_received|unavailable|not_yet).*", 2: _GOOD, 3: f"{_DOUBTFUL}|leaking", 4: rf"{_BAD}|did_not_trip.*",
-    5: r"not_reported", 6: r".*(mean|median|replicate|average).*", 7: r".*(chromatograph|unknown_problem).*",
-    8: r".*(chromatograph|did_not_trip).*", 9: _MISSING,
-}  # fmt: skip
-_CTD = {
-    1: r".*(calibrat|not_received).*", 2: _GOOD, 3: _DOUBTFUL, 4: _BAD, 5: r"not_reported", 6: r"interpolated.*",
-    7: r"despiked.*", 9: _MISSING,
-}  # fmt: skip
-_NAMED = (
-    (re.compile(r"\b(WOCE|WHP)\b", re.IGNORECASE), Scheme.WHP),
-    (re.compile(r"\bQARTOD\b", re.IGNORECASE), Scheme.QARTOD),
-    (re.compile(r"\bIODE\b", re.IGNORECASE), Scheme.IODE),
-    (re.compile(r"\b(Argo|SeaDataNet|OceanSITES)\b", re.IGNORECASE), Scheme.ARGO),
-)
 # What is left of a flag variable's name behind the name of what it speaks of.
 _FLAG_ENDING = re.compile(
     r"_?(qc|qf|flags?|flag_w|qc_?flags?|quality|quality_?(flag|code)|status_flag)$", re.IGNORECASE
@@ -83,7 +57,7 @@ class ReadFlags:
 
     whp: FloatArray
     words: str
-    findings: tuple[Finding, ...] = ()
+    findings: tuple[Finding | Spread, ...] = ()
 
 
 def flag_columns(
@@ -153,30 +127,24 @@ def scheme_of(variable: StoredVariable, table: FlagScheme, exchange: bool = Fals
     """
     if "flag_masks" in variable.attributes:
         return None
+    given = _meanings(variable)
+    said = " ".join(variable.text(key) for key in _NAMING)
+    named = named_scheme(said)
+    if given is None:
+        return None
+    if not given:
+        return named or (Scheme.WHP if exchange else None)
+    known = scheme_of_meanings(given, table)
+    return known or (named if named is not None and agrees(named, given, table) else None)
+
+
+def _meanings(variable: StoredVariable) -> dict[float, str] | None:
+    """Return what the file says that flag values mean, in plain words; None where the two do not add up."""
     values = np.ravel(variable.attributes.get("flag_values", np.empty(0)))
-    meanings = [_plain(word) for word in variable.text("flag_meanings").split()]
-    if meanings:
-        if values.dtype.kind not in "iuf" or len(values) != len(meanings):
-            return None
-        return _by_meanings(dict(zip(values.tolist(), meanings, strict=True)), table)
-    said = " ".join(variable.text(key) for key in ("conventions", "Conventions", "flag_scheme", "references"))
-    named = next((scheme for pattern, scheme in _NAMED if pattern.search(said)), None)
-    return named or (Scheme.WHP if exchange else None)
-
-
-def _plain(word: str) -> str:
-    return re.sub(r"[^a-z0-9]+", "_", word.lower()).strip("_")
-
-
-def _by_meanings(given: Mapping[float, str], table: FlagScheme) -> Scheme | None:
-    """Return the first scheme in which every flag means what is said, and that tells good from not good."""
-    whp = _CTD if table is FlagScheme.CTD else _WATER
-    for scheme, known in ((Scheme.IODE, _IODE), (Scheme.ARGO, _ARGO), (Scheme.WHP, whp)):
-        if all(
-            number in known and re.fullmatch(known[int(number)], words) for number, words in given.items()
-        ):
-            return scheme
-    return None
+    words = [plain(word) for word in variable.text("flag_meanings").split()]
+    if words and (values.dtype.kind not in "iuf" or len(values) != len(words)):
+        return None
+    return dict(zip(values.tolist(), words, strict=True)) if words else {}
 
 
 def read_flags(name: str, column: FlagColumn, delivered: FloatArray, present: NDArray[np.bool_]) -> ReadFlags:
@@ -218,6 +186,7 @@ def flag_numbers(variable: StoredVariable, dimensions: tuple[str, ...]) -> NDArr
 
 
 def _unread(name: str, title: str, found: FlagColumn) -> Finding:
+    """Tell of flags that cannot be read, with the line of a description that says what they seem to be."""
     flag = found.variable.name
     meanings = found.variable.text("flag_meanings")
     why = (
@@ -225,11 +194,27 @@ def _unread(name: str, title: str, found: FlagColumn) -> Finding:
         if meanings
         else "nothing in the file says what its values mean"
     )
+    fact = (
+        f"{name}: {flag} holds the flags of {title}, but {why}; expected the flags of a scheme that is known"
+        f" ({', '.join(Scheme)}); every value of {title} counts as questionable, and {flag} is kept as delivered"
+    )
+    scheme = _advised(found.variable)
+    choice = "" if scheme else f", with one of {', '.join(Scheme)} in place of the dots"
     return Finding(
         "unknown-flag-scheme", Severity.DOUBT,
-        f"{name}: {flag} holds the flags of {title}, but {why}; expected the flags of a scheme that is known"
-        f" ({', '.join(Scheme)}); every value of {title} counts as questionable, and {flag} is kept as delivered; say"
-        f' in cruise.toml what they are: "{title}" = {{ quantity = "{found.quantity}", flag = "{flag}", flags ='
-        ' "iode" }, or leave flag and flags out to use the values without flags.',
+        f'{fact}; say in cruise.toml what they are: "{title}" = {{ quantity = "{found.quantity}", flag = "{flag}", flags'
+        f' = "{scheme or "..."}" }}{choice}, or leave flag and flags out to use the values without flags.',
         variable=found.quantity, value=meanings[:200] or flag, limit=", ".join(Scheme), file=name,
+        to_group=f"{fact}; what do its values mean?",
     )  # fmt: skip
+
+
+def _advised(variable: StoredVariable) -> Scheme | None:
+    """Return the scheme that the meanings or, where these tell nothing, the flags speak for."""
+    given = _meanings(variable) or {}
+    if "flag_masks" in variable.attributes:
+        return None
+    numbers = flag_numbers(variable, variable.dimensions)
+    numbers = numbers[~np.isnan(numbers)]
+    told = bool(np.isin(numbers, (1, 2)).any())  # what is good in one scheme or another
+    return fitting_meanings(given) or (fitting_scheme(numbers) if told else None)

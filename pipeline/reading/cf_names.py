@@ -7,7 +7,7 @@ from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
 from pipeline.findings import Finding, Severity
-from pipeline.reading.columns import Heading
+from pipeline.reading.columns import Heading, contradicting_unit
 from pipeline.reading.delivery import DeliveryKind
 from pipeline.reading.exchange_names import exchange_meanings
 from pipeline.units import Measure, Scale, unit_of
@@ -83,7 +83,8 @@ class Recognised:
 
     kind: DeliveryKind
     values: dict[str, Variable] = field(default_factory=dict)
-    units: dict[str, str] = field(default_factory=dict)
+    units: dict[str, str] = field(default_factory=dict)  # in which they are read
+    written: dict[str, str] = field(default_factory=dict)  # as they stand in the file, where no description says one
     flags: dict[str, str] = field(
         default_factory=dict
     )  # flag variable, by the exchange name, to what it speaks of
@@ -135,9 +136,15 @@ def recognise(name: str, file: StoredFile, description: Description | None) -> R
             continue  # it passes through
         recognised.values[title] = REGISTRY[quantity]
         recognised.units[title] = _unit(name, variable, quantity, recognised)
+        recognised.written[title] = variable.text("units")
     for entry in description.columns if description else ():
         if entry.unit is not None and entry.column in recognised.units:
             recognised.units[entry.column] = entry.unit
+            recognised.written.pop(entry.column)
+            units = (file.variables[entry.column].text("units"), entry.unit)
+            means, place = recognised.values[entry.column], description.place(entry.line) if description else ""
+            found = contradicting_unit(name, None, entry.column, means, units, place)
+            findings += [found] if found is not None else []
     recognised.upward = frozenset(
         title for title, quantity in recognised.values.items()
         if quantity.name == "depth" and file.variables[title].text("positive").lower() == "up"

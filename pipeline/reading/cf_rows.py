@@ -21,6 +21,7 @@ if TYPE_CHECKING:
     from pipeline.reading.cf_names import Recognised
     from pipeline.reading.cf_profiles import Layout
     from pipeline.reading.netcdf_bytes import StoredFile, StoredVariable
+    from pipeline.reading.spread import Spread
 
 # What a cast has one of, and files may give of its start, bottom and end.
 _OF_A_CAST = frozenset({"latitude", "longitude", "time", "bottom_depth"})
@@ -39,7 +40,7 @@ class CellColumns:
     words: dict[str, str] = field(default_factory=dict)  # of made columns of flags: how they were made
     flag_of: dict[str, str] = field(default_factory=dict)  # and the delivered variable they were made of
     instants: set[str] = field(default_factory=set)  # variables of time that became date and time of day
-    findings: list[Finding] = field(default_factory=list)
+    findings: list[Finding | Spread] = field(default_factory=list)
 
     def add(self, name: str, unit: str, cells: NDArray[Any], means: Variable | None = None) -> None:
         """Add a column."""

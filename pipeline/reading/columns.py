@@ -175,6 +175,41 @@ def _note_unit(
     )  # fmt: skip
 
 
+def contradicting_unit(
+    file: str, line: int | None, delivered: str, variable: Variable, units: tuple[str, str], said_in: str
+) -> Finding | None:
+    """Return a doubt where a file gives a column one unit and its description another that means something else.
+
+    Parameters
+    ----------
+    file, line
+        The file, and where its column names stand.
+    delivered, variable
+        The column and what it is.
+    units
+        The unit that the file gives, and the one that the description says, which is taken.
+    said_in
+        Where the description says so, in words.
+
+    """
+    written, said = units
+    have, want = conversion(variable, written), conversion(variable, said)
+    if not written.strip() or have is None or want is None or _does(have) == _does(want):
+        return None
+    fact = f"{at(file, line)}: the file gives '{written}' as the unit of {delivered}"
+    return Finding(
+        "unit-contradicts", Severity.DOUBT,
+        f"{fact}, and {said_in} '{said}'; expected one unit; '{said}' was taken; ask which is right.",
+        variable=variable.name, value=written, limit=said, file=file, line=line,
+        to_group=f"{fact}; we were told that it is '{said}' and took that; which is right?",
+    )  # fmt: skip
+
+
+def _does(how: Conversion) -> tuple[object, ...]:
+    """Return what a conversion does, whatever its words."""
+    return how.factor, how.offset, how.density, how.scale if how.changes else None
+
+
 def _unknown_unit(heading: Heading, delivered: str, unit: str, variable: Variable) -> Finding:
     return Finding(
         "unknown-unit", Severity.DOUBT,

@@ -31,6 +31,8 @@ _ISO = re.compile(
     r"\d{4}-\d{2}-\d{2}(T\d|$)"
 )  # as dates of spreadsheets and Parquet arrive, which are not text
 _LEADING_DATE = re.compile(r"\d{4}-\d{2}-\d{2}[T ](?=\d)")
+_DATED = r"^\d{1,4}[-/.]\d{1,2}[-/.]\d{1,4}[T ]+\d{1,2}:\d\d"
+_DAY_ZERO = r"^(1899|190[0-4])-"  # which spreadsheets put before a time of day
 _NUMBER = re.compile(r"[+-]?(\d+\.?\d*|\.\d+)([eE][+-]?\d+)?$")
 _WHOLE = re.compile(r"([+-]?\d+)\.0*$")
 
@@ -108,6 +110,18 @@ def times_of_day(column: pa.Array, written: str | None) -> pa.Array:
     if written is not None:
         return written_dates(column, written)
     return each_once(column, lambda text: _ZONE.sub("", _LEADING_DATE.sub("", text)))
+
+
+def is_dated(column: pa.Array) -> NDArray[np.bool_]:
+    """Return which cells of a column hold a date before a time of day, (n_row,)."""
+    text = as_text(column)
+    found = pc.and_not(pc.match_substring_regex(text, _DATED), pc.match_substring_regex(text, _DAY_ZERO))
+    return np.asarray(found.to_numpy(zero_copy_only=False), dtype=bool)
+
+
+def leading_dates(column: pa.Array) -> pa.Array:
+    """Return the dates ``YYYY-MM-DD`` before times of day as text, "" where there is none, (n_row,)."""
+    return each_once(column, lambda text: text[:10] if _LEADING_DATE.match(text) else "")
 
 
 def dates_of_parts(

@@ -22,6 +22,11 @@ if TYPE_CHECKING:
     from pipeline.reading.cruise_form import Location
 
 BLANK = "FILL IN"  # what a draft has where only a person knows
+_EXAMPLES = {
+    "expocode": "the code of the cruise, such as ZZV120090214", "station": "the name of the station, such as 12",
+    "latitude": "degrees north, such as -35.5", "longitude": "degrees east, such as -12.25",
+    "pressure": "decibars, such as 10.5", "depth": "metres, such as 10.5",
+}  # fmt: skip
 _JOINABLE = ("expocode", "section", "station", "sample", "bottle")
 _DATED = ("date", "time", "date_and_time")
 CONSTANTS = (*IDENTITY, "year", "pressure", "depth", "laboratory_temperature")
@@ -183,6 +188,13 @@ def _constant_faults(location: Location, file: Mapping[str, Any]) -> Iterator[Fa
                 here,
                 f"found the unknown constant '{name[:60]}'; {meant}Expected one of {', '.join(CONSTANTS)}; correct it.",
             )
+        elif constant_text(value).strip().upper().startswith(BLANK):
+            wanted = _EXAMPLES.get(name, f"the {in_words(name)}")
+            yield Fault(
+                here,
+                f"{name} is still '{BLANK}', as the draft has it; expected {wanted}; write it there, or give it by a"
+                " column.",
+            )
         elif (expected := _not_possible(name, value)) is not None:
             yield Fault(here, f"found {name} = {str(value)[:60]!r}; expected {expected}; correct it.")
 
@@ -190,8 +202,6 @@ def _constant_faults(location: Location, file: Mapping[str, Any]) -> Iterator[Fa
 def _not_possible(name: str, value: Any) -> str | None:
     """Return what is expected of a constant where it is something else."""
     text = constant_text(value)
-    if text.strip().upper().startswith(BLANK):
-        return f"the {in_words(name)} in place of this"
     if name == "expocode":
         return None if usable_expocode(text) else "a cruise code such as ZZV120090214"
     if name in {"date", "time"}:

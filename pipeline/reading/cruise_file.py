@@ -32,6 +32,7 @@ class CruiseFile:
 
     descriptions: tuple[Description, ...] = ()
     stands: tuple[str, ...] = ()
+    stands_line: int | None = None
 
     def of(self, file_name: str) -> Description | None:
         """Return the description of a file of its folder, None where it is not described.
@@ -66,6 +67,7 @@ def read_cruise_file(name: str, data: bytes) -> CruiseFile:
     return CruiseFile(
         tuple(_description(name, text, index, file) for index, file in enumerate(written.get("file", []))),
         tuple(written.get("cruise", {}).get("stands", [])),
+        line_of(text, ("cruise", "stands")),
     )
 
 
@@ -93,16 +95,30 @@ def _parsed(name: str, text: str) -> dict[str, Any]:
         place = re.search(r"\(at line (\d+)", str(error))
         line = int(place[1]) if place else text.count("\n") + 1
         what = str(error).partition(" (at ")[0]
-        raise DeliveryProblem(
-            "unusable-description",
-            f"{name}, line {line}: found text that is not TOML ({what}); expected a description; correct that line.",
-            line,
-        ) from error
+        twice = _twice(what, text.split("\n")[line - 1])
+        words = twice or f"found text that is not TOML ({what}); expected a description; correct that line."
+        raise DeliveryProblem("unusable-description", f"{name}, line {line}: {words}", line) from error
     except RecursionError as error:
         raise DeliveryProblem(
             "unusable-description",
             f"{name}: found tables nested beyond reason; expected a description; write it anew.",
         ) from error
+
+
+def _twice(what: str, line: str) -> str:
+    """Return the words for a name that stands twice, which TOML does not allow, "" where that is not what is wrong."""
+    if what.startswith("Cannot declare") and (table := re.match(r"\s*\[+([^\]]*)", line)):
+        of = " for each [[file]]" if table[1].strip().startswith("file") else ""
+        return f"found the table [{table[1].strip()}] a second time; expected it once{of}; join the two."
+    key = re.match(r"""\s*(?:"([^"]*)"|'([^']*)'|([^=\s]+))\s*=""", line)
+    if what.startswith("Cannot overwrite") and key:
+        name = next(part for part in key.groups() if part is not None)
+        return (
+            f"found '{name[:80]}' a second time in the same table; expected each name once; remove one of the two."
+        )
+    if inline := re.match(r"Duplicate inline table key (.*)", what):
+        return f"found the key {inline[1][:80]} twice in one line; expected it once; remove one of the two."
+    return ""
 
 
 def find_faults(text: str) -> list[tuple[int, str]]:
@@ -164,6 +180,7 @@ def _description(name: str, text: str, index: int, file: Mapping[str, Any]) -> D
         time_zone=time_zone(file.get("time_zone", "UTC")) or 0,
         source=name,
         line=line_of(text, ("file", index)),
+        files_line=line_of(text, ("file", index, "files")),
     )
 
 

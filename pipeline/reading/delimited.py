@@ -63,6 +63,7 @@ def read_delimited(name: str, data: bytes, limits: ReadingSettings, description:
         raw=text.line,
         names_line=names_line,
         first_line=first,
+        findings=text.findings,
     )
 
 

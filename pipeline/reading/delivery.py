@@ -2,17 +2,21 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 from enum import StrEnum
 from typing import TYPE_CHECKING
 
+import numpy as np
 import pyarrow as pa
 import pyarrow.compute as pc
 
 from pipeline.problems import BrokenPromise
 
 if TYPE_CHECKING:
+    from collections.abc import Mapping
+
     from pipeline.findings import Finding, Reject
+    from pipeline.reading.spread import Spread
 
 
 class DeliveryKind(StrEnum):
@@ -41,6 +45,8 @@ class Delivery:
     refused_members: int = 0
     set_aside: int = 0
     described_by: str = ""  # SHA-256 of the cruise.toml that says what is in it, if one does
+    spread: tuple[Spread, ...] = ()  # the findings that speak of many rows, in the order of ``findings``
+    words: Mapping[str, str] = field(default_factory=dict)  # quantity to what the file calls it
 
     def __post_init__(self) -> None:
         """Hold the promise that no row is lost."""
@@ -56,45 +62,60 @@ class Delivery:
     def of_cruise(self, expocode: str) -> Delivery:
         """Return the part of the delivery that belongs to one cruise, of no rows where it has none of it.
 
-        Rejects and findings that name no cruise's row go with the first cruise of the file.
+        A finding about a whole file or column goes with every cruise that has rows of it, with the number of its own;
+        rejects that name no cruise go with the first one of the file.
         """
         if self.cruises == (expocode,):
             return self
         if expocode not in self.cruises:
             return replace(
-                self, table=self.table.slice(0, 0), rejects=(), findings=(), rows=0, refused_members=0
+                self,
+                table=self.table.slice(0, 0),
+                rejects=(),
+                findings=(),
+                rows=0,
+                refused_members=0,
+                spread=(),
             )
         first = self.cruises[0] == expocode
         table = self.table.filter(pc.equal(self.table.column("expocode"), expocode))
-        others = {
-            (file, line)
-            for file, line, code in zip(
-                self.table.column("file").to_pylist(),
-                self.table.column("line").to_pylist(),
-                self.table.column("expocode").to_pylist(),
-                strict=True,
-            )
-            if code != expocode
-        }
-        mine = {(file, line) for file, line in zip(*_places(table), strict=True)}
         rejects = tuple(
             r for r in self.rejects if r.expocode == expocode or (first and r.expocode not in self.cruises)
-        )
-        findings = tuple(
-            f for f in self.findings if (f.file, f.line) in mine or (first and (f.file, f.line) not in others)
         )
         return replace(
             self,
             table=table,
             rejects=rejects,
-            findings=findings,
+            findings=self._findings_of(expocode),
             rows=table.num_rows + len(rejects),
             refused_members=self.refused_members if first else 0,
+            spread=(),
         )
 
-
-def _places(table: pa.Table) -> tuple[list[str], list[int]]:
-    return table.column("file").to_pylist(), table.column("line").to_pylist()
+    def _findings_of(self, expocode: str) -> tuple[Finding, ...]:
+        """Return the findings that concern one of several cruises."""
+        cruises = self.cruises
+        cruise_at = {
+            (r.file, r.line): r.expocode if r.expocode in cruises else cruises[0] for r in self.rejects
+        }
+        columns = (self.table.column(name).to_pylist() for name in ("file", "line", "expocode"))
+        cruise_at |= {(file, line): code for file, line, code in zip(*columns, strict=True)}
+        mine: dict[str, list[int]] = {}
+        for (file, line), code in cruise_at.items():
+            if code == expocode and line is not None:
+                mine.setdefault(file, []).append(line)
+        files = {file for file, _ in cruise_at}
+        spread = {one.finding: one for one in self.spread}
+        found: list[Finding | None] = []
+        for finding in self.findings:
+            file = finding.file or ""
+            if finding in spread:
+                found.append(spread[finding].within(np.array(mine.get(file, []), dtype=np.int64)))
+            elif (file, finding.line) in cruise_at:
+                found.append(finding if cruise_at[file, finding.line] == expocode else None)
+            elif file in mine or (file not in files and expocode == cruises[0]):
+                found.append(finding)
+        return tuple(one for one in found if one is not None)
 
 
 def stack(tables: list[pa.Table]) -> pa.Table:

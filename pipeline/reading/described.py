@@ -50,6 +50,7 @@ def read_described(
         holders=f"columns and constants that {description.source} gives",
         words={quantity: quantity for quantity in (*IDENTITY, "pressure")},
         decimal_comma=description.layout.decimal == ",",
+        described_in=description.place(),
     )  # fmt: skip
     described = describe(grid, Meanings({}, {}), description)
     found = [*table.findings, *_units_assumed(described, description)]

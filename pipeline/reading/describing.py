@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -14,13 +14,14 @@ from pipeline.problems import DeliveryProblem
 from pipeline.reading import composed
 from pipeline.reading.assembly import assemble
 from pipeline.reading.cells import Cells
-from pipeline.reading.columns import Heading, Meanings, plan_columns
+from pipeline.reading.columns import Heading, Meanings, contradicting_unit, plan_columns
+from pipeline.reading.composing import compose_dates, compose_positions, join
 from pipeline.reading.delivery import DeliveryKind
-from pipeline.reading.description import DATE_PARTS, PARTS, POSITION_PARTS
-from pipeline.reading.numbers import to_flags
-from pipeline.reading.positions import Axis
-from pipeline.reading.schemes import Scheme, mapping_words, odd_flag_findings, to_whp
-from pipeline.variables import IDENTITY, REGISTRY, FlagScheme, Variable, flag_name
+from pipeline.reading.described_flags import give_flags
+from pipeline.reading.description import PARTS
+from pipeline.reading.spellings import name_and_unit
+from pipeline.reading.workbench import Workbench
+from pipeline.variables import IDENTITY, REGISTRY, Variable
 
 if TYPE_CHECKING:
     from collections.abc import Mapping, Sequence
@@ -29,6 +30,7 @@ if TYPE_CHECKING:
     from pipeline.reading.columns import Column
     from pipeline.reading.description import ColumnEntry, Description
     from pipeline.reading.grid import Grid
+    from pipeline.reading.spread import Spread
     from pipeline.settings import ReadingSettings
 
 _PLACES = frozenset({"latitude", "longitude"})  # where a number such as -9 is as good as any other
@@ -42,63 +44,8 @@ class Described:
 
     grid: Grid
     columns: tuple[Column, ...]
-    findings: tuple[Finding, ...]
+    findings: tuple[Finding | Spread, ...]
     metadata: Mapping[str, Mapping[str, str]]  # to be added to columns of the table
-
-
-@dataclass
-class _Work:
-    """What is being made of a grid."""
-
-    grid: Grid
-    description: Description
-    names: list[str]
-    units: list[str]
-    cells: list[pa.Array]
-    values: dict[str, Variable]
-    flags: dict[str, Variable]
-    constants: dict[str, str]
-    findings: list[Finding] = field(default_factory=list)
-    metadata: dict[str, dict[str, str]] = field(default_factory=dict)
-
-    @property
-    def n_row(self) -> int:
-        return len(self.grid.cells.lines)
-
-    @property
-    def decimal_comma(self) -> bool:
-        return self.grid.decimal_comma
-
-    def column(self, name: str) -> pa.Array:
-        """Return a delivered column by its name."""
-        return self.cells[self.names.index(name)]
-
-    def given(self, quantity: str) -> pa.Array | None:
-        """Return what the description says is a quantity or part: a column, or a constant in every row."""
-        entry = self.description.entry(quantity)
-        if entry is not None:
-            return self.column(entry.column)
-        if quantity in self.description.constants:
-            return pa.repeat(pa.scalar(self.description.constants[quantity], pa.string()), self.n_row)
-        return None
-
-    def give(self, quantity: str, column: pa.Array, made_of: Sequence[str]) -> None:
-        """Give a quantity by a column that was made of others, or by the delivered one where nothing was to be made."""
-        delivered = self.column(made_of[0])
-        if len(made_of) == 1 and (column is delivered or column.equals(delivered)):
-            self.values[made_of[0]] = REGISTRY[quantity]
-        else:
-            self.add(quantity, column, made_of)
-
-    def add(self, quantity: str, column: pa.Array, made_of: Sequence[str], *, flag: bool = False) -> None:
-        """Add a column that was not delivered."""
-        name = f"{quantity} (of {', '.join(made_of)})"
-        while name in self.names:
-            name += "'"
-        self.names.append(name)
-        self.units.append("")
-        self.cells.append(column)
-        (self.flags if flag else self.values)[name] = REGISTRY[quantity]
 
 
 def describe(grid: Grid, meanings: Meanings, description: Description) -> Described:
@@ -120,7 +67,7 @@ def describe(grid: Grid, meanings: Meanings, description: Description) -> Descri
 
     """
     _require_columns(grid, description)
-    work = _Work(
+    work = Workbench(
         grid, description, list(grid.names), list(grid.units),
         cells=_without_missing(grid, description),
         values=dict(meanings.values),
@@ -129,12 +76,12 @@ def describe(grid: Grid, meanings: Meanings, description: Description) -> Descri
     )  # fmt: skip
     _forget_what_is_said_anew(work)
     _give_meanings(work)
-    _join(work)
-    _compose_dates(work)
-    _compose_positions(work)
+    join(work)
+    compose_dates(work)
+    compose_positions(work)
     for entry in description.columns:
         if entry.flag is not None:
-            _give_flags(work, entry)
+            give_flags(work, entry)
     return _planned(work)
 
 
@@ -166,7 +113,7 @@ def _require_columns(grid: Grid, description: Description) -> None:
     )
 
 
-def _forget_what_is_said_anew(work: _Work) -> None:
+def _forget_what_is_said_anew(work: Workbench) -> None:
     """Take from columns the meaning of their own where the description gives the quantity otherwise."""
     description = work.description
     said = {entry.column: entry.quantity for entry in description.columns}
@@ -192,7 +139,7 @@ def _forget_what_is_said_anew(work: _Work) -> None:
     }
 
 
-def _given_instead(work: _Work, column: str, variable: Variable) -> Finding:
+def _given_instead(work: Workbench, column: str, variable: Variable) -> Finding:
     grid, said = work.grid, work.description.constants[variable.name]
     delivered = pc.unique(composed.as_text(work.column(column))).to_pylist()
     found = f"'{delivered[0][:40]}'{' and others' if len(delivered) > 1 else ''}" if delivered else "nothing"
@@ -204,11 +151,12 @@ def _given_instead(work: _Work, column: str, variable: Variable) -> Finding:
     )  # fmt: skip
 
 
-def _give_meanings(work: _Work) -> None:
+def _give_meanings(work: Workbench) -> None:
     description = work.description
     for entry in description.columns:
         position = work.names.index(entry.column)
         if entry.unit is not None:
+            _compare_units(work, entry, work.units[position])
             work.units[position] = entry.unit
         if work.grid.kind is DeliveryKind.CTD and entry.quantity in _OF_BOTTLES:
             continue  # levels of a cast have none; the column passes through
@@ -221,82 +169,18 @@ def _give_meanings(work: _Work) -> None:
             work.add(name, pa.repeat(pa.scalar(text, pa.string()), work.n_row), ["the constants"])
 
 
-def _join(work: _Work) -> None:
-    """Make identity of several columns, their texts joined."""
-    for quantity, columns in work.description.joined.items():
-        parts = [pc.utf8_trim_whitespace(composed.as_text(work.column(column))) for column in columns]
-        whole = pc.binary_join_element_wise(*parts, "_")
-        nothing = pc.match_substring_regex(whole, "^_*$")
-        work.add(quantity, pc.if_else(nothing, pa.scalar(""), whole), columns)
-
-
-def _compose_dates(work: _Work) -> None:
-    description = work.description
-    made_of = [entry.column for entry in description.columns if entry.quantity in DATE_PARTS]
-    both = description.entry("date_and_time")
-    if both is not None:
-        dates, times = composed.split_date_and_time(work.column(both.column), both.format)
-        work.add("date", dates, made_of)
-        work.add("time", times, made_of)
-    elif made_of:
-        parts = {name: column for name in DATE_PARTS if (column := work.given(name)) is not None}
-        dates, times = composed.dates_of_parts(parts, work.n_row, decimal_comma=work.decimal_comma)
-        if "year" in parts:
-            work.add("date", dates, made_of)
-        if {"hour", "day_of_year"} & set(parts) and description.entry("time") is None:
-            work.add("time", times, made_of)
-    for quantity, read in (("date", composed.written_dates), ("time", composed.times_of_day)):
-        entry = description.entry(quantity)
-        if entry is not None:
-            work.give(quantity, read(work.column(entry.column), entry.format), [entry.column])
-
-
-def _compose_positions(work: _Work) -> None:
-    for axis in Axis:
-        sides = work.given(f"{axis}_hemisphere")
-        made_of = [
-            entry.column
-            for entry in work.description.columns
-            if entry.quantity == axis
-            or (entry.quantity in POSITION_PARTS and entry.quantity.startswith(axis))
-        ]
-        whole = work.description.entry(axis)
-        parts = [work.given(f"{axis}_{part}") for part in ("degrees", "minutes", "seconds")]
-        if whole is not None:
-            column = work.column(whole.column)
-            work.give(axis, composed.degrees(column, sides, axis, decimal_comma=work.decimal_comma), made_of)
-        elif parts[0] is not None:
-            column = composed.degrees_of_parts(parts, sides, axis, decimal_comma=work.decimal_comma)
-            work.add(axis, column, made_of)
-
-
-def _give_flags(work: _Work, entry: ColumnEntry) -> None:
-    """Read the flags of a quantity: WHP flags as they are; of another scheme, what they are in WHP, beside them."""
-    variable = REGISTRY[entry.quantity]
-    if entry.flag is None or flag_name(variable.name) not in REGISTRY:
+def _compare_units(work: Workbench, entry: ColumnEntry, below: str) -> None:
+    """Tell where the heading of a column gives another unit than the description."""
+    grid, variable = work.grid, REGISTRY.get(entry.quantity)
+    written = below.strip() or name_and_unit(entry.column)[1]
+    if variable is None or entry.unit is None or variable.name in IDENTITY:
         return
-    table = variable.flags or FlagScheme.WATER
-    if entry.flag_scheme is Scheme.WHP and entry.flag not in work.flags:
-        work.flags[entry.flag] = variable
-        return
-    delivered = work.column(entry.flag)
-    numbers, unreadable = to_flags(delivered)
-    mapped = to_whp(entry.flag_scheme, numbers, table, unreadable)
-    work.add(variable.name, pa.array(mapped.whp, from_pandas=True), [entry.flag], flag=True)
-    if entry.flag_scheme is Scheme.WHP:
-        return
-    words = mapping_words(entry.flag_scheme, table)
-    work.metadata[flag_name(variable.name)] = {
-        "long_name": f"{variable.long_name}: flag, from {entry.flag} as delivered",
-        "delivered_flags": entry.flag_scheme.value, "conversion": words,
-    }  # fmt: skip
-    if len(mapped.odd):
-        odd = pa.array(mapped.odd)
-        work.findings += odd_flag_findings(
-            work.grid.name, entry.flag, variable.name, entry.flag_scheme,
-            composed.as_text(delivered.take(odd)).to_pylist(),
-            work.grid.cells.lines[mapped.odd].tolist(),
-        )  # fmt: skip
+    place = work.description.place(entry.line)
+    found = contradicting_unit(
+        grid.name, grid.names_line, entry.column, variable, (written, entry.unit), place
+    )
+    if found is not None:
+        work.findings.append(found)
 
 
 def _without_missing(grid: Grid, description: Description) -> list[pa.Array]:
@@ -338,7 +222,7 @@ def _taken_out(column: pa.Array, codes: Sequence[str], *, decimal_comma: bool) -
     return pc.if_else(coded_words, pa.scalar(""), column)
 
 
-def _planned(work: _Work) -> Described:
+def _planned(work: Workbench) -> Described:
     """Plan the columns, delivered ones and made ones, and give back what assembly takes."""
     grid, description = work.grid, work.description
     heading = Heading(grid.name, tuple(work.names), tuple(work.units), grid.names_line)
@@ -354,11 +238,14 @@ def _planned(work: _Work) -> Described:
         words={**grid.words, **words},
         n_delivered=len(grid.names),
         minutes_ahead=description.time_zone,
+        dates_in=work.dates_in,
     )
     return Described(described, columns, (*work.findings, *findings), work.metadata)
 
 
-def read_grid(described: Described, limits: ReadingSettings, findings: Sequence[Finding]) -> ReadRows:
+def read_grid(
+    described: Described, limits: ReadingSettings, findings: Sequence[Finding | Spread]
+) -> ReadRows:
     """Make the table of a grid whose columns are described; what was noticed on the way here comes first."""
     read = assemble(described.grid, described.columns, limits, (*findings, *described.findings))
     fields = [

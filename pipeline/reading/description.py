@@ -81,6 +81,7 @@ class Description:
     time_zone: int = 0  # minutes that delivered times are ahead of UTC
     source: str = "cruise.toml"  # the file that says so
     line: int | None = None  # of it, where this begins
+    files_line: int | None = None  # of it, where the name or pattern stands
 
     def fits(self, file_name: str) -> bool:
         """Return whether this speaks of a file, by its name without its folder."""

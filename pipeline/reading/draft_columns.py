@@ -12,7 +12,7 @@ import pyarrow as pa
 
 from pipeline.reading.composed import as_text
 from pipeline.reading.numbers import missing_codes, to_floats
-from pipeline.reading.schemes import FLAGS, Scheme
+from pipeline.reading.schemes import guess_scheme
 from pipeline.reading.spellings import QUANTITIES, in_words, meant, name_and_unit
 from pipeline.units import conversion
 from pipeline.variables import IDENTITY, MEASURED, REGISTRY
@@ -27,7 +27,9 @@ if TYPE_CHECKING:
 _FLAG = re.compile(r"(?i)(^|[\s_.\-])(q?flags?|qc|qf|quality|qual|flag_w|qv)([\s_.\-]|$|\s*\(\d+\)$)")
 _FEW = 4  # different words that may stand for missing
 _DATED = {"date", "time", "date_and_time"}
-_BOTH = re.compile(r"\d[-/.]\d.*[T ]\d{1,2}:\d\d")
+_BOTH = re.compile(r"^(?!1899-|190[0-4]-)\d+[-/.]\d.*[T ]\d{1,2}:\d\d|^(19|20)\d{6}T?\d{4}(\d\d)?$")
+_CLOCK = re.compile(r"\d:\d\d")
+_DAY = re.compile(r"\d[-/.]\d+[-/.]\d|^(19|20)\d{6}$")
 _SLASHED = re.compile(r"(\d{1,2})([/.])(\d{1,2})[/.](\d{4}|\d{2})(\s+\d{1,2}:\d{2}(:\d{2})?)?$")
 _SHORT_CODES = (-9.0, -99.0)
 # What else a column may be, where the name alone does not tell.
@@ -77,6 +79,7 @@ def guess_columns(table: TableCells, *, decimal_comma: bool) -> tuple[ColumnGues
         guesses.append(_guess(name, table.units[position], seen[position]))
     for position, of in flags.items():
         _tell_flags(guesses[position], guesses[of], seen[position])
+    _leave_dates(guesses)
     _leave_one_each(guesses)
     return tuple(guesses)
 
@@ -185,12 +188,20 @@ def _guess_missing(guess: ColumnGuess, quantity: str, seen: _Seen) -> None:
 
 
 def _guess_date(guess: ColumnGuess, seen: _Seen) -> None:
-    if guess.quantity == "date" and all(_BOTH.search(text) for text in seen.texts):
+    """Decide by the cells whether a column holds the date, the time of day or both."""
+    both = all(_BOTH.search(text) for text in seen.texts)
+    clock, day = (any(pattern.search(text) for text in seen.texts) for pattern in (_CLOCK, _DAY))
+    if guess.quantity != "date_and_time" and both:
+        held = "time of day" if guess.quantity == "date" else "date"
         guess.quantity = "date_and_time"
-        guess.remarks.append("its cells hold the time of day too")
-    if guess.quantity == "date_and_time" and not any(":" in text for text in seen.texts):
+        guess.remarks[0] = guess.remarks[0].partition(":")[0] + f": {in_words('date_and_time')}; {_told(seen)}"
+        guess.remarks.append(f"its cells hold the {held} too")
+    elif guess.quantity != "date" and day and not clock and not both:
         guess.quantity = "date"
         guess.remarks.append("its cells hold no time of day")
+    elif guess.quantity == "date_and_time" and clock and not day:
+        guess.quantity = "time"
+        guess.remarks.append("its cells hold no date")
     slashed = [match for text in seen.texts if (match := _SLASHED.match(text))]
     if not slashed:
         return
@@ -237,23 +248,14 @@ def _tell_flags(guess: ColumnGuess, of: ColumnGuess, seen: _Seen) -> None:
     guess.quantity = None
 
 
-def guess_scheme(flags: NDArray[np.float64]) -> tuple[Scheme, str]:
-    """Return which scheme flags seem to be of, and why; good is 2 in WHP and 1 in the others."""
-    counts = Counter(flags.tolist())
-    found = ", ".join(f"{flag:g}" for flag, _ in sorted(counts.items())[:10]) or "none"
-    if not counts:
-        return Scheme.WHP, "there are none; WHP is the scheme of the exchange format"
-    most = counts.most_common(1)[0][0]
-    if most == 2 or counts[2.0] > counts[1.0]:
-        return Scheme.WHP, f"found {found}, most often {most:g}; in WHP 2 is good, in IODE, QARTOD and Argo 1"
-    if set(counts) <= set(FLAGS[Scheme.IODE]):
-        return (
-            Scheme.IODE,
-            f"found {found}, most often {most:g}; IODE and QARTOD have the same numbers; in WHP 2 is good",
-        )
-    if set(counts) <= set(FLAGS[Scheme.ARGO]):
-        return Scheme.ARGO, f"found {found}, most often {most:g}; 0, 5 and 8 are of Argo"
-    return Scheme.WHP, f"found {found}, most often {most:g}, which fits no scheme"
+def _leave_dates(guesses: Sequence[ColumnGuess]) -> None:
+    """Take a column of times that hold the date too for the time of day where another column gives the date."""
+    dated = next((g for g in guesses if g.quantity in {"date", "year"} and g.decided), None)
+    for guess in guesses if dated else ():
+        if guess.quantity == "date_and_time" and guess.decided and dated is not None:
+            guess.quantity = "time"
+            guess.entries.pop("format", None)
+            guess.remarks.append(f"doubt: the date of '{dated.column}' is taken, not the one in its cells")
 
 
 def _leave_one_each(guesses: Sequence[ColumnGuess]) -> None:

@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+import re
 from typing import TYPE_CHECKING
 
+from pipeline.findings import Finding, Severity
 from pipeline.problems import DeliveryProblem
 from pipeline.reading.assembly import assemble
 from pipeline.reading.cells import read_cells
@@ -21,6 +23,8 @@ if TYPE_CHECKING:
     from pipeline.reading.description import Description
     from pipeline.reading.sheet import Sheet
     from pipeline.settings import ReadingSettings
+
+_COMMA_NUMBER = re.compile(rb"(?:^|[;\n])[ \t\"]*([+-]?\d*,\d+)[ \t\"]*(?=[;\r\n]|$)")
 
 
 def read_sheet(sheet: Sheet, limits: ReadingSettings, description: Description | None = None) -> ReadRows:
@@ -52,10 +56,28 @@ def read_sheet(sheet: Sheet, limits: ReadingSettings, description: Description |
         holders="header lines or column names" if is_cast else "column names",
         decimal_comma=sheet.delimiter == ";",
     )  # fmt: skip
+    told = (*sheet.findings, *_decimal_comma(sheet))
     if description is not None:
         _refuse_other_kind(sheet, description)
-        return read_grid(describe(grid, meanings, description), limits, (*sheet.findings, *odd))
-    return assemble(grid, columns, limits, (*sheet.findings, *odd, *findings))
+        return read_grid(describe(grid, meanings, description), limits, (*told, *odd))
+    return assemble(grid, columns, limits, (*told, *odd, *findings))
+
+
+def _decimal_comma(sheet: Sheet) -> tuple[Finding, ...]:
+    """Tell that commas were taken for decimal signs, where there are any in a sheet whose cells semicolons part."""
+    found = _COMMA_NUMBER.search(sheet.block) if sheet.delimiter == ";" else None
+    if found is None:
+        return ()
+    name, text = sheet.text.name, found[1].decode()
+    line = sheet.first_line + sheet.block.count(b"\n", 0, found.start(1))
+    return (
+        Finding(
+            "decimal-comma-assumed", Severity.NOTE,
+            f"{name}, line {line}: its cells are parted by semicolons; commas in numbers were read as decimal signs,"
+            f" such as '{text}'.",
+            value=text, limit="decimal points", file=name, line=line,
+        ),
+    )  # fmt: skip
 
 
 def _refuse_other_kind(sheet: Sheet, description: Description) -> None:

@@ -52,7 +52,10 @@ def read_delivery(
     if data.startswith(ZIP_MAGICS) and not is_workbook(data):
         return read_zip(name, data, sha256, limits, description)
     kind, read = _read(name, data, limits, description)
-    return Delivery(name, sha256, len(data), kind, read.table, read.rows, read.rejects, read.findings)
+    return Delivery(
+        name, sha256, len(data), kind, read.table, read.rows, read.rejects, read.findings,
+        spread=read.spread, words=read.words,
+    )  # fmt: skip
 
 
 def _read(

@@ -5,6 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
+from pipeline.findings import rows_word
 from pipeline.variables import REGISTRY
 
 if TYPE_CHECKING:
@@ -36,6 +37,14 @@ class Grid:
     decimal_comma: bool = False
     minutes_ahead: int = 0  # of UTC, the delivered times of day
     n_delivered: int | None = None  # columns that the file has, where others have been added to them
+    described_in: str = ""  # where its description begins, in words; "" where it has none
+    # the column of dates, what a description calls it, and how a time of day behind them is written
+    dates_in: tuple[str, str, str] | None = None
+
+    @property
+    def rows_word(self) -> str:
+        """What several rows of this file are called."""
+        return rows_word(self.name)
 
     def word(self, quantity: str) -> str:
         """Return what a sentence about this file calls a quantity of the registry."""

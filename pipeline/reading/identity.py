@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import re
 from dataclasses import dataclass
+from datetime import date
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -23,6 +24,7 @@ if TYPE_CHECKING:
 
 # ICES platform code and date, or the older styles with a leg behind '/' or '_'.
 _EXPOCODE = re.compile(r"(?=.{3,40}$)[0-9A-Z][0-9A-Z_-]*(\.[0-9A-Z_-]+)*(/[0-9A-Z_-]{1,8})?$")
+_DEPARTURE = re.compile(r"(\d{4})(\d{2})(\d{2})$")
 _SPREADSHEET = re.compile(r"[+-]?\d+(\.\d+)?E[+-]?\d+$")
 _MISSING_TEXT = re.compile(r"(-9+(\.0*)?|NAN|NA|NULL|NONE)?$")
 
@@ -47,7 +49,7 @@ class Identity:
     latitude: FloatArray
     longitude: FloatArray  # -180..180
     unusable: Mapping[str, BoolArray]  # reason to rows, each (n_row,)
-    shifted_longitudes: int  # how many longitudes came as 180..360
+    shifted_longitudes: BoolArray  # whose longitude came as 180..360, (n_row,)
 
     @property
     def usable(self) -> BoolArray:
@@ -59,6 +61,23 @@ def usable_expocode(written: str) -> str | None:
     """Return an expocode in capitals, None where the text cannot be one."""
     code = written.strip().upper()
     return code if _EXPOCODE.match(code) and not _SPREADSHEET.match(code) else None
+
+
+def departures(expocode: pa.Array) -> NDArray[np.datetime64]:
+    """Return the day of departure that ends an expocode, NaT where it ends with none, (n_row,)."""
+    codes = expocode.dictionary_encode()
+    days = np.array(
+        [_departure(code or "") for code in codes.dictionary.to_pylist()] or ["NaT"], dtype="datetime64[D]"
+    )
+    return days[np.asarray(codes.indices.fill_null(0).to_numpy(zero_copy_only=False), dtype=np.int64)]
+
+
+def _departure(expocode: str) -> np.datetime64:
+    ending = _DEPARTURE.search(expocode)
+    try:
+        return np.datetime64(date(*map(int, ending.groups())), "D") if ending else np.datetime64("NaT", "D")
+    except ValueError:
+        return np.datetime64("NaT", "D")
 
 
 def refuse_expocode(name: str, written: str, line: int | None) -> DeliveryProblem:
@@ -128,5 +147,5 @@ def identify(
             "no-cast": no_cast,
             "no-position": no_position,
         },
-        shifted_longitudes=int(np.count_nonzero(east & ~no_position)),
+        shifted_longitudes=east & ~no_position,
     )

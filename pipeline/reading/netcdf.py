@@ -36,6 +36,7 @@ if TYPE_CHECKING:
     from pipeline.reading.delivery import DeliveryKind
     from pipeline.reading.description import Description
     from pipeline.reading.netcdf_bytes import StoredFile
+    from pipeline.reading.spread import Spread
     from pipeline.settings import ReadingSettings
 
 __all__ = ["NETCDF_MAGICS", "read_netcdf"]
@@ -153,7 +154,7 @@ def _row_text(names: Sequence[str], cells: Sequence[NDArray[Any]]) -> Any:
 
 def _planned(
     grid: Grid, columns: CellColumns, recognised: Recognised, description: Description | None
-) -> tuple[Grid, tuple[Column, ...], dict[str, dict[str, str]], tuple[Finding, ...]]:
+) -> tuple[Grid, tuple[Column, ...], dict[str, dict[str, str]], tuple[Finding | Spread, ...]]:
     """Return the grid under its description, if it has one, with its columns planned, and metadata for some of them."""
     meanings = Meanings(columns.values, columns.flags)
     metadata: dict[str, dict[str, str]] = {}
@@ -174,9 +175,11 @@ def _planned(
         if column.use is Use.EXTRA and (made or column.delivered in columns.instants | consumed):
             continue
         if made and columns.words[column.delivered]:
-            metadata.setdefault(flag_name(columns.flags[column.delivered].name), {})["conversion"] = (
-                columns.words[column.delivered]
+            metadata.setdefault(flag_name(columns.flags[column.delivered].name), {}).update(
+                conversion=columns.words[column.delivered], delivered_name=columns.flag_of[column.delivered]
             )
+        if column.use is Use.VALUE and column.delivered in recognised.written:
+            metadata.setdefault(column.name, {})["delivered_units"] = recognised.written[column.delivered]
         upward = column.use is Use.VALUE and column.delivered in recognised.upward
         kept.append(replace(column, conversion=_UPWARD) if upward else column)
     return grid, tuple(kept), metadata, findings

@@ -27,6 +27,8 @@ _FILL = -1e10  # of a column that the registry does not know, this and what is b
 _BEYOND_COUNTING = 1e30
 # These can be honest values, so they are codes only where a flag or the plausible range says so.
 _SHORT_CODES = np.array([-9.0, -99.0])
+_HIGHEST_CODE = -9.0
+_DIGITS = b"0123456789.-"
 _MISSING_FLAGS = (1, 5, 9)  # WHP: not received or not calibrated, not reported, not sampled
 
 
@@ -42,6 +44,9 @@ def to_floats(column: pa.Array, *, decimal_comma: bool = False) -> tuple[FloatAr
     text = pc.if_else(missing, pa.scalar(None, pa.string()), column)
     if decimal_comma:
         text = pc.replace_substring(text, ",", ".")
+    plain = _plain(text)
+    if plain is not None:
+        return plain, np.empty(0, dtype=np.int64)
     good = pc.fill_null(pc.match_substring_regex(text, _NUMBER), fill_value=True)
     unreadable = np.flatnonzero(~np.asarray(good.to_numpy(zero_copy_only=False), dtype=bool))
     text = pc.if_else(good, text, pa.scalar(None, pa.string()))
@@ -66,10 +71,12 @@ def missing_codes(values: FloatArray, variable: Variable | None, flags: FloatArr
     codes: BoolArray = np.abs(values) >= (_HUGE if variable is not None else _BEYOND_COUNTING)
     if variable is None:
         codes |= values == _FILL
-    candidates = np.flatnonzero(values <= _SHORT_CODES.max())  # few, or one comparison has settled it
-    codes[candidates] |= np.isin(values[candidates], _CODES)
+    candidates = np.flatnonzero(values <= _HIGHEST_CODE)  # few, or one comparison has settled it
+    if not len(candidates):
+        return codes
+    codes[candidates] |= _one_of(values[candidates], _CODES)
     short = np.zeros(len(values), dtype=bool)
-    short[candidates] = np.isin(values[candidates], _SHORT_CODES)
+    short[candidates] = _one_of(values[candidates], _SHORT_CODES)
     if not short.any():
         return codes
     said_missing = np.zeros(len(values), dtype=bool)
@@ -82,6 +89,30 @@ def missing_codes(values: FloatArray, variable: Variable | None, flags: FloatArr
     return codes | (short & said_missing)
 
 
+def _plain(text: pa.Array) -> FloatArray | None:
+    """Return text that holds nothing but digits, points and minus signs as numbers, (n_row,), NaN where missing.
+
+    None where a closer look is needed: where it holds anything else, or is no number all the same (12.5.2009).
+    """
+    start, stop = text.offset, text.offset + len(text)
+    _, places, data = text.buffers()
+    if data is None or not len(text):
+        return None
+    ends = np.frombuffer(places, dtype=np.int32)
+    if data[int(ends[start]) : int(ends[stop])].to_pybytes().translate(None, _DIGITS):
+        return None
+    try:
+        numbers = text.cast(pa.float64())
+    except pa.ArrowInvalid:
+        return None
+    return np.asarray(numbers.to_numpy(zero_copy_only=False), dtype=np.float64)
+
+
+def _one_of(values: FloatArray, few: FloatArray) -> BoolArray:
+    """Return where values, (n,), are one of a few numbers: faster than a set operation for so few."""
+    return np.asarray((values[:, None] == few).any(axis=1))
+
+
 def to_flags(column: pa.Array) -> tuple[FloatArray, NDArray[np.int64]]:
     """Return delivered flags as float64 (NaN where none), and the rows where a flag is no whole number.
 
@@ -90,6 +121,8 @@ def to_flags(column: pa.Array) -> tuple[FloatArray, NDArray[np.int64]]:
     flags, unreadable = to_floats(column)
     with np.errstate(invalid="ignore"):
         odd = ~np.isnan(flags) & ((flags != np.round(flags)) | (np.abs(flags) > np.iinfo(np.int16).max))
+    if not odd.any():
+        return flags, unreadable
     return np.where(odd, np.nan, flags), np.union1d(unreadable, np.flatnonzero(odd))
 
 

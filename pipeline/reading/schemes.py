@@ -8,20 +8,25 @@ that what one scheme calls good, and nothing else, is good in the other.
 
 from __future__ import annotations
 
+from collections import Counter
 from dataclasses import dataclass
 from enum import StrEnum
+from functools import partial
 from types import MappingProxyType
 from typing import TYPE_CHECKING
 
 import numpy as np
 
 from pipeline.findings import Finding, Severity, at
+from pipeline.reading.spread import Spread
 from pipeline.variables import FlagScheme
 
 if TYPE_CHECKING:
     from collections.abc import Mapping, Sequence
 
     from numpy.typing import NDArray
+
+    from pipeline.reading.spread import LineArray
 
     FloatArray = NDArray[np.float64]
 
@@ -157,6 +162,64 @@ def to_whp(
     return MappedFlags(whp, odd)
 
 
+def fitting_scheme(flags: FloatArray) -> Scheme | None:
+    """Return which scheme flags, (n_flag,), seem to be of, None where they fit none; good is 2 in WHP, 1 elsewhere."""
+    counts = Counter(flags.tolist())
+    if not counts:
+        return None
+    most = counts.most_common(1)[0][0]
+    if (most == 2 or counts[2.0] > counts[1.0]) and set(counts) <= {0, *WHP_MEANINGS[FlagScheme.WATER]}:
+        return Scheme.WHP
+    return next((scheme for scheme in (Scheme.IODE, Scheme.ARGO) if set(counts) <= set(FLAGS[scheme])), None)
+
+
+def guess_scheme(flags: FloatArray) -> tuple[Scheme, str]:
+    """Return which scheme flags, (n_flag,), seem to be of, and why, for a draft."""
+    counts = Counter(flags.tolist())
+    if not counts:
+        return Scheme.WHP, "there are none; WHP is the scheme of the exchange format"
+    found = ", ".join(f"{flag:g}" for flag, _ in sorted(counts.items())[:10])
+    why = f"found {found}, most often {counts.most_common(1)[0][0]:g}"
+    match fitting_scheme(flags):
+        case Scheme.WHP:
+            return Scheme.WHP, f"{why}; in WHP 2 is good, in IODE, QARTOD and Argo 1"
+        case Scheme.IODE:
+            return Scheme.IODE, f"{why}; IODE and QARTOD have the same numbers; in WHP 2 is good"
+        case Scheme.ARGO:
+            return Scheme.ARGO, f"{why}; 0, 5 and 8 are of Argo"
+        case _:
+            return Scheme.WHP, f"{why}, which fits no scheme"
+
+
+def doubted_scheme(scheme: Scheme, flags: FloatArray, table: FlagScheme) -> str:
+    """Return in words why flags seem to be of another scheme than is said, "" where they do not.
+
+    Parameters
+    ----------
+    scheme
+        Whose flags they are said to be.
+    flags
+        Delivered numbers, NaN where there is no flag, (n_row,).
+    table
+        Which of the WHP tables the quantity is flagged with.
+
+    """
+    given = flags[~np.isnan(flags)]
+    ones, twos = int(np.count_nonzero(given == 1)), int(np.count_nonzero(given == 2))
+    if scheme is Scheme.WHP and ones > max(twos, len(given) / 2):
+        meaning = WHP_MEANINGS[table][1]
+        return (
+            f"most often are 1 ({ones} of {len(given)}), which in WHP is '{meaning}', and such values are not used; in"
+            ' IODE, QARTOD and Argo 1 is good; if they are of one of these, write flags = "iode", "qartod" or "argo"'
+        )
+    if scheme in {Scheme.IODE, Scheme.QARTOD} and twos > ones:
+        return (
+            f"most often are 2 ({twos} of {len(given)}), which in {scheme.upper()} is 'not evaluated', and such values"
+            ' count as having no flag; in WHP 2 is acceptable; if they are WHP flags, write flags = "whp"'
+        )
+    return ""
+
+
 def mapping_words(scheme: Scheme, table: FlagScheme) -> str:
     """Return in words how the flags of a scheme became WHP flags."""
     parts = []
@@ -174,7 +237,7 @@ def odd_flag_findings(
     scheme: Scheme,
     texts: Sequence[str],
     lines: Sequence[int],
-) -> list[Finding]:
+) -> list[Spread]:
     """Tell which delivered flags the scheme does not have, each different one once.
 
     Parameters
@@ -188,18 +251,20 @@ def odd_flag_findings(
 
     """
     wanted = ", ".join(str(number) for number in FLAGS[scheme])
-    first: dict[str, int] = {}
-    counts: dict[str, int] = {}
+    places: dict[str, list[int]] = {}
     for text, line in zip(texts, lines, strict=True):
-        first.setdefault(text, line)
-        counts[text] = counts.get(text, 0) + 1
-    return [
-        Finding(
+        places.setdefault(text, []).append(line)
+
+    def tell(text: str, mine: LineArray) -> Finding:
+        more = f" (and in {len(mine) - 1} more rows)" if len(mine) > 1 else ""
+        return Finding(
             "unknown-flag", Severity.FAULT,
-            f"{at(file, line)}: the flag {column} is '{text[:30]}'"
-            f"{f' (and in {counts[text] - 1} more rows)' if counts[text] > 1 else ''}; expected one of {wanted}"
-            f" ({scheme}); it counts as not good.",
-            variable=variable, value=text[:200], limit=wanted, file=file, line=line, count=counts[text],
-        )
-        for text, line in list(first.items())[:_MOST_TOLD]
-    ]  # fmt: skip
+            f"{at(file, int(mine[0]))}: the flag {column} is '{text[:30]}'{more}; expected one of {wanted} ({scheme}); it"
+            " counts as not good.",
+            variable=variable, value=text[:200], limit=wanted, file=file, line=int(mine[0]), count=len(mine),
+        )  # fmt: skip
+
+    return [
+        Spread(np.array(where, dtype=np.int64), partial(tell, text))
+        for text, where in list(places.items())[:_MOST_TOLD]
+    ]

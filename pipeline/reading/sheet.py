@@ -82,7 +82,7 @@ def find_sheet(text: DeliveredText, most_columns: int) -> Sheet:
             f" `seawhence mapping {text.name}` drafts one; or remove the file from the inbox.",
             1,
         )
-    findings: list[Finding] = []
+    findings: list[Finding] = list(text.findings)
     lines = _written_lines(text, 0, 1)
     next(lines)  # the stamp
     header: dict[str, str] = {}

@@ -65,6 +65,9 @@ _SPELLINGS = {
     "laboratory_temperature": "labtemp labtemperature analysistemperature",
 }  # fmt: skip
 
+# What a column can be that makes a quantity with others: the quantity's own words speak of what is made.
+_IN_WORDS = {"date": "date alone", "time": "time of day alone; with the date in the same column it is date_and_time"}
+
 # Words in a heading that change nothing of what it means.
 _EMPTY_WORDS = re.compile(
     r"\b(utc|gmt|dec\.?|deg\.?|decimal|degrees?|ctd|mean|avg|sample|water|conc|umol|kg|l)\b\.?"
@@ -117,4 +120,6 @@ def nearest(written: str) -> str | None:
 
 def in_words(quantity: str) -> str:
     """Return what a quantity of a cruise.toml is, in words."""
+    if quantity in _IN_WORDS:
+        return _IN_WORDS[quantity]
     return PARTS[quantity] if quantity in PARTS else REGISTRY[quantity].long_name

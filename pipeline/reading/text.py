@@ -3,10 +3,15 @@
 from __future__ import annotations
 
 import codecs
+import re
 from dataclasses import dataclass
 from functools import cached_property
 
+from pipeline.findings import Finding, Severity
 from pipeline.problems import DeliveryProblem
+
+_WORD = re.compile(rb"[^\x00-\x20,;|\"]*$"), re.compile(rb"[^\x00-\x20,;|\"]*")
+_LONGEST_WORD = 30
 
 
 @dataclass(frozen=True)
@@ -15,6 +20,7 @@ class DeliveredText:
 
     name: str
     data: bytes
+    findings: tuple[Finding, ...] = ()  # what had to be assumed of its letters
 
     @cached_property
     def lines(self) -> list[bytes]:
@@ -48,10 +54,25 @@ def delivered_text(name: str, data: bytes) -> DeliveredText:
             f"{name}: found binary data; expected an exchange bottle or CTD file, NetCDF, Parquet,"
             " a spreadsheet (.xlsx) or a zip of CTD files; remove it from the inbox, or ask for one of these.",
         )
+    findings: tuple[Finding, ...] = ()
     try:
         data.decode("utf-8")
-    except UnicodeDecodeError:
+    except UnicodeDecodeError as error:
+        findings = (_not_utf_8(name, data, error.start),)
         data = data.decode("latin-1").encode("utf-8")
     if b"\r" in data:
         data = data.replace(b"\r\n", b"\n").replace(b"\r", b"\n")
-    return DeliveredText(name, data)
+    return DeliveredText(name, data, findings)
+
+
+def _not_utf_8(name: str, data: bytes, start: int) -> Finding:
+    before, behind = data[max(0, start - _LONGEST_WORD) : start], data[start : start + _LONGEST_WORD]
+    found = [pattern.search(part) for pattern, part in zip(_WORD, (before, behind), strict=True)]
+    word = b"".join(match[0] for match in found if match).decode("latin-1")
+    above = data[:start]
+    line = above.count(b"\n") + above.replace(b"\r\n", b"").count(b"\r") + 1
+    return Finding(
+        "encoding-assumed", Severity.NOTE,
+        f"{name}, line {line}: found letters that are not UTF-8; they were read as Latin-1, such as '{word}'.",
+        value=word, limit="UTF-8", file=name, line=line,
+    )  # fmt: skip

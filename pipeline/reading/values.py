@@ -10,7 +10,6 @@ import numpy as np
 import pyarrow as pa
 import pyarrow.compute as pc
 
-from pipeline.findings import Finding, Severity, at
 from pipeline.reading.columns import Column, Use
 from pipeline.reading.numbers import missing_codes, to_flags, to_floats
 from pipeline.units import LABORATORY_TEMPERATURE, DensityAt, density, scaled
@@ -25,9 +24,6 @@ if TYPE_CHECKING:
 
     FloatArray = NDArray[np.float64]
 
-# Beyond this many cells a column's unreadable values are told in one sentence.
-_MOST_CELLS_TOLD = 50
-
 
 @dataclass(frozen=True, slots=True)
 class Unreadable:
@@ -36,6 +32,15 @@ class Unreadable:
     column: Column
     rows: NDArray[np.int64]
     texts: tuple[str, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Unconverted:
+    """Values of one column that could not be converted, for want of a density."""
+
+    column: Column
+    rows: NDArray[np.bool_]  # whose value is lost, (n_row,)
+    given: NDArray[np.bool_]  # who had one, (n_row,)
 
 
 @dataclass(frozen=True, slots=True)
@@ -55,7 +60,7 @@ class Values:
     extras: dict[str, pa.Array] = field(default_factory=dict)
     metadata: dict[str, dict[str, str]] = field(default_factory=dict)
     unreadable: list[Unreadable] = field(default_factory=list)
-    unconverted: dict[str, int] = field(default_factory=dict)
+    unconverted: list[Unconverted] = field(default_factory=list)
     pressure_from: str = ""  # the delivered column of depths from which the pressure was computed, if it was
 
 
@@ -142,10 +147,14 @@ def _set(values: Values, column: Column, converted: FloatArray, words: str) -> N
     delivered = values.numbers[column.name]
     _keep_delivered(values, column, delivered)
     values.numbers[column.name] = converted
-    values.metadata[column.name] |= {"conversion": words}
-    lost = int(np.count_nonzero(np.isnan(converted) & ~np.isnan(delivered)))
-    if lost:
-        values.unconverted[column.name] = lost
+    lost = np.isnan(converted) & ~np.isnan(delivered)
+    if not lost.any():
+        values.metadata[column.name] |= {"conversion": words}
+        return
+    given = ~np.isnan(delivered)
+    values.unconverted.append(Unconverted(column, lost, given))
+    if (given & ~lost).any():
+        values.metadata[column.name] |= {"conversion": words}
 
 
 def _keep_delivered(values: Values, column: Column, delivered: FloatArray) -> None:
@@ -200,50 +209,3 @@ def _hydrography(values: Values, n_row: int) -> tuple[FloatArray, FloatArray, Fl
     bottle = values.numbers.get("bottle_salinity", nothing)
     salinity = np.where(np.isnan(bottle), values.numbers.get("ctd_salinity", nothing), bottle)
     return salinity, values.numbers.get("temperature", nothing), values.numbers.get("pressure", nothing)
-
-
-def unreadable_findings(
-    name: str, unreadable: Unreadable, lines: NDArray[np.int64], where: Sequence[tuple[str, int, str | None]]
-) -> list[Finding]:
-    """Tell which cells of a column hold no number.
-
-    Parameters
-    ----------
-    name
-        The file.
-    unreadable
-        The cells.
-    lines
-        Line of each row, (n_row,).
-    where
-        Station, cast and sample of each row.
-
-    """
-    column = unreadable.column
-    is_flag = column.use is Use.FLAG
-    check, wanted = ("unknown-flag", "a flag of one digit") if is_flag else ("not-a-number", "a number")
-    variable = column.variable.name if column.variable else column.name
-    findings = []
-    for row, text in list(zip(unreadable.rows, unreadable.texts, strict=True))[:_MOST_CELLS_TOLD]:
-        station, cast, sample = where[row]
-        findings.append(
-            Finding(
-                check, Severity.FAULT,
-                f"{at(name, int(lines[row]))}: {column.delivered} is '{text[:40]}'; expected {wanted}; it counts as"
-                " missing.",
-                variable=variable, value=text[:200], limit=wanted, file=name, line=int(lines[row]),
-                station=station, cast=cast, sample=sample,
-            )
-        )  # fmt: skip
-    left = len(unreadable.rows) - len(findings)
-    if left:
-        row = unreadable.rows[len(findings)]
-        findings.append(
-            Finding(
-                check, Severity.FAULT,
-                f"{at(name, int(lines[row]))} and below: {left} more cells of {column.delivered} hold no {wanted[2:]};"
-                " they count as missing.",
-                variable=variable, limit=wanted, file=name, line=int(lines[row]), count=left,
-            )
-        )  # fmt: skip
-    return findings

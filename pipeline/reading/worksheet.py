@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import difflib
 import re
 from array import array
 from dataclasses import dataclass, field
@@ -81,10 +82,19 @@ def _chosen(name: str, workbook: Workbook, description: Description) -> SheetPar
     some = workbook.sheets[:_MOST_NAMED]
     there = ", ".join(f"'{sheet.name[:60]}'{'' if sheet.visible else ' (hidden)'}" for sheet in some)
     there += f" and {len(workbook.sheets) - len(some)} more" if len(some) < len(workbook.sheets) else ""
-    found = f"no sheet '{wanted}' but {there or 'none'}" if wanted else f"the sheets {there or 'none'}"
+    if wanted is None:
+        raise DeliveryProblem(
+            "which-sheet",
+            f"{name}: found the sheets {there or 'none'}; expected one sheet; name it as sheet = \"...\" in"
+            f" {description.source}.",
+        )
+    close = difflib.get_close_matches(wanted.lower(), [sheet.name.lower() for sheet in workbook.sheets], n=1)
+    near = next((sheet.name for sheet in workbook.sheets if close and sheet.name.lower() == close[0]), None)
+    meant = f"; did you mean '{near[:60]}'" if near else ""
     raise DeliveryProblem(
         "which-sheet",
-        f'{name}: found {found}; expected one sheet; name it as sheet = "..." in {description.source}.',
+        f"{name}: found no sheet '{wanted}' but {there or 'none'}; expected the sheet that {description.place()}"
+        f" names{meant}{'? Correct' if meant else '; correct'} it there.",
     )
 
 

@@ -7,7 +7,7 @@ import re
 import zipfile
 import zlib
 from collections import Counter
-from typing import TYPE_CHECKING
+from typing import IO, TYPE_CHECKING
 
 from pipeline.findings import Finding, Reject, Severity
 from pipeline.problems import DeliveryProblem
@@ -18,8 +18,13 @@ from pipeline.reading.sheet import find_sheet, kind_of
 from pipeline.reading.text import delivered_text
 
 if TYPE_CHECKING:
+    from collections.abc import Iterator
+
+    import pyarrow as pa
+
     from pipeline.reading.assembly import ReadRows
     from pipeline.reading.description import Description
+    from pipeline.reading.spread import Spread
     from pipeline.settings import ReadingSettings
 
 ZIP_MAGICS = (b"PK\x03\x04", b"PK\x05\x06")  # the second is an empty zip's
@@ -33,10 +38,99 @@ _LITTER = re.compile(r"(^|/)(__MACOSX/|\.DS_Store$|\._|Thumbs\.db$)")
 _GIGABYTE = 1e9
 
 
+class ZipAccount:
+    """What became of the members of one zip, and of their rows, apart from the rows that are kept."""
+
+    def __init__(self, name: str, limits: ReadingSettings) -> None:
+        self._name, self._limits = name, limits
+        self._rejects: list[Reject] = []
+        self._refused: list[tuple[str, DeliveryProblem]] = []
+        self._not_casts: list[Finding] = []
+        self._findings: list[Finding] = []
+        self._spread: list[Spread] = []
+        self._words: dict[str, str] = {}
+        self._rows = self._kept = 0
+
+    def taken(self, member: str, read: ReadRows | DeliveryProblem | None) -> pa.Table | None:
+        """Note what was read of a member, and return the rows of a cast, None where it is refused or is none."""
+        if isinstance(read, DeliveryProblem):
+            self._refused.append((member, read))
+        elif read is None:
+            self._not_casts.append(_not_a_cast(self._name, member))
+        else:
+            self._rejects += read.rejects
+            self._findings += read.findings
+            self._spread += read.spread
+            self._words |= read.words
+            self._rows += read.rows
+            self._kept += read.table.num_rows
+            return read.table
+        return None
+
+    def delivery(self, sha256: str, size: int, tables: list[pa.Table]) -> Delivery:
+        """Return the delivery, with ``tables`` as its kept rows: those of every cast, or some that stand for them.
+
+        Raises
+        ------
+        DeliveryProblem
+            Where there is no cast.
+
+        """
+        if not tables:
+            raise _no_cast(self._name, self._refused)
+        rejects = [
+            *self._rejects,
+            *(
+                Reject(self._name, None, member[: self._limits.raw_text], problem.reason, str(problem))
+                for member, problem in self._refused
+            ),
+        ]
+        table = stack(tables)
+        return Delivery(
+            self._name, sha256, size, DeliveryKind.CTD,
+            table=table,
+            rows=self._rows - self._kept + table.num_rows + len(self._refused),
+            rejects=tuple(rejects),
+            findings=(*self._not_casts, *self._findings),
+            refused_members=len(self._refused),
+            spread=tuple(self._spread),
+            words=self._words,
+        )  # fmt: skip
+
+
 def read_zip(
     name: str, data: bytes, sha256: str, limits: ReadingSettings, description: Description | None = None
 ) -> Delivery:
     """Read a zip of CTD casts; a member that cannot be used is refused alone. A description is of every cast."""
+    account = ZipAccount(name, limits)
+    tables = [
+        table
+        for member, read in read_members(name, data, limits, description)
+        if (table := account.taken(member, read)) is not None
+    ]
+    return account.delivery(sha256, len(data), tables)
+
+
+def unpacked_size(file: IO[bytes] | str) -> int | None:
+    """Return the bytes that the members of a zip unpack to by its own word, None where it is no zip."""
+    try:
+        with zipfile.ZipFile(file) as archive:
+            return sum(member.file_size for member in archive.infolist())
+    except ZIP_ERRORS:
+        return None
+
+
+def read_members(
+    name: str, data: bytes, limits: ReadingSettings, description: Description | None = None
+) -> Iterator[tuple[str, ReadRows | DeliveryProblem | None]]:
+    """Yield of each member of a zip its name and what was read: a cast, why it is refused, or None where it is none.
+
+    Raises
+    ------
+    DeliveryProblem
+        Where the zip is refused whole.
+
+    """
     try:
         archive = zipfile.ZipFile(io.BytesIO(data))
     except ZIP_ERRORS as error:
@@ -55,36 +149,16 @@ def read_zip(
                 f" {limits.unpacked_bytes / _GIGABYTE:.1f} GB; deliver the casts in several zips, or raise"
                 " reading.unpacked_bytes in the settings.",
             )
-        read: list[ReadRows] = []
-        refused: list[tuple[str, DeliveryProblem]] = []
-        findings: list[Finding] = []
         times = Counter(member.filename for member in members)
         for member in sorted(members, key=lambda m: m.filename):
             try:
                 _refuse_name(name, member.filename, times[member.filename])
-                cast = _read_member(name, archive, member, limits, description)
+                read: ReadRows | DeliveryProblem | None = _read_member(
+                    name, archive, member, limits, description
+                )
             except DeliveryProblem as problem:
-                refused.append((member.filename, problem))
-                continue
-            if cast is None:
-                findings.append(_not_a_cast(name, member.filename))
-            else:
-                read.append(cast)
-    if not read:
-        raise _no_cast(name, refused)
-    rejects = [reject for cast in read for reject in cast.rejects]
-    rejects += [
-        Reject(name, None, member[: limits.raw_text], problem.reason, str(problem))
-        for member, problem in refused
-    ]
-    return Delivery(
-        name, sha256, len(data), DeliveryKind.CTD,
-        table=stack([cast.table for cast in read]),
-        rows=sum(cast.rows for cast in read) + len(refused),
-        rejects=tuple(rejects),
-        findings=(*findings, *(finding for cast in read for finding in cast.findings)),
-        refused_members=len(refused),
-    )  # fmt: skip
+                read = problem
+            yield member.filename, read
 
 
 def _read_member(

@@ -2,11 +2,14 @@
 
 cruise = gather(store, contents.cruises[expocode], settings.use)
 files = cruise_page(cruise)       # path: bytes, the page and the data of its figures
+files |= archive_page([summary(cruise)], frozenset({expocode}))
 """
 
 from __future__ import annotations
 
+from pipeline.reporting.archive_page import archive_page
 from pipeline.reporting.cruise_page import cruise_page
 from pipeline.reporting.gathered import Gathered, gather
+from pipeline.reporting.summary import Summary, summary, unreadable
 
-__all__ = ["Gathered", "cruise_page", "gather"]
+__all__ = ["Gathered", "Summary", "archive_page", "cruise_page", "gather", "summary", "unreadable"]

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
@@ -27,18 +28,30 @@ class SourceLook:
     name: str
     colour: str
     marker: str
+    preformed_salinity: float = math.nan  # g kg-1, as the catalogue gives it
+    conservative_temperature: float = math.nan  # degree_C
 
 
-def source_looks(sources: Iterable[tuple[str, str]]) -> tuple[SourceLook, ...]:
-    """Return the looks of sources, code and name each, by their order in the catalogue."""
+def source_looks(sources: Iterable[tuple[str, str, float, float]]) -> tuple[SourceLook, ...]:
+    """Return the looks of sources by their order in the catalogue.
+
+    Parameters
+    ----------
+    sources
+        Of each its code, its name, Preformed Salinity (g kg-1) and Conservative Temperature (degree_C), NaN where
+        not known.
+
+    """
     return tuple(
         SourceLook(
             code,
             name,
             SOURCE_COLOURS[number % len(SOURCE_COLOURS)],
             SOURCE_MARKERS[number % len(SOURCE_MARKERS)],
+            salinity,
+            temperature,
         )
-        for number, (code, name) in enumerate(sources)
+        for number, (code, name, salinity, temperature) in enumerate(sources)
     )
 
 

@@ -26,8 +26,8 @@ if TYPE_CHECKING:
     from pipeline.reporting.visits import Section, Visits
 
 SCRIPTS = (
-    "numbers.js", "store.js", "gridding.js", "figures.js", "keyboard.js", "waters.js", "sections.js", "certainty.js",
-    "stations.js", "cruise.js",
+    "numbers.js", "theme.js", "store.js", "gridding.js", "figures.js", "layers.js", "keyboard.js",
+    "waters.js", "sections.js", "certainty.js", "stations.js", "cruise.js",
 )  # fmt: skip
 
 

@@ -65,6 +65,11 @@ class Gathered:
         """Whether ``samples`` holds bottle samples, and not CTD levels in their place."""
         return "sample" in self.samples.column_names
 
+    @property
+    def is_resolved(self) -> bool:
+        """Whether any sample is resolved into source waters."""
+        return bool(np.isfinite(self.shares.share).any())
+
     def usable_levels(self, levels: pa.Table, name: str) -> FloatArray:
         """Return what may be used of a column of CTD levels, (n_level,)."""
         return usable(levels, name, self.use)
@@ -121,20 +126,31 @@ def gather(store: Store, cruise: CruiseContents, use: UseSettings) -> Gathered:
     )
 
 
-def _catalogue_sources(store: Store, made: Provenance, used: list[str]) -> list[tuple[str, str]]:
-    """Return code and name of each source in the catalogue's order; without it, those of the mixtures, as they come.
+def _catalogue_sources(
+    store: Store, made: Provenance, used: list[str]
+) -> list[tuple[str, str, float, float]]:
+    """Return what ``source_looks`` takes, in the catalogue's order; without it, of the mixtures, as they come.
 
     The names are an adornment: a catalogue that is no longer kept, or that an older version wrote otherwise, is
     no reason to have no page.
     """
+    unknown = {code: (code, code, np.nan, np.nan) for code in used}
     if made.catalogue_sha256 is None:
-        return [(code, code) for code in used]
+        return list(unknown.values())
     try:
         catalogue = Catalogue.model_validate(json.loads(vault.read(store, made.catalogue_sha256)))
     except (ArchiveProblem, ValidationError, ValueError):
-        return [(code, code) for code in used]
-    known = {source.code: source.name for source in catalogue.source}
-    return [*known.items(), *((code, code) for code in used if code not in known)]
+        return list(unknown.values())
+    salt_and_heat = ("preformed_salinity", "conservative_temperature")
+    known = {
+        source.code: (
+            source.code,
+            source.name,
+            *(source.properties[name].value if name in source.properties else np.nan for name in salt_and_heat),
+        )
+        for source in catalogue.source
+    }
+    return list({**unknown, **known}[code] for code in dict.fromkeys([*known, *unknown]))
 
 
 def _keys(table: pa.Table, names: tuple[str, ...]) -> list[tuple[object, ...]]:

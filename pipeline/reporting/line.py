@@ -43,6 +43,8 @@ def along_line(latitude: FloatArray, longitude: FloatArray, time: FloatArray) ->
         Any count of time, (n_cast,), NaN where unknown: such casts keep their place behind those of known time.
 
     """
+    if not len(latitude):
+        return Line(np.zeros(0, dtype=np.int64), np.zeros(0), np.zeros(0, dtype=np.int64))
     places = unit_vectors(latitude, longitude)
     by_time = np.argsort(time, kind="stable")
     orders = [by_time, by_time[np.argsort(_main_direction(places)[by_time], kind="stable")]]
@@ -50,7 +52,7 @@ def along_line(latitude: FloatArray, longitude: FloatArray, time: FloatArray) ->
     order, off = min(lines, key=lambda line: (len(line[1]), round(_length(places[line[0]]), 3)))
     steps = great_circle(places[order][:-1], places[order][1:])
     steps[steps < SAME_PLACE] = 0.0
-    return Line(order, np.concatenate([np.zeros(min(1, len(order))), np.cumsum(steps)]), off)
+    return Line(order, np.concatenate([[0.0], np.cumsum(steps)]), off)
 
 
 def unit_vectors(latitude: FloatArray, longitude: FloatArray) -> FloatArray:

@@ -22,10 +22,12 @@ if TYPE_CHECKING:
     import pyarrow as pa
     from numpy.typing import NDArray
 
+    from pipeline.reporting.colours import SourceLook
     from pipeline.reporting.gathered import Gathered
     from pipeline.reporting.quantities import Quantity
     from pipeline.reporting.visits import Section, Visits
 
+VIEWS = (0, 500, 1000, 2000)  # dbar from which on samples are in a view of the waters
 # What a CTD profile shows, where the CTD has it.
 PROFILED = ("conservative_temperature", "absolute_salinity", "oxygen", "sigma0", "fluorescence", "transmission")
 
@@ -52,9 +54,7 @@ def page_data(
     return {
         "cruise": cruise.expocode,
         "rows": "sample" if cruise.samples_are_bottles else "level",
-        "sources": [
-            {"code": s.code, "name": visible(s.name), "colour": s.colour, "marker": s.marker} for s in cruise.sources
-        ],
+        "sources": [_source(look) for look in cruise.sources],
         "noSource": NO_SOURCE,
         "samples": {
             "cast": found.of_row.tolist(),
@@ -79,7 +79,7 @@ def page_data(
             name: {"words": quantity_words(name), "unit": unit_words(REGISTRY[name].unit)} for name in PROFILED
         },
         "split": [name for name in SPLIT if f"{name}_from_sources" in by_key],
-        "density": _density(by_key),
+        "views": _densities(by_key, cruise.sources),
         "sure": SURE,
         "scales": scales(),
     }
@@ -88,6 +88,18 @@ def page_data(
 def date_words(seconds: float) -> str:
     """Return the day of seconds since 1970, '' where they are missing."""
     return "" if np.isnan(seconds) else datetime.fromtimestamp(seconds, UTC).strftime("%Y-%m-%d")
+
+
+def _source(look: SourceLook) -> dict[str, Any]:
+    salinity, temperature = numbers([look.preformed_salinity, look.conservative_temperature])
+    return {
+        "code": look.code,
+        "name": visible(look.name),
+        "colour": look.colour,
+        "marker": look.marker,
+        "salinity": salinity,
+        "temperature": temperature,
+    }
 
 
 def _quantity(quantity: Quantity) -> dict[str, Any]:
@@ -104,26 +116,34 @@ def _quantity(quantity: Quantity) -> dict[str, Any]:
     return told
 
 
-def _density(by_key: Mapping[str, Quantity]) -> list[dict[str, Any]]:
-    """Return density lines over the range of the samples, a little wider; none where there is no range."""
-    ranges = [
-        _range(by_key[name].values)
-        for name in ("absolute_salinity", "conservative_temperature")
-        if name in by_key
-    ]
-    if len(ranges) < 2 or None in ranges:
-        return []
-    salinity, temperature = ranges
-    assert salinity is not None  # noqa: S101 - for the reader of types
-    assert temperature is not None  # noqa: S101
-    return [
-        {
-            "sigma": line.sigma,
-            "x": numbers(line.absolute_salinity, 5),
-            "y": numbers(line.conservative_temperature, 4),
-        }
-        for line in density_lines((max(0.0, salinity[0]), salinity[1]), temperature)
-    ]
+def _densities(by_key: Mapping[str, Quantity], sources: Sequence[SourceLook]) -> list[dict[str, Any]]:
+    """Return what the diagram of the waters can show: all samples, or those below a pressure, with density lines."""
+    views = []
+    for above in VIEWS:
+        ranges = []
+        for name, ends in (("absolute_salinity", "preformed_salinity"), ("conservative_temperature",) * 2):
+            if name in by_key and "pressure" in by_key:
+                below = by_key["pressure"].values >= above
+                of_sources = [getattr(look, ends) for look in sources] if not above else []
+                ranges.append(_range(np.concatenate([by_key[name].values[below], of_sources])))
+        if len(ranges) == 2 and None not in ranges:
+            salinity, temperature = ((low, high) for low, high in filter(None, ranges))
+            views.append(
+                {
+                    "above": above,
+                    "salinity": numbers(salinity, 6),
+                    "temperature": numbers(temperature, 5),
+                    "lines": [
+                        {
+                            "sigma": line.sigma,
+                            "x": numbers(line.absolute_salinity, 6),
+                            "y": numbers(line.conservative_temperature, 5),
+                        }
+                        for line in density_lines((max(0.0, salinity[0]), salinity[1]), temperature)
+                    ],
+                }
+            )
+    return views
 
 
 def _range(values: NDArray[np.float64]) -> tuple[float, float] | None:

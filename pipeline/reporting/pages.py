@@ -10,7 +10,7 @@ import jinja2
 from markupsafe import Markup
 
 from pipeline.reporting.embedding import safe_json, security_policy
-from pipeline.reporting.wording import many, plus_minus, short, visible
+from pipeline.reporting.wording import digits, many, short, visible
 from pipeline.version import VERSION
 
 if TYPE_CHECKING:
@@ -58,8 +58,7 @@ def _environment() -> jinja2.Environment:
         lstrip_blocks=True,
         finalize=lambda value: value if isinstance(value, Markup) else visible(value),
     )
-    environment.filters |= {"short": short, "many": many}
-    environment.globals |= {"plus_minus": plus_minus}
+    environment.filters |= {"short": short, "many": many, "digits": digits}
     return environment
 
 

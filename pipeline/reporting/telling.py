@@ -9,7 +9,7 @@ import numpy as np
 
 from pipeline.mixing import notices_in
 from pipeline.reporting.quantities import SPLIT, SURE
-from pipeline.reporting.wording import listed, many, plus_minus, quantity_words, short, unit_words
+from pipeline.reporting.wording import listed, many, plus_minus, quantity_words, rounded, short, unit_words
 from pipeline.tables import floats, texts
 from pipeline.variables import REGISTRY
 
@@ -28,6 +28,8 @@ SPOKEN_SECTIONS = 3
 def of_waters(cruise: Gathered) -> list[str]:
     """Return sentences on what the waters are: how many are resolved, which source leads how often, how surely."""
     total = cruise.samples.num_rows
+    if not cruise.samples_are_bottles:
+        return ["No bottle samples were delivered, and CTD levels are not resolved into source waters."]
     if not cruise.sources:
         return [f"No source waters were given, so none of the {many(total, 'sample')} is resolved into them."]
     leaders = Counter(code for code in texts(cruise.samples, "leading_source") if code)
@@ -38,7 +40,9 @@ def of_waters(cruise: Gathered) -> list[str]:
         said.append(f"The largest share is that of {listed(ranks, 12)}.")
         probability = floats(cruise.samples, "leading_probability")
         unsure = int((probability < SURE).sum())
-        if np.isfinite(probability).any():
+        if np.isfinite(probability).any() and not unsure:
+            said.append(f"In all of them one source leads in at least {100 * SURE:.0f} % of the ensemble.")
+        elif np.isfinite(probability).any():
             said.append(
                 f"In {unsure} of them it is uncertain which source leads: another one does in more than"
                 f" {100 * (1 - SURE):.0f} % of the ensemble. These are drawn faint."
@@ -48,7 +52,9 @@ def of_waters(cruise: Gathered) -> list[str]:
 
 def of_sources(cruise: Gathered, found: Visits, sections: Sequence[Section]) -> list[str]:
     """Return a sentence on each source: where it is largest, and how far along a section it is above a half."""
-    said = []
+    said: list[str] = []
+    if not cruise.is_resolved:
+        return said
     pressure, names = floats(cruise.samples, "pressure"), found.names
     for number, look in enumerate(cruise.sources):
         share = cruise.shares.share[:, number]
@@ -60,11 +66,8 @@ def of_sources(cruise: Gathered, found: Visits, sections: Sequence[Section]) -> 
             f"{look.code} ({look.name}) reaches {plus_minus(share[row], cruise.shares.uncertainty[row, number])} at"
             f" station {names[found.of_row[row]]}, {short(pressure[row])} dbar"
         )
-        along = [
-            words
-            for section in sections[:SPOKEN_SECTIONS]
-            if (words := _above_half(share, found, section))
-        ]
+        along = [_above_half(share, found, section) for section in sections[:SPOKEN_SECTIONS]]
+        along = [phrase for phrase in along if phrase]
         said.append(f"{words}; {'; '.join(along)}." if along else f"{words}.")
     return said
 
@@ -84,19 +87,16 @@ def _above_half(share: NDArray[np.float64], found: Visits, section: Section) -> 
     names, first, last = found.names, int(above[0]), int(above[-1])
     if len(above) == judged:
         return f"along {section.name} it is above {HALF} somewhere in every cast"
-    between = [names[section.casts[k]] for k in range(first, last + 1) if values[k] <= HALF]
-    gap = f", though not at {listed([f'station {name}' for name in between], 4)}" if between else ""
+    if len(above) == 1:
+        return f"along {section.name} it is above {HALF} at station {names[section.casts[first]]} alone"
     after = np.flatnonzero(np.isfinite(values[last + 1 :]))
     fall = ""
     if len(after):
-        name = names[section.casts[last + 1 + int(after[0])]]
-        fall = f" and falls below it at station {name}"
-    if first == last:
-        return f"along {section.name} it is above {HALF} at station {names[section.casts[first]]} alone"
+        fall = f", and falls below it at station {names[section.casts[last + 1 + int(after[0])]]}"
     return (
-        f"along {section.name} it is above {HALF} from station {names[section.casts[first]]}"
-        f" ({section.distance[first]:.0f} km) to station {names[section.casts[last]]}"
-        f" ({section.distance[last]:.0f} km){gap}{fall}"
+        f"along {section.name} it is above {HALF} in {len(above)} of {judged} casts, between station"
+        f" {names[section.casts[first]]} ({section.distance[first]:.0f} km) and station"
+        f" {names[section.casts[last]]} ({section.distance[last]:.0f} km){fall}"
     )
 
 
@@ -113,7 +113,7 @@ def of_certainty(cruise: Gathered) -> list[str]:
     if pairs:
         worst = [f"{one} and {other} ({count})" for (one, other), count in pairs]
         said.append(f"Where the leader is uncertain, it stands mostly between {listed(worst, 4)}.")
-    return [*said, *notices_in(cruise.findings)]
+    return [*said, *(notice[:1].upper() + notice[1:] for notice in notices_in(cruise.findings))]
 
 
 def confused(cruise: Gathered) -> list[tuple[tuple[str, str], int]]:
@@ -139,10 +139,12 @@ def of_split(cruise: Gathered, found: Visits) -> list[str]:
         row = int(np.nanargmax(np.abs(np.where(both, changed, np.nan))))
         spread = floats(cruise.samples, f"{name}_from_respiration_uncertainty")[row]
         unit = unit_words(REGISTRY[f"{name}_from_respiration"].unit)
-        sure = "" if np.isnan(spread) else f" ± {short(spread)}"
+        if not changed[row]:
+            said.append(f"{quantity_words(name)}: respiration did not change it in any sample.")
+            continue
         said.append(
             f"{quantity_words(name)}: respiration changed it by {short(float(np.median(changed[both])))} {unit} in the"
-            f" median, and most by {short(changed[row])}{sure} {unit} at station {names[found.of_row[row]]},"
+            f" median, and most by {rounded(changed[row], spread)} {unit} at station {names[found.of_row[row]]},"
             f" {short(pressure[row])} dbar, where the sources brought {short(brought[row])}."
         )
     return said

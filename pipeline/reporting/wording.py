@@ -12,6 +12,13 @@ from pipeline.variables import REGISTRY, RESIDUAL_PREFIX
 if TYPE_CHECKING:
     from collections.abc import Sequence
 
+MINUS = "\u2212"
+# Shorter than the registry says, where that says too much for an axis.
+_SHORT = {
+    "pressure": "Pressure", "oxygen": "Dissolved oxygen", "practical_salinity": "Practical salinity",
+    "sigma0": "Potential density anomaly, surface", "sigma2": "Potential density anomaly, 2000 dbar",
+    "sigma4": "Potential density anomaly, 4000 dbar",
+}  # fmt: skip
 _UNITS = {"1": "", "degree_C": "°C", "degree_north": "°N", "degree_east": "°E", "percent": "%", "1e-3": "‰"}
 _POWERS = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
 
@@ -26,11 +33,10 @@ def unit_words(unit: str) -> str:
 
 def quantity_words(name: str) -> str:
     """Return what a registry column is, short: the name of a residual says so, all else ends at ':' or ';'."""
-    long_name = REGISTRY[name].long_name
     if name.startswith(RESIDUAL_PREFIX):
         base = quantity_words(name.removeprefix(RESIDUAL_PREFIX))
         return f"{base}, fitted less observed"
-    return re.split(r"[:;]", long_name)[0]
+    return _SHORT.get(name) or re.split(r"[:;]", REGISTRY[name].long_name)[0]
 
 
 def with_unit(value: float, unit: str) -> str:
@@ -46,7 +52,25 @@ def short(value: float) -> str:
     text = f"{value:.4g}"
     if "e" in text and 1e-4 <= abs(value) < 1e9:
         text = f"{value:.0f}"
-    return text.replace("-", "−", 1) if text.startswith("-") else text
+    return text.replace("-", MINUS, 1) if text.startswith("-") else text
+
+
+def digits(value: float) -> str:
+    """Return a share or its uncertainty in three digits, a dash where it is missing."""
+    return f"{value:.3f}" if math.isfinite(value) else "–"
+
+
+def rounded(value: float, uncertainty: float) -> str:
+    """Return '-77.3 ± 3.1': both to the second digit of the uncertainty, or the value alone where there is none."""
+    if not math.isfinite(uncertainty) or uncertainty <= 0:
+        return short(value)
+    digits = max(0, 1 - math.floor(math.log10(uncertainty)))
+    return f"{value:.{digits}f} ± {uncertainty:.{digits}f}".replace("-", MINUS, 1)
+
+
+def signed(value: float) -> str:
+    """Return '+0.10' or '−0.10'."""
+    return f"{value:+.2f}".replace("-", MINUS)
 
 
 def plus_minus(value: float, uncertainty: float) -> str:
@@ -56,7 +80,7 @@ def plus_minus(value: float, uncertainty: float) -> str:
 
 def many(count: int, one: str, more: str | None = None) -> str:
     """Return '1 sample', '2 samples'."""
-    return f"{count:,} {one if count == 1 else more or one + 's'}".replace(",", "\u202f")
+    return f"{count} {one if count == 1 else more or one + 's'}"
 
 
 def listed(words: Sequence[str], most: int = 6) -> str:

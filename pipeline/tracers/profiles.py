@@ -63,13 +63,16 @@ def profiles(
     known = np.flatnonzero(~np.isnan(depth + value))
     # Of equal depth by value, so that the order of the rows changes nothing.
     order = known[np.lexsort((uncertainty[known], value[known], depth[known], station[known]))]
-    edges = np.flatnonzero(np.diff(station[order])) + 1
-    for rows in np.split(order, edges) if len(order) else ():
-        level = _levels(depth[rows], same_depth)
-        if level[-1] + 1 >= fewest:
-            count = np.bincount(level)
-            own = (np.bincount(level, array[rows]) / count for array in (depth, value, uncertainty))
-            yield int(station[rows[0]]), Profile(*own)
+    if not len(order):
+        return
+    starts = np.flatnonzero(np.diff(station[order], prepend=-1))
+    level = _levels(depth[order], starts, same_depth)
+    count = np.bincount(level)
+    means = [np.bincount(level, array[order]) / count for array in (depth, value, uncertainty)]
+    numbers, firsts = station[order[starts]].tolist(), level[starts].tolist()
+    for number, first, end in zip(numbers, firsts, [*firsts[1:], len(count)], strict=True):
+        if end - first >= fewest:
+            yield number, Profile(*(mean[first:end] for mean in means))
 
 
 def per_station(station: IntArray, found: dict[int, float]) -> FloatArray:
@@ -86,12 +89,17 @@ def crossing(upper: tuple[float, float], lower: tuple[float, float], level: floa
     return float(z0 + (z1 - z0) * (level - v0) / (v1 - v0))
 
 
-def _levels(depth: FloatArray, same_depth: float) -> IntArray:
-    """Return the level of every bottle, (n,), from depths in ascending order."""
-    level = np.zeros(len(depth), dtype=np.int64)
-    top, number = depth[0], 0
-    for i, z in enumerate(depth):
-        if z - top > same_depth:
-            top, number = z, number + 1
-        level[i] = number
-    return level
+def _levels(depth: FloatArray, starts: IntArray, same_depth: float) -> IntArray:
+    """Return the level of every bottle, (n,), from depths that ascend within each station, and where these start."""
+    first = np.diff(depth, prepend=-np.inf) > same_depth
+    first[starts] = True
+    # Where bottles are close it matters which of them began the level.
+    close = np.unique(np.searchsorted(starts, np.flatnonzero(~first), side="right") - 1)
+    ends = np.append(starts[1:], len(depth))
+    for start, end in zip(starts[close], ends[close], strict=True):
+        top = depth[start]
+        for i in range(start + 1, end):
+            first[i] = depth[i] - top > same_depth
+            if first[i]:
+                top = depth[i]
+    return np.asarray(np.cumsum(first) - 1, dtype=np.int64)

@@ -35,7 +35,10 @@ def test_the_same_section_has_itself_in_common() -> None:
 
 
 def test_only_the_stretch_under_both_tracks_is_compared() -> None:
-    one, other = samples(BOX, floor=1000.0), samples({1.5: (0, 500, 1000), 2.7: (0, 1000), 4.0: (0, 1000)}, floor=1000.0)
+    one, other = (
+        samples(BOX, floor=1000.0),
+        samples({1.5: (0, 500, 1000), 2.7: (0, 1000), 4.0: (0, 1000)}, floor=1000.0),
+    )
     found = find_common(section(one), section(other, depth_gap=1000.0), NONE, 100.0)
     # The station at 4.0 E lies 111 km off the end of the first track.
     assert found.length == pytest.approx(1.2 * DEGREE, rel=1e-9)
@@ -55,7 +58,9 @@ def test_only_depths_that_both_resolved_are_compared() -> None:
     depth = np.array(one.column("depth").to_pylist())
     assert area(one, found.weights[0], depth) == pytest.approx(3 * DEGREE * (0.1 * 50 + 0.1 * 850), rel=1e-9)
     depth = np.array(other.column("depth").to_pylist())
-    assert area(other, found.weights[1], depth) == pytest.approx(3 * DEGREE * (0.1 * 50 + 0.1 * 850), rel=1e-9)
+    assert area(other, found.weights[1], depth) == pytest.approx(
+        3 * DEGREE * (0.1 * 50 + 0.1 * 850), rel=1e-9
+    )
 
 
 def test_the_way_back_is_the_same_section() -> None:
@@ -64,7 +69,9 @@ def test_the_way_back_is_the_same_section() -> None:
     found = common(table, back)
     assert found.resolved[1][0] == pytest.approx(3 * DEGREE, rel=1e-9)
     west = np.repeat([0.0, 1.0, 2.0, 3.0], 3)
-    assert area(table, found.weights[0], west) == pytest.approx(area(back, found.weights[1], west[::-1]), rel=1e-9)
+    assert area(table, found.weights[0], west) == pytest.approx(
+        area(back, found.weights[1], west[::-1]), rel=1e-9
+    )
 
 
 def test_classes_may_grow_while_the_whole_stays() -> None:
@@ -101,6 +108,10 @@ def test_the_order_of_the_rows_shows_in_no_bit() -> None:
     one, other = samples(BOX, floor=1000.0), samples({0.3: (0, 400, 900), 1.7: (3, 555, 999)}, floor=1000.0)
     boundaries = np.array([30.4])
     first = common(one, other, boundaries)
-    second = common(one.take(pa.array(range(11, -1, -1))), other.take(pa.array([3, 1, 5, 0, 2, 4])), boundaries)
-    for before, after in zip((*first.weights, *first.resolved), (*second.weights, *second.resolved), strict=True):
+    second = common(
+        one.take(pa.array(range(11, -1, -1))), other.take(pa.array([3, 1, 5, 0, 2, 4])), boundaries
+    )
+    for before, after in zip(
+        (*first.weights, *first.resolved), (*second.weights, *second.resolved), strict=True
+    ):
         np.testing.assert_array_equal(before, after)

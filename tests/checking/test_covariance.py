@@ -5,7 +5,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 import pytest
 
-from pipeline.checking.covariance import Shape, conditional_residuals, robust_shape
+from pipeline.checking.covariance import Shape, conditional_residuals, medians, robust_shape
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -74,3 +74,9 @@ def test_values_that_are_all_equal_break_nothing() -> None:
     values[:, 1] = 4.0
     residual, _ = conditional_residuals(values, robust_shape(values))
     assert np.isfinite(residual).all()
+
+
+@pytest.mark.parametrize("n", [1, 2, 7, 400])
+def test_medians_are_numpy_s_to_the_last_bit(n: int) -> None:
+    values = np.random.default_rng(n).normal(size=(n, 5)).round(2)
+    assert medians(values).tolist() == np.median(values, axis=0).tolist()

@@ -6,7 +6,16 @@ import numpy as np
 import pyarrow as pa
 import pytest
 
-from pipeline.checking.neighbours import AFTER, BEFORE, neighbours, plausible, unlike
+from pipeline.checking.neighbours import (
+    ABOVE,
+    AFTER,
+    BEFORE,
+    BELOW,
+    above_and_below,
+    neighbours,
+    plausible,
+    unlike,
+)
 from pipeline.usable import Rows
 from tests.checking.cases import SETTINGS
 from tests.checking.oceans import ocean, row
@@ -53,6 +62,17 @@ def test_neighbours_are_those_that_a_slow_search_finds(seed: int) -> None:
     data = rows_of(table)
     values = np.where(chance.random(len(data)) < 0.3, np.nan, chance.normal(size=len(data)))
     np.testing.assert_allclose(neighbours(data, values), slowly(data, values), atol=1e-12)
+
+
+@pytest.mark.parametrize("seed", range(3))
+def test_some_rows_have_the_neighbours_that_they_have_among_all(seed: int) -> None:
+    chance = np.random.default_rng(seed)
+    data = rows_of(ocean(n_cast=5))
+    values = np.where(chance.random(len(data)) < 0.3, np.nan, chance.normal(size=len(data)))
+    beside = neighbours(data, values)
+    for rows in (np.flatnonzero(chance.random(len(data)) < 0.2), np.empty(0, dtype=np.int64)):
+        np.testing.assert_array_equal(neighbours(data, values, rows), beside[rows])
+    np.testing.assert_array_equal(above_and_below(data, values), beside[:, [ABOVE, BELOW]])
 
 
 def test_casts_without_the_quantity_are_passed_over() -> None:

@@ -8,6 +8,7 @@ import socket
 import subprocess
 import sys
 import time
+import urllib.error
 import urllib.request
 from contextlib import contextmanager
 from typing import TYPE_CHECKING, Any
@@ -19,13 +20,16 @@ if TYPE_CHECKING:
     from pathlib import Path
 
 START_SECONDS = 120.0
+_BUSY = 503  # its database is locked; clients of Prefect ask again
 ENDS = {"COMPLETED", "FAILED", "CRASHED", "CANCELLED"}
 COMMAND = (sys.executable, "-c", "import sys; from flows.cli import main; sys.exit(main(sys.argv[1:]))")
 
 
 def environment(home: Path, **more: str) -> dict[str, str]:
     """Return an environment in which Prefect keeps everything below ``home``."""
-    kept = {name: value for name, value in os.environ.items() if not name.startswith(("PREFECT_", "SEAWHENCE_"))}
+    kept = {
+        name: value for name, value in os.environ.items() if not name.startswith(("PREFECT_", "SEAWHENCE_"))
+    }
     kept.pop("DO_NOT_TRACK", None)  # that nobody is called is for the command to see to
     return {**kept, "PREFECT_HOME": str(home), "PYTHONPATH": str(ROOT), **more}
 
@@ -37,7 +41,13 @@ def started(
     """Have a process run in a group of its own; it is stopped, and what it wrote is in ``log``."""
     with log.open("wb") as out:
         process = subprocess.Popen(
-            arguments, stdout=out, stderr=out, env=env, cwd=cwd, start_new_session=True, stdin=subprocess.DEVNULL
+            arguments,
+            stdout=out,
+            stderr=out,
+            env=env,
+            cwd=cwd,
+            start_new_session=True,
+            stdin=subprocess.DEVNULL,
         )
         try:
             yield process
@@ -64,8 +74,16 @@ class Server:
         request = urllib.request.Request(  # noqa: S310 - loopback
             f"{self.address}{path}", data=body, headers={"Content-Type": "application/json"}
         )
-        with urllib.request.urlopen(request, timeout=20) as answer:  # noqa: S310
-            return json.loads(answer.read() or b"null")
+        for _ in range(20):
+            try:
+                with urllib.request.urlopen(request, timeout=20) as answer:  # noqa: S310
+                    return json.loads(answer.read() or b"null")
+            except urllib.error.HTTPError as error:
+                if error.code != _BUSY:
+                    raise
+                error.close()
+                time.sleep(0.5)
+        raise AssertionError("the server was busy for ten seconds")
 
     def begin(self, deployment: dict[str, Any]) -> str:
         """Ask for a run now; return its number."""
@@ -78,7 +96,10 @@ class Server:
 
     def end_of(self, number: str, seconds: float = 90.0) -> dict[str, Any]:
         """Wait for the end of a flow run."""
-        return wait_for(lambda: run if (run := self.run(number))["state_type"] in ENDS else None, seconds)
+        ended: dict[str, Any] = wait_for(
+            lambda: run if (run := self.run(number))["state_type"] in ENDS else None, seconds
+        )
+        return ended
 
     def artifacts(self, number: str) -> dict[str, str]:
         """Return the artifacts of a flow run by their key."""
@@ -102,7 +123,17 @@ def prefect_server(home: Path, **more: str) -> Iterator[Server]:
         free.bind(("127.0.0.1", 0))
         port = free.getsockname()[1]
     home.mkdir(parents=True, exist_ok=True)
-    arguments = [sys.executable, "-m", "prefect", "server", "start", "--host", "127.0.0.1", "--port", str(port)]
+    arguments = [
+        sys.executable,
+        "-m",
+        "prefect",
+        "server",
+        "start",
+        "--host",
+        "127.0.0.1",
+        "--port",
+        str(port),
+    ]
     env = environment(home, PREFECT_SERVER_ANALYTICS_ENABLED="false", DO_NOT_TRACK="1", **more)
     with started(arguments, env, home / "server.log") as process:
         server = Server(f"http://127.0.0.1:{port}/api")

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 from typing import TYPE_CHECKING
 
 import pyarrow.parquet as pq
@@ -121,3 +122,59 @@ def test_two_editions_that_both_stand_are_refused(inbox: Path, tmp_path: Path) -
         '[cruise]\nstands = ["second_hy1.csv", "first_hy1.csv"]\n', encoding="utf-8"
     )
     assert call("run", inbox, "--archive", tmp_path / "archive").status == 1
+
+
+def two_editions(inbox: Path, toml: str) -> None:
+    (inbox / "first_hy1.csv").write_bytes(bottle_file({}, {}))
+    (inbox / "second_hy1.csv").write_bytes(bottle_file({"NITRAT": "31.00"}, {}))
+    (inbox / "cruise.toml").write_text(toml, encoding="utf-8")
+
+
+def test_two_editions_are_told_once_and_counted_as_two_files(inbox: Path, tmp_path: Path) -> None:
+    two_editions(inbox, "")
+    (inbox / "cruise.toml").unlink()
+    outcome = call("run", inbox, "--archive", tmp_path / "archive")
+    assert outcome.out.count("both hold 2 of the same samples") == 1
+    assert "2 deliveries refused" in outcome.out
+
+
+def test_a_standing_edition_that_is_not_there_is_named(inbox: Path, tmp_path: Path) -> None:
+    two_editions(inbox, '[cruise]\nstands = ["third_hy1.csv"]\n')
+    out = call("run", inbox, "--archive", tmp_path / "archive").out
+    assert (
+        "expected one edition of a cruise; cruise.toml names 'third_hy1.csv' as the one that stands, and there is no such"
+        " file; name one of these two there." in out
+    )
+
+
+def test_that_both_editions_are_said_to_stand_is_told(inbox: Path, tmp_path: Path) -> None:
+    two_editions(inbox, '[cruise]\nstands = ["first_hy1.csv", "second_hy1.csv"]\n')
+    out = call("run", inbox, "--archive", tmp_path / "archive").out
+    assert "expected one edition of a cruise; cruise.toml says of both that they stand; leave one of them there." in out
+
+
+def test_a_pattern_that_fits_no_file_is_told(inbox: Path, tmp_path: Path) -> None:
+    (inbox / "nutrients.csv").write_text(NUTRIENTS, encoding="utf-8")
+    (inbox / "cruise.toml").write_text(DESCRIBED.replace("nutrients.csv", "nutriens*.csv"), encoding="utf-8")
+    outcome = call("run", inbox, "--archive", tmp_path / "archive")
+    assert outcome.status == 1
+    assert (
+        "note  cruise.toml, line 2: describes 'nutriens*.csv', and no file beside it is called so; correct the name, or"
+        " remove what is said of it." in outcome.out
+    )
+    assert "The cruise.toml beside it describes 'nutriens*.csv' and not this file." in outcome.out
+    checked = call("check", inbox / "nutrients.csv")
+    assert "The cruise.toml beside it describes 'nutriens*.csv' and not this file." in checked.out
+
+
+def test_a_description_of_no_file_is_told_where_all_files_can_be_read_without_it(inbox: Path, tmp_path: Path) -> None:
+    (inbox / "first_hy1.csv").write_bytes(bottle_file({}, {}))
+    (inbox / "cruise.toml").write_text(
+        '[cruise]\nstands = ["gone_hy1.csv"]\n[[file]]\nfiles = "fisrt_hy1.csv"\n[file.constants]\nsection = "V2"\n',
+        encoding="utf-8",
+    )
+    outcome = call("run", inbox, "--archive", tmp_path / "archive", "--summary", tmp_path / "summary.json")
+    assert outcome.status == 0
+    assert "note  cruise.toml, line 4: describes 'fisrt_hy1.csv', and no file" in outcome.out
+    assert "note  cruise.toml, line 2: says that 'gone_hy1.csv' stands, and no file beside it is called so" in outcome.out
+    assert len(json.loads((tmp_path / "summary.json").read_text(encoding="utf-8"))["notes"]) == 2

@@ -2,8 +2,7 @@ from __future__ import annotations
 
 import csv
 import json
-from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import pyarrow.parquet as pq
@@ -18,13 +17,18 @@ from pipeline.variables import REGISTRY
 
 from .conftest import FIXTURES, Outcome, call
 
+if TYPE_CHECKING:
+    from pathlib import Path
+
 BEFORE, AFTER = "ZZV120090306", "ZZV220210218"
 BOUNDARIES = ("--boundaries", "36.5", "36.9", "37.0")
 CODES = ("OVF", "BOT", "DEP", "MID", "CEN")
 
 
 @pytest.fixture(scope="module")
-def both(demonstration: tuple[Path, Outcome], tmp_path_factory: pytest.TempPathFactory) -> tuple[Outcome, Path]:
+def both(
+    demonstration: tuple[Path, Outcome], tmp_path_factory: pytest.TempPathFactory
+) -> tuple[Outcome, Path]:
     out = tmp_path_factory.mktemp("census") / "census.parquet"
     return call("census", demonstration[0], BEFORE, AFTER, *BOUNDARIES, "--out", out), out
 
@@ -33,7 +37,9 @@ def true_shares(archive: Path, cruise: str) -> tuple[Any, np.ndarray]:
     """Return a cruise's samples, and what each source truly makes up of the resolved section."""
     with (FIXTURES / "truth" / "shares.csv").open(encoding="utf-8") as file:
         truth = {
-            (row["expocode"], row["station"], row["cast"], row["sample"]): [float(row[code]) for code in CODES]
+            (row["expocode"], row["station"], row["cast"], row["sample"]): [
+                float(row[code]) for code in CODES
+            ]
             for row in csv.DictReader(file)
         }
     table = read_table(open_archive(archive), cruise, "samples")
@@ -76,7 +82,10 @@ def test_the_thinning_of_the_overflow_is_seen_and_its_uncertainty_is_that_of_the
 
 def test_it_is_told_in_sentences(both: tuple[Outcome, Path]) -> None:
     said = both[0].out
-    assert "OVF: from 12.9 to 10.4 %, a change of -2.5 ± 1.3 %; that is 1.9 times the uncertainty: a hint" in said
+    assert (
+        "OVF: from 12.9 to 10.4 %, a change of -2.5 ± 1.3 %; that is 1.9 times the uncertainty: a hint"
+        in said
+    )
     assert "BOT: " in said
     assert "less than the uncertainty: no change can be told" in said
     assert "Between station 1 and station 2 there are 978 km: not filled." in said
@@ -164,9 +173,16 @@ def test_cruises_of_other_source_waters_are_not_compared(tmp_path: Path) -> None
         inbox = tmp_path / str(number)
         inbox.mkdir()
         (inbox / "a_hy1.csv").write_bytes((FIXTURES / "inbox" / f"{name}_hy1.csv").read_bytes())
-        sources = (FIXTURES / "sources.toml").read_text(encoding="utf-8").replace("value = 292.0", f"value = 29{number}.0")
+        sources = (
+            (FIXTURES / "sources.toml")
+            .read_text(encoding="utf-8")
+            .replace("value = 292.0", f"value = 29{number}.0")
+        )
         (tmp_path / "sources.toml").write_text(sources, encoding="utf-8")
-        assert call("run", inbox, "--archive", tmp_path / "a", "--sources", tmp_path / "sources.toml").status == 0
+        assert (
+            call("run", inbox, "--archive", tmp_path / "a", "--sources", tmp_path / "sources.toml").status
+            == 0
+        )
     told = call("census", tmp_path / "a", "ZZV320140610", "ZZV420110203")
     assert told.status == 2
     assert "made with different source waters" in told.err

@@ -48,7 +48,9 @@ def test_tables_have_no_columns_of_others() -> None:
     assert "share" not in columns_of("samples")
     assert "raw" not in columns_of("samples")
     assert "offset" not in columns_of("samples")
-    assert {"tag", "reduced_chi_square", "pressure", "nitrate_flag", "residual_nitrate"} <= set(columns_of("samples"))
+    assert {"tag", "reduced_chi_square", "pressure", "nitrate_flag", "residual_nitrate"} <= set(
+        columns_of("samples")
+    )
     assert not {"tag", "sample", "residual_nitrate", "c_star"} & set(columns_of("casts"))
     assert set(columns_of("mixtures")) == set(LISTED["mixtures"])
 

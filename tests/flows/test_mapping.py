@@ -7,6 +7,8 @@ import tomllib
 from typing import TYPE_CHECKING
 
 import numpy as np
+import pandas as pd
+import pyarrow.parquet as pq
 import pytest
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
@@ -14,8 +16,7 @@ from hypothesis import strategies as st
 from pipeline.problems import DeliveryProblem
 from pipeline.reading import read_cruise_file, read_delivery
 from pipeline.reading.draft import draft_description
-from pipeline.reading.draft_columns import guess_scheme
-from pipeline.reading.schemes import Scheme
+from pipeline.reading.schemes import Scheme, guess_scheme
 from tests.flows.conftest import call
 from tests.invented import EXPOCODE, LIMITS, bottle_file, cast_file, zipped
 from tests.reading.tables import as_parquet, as_text, as_workbook
@@ -77,7 +78,7 @@ def test_a_draft_with_its_blanks_is_not_used(tmp_path: Path) -> None:
     assert call("mapping", path, "--out", tmp_path / "cruise.toml").status == 0
     checked = call("check", path)
     assert checked.status == 1
-    assert "found expocode = 'FILL IN'; expected the Cruise" in checked.out
+    assert "expocode is still 'FILL IN', as the draft has it; expected the code of the cruise" in checked.out
 
 
 def test_nothing_is_overwritten(tmp_path: Path) -> None:
@@ -186,3 +187,37 @@ def test_every_draft_can_be_finished(headings: list[str], rows: list[list[str]],
     except DeliveryProblem as problem:
         reason = problem.reason
     assert reason not in {"column-not-there", "no-kind", "no-heading"}
+
+
+STAMPED = (
+    b"station,cast,sample,time,lat,lon,pressure,no3\n"
+    b"1,1,8,2009-02-15T03:30:00Z,-30.5,-18.9,5.0,0.24\n1,1,7,2009-02-15T04:30:00Z,-30.5,-18.9,50.0,2.83\n"
+)
+
+
+@pytest.mark.parametrize("form", ["text", "parquet"])
+def test_a_column_called_time_that_holds_the_date_is_drafted_as_both(form: str, tmp_path: Path) -> None:
+    path = tmp_path / "bottles.csv"
+    path.write_bytes(STAMPED)
+    if form == "parquet":
+        table = pd.read_csv(path, parse_dates=["time"])
+        path = tmp_path / "bottles.parquet"
+        table.to_parquet(path)
+    draft = call("mapping", path).out
+    assert entries(draft)["time"] == "date_and_time"
+    assert "its cells hold the date too" in draft
+    assert "missing where only a date was given" not in draft
+    (tmp_path / "cruise.toml").write_text(filled(draft), encoding="utf-8")
+    archive = tmp_path / "archive"
+    (tmp_path / "inbox").mkdir()
+    path.rename(tmp_path / "inbox" / path.name)
+    (tmp_path / "cruise.toml").rename(tmp_path / "inbox/cruise.toml")
+    assert call("run", tmp_path / "inbox", "--archive", archive).status == 0
+    samples = pq.read_table(archive / f"samples/{EXPOCODE}.parquet")
+    assert samples.column("time").null_count == 0
+    assert samples.column("date").null_count == 0
+
+
+def test_a_column_called_date_and_time_without_dates_is_drafted_as_the_time() -> None:
+    draft = draft_description("x.csv", b"station,datetime,date,no3\n1,03:30,2009-02-15,1\n", LIMITS)
+    assert entries(draft)["datetime"] == "time"

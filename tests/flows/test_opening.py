@@ -43,7 +43,9 @@ def test_importing_the_package_loads_nothing_heavy() -> None:
         _ = pipeline.open_archives
 
 
-def test_a_table_of_one_cruise_is_the_file_as_it_is(archive: Archive, demonstration: tuple[Path, Outcome]) -> None:
+def test_a_table_of_one_cruise_is_the_file_as_it_is(
+    archive: Archive, demonstration: tuple[Path, Outcome]
+) -> None:
     for name in TABLE_NAMES:
         file = pq.read_table(demonstration[0] / name / f"{ONE}.parquet")
         found = archive.table(name, cruises=[ONE]).to_arrow()
@@ -74,12 +76,16 @@ def test_units_and_names_stay_with_the_columns(archive: Archive) -> None:
 
 def test_filters_go_by_columns_that_are_not_asked_for(archive: Archive) -> None:
     whole = archive.table("samples", columns=["station", "pressure", "aou"]).to_pandas()
-    deep = archive.table("samples", columns=["station", "aou"], filter=[("pressure", ">", 3000), ("aou", "<", 90)])
+    deep = archive.table(
+        "samples", columns=["station", "aou"], filter=[("pressure", ">", 3000), ("aou", "<", 90)]
+    )
     expected = whole[(whole.pressure > 3000) & (whole.aou < 90)][["station", "aou"]].reset_index(drop=True)
     assert 0 < len(expected) < len(whole)
     assert deep.to_pandas().equals(expected)
     assert deep.count_rows() == len(expected)
-    same = archive.table("samples", columns=["station", "aou"], filter=(pc.field("pressure") > 3000) & (pc.field("aou") < 90))
+    same = archive.table(
+        "samples", columns=["station", "aou"], filter=(pc.field("pressure") > 3000) & (pc.field("aou") < 90)
+    )
     assert same.to_arrow().equals(deep.to_arrow())
 
 
@@ -108,14 +114,19 @@ def test_a_column_that_only_other_cruises_have_is_null(archive: Archive) -> None
         ({"cruises": ["ZZV120090307"]}, "there is no cruise 'ZZV120090307'; near it come: ZZV120090306"),
         ({"cruises": ["X"]}, "there is no cruise 'X'; its cruises are: ZZV120090306,"),
         ({"columns": ["silicat"]}, "no cruise has a column 'silicat' in samples; near it come: silicate"),
-        ({"filter": [("depht", ">", 1)]}, r"filter of samples cannot be used \(No match for FieldRef.Name\(depht\)\)"),
+        (
+            {"filter": [("depht", ">", 1)]},
+            r"filter of samples cannot be used \(No match for FieldRef.Name\(depht\)\)",
+        ),
         ({"filter": [("depth", "~", 1)]}, "filter of samples cannot be used"),
         ({"filter": 7}, "filter of samples cannot be used"),
         ({"cruises": [ONE], "revision": 9}, "ZZV120090306 has no revision 9 that can be read; there are: 1"),
         ({"revision": 1}, "revision 1 is asked for; name the one cruise it is of"),
     ],
 )
-def test_what_is_not_there_is_told_in_a_sentence(archive: Archive, asked: dict[str, Any], sentence: str) -> None:
+def test_what_is_not_there_is_told_in_a_sentence(
+    archive: Archive, asked: dict[str, Any], sentence: str
+) -> None:
     with pytest.raises(UsageProblem, match=sentence):
         archive.table(**{"name": "samples", **asked})
 

@@ -2,19 +2,17 @@
 
 from __future__ import annotations
 
+import contextlib
 import os
 import signal
 import subprocess
 import time
-from typing import TYPE_CHECKING
+from pathlib import Path
 
 import pytest
 
 from tests.flows.conftest import FIXTURES, ROOT, Outcome, call, hashes
 from tests.flows.prefect_server import COMMAND, environment, started, wait_for
-
-if TYPE_CHECKING:
-    from pathlib import Path
 
 # Written beside the tests' own files and found by every Python process that is started: what it connects to, listens
 # on and looks up.
@@ -52,13 +50,10 @@ def home(tmp_path_factory: pytest.TempPathFactory) -> Path:
 def servers(home: Path) -> list[str]:
     """Return the processes that work with a directory of Prefect."""
     found = []
-    for process in os.listdir("/proc"):
-        try:
-            with open(f"/proc/{process}/environ", "rb") as file:
-                if f"PREFECT_HOME={home}\0".encode() in file.read():
-                    found.append(process)
-        except OSError:
-            continue
+    for process in Path("/proc").glob("[0-9]*"):
+        with contextlib.suppress(OSError):  # it has ended meanwhile
+            if f"PREFECT_HOME={home}\0".encode() in (process / "environ").read_bytes():
+                found.append(process.name)
     return found
 
 
@@ -96,7 +91,9 @@ def test_an_interrupt_stops_it_within_seconds_and_nothing_is_left(
         assert run.wait(timeout=60) == 130
         assert time.monotonic() - began < 20.0
     said = (tmp_path / "log").read_text(encoding="utf-8")
-    assert "seawhence: stopped; the archive is whole, and the next run goes on from here." in said.splitlines()
+    assert (
+        "seawhence: stopped; the archive is whole, and the next run goes on from here." in said.splitlines()
+    )
     assert "Traceback" not in said
     assert servers(home) == []
     assert call(*arguments).status == 0

@@ -13,6 +13,8 @@ import pytest
 
 from pipeline.archive import locked, open_archive
 from tests.flows.conftest import FIXTURES, Outcome, call, hashes
+from tests.flows.planted import ENDLESS, plant
+from tests.flows.postgresql import postgresql
 from tests.flows.prefect_server import COMMAND, Server, environment, prefect_server, started, wait_for
 from tests.invented import EXPOCODE, bottle_file
 
@@ -62,12 +64,23 @@ def test_deployed_to_a_work_pool_it_gives_the_same_bytes_and_keeps_its_summary(
 ) -> None:
     archive = tmp_path / "archive"
     env = env_of(server, tmp_path)
-    arguments = ["nightly", str(FIXTURES / "inbox"), "--archive", str(archive), "--at", "02:30", "--pool", "nights"]
+    arguments = [
+        "nightly",
+        str(FIXTURES / "inbox"),
+        "--archive",
+        str(archive),
+        "--at",
+        "02:30",
+        "--pool",
+        "nights",
+    ]
     arguments += ["--sources", str(FIXTURES / "sources.toml")]
     log = tmp_path / "deploy.log"
     with started([*COMMAND, *arguments], env, log) as refused:
         assert refused.wait(timeout=60) == 2
-    assert "the server does not know a work pool 'nights'; make it with: prefect work-pool create" in words(log)
+    assert "the server does not know a work pool 'nights'; make it with: prefect work-pool create" in words(
+        log
+    )
     server.ask("/work_pools/", {"name": "nights", "type": "process"})
     with started([*COMMAND, *arguments], env, log) as deploying:
         assert deploying.wait(timeout=60) == 0, words(log)
@@ -80,7 +93,10 @@ def test_deployed_to_a_work_pool_it_gives_the_same_bytes_and_keeps_its_summary(
     assert run["state_name"] == "Completed", words(tmp_path / "worker.log")
     assert run["state"]["message"] == f"6 cruises written. The tables are in {archive}."
     kept = server.artifacts(run["id"])
-    assert [row["cruise"] for row in json.loads(kept["seawhence-run"])][:2] == ["ZZV120090306", "ZZV220210218"]
+    assert [row["cruise"] for row in json.loads(kept["seawhence-run"])][:2] == [
+        "ZZV120090306",
+        "ZZV220210218",
+    ]
     assert kept["seawhence-summary"].startswith("# 6 cruises written.")
     assert hashes(archive) == hashes(demonstration[0])
 
@@ -90,8 +106,15 @@ def test_served_it_is_scheduled_and_a_killed_run_is_shown_and_repaired(
 ) -> None:
     archive, told = tmp_path / "archive", tmp_path / "told"
     tell = f"{sys.executable} -c \"import sys; open('{told}', 'a').write(sys.stdin.read() + chr(10))\""
-    arguments = [str(FIXTURES / "inbox"), "--archive", str(archive), "--sources", str(FIXTURES / "sources.toml")]
+    arguments = [
+        str(FIXTURES / "inbox"),
+        "--archive",
+        str(archive),
+        "--sources",
+        str(FIXTURES / "sources.toml"),
+    ]
     arguments += ["--at", "2:30", "--timezone", "Atlantic/Reykjavik", "--notify-command", tell]
+    arguments += ["--summary", str(tmp_path / "summary.json")]
     with nightly(server, tmp_path, *arguments) as log:
         assert "every day at 2:30, Atlantic/Reykjavik" in words(log)
         made = deployment(server, archive)
@@ -112,6 +135,8 @@ def test_served_it_is_scheduled_and_a_killed_run_is_shown_and_repaired(
     assert crashed["exit_status"] == 3
     assert "the run's process ended before it was done" in crashed["problem"]
     assert (done["exit_status"], done["problem"]) == (0, None)
+    written = json.loads((tmp_path / "summary.json").read_text(encoding="utf-8"))
+    assert written.items() <= done.items()
     assert hashes(archive) == hashes(demonstration[0])
 
 
@@ -120,14 +145,17 @@ def _holder(archive: Path) -> int:
     return int((archive / ".lock").read_text(encoding="utf-8").split()[1])
 
 
-def test_of_two_runs_at_once_the_second_is_cancelled_and_a_busy_archive_is_told(
-    server: Server, tmp_path: Path
-) -> None:
+def test_two_runs_at_once_a_busy_archive_and_a_cruise_that_never_ends(server: Server, tmp_path: Path) -> None:
     inbox, archive = tmp_path / "inbox", tmp_path / "archive"
     inbox.mkdir()
     (inbox / "a_hy1.csv").write_bytes(bottle_file())
-    patience = {"SEAWHENCE_RUN__LOCK_SECONDS": "8"}
-    with nightly(server, tmp_path, str(inbox), "--archive", str(archive), "--at", "02:30", **patience):
+    (inbox / "b_hy1.csv").write_bytes(bottle_file({"EXPOCODE": "ZZV320140610"}))
+    env = {
+        **plant(tmp_path / "planted"),
+        "SEAWHENCE_RUN__LOCK_SECONDS": "8",
+        "SEAWHENCE_RUN__CRUISE_SECONDS": "3",
+    }
+    with nightly(server, tmp_path, str(inbox), "--archive", str(archive), "--at", "02:30", **env):
         made = deployment(server, archive)
         with locked(open_archive(archive, create=True)):
             first = server.begin(made)
@@ -139,6 +167,33 @@ def test_of_two_runs_at_once_the_second_is_cancelled_and_a_busy_archive_is_told(
             assert busy["state_name"] == "Failed"
             assert f".lock: held by process {os.getpid()} on" in busy["state"]["message"]
         third = server.end_of(server.begin(made))
-    assert third["state_name"] == "Completed"
+    assert third["state_name"] == "Failed"
+    assert third["state"]["message"] == f"1 cruise written, 1 cruise failed. The tables are in {archive}."
+    assert (
+        f"{ENDLESS}  failed: took longer than 3 s; skipped"
+        in server.artifacts(third["id"])["seawhence-summary"]
+    )
     assert call("show", archive, "--verify").status == 0
-    assert call("show", archive, EXPOCODE).status == 0
+    assert call("show", archive, "ZZV320140610").status == 0
+
+
+def test_a_server_on_postgresql_keeps_the_run(tmp_path: Path) -> None:
+    inbox, archive = tmp_path / "inbox", tmp_path / "archive"
+    inbox.mkdir()
+    (inbox / "a_hy1.csv").write_bytes(bottle_file())
+    with (
+        postgresql() as database,
+        prefect_server(tmp_path / "server", PREFECT_SERVER_DATABASE_CONNECTION_URL=database) as server,
+    ):
+        arguments = ["nightly", str(inbox), "--archive", str(archive), "--once"]
+        with started([*COMMAND, *arguments], env_of(server, tmp_path), tmp_path / "log") as once:
+            assert once.wait(timeout=90) == 0, words(tmp_path / "log")
+        (run,) = server.ask("/flow_runs/filter")
+        assert (run["state_name"], run["state"]["message"]) == (
+            "Completed", f"1 cruise written. The tables are in {archive}.",
+        )  # fmt: skip
+        assert "1 cruise written" in server.artifacts(run["id"])["seawhence-summary"]
+    assert not list((tmp_path / "server").glob("*.db"))
+    first, closing = words(tmp_path / "log").splitlines()
+    assert first.startswith(f"{EXPOCODE}  new, revision 1: 1 row in, 1 kept")
+    assert closing == f"1 cruise written. The tables are in {archive}."

@@ -29,7 +29,9 @@ pressure = [0.0, 900.0]
 """
 
 
-def archived(*rows: dict[str, Any], of: Catalogue | None = None, settings: Settings | None = None) -> pa.Table:
+def archived(
+    *rows: dict[str, Any], of: Catalogue | None = None, settings: Settings | None = None
+) -> pa.Table:
     table = samples(*rows)
     answer = resolve(table, of or catalogue(), settings or Settings())
     return with_columns(table, answer.columns)
@@ -88,7 +90,9 @@ def test_the_difference_of_two_cruises_has_no_error_that_both_have() -> None:
     rows = [mixed(0.6), mixed(0.4)]
     table = archived(*rows)
     other = table.set_column(0, table.schema.field(0), [["ZZV220210218"] * 2])
-    uncertain = dict.fromkeys(("conservative_temperature", "preformed_salinity", "oxygen", "phosphate", "nitrate"), 1e-9)
+    uncertain = dict.fromkeys(
+        ("conservative_temperature", "preformed_salinity", "oxygen", "phosphate", "nitrate"), 1e-9
+    )
     first, second = (sums(each, [[0.5, 0.5]], "common", uncertainty=uncertain) for each in (table, other))
     np.testing.assert_allclose(first.members, second.members, atol=1e-6)
     first, second = (sums(each, [[0.5, 0.5]], "common") for each in (table, other))
@@ -100,7 +104,8 @@ def test_the_difference_of_two_cruises_has_no_error_that_both_have() -> None:
 def test_more_members_begin_with_the_fewer() -> None:
     table = archived(mixed(0.6), mixed(0.4))
     few, many = (
-        member_sums(table, catalogue(), Settings(), np.eye(2), errors="common", members=count) for count in (10, 30)
+        member_sums(table, catalogue(), Settings(), np.eye(2), errors="common", members=count)
+        for count in (10, 30)
     )
     np.testing.assert_array_equal(many.members[:10], few.members)
 

@@ -151,7 +151,7 @@ FILE = '[[file]]\nfiles = "a.csv"\n'
             "line 4: found the format 'hh:mm' for date",
         ),
         (FILE + "[file.constants]\nexpocode = '3E+11'\n", "line 4: found expocode = '3E+11'; expected a cruise code"),
-        (FILE + "[file.constants]\nstation = 'FILL IN'\n", "line 4: found station = 'FILL IN'; expected the Station"),
+        (FILE + "[file.constants]\nstation = 'FILL IN'\n", "line 4: station is still 'FILL IN', as the draft has it; expected the name"),
         (FILE + "[file.constants]\nlatitude = 95.0\n", "line 4: found latitude = '95.0'; expected a number from -90"),
         (FILE + "[file.constants]\ndate = '20090230'\n", "line 4: found date = '20090230'; expected a date YYYY-MM-DD"),
         (FILE + "[file.constants]\ncast = 1.5\n", "line 4: found cast = '1.5'; expected a number from 0 to 1e+06"),
@@ -194,3 +194,31 @@ def test_a_spoiled_one_is_read_or_refused(at: int, junk: str, cut: int) -> None:
 def test_what_is_no_description_at_all(data: bytes) -> None:
     with pytest.raises(DeliveryProblem):
         read_cruise_file("cruise.toml", data)
+
+
+@pytest.mark.parametrize(
+    ("text", "words"),
+    [
+        ('[[file]]\nfiles = "x"\n[file.columns]\nNO3 = "nitrate"\nNO3 = "nitrite"\n',
+         "cruise.toml, line 5: found 'NO3' a second time in the same table; expected each name once; remove one of the"
+         " two."),
+        ('[[file]]\nfiles = "x"\n[file.columns]\n"NO3 x" = "nitrate"\n"NO3 x" = "nitrite"\n',
+         "line 5: found 'NO3 x' a second time in the same table"),
+        ('[[file]]\nfiles = "x"\n[file.columns]\nA = "nitrate"\n[file.columns]\nB = "nitrite"\n',
+         "line 5: found the table [file.columns] a second time; expected it once for each [[file]]; join the two."),
+        ('[cruise]\nstands = ["x"]\n[cruise]\n', "line 3: found the table [cruise] a second time"),
+    ],
+)  # fmt: skip
+def test_what_stands_twice_is_told_as_such(text: str, words: str) -> None:
+    assert words in fault(text)
+
+
+def test_a_blank_of_a_draft_that_was_left_is_told_with_an_example() -> None:
+    head = '[[file]]\nfiles = "x"\n[file.constants]\n'
+    assert fault(f'{head}expocode = "FILL IN"\n') == (
+        "cruise.toml, line 4: expocode is still 'FILL IN', as the draft has it; expected the code of the cruise, such as"
+        " ZZV120090214; write it there, or give it by a column."
+    )
+    assert "latitude is still 'FILL IN', as the draft has it; expected degrees north, such as -35.5;" in fault(
+        f'{head}latitude = "FILL IN"\n'
+    )

@@ -5,8 +5,10 @@ from typing import Any
 from xml.etree import ElementTree as ET
 
 import numpy as np
+import pyarrow as pa
 import pytest
 
+from pipeline.checking import check
 from pipeline.reading import read_delivery
 from pipeline.reading.cf_flags import scheme_of
 from pipeline.reading.cf_names import STANDARD_NAMES
@@ -106,7 +108,8 @@ def test_values_under_flags_that_cannot_be_read_are_not_used_until_somebody_says
         "x.nc: nitrate_qc holds the flags of nitrate, but its flag_meanings are 'green red'; expected the flags of a"
         " scheme that is known (whp, iode, qartod, argo); every value of nitrate counts as questionable, and nitrate_qc"
         ' is kept as delivered; say in cruise.toml what they are: "nitrate" = { quantity = "nitrate", flag ='
-        ' "nitrate_qc", flags = "iode" }, or leave flag and flags out to use the values without flags.'
+        ' "nitrate_qc", flags = "..." }, with one of whp, iode, qartod, argo in place of the dots, or leave flag and'
+        " flags out to use the values without flags."
     )
     assert delivery.table.column("nitrate_flag").to_pylist()[:3] == [3, 3, 9]
     assert np.isnan(usable(delivery.table, "nitrate", Settings().use)).all()
@@ -151,3 +154,64 @@ def test_standard_names_are_those_of_the_table() -> None:
     root = ET.fromstring(table.read_text(encoding="utf-8"))  # noqa: S314 - the checker's own file
     known = {entry.attrib["id"] for entry in root if "id" in entry.attrib}
     assert set(STANDARD_NAMES) - known <= OLD_NAMES
+
+
+NOT_CALIBRATED = "not_calibrated acceptable questionable bad not_reported not_sampled"
+
+
+@pytest.mark.parametrize(
+    ("values", "meanings"),
+    [
+        ([1, 2, 3, 4, 5, 9], NOT_CALIBRATED),
+        ([1, 2, 3, 4, 5, 9], NOT_CALIBRATED.title()),
+        ([2, 3, 4, 5, 9], "acceptable_measurement questionable_measurement bad_measurement not_reported not_sampled"),
+        (
+            [1, 2, 3, 4, 5, 6, 9],
+            "sample_drawn_but_analysis_not_received acceptable questionable bad not_reported"
+            " mean_of_replicate_measurements sample_not_drawn",
+        ),
+        ([1, 2, 3, 4, 5, 9], "uncalibrated good_data suspect_data bad_data unreported missing"),
+        ([2, 3, 4, 9], "no_problems_noted leaking did_not_trip_correctly samples_not_drawn"),
+    ],
+)
+def test_whp_flags_are_known_by_the_words_that_files_have_for_them(values: list[int], meanings: str) -> None:
+    assert scheme_of(flags(values, meanings), FlagScheme.WATER) is Scheme.WHP
+
+
+def test_numbers_that_differ_between_the_whp_tables_are_not_mixed() -> None:
+    assert scheme_of(flags([1, 2, 6], "not_calibrated acceptable interpolated"), FlagScheme.WATER) is None
+
+
+def test_a_long_name_may_name_the_scheme() -> None:
+    named = StoredVariable("x_qc", ("n",), np.array([2]), {"long_name": "WHP flag of oxygen"})
+    assert scheme_of(named, FlagScheme.WATER) is Scheme.WHP
+    odd = flags([2, 3], "splendid poor", long_name="WOCE quality flag")
+    assert scheme_of(odd, FlagScheme.WATER) is None, "its own words say nothing that is known"
+    partly = flags([2, 3, 7], "good doubtful_value spiky", comment="WOCE flags")
+    assert scheme_of(partly, FlagScheme.WATER) is Scheme.WHP, "named, and good is what it calls good"
+
+
+@pytest.mark.parametrize(
+    ("meanings", "delivered", "advice"),
+    [
+        ({1: "murky", 2: "good", 3: "odd"}, 2, 'flags = "whp" }'),
+        ({1: "good", 2: "odd"}, 1, 'flags = "iode" }'),
+        ({0: "odd", 1: "good", 8: "odd"}, 1, 'flags = "argo" }'),
+        ({2: "green", 4: "red"}, 2, 'flags = "whp" }'),
+        ({0: "green", 70: "red"}, 70, 'flags = "..." }, with one of whp, iode, qartod, argo in place of the dots,'),
+    ],
+)
+def test_the_advice_names_the_scheme_that_fits(meanings: dict[int, str], delivered: int, advice: str) -> None:
+    data = netcdf_bytes(rows(), Plan(meanings=meanings, flag=lambda _: delivered))
+    told = [f for f in read_delivery("x.nc", data, LIMITS).findings if f.variable == "nitrate"]
+    assert advice in told[0].message
+    assert "cruise.toml" not in told[0].to_group
+    assert "what do its values mean?" in told[0].to_group
+
+
+def test_the_flags_of_a_page_and_of_a_check_are_those_that_were_delivered() -> None:
+    data = netcdf_bytes(rows(), Plan(meanings={0: "green", 1: "red"}, flag=lambda _: 0))
+    table = read_delivery("x.nc", data, LIMITS).table
+    assert table.schema.field("nitrate_flag").metadata[b"delivered_name"] == b"nitrate_qc"
+    (told,) = [f for f in check(pa.concat_tables([table] * 3), Settings()).findings if f.check == "all-flagged-bad" and f.variable == "nitrate"]
+    assert "none under a good flag (all have flag 0 in nitrate_qc)" in told.message

@@ -74,8 +74,8 @@ async function drawSplit() {
   const update = () => {
     const brought = quantity(`${select.value}_from_sources`), added = quantity(`${select.value}_from_respiration`);
     const observed = quantities.get(select.value) ?? nothing;
-    left.set(brought, label({...brought, words: `${observed.words || select.value} from sources, and observed`}), observed);
-    right.set(added, label({...added, words: `${observed.words || select.value} from respiration`}));
+    left.set(brought, label({...brought, words: "From sources, and observed"}), observed);
+    right.set(added, label({...added, words: "From respiration"}));
     const known = sorted([...added.values]);
     document.getElementById("see-split").textContent = known.length ? `${added.words.split(" (")[0]}: from ${short(known[0])} to `
       + `${withUnit(known.at(-1), added.unit)}, median ${withUnit(quantile(known, 0.5), added.unit)}, in ${known.length} samples.` : "No sample has it.";

@@ -1,4 +1,4 @@
-// Making figures: axes and their colours, layers of samples that mark each other, what pointing at one tells.
+// Making figures: axes and their colours, ranges, and filling the form controls beside them.
 "use strict";
 
 const FONT = "system-ui, sans-serif";
@@ -14,7 +14,7 @@ function newFigure(id, options) {
   });
   figure.toolbar.logo = null;
   figure.toolbar.active_scroll = null;
-  figure.toolbar.active_drag = finePointer ? figure.toolbar.tools.find((tool) => tool.type === "BoxSelectTool") : null;
+  figure.toolbar.active_drag = finePointer ? figure.toolbar.tools.find((tool) => tool.type === "BoxSelectTool") ?? null : null;
   for (const axis of axesOf(figure)) {
     axis.axis_label_text_font = axis.major_label_text_font = FONT;
     axis.axis_label_text_font_style = "normal";
@@ -43,75 +43,16 @@ async function mount(id) {
     }
     for (const one of figure.center) if ("grid_line_color" in one) one.grid_line_color = colours.grid;
   });
-  await Bokeh.Plotting.show(figure, place);
+  const fit = () => {
+    for (const axis of figure.below) {
+      if ("desired_num_ticks" in axis.ticker) axis.ticker.desired_num_ticks = Math.round(Math.min(10, Math.max(3, place.clientWidth / 75)));
+    }
+  };
+  fit();
+  addEventListener("resize", fit);
+  figures.get(id).view = await Bokeh.Plotting.show(figure, place);
   place.dataset.ready = "yes";
   return figure;
-}
-
-/** Return columns that a layer of samples is drawn from. */
-function sampleColumns(rows, x, y, more = {}) {
-  return {
-    row: rows, x: rows.map(x), y: rows.map(y),
-    colour: rows.map((row) => looks[row].colour), marker: rows.map((row) => looks[row].marker),
-    alpha: rows.map((row) => looks[row].alpha), words: rows.map(nameOf), shares: rows.map(sharesOf), ...more,
-  };
-}
-
-/**
- * Add a layer of samples to a figure: it marks and is marked, and tells what is pointed at.
- *
- * Returns {source, set}: set(columns) draws other samples or places.
- */
-function sampleLayer(id, columns, style = {}, tips = []) {
-  const {figure, layers} = figures.get(id);
-  const source = new Bokeh.ColumnDataSource({data: columns});
-  const at = {field: "x"}, to = {field: "y"};
-  const glyph = figure.scatter(at, to, {
-    source, size: 7, marker: {field: "marker"}, fill_color: {field: "colour"}, fill_alpha: {field: "alpha"},
-    line_color: {field: "colour"}, line_alpha: {field: "alpha"}, line_width: 0.6,
-    nonselection_fill_alpha: 0.12, nonselection_line_alpha: 0.12,
-    selection_fill_alpha: 1, selection_line_alpha: 1, selection_line_width: 1.6, ...style,
-  });
-  painted((colours) => {
-    if (glyph.selection_glyph?.line_color !== undefined) glyph.selection_glyph.line_color = colours.ink;
-  });
-  const ring = new Bokeh.ColumnDataSource({data: {x: [], y: []}});
-  const circle = figure.scatter(at, to, {source: ring, size: 17, marker: "circle", fill_color: null, line_width: 3});
-  painted((colours) => { circle.glyph.line_color = colours.link; });
-  figure.add_tools(new Bokeh.HoverTool({
-    renderers: [glyph], mode: "mouse", point_policy: "snap_to_data", attachment: "horizontal",
-    tooltips: [["", "@words"], ...(page.sources.length ? [["", "@shares"]] : []), ...tips],
-  }));
-  let told = false; // whether the change comes from elsewhere
-  source.selected.properties.indices.change.connect(() => {
-    if (told) return;
-    const kept = [...marks.rows].filter((row) => !source.data.row.includes(row));
-    const chosen = source.selected.indices.map((index) => source.data.row[index]);
-    marks.set([...kept.filter(() => false), ...chosen], layer);
-  });
-  const layer = {
-    source,
-    set(next) {
-      told = true;
-      source.selected.indices = [];
-      source.data = next;
-      told = false;
-      this.show();
-    },
-    show(from) {
-      const {row, x, y} = source.data;
-      if (from !== this) {
-        told = true;
-        source.selected.indices = marks.rows.size ? row.flatMap((one, index) => (marks.rows.has(one) ? [index] : [])) : [];
-        told = false;
-      }
-      const index = row.indexOf(marks.cursor);
-      ring.data = index < 0 ? {x: [], y: []} : {x: [x[index]], y: [y[index]]};
-    },
-  };
-  marks.listen((from) => layer.show(from));
-  layers.push(layer);
-  return layer;
 }
 
 /** Return the range of numbers, a little wider. */
@@ -140,15 +81,4 @@ function fillSelect(select, groups, chosen) {
       option.selected = value === chosen;
     }
   }
-}
-
-/** Return the quantities in their groups, for a select element. */
-function quantityGroups(wanted = () => true) {
-  const groups = new Map();
-  for (const one of quantities.values()) {
-    if (!wanted(one)) continue;
-    if (!groups.has(one.group)) groups.set(one.group, []);
-    groups.get(one.group).push([one.key, one.words]);
-  }
-  return [...groups];
 }

@@ -1,7 +1,7 @@
 // Values on a grid over a section: straight between data that are near each other, nothing anywhere else.
 "use strict";
 
-const DEPTH_GAP = {metres: 100, part: 0.15}; // may be interpolated over along a cast: metres, and part of the depth
+const DEPTH_GAP = {metres: 100, part: 0.25, most: 800}; // interpolated over along a cast: metres, and part of the depth
 const DENSITY_GAP = 0.08; // the same against density, part of the range
 const CAST_GAP = 3; // usual distances between casts that may be interpolated over
 
@@ -70,7 +70,8 @@ function gridded(profiles, {x0, x1, y0, y1, nx, ny, gap}) {
       } else {
         const toA = Number.isFinite(a) ? x - places[before] : Infinity;
         const toB = Number.isFinite(b) ? places[after] - x : Infinity;
-        if (Math.min(toA, toB) <= usual / 2) value = toA <= toB ? a : b;
+        const inside = places.length === 1 || (before !== null && after !== null);
+        if (inside && Math.min(toA, toB) <= usual / 2) value = toA <= toB ? a : b;
       }
       values[j * nx + i] = value;
     }
@@ -80,5 +81,5 @@ function gridded(profiles, {x0, x1, y0, y1, nx, ny, gap}) {
 
 /** Return how far apart two samples of a cast may be at a depth, metres. */
 function depthGap(depth) {
-  return DEPTH_GAP.metres + DEPTH_GAP.part * depth;
+  return Math.min(DEPTH_GAP.most, DEPTH_GAP.metres + DEPTH_GAP.part * depth);
 }

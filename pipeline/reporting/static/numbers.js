@@ -19,10 +19,29 @@ function withUnit(value, unit) {
   return unit ? `${short(value)} ${unit}` : short(value);
 }
 
+/** Return a value of a quantity: shares to two digits, all else with its unit. */
+function valueWords(one, value) {
+  return /^share/i.test(one.key ?? "") ? value.toFixed(2) : withUnit(value, one.unit);
+}
+
+/** Return a place in words: 31.64° S, 16.12° W. */
+function placeWords(latitude, longitude) {
+  const size = (value) => Math.abs(value).toFixed(2);
+  return `${size(latitude)}\u00b0 ${latitude < 0 ? "S" : "N"}, ${size(longitude)}\u00b0 ${longitude < 0 ? "W" : "E"}`;
+}
+
 /** Return the label of an axis. */
 function label(quantity) {
   const words = quantity.words[0].toUpperCase() + quantity.words.slice(1);
   return quantity.unit ? `${words}, ${quantity.unit}` : words;
+}
+
+/** Return words in lines of at most so many characters, as far as words allow. */
+function wrapped(words, most) {
+  return words.split(" ").reduce((lines, word) => {
+    const joined = `${lines.at(-1)} ${word}`.trim();
+    return joined.length <= most ? [...lines.slice(0, -1), joined] : [...lines, word];
+  }, [""]).filter(Boolean).join("\n");
 }
 
 /** Return finite numbers, sorted. */

@@ -1,7 +1,8 @@
 // Where the waters lie: any quantity along a section, against depth or density, with the sea floor and the samples.
 "use strict";
 
-const GRID = {nx: 260, ny: 160};
+const GRID = {nx: 420, ny: 260};
+const FLOOR = 20000; // metres, below any sea floor
 const section = {}; // the figure's parts, set when it is drawn
 
 /** Return what a choice of the vertical means: the quantity, its range and how far apart data may be. */
@@ -49,14 +50,15 @@ async function drawSection() {
   const figure = newFigure("section", {
     x_range: new Bokeh.Range1d({start: 0, end: 1}), y_range: downward(0, 1), x_axis_label: "Distance", y_axis_label: "Depth",
   });
+  for (const grid of figure.center) if ("grid_line_color" in grid) grid.visible = false;
   section.image = new Bokeh.ColumnDataSource({data: {image: [], x: [], y: [], dw: [], dh: []}});
   section.mapper = new Bokeh.LinearColorMapper({palette: picked(page.scales.viridis, 10), low: 0, high: 1, nan_color: "rgba(0,0,0,0)"});
   figure.image({image: {field: "image"}, x: {field: "x"}, y: {field: "y"}, dw: {field: "dw"}, dh: {field: "dh"},
     source: section.image, color_mapper: section.mapper, level: "image"});
   section.floor = new Bokeh.ColumnDataSource({data: {x: [], y: []}});
-  const floor = figure.patch({field: "x"}, {field: "y"}, {source: section.floor, line_width: 0});
+  const floor = figure.patches({field: "x"}, {field: "y"}, {source: section.floor, line_width: 1});
   section.names = new Bokeh.ColumnDataSource({data: {x: [], y: [], t: []}});
-  const names = figure.text({field: "x"}, {field: "y"}, {text: {field: "t"}}, {source: section.names, text_font_size: "12px",
+  const names = figure.text({field: "x"}, {field: "y"}, {field: "t"}, {source: section.names, text_font_size: "12px",
     text_font: FONT, text_align: "center", text_baseline: "bottom", y_offset: -2});
   painted((colours) => {
     floor.glyph.fill_color = colours.floor;
@@ -64,7 +66,7 @@ async function drawSection() {
     names.glyph.text_color = colours.quiet;
   });
   section.layer = sampleLayer("section", sampleColumns([], Number, Number, {value: [], fill: []}),
-    {size: 5, marker: "circle", fill_color: {field: "fill"}, fill_alpha: 1, line_color: "#000", line_alpha: 0.55, line_width: 0.5,
+    {size: document.getElementById("plot-section").clientWidth < 700 ? 3 : 5, marker: "circle", fill_color: {field: "fill"}, fill_alpha: 1, line_color: "#000", line_alpha: 0.55, line_width: 0.5,
       nonselection_fill_alpha: 0.5}, [["", "@value"]]);
   section.ticker = new Bokeh.FixedTicker({ticks: []});
   section.bar = new Bokeh.ColorBar({color_mapper: section.mapper, ticker: section.ticker, width: 14, padding: 4,
@@ -84,7 +86,7 @@ async function drawSection() {
 
 function updateSection() {
   const choice = sectionChoice(), {chosen, one, at, rows, vertical} = choice, {figure} = section;
-  const length = chosen.distance.at(-1) || 1, margin = length * 0.015;
+  const length = chosen.distance.at(-1), margin = length * 0.015 || 1; // a single place is a kilometre wide
   Object.assign(figure.x_range, {start: -margin, end: length + margin, reset_start: -margin, reset_end: length + margin});
   const top = vertical.low - (vertical.high - vertical.low) * 0.06;
   Object.assign(figure.y_range, {start: vertical.high, end: top, reset_start: vertical.high, reset_end: top});
@@ -104,7 +106,7 @@ function updateSection() {
     return palette[Math.min(palette.length - 1, Math.max(0, band))];
   };
   section.layer.set(sampleColumns(shown, (row) => at.get(page.samples.cast[row]), (row) => valueOf(vertical.key, row), {
-    value: shown.map((row) => `${one.words} ${withUnit(one.values[row], one.unit)}`), fill: shown.map(fill),
+    value: shown.map((row) => `${one.words} ${valueWords(one, one.values[row])}`), fill: shown.map(fill),
   }));
   tellSection(choice);
 }
@@ -125,26 +127,30 @@ function drawGrid({one, at, rows, vertical}, length, margin) {
   section.image.data = {image: [image], x: [x0], y: [y0], dw: [x1 - x0], dh: [y1 - y0]};
 }
 
+/** Draw the sea floor between neighbouring casts that both have its depth, and nowhere else. */
 function drawFloor({chosen, vertical}) {
   const data = {x: [], y: []};
+  let piece = [];
+  const close = () => {
+    if (piece.length > 1) {
+      data.x.push([...piece.map(([x]) => x), piece.at(-1)[0], piece[0][0]]);
+      data.y.push([...piece.map(([, y]) => y), FLOOR, FLOOR]);
+    }
+    piece = [];
+  };
   if (vertical.isDepth) {
     chosen.casts.forEach((cast, k) => {
       const bottom = page.casts.bottom[cast];
-      if (bottom === null) return;
-      data.x.push(chosen.distance[k]);
-      data.y.push(bottom);
+      bottom === null ? close() : piece.push([chosen.distance[k], bottom]);
     });
-    if (data.x.length) {
-      data.x.push(data.x.at(-1), data.x[0]);
-      data.y.push(20000, 20000);
-    }
+    close();
   }
   section.floor.data = data;
 }
 
 /** Write the names of stations above, as many as have room. */
 function drawNames({chosen}, length, top) {
-  const room = length / Math.max(4, Math.min(24, section.figure.inner_width / 48 || 14)), data = {x: [], y: [], t: []};
+  const room = length / Math.max(4, Math.min(24, document.getElementById("plot-section").clientWidth / 52)), data = {x: [], y: [], t: []};
   chosen.casts.forEach((cast, k) => {
     if (data.x.length && chosen.distance[k] - data.x.at(-1) < room) return;
     const name = page.casts.name[cast];
@@ -163,13 +169,19 @@ function tellSection({chosen, one, rows}) {
     const least = known.reduce((a, b) => (one.values[b] < one.values[a] ? b : a));
     const most = known.reduce((a, b) => (one.values[b] > one.values[a] ? b : a));
     const middle = quantile(sorted(known.map((row) => one.values[row])), 0.5);
-    words = `${one.words} along ${chosen.name}, stations ${page.casts.name[chosen.casts[0]]} to ${page.casts.name[chosen.casts.at(-1)]}: `
-      + `from ${withUnit(one.values[least], one.unit)} (${placeOf(least)}) to ${withUnit(one.values[most], one.unit)} (${placeOf(most)}), `
-      + `median ${withUnit(middle, one.unit)}, in ${known.length} ${page.rows}s.`;
+    words = `${one.words} along ${chosen.name}, ${stationsOf(chosen)}: `
+      + `from ${valueWords(one, one.values[least])} (${placeOf(least)}) to ${valueWords(one, one.values[most])} (${placeOf(most)}), `
+      + `median ${valueWords(one, middle)}, in ${known.length} ${page.rows}s.`;
   }
   if (refused) words += ` ${refused} more are refused by flags or checks.`;
   document.getElementById("see-section").textContent = words;
   document.getElementById("plot-section").setAttribute("aria-label", `Section. ${words}`);
+}
+
+/** Say from which station to which a section goes. */
+function stationsOf({casts}) {
+  const [first, last] = [page.casts.name[casts[0]], page.casts.name[casts.at(-1)]];
+  return first === last ? `station ${first}` : `stations ${first} to ${last}`;
 }
 
 /** Say where a sample is, in the middle of a sentence. */

@@ -35,12 +35,12 @@ function profileFigure(id) {
       line.data = ctd;
       cross.data = {x: crossed.map((row) => one.refused.get(row)), y: crossed.map((row) => pressure[row])};
       layer.set(sampleColumns(known, (row) => one.values[row], (row) => pressure[row], {
-        value: known.map((row) => `${one.words} ${withUnit(one.values[row], one.unit)}`),
+        value: known.map((row) => `${one.words} ${valueWords(one, one.values[row])}`),
       }));
       const [start, end] = spanOf([...known.map((row) => one.values[row]), ...ctd.x], 0.06);
       Object.assign(figure.x_range, {start, end, reset_start: start, reset_end: end});
       Object.assign(figure.y_range, {start: deepest, end: 0, reset_start: deepest, reset_end: 0});
-      figure.below[0].axis_label = label(one);
+      figure.below[0].axis_label = wrapped(label(one), document.getElementById(`plot-${id}`).clientWidth / 8.5);
     },
   };
 }
@@ -114,7 +114,7 @@ function updateStation(place, fourth, shares) {
 }
 
 function tellStation(place, rows, fourth) {
-  const where = place.cast < 0 ? "" : ` at ${short(page.casts.latitude[place.cast])} \u00b0N, ${short(page.casts.longitude[place.cast])} \u00b0E`
+  const where = place.cast < 0 ? "" : ` at ${placeWords(page.casts.latitude[place.cast], page.casts.longitude[place.cast])}`
     + (page.casts.date[place.cast] ? `, ${page.casts.date[place.cast]}` : "");
   const bottom = place.cast < 0 ? null : page.casts.bottom[place.cast];
   let words = `Station ${place.name}${where}: ${rows.length} ${page.rows}${rows.length === 1 ? "" : "s"}`
@@ -138,7 +138,7 @@ function fillTable(place, rows, fourth) {
   const head = table.tHead, body = table.tBodies[0];
   head.replaceChildren(rowOf("th", ["Sample", ...keys.map((key) => label(quantity(key)))], "col"));
   body.replaceChildren(...rows.map((row) => {
-    const line = rowOf("td", keys.map((key) => (Number.isFinite(valueOf(key, row)) ? short(valueOf(key, row)) : "\u2013")));
+    const line = rowOf("td", keys.map((key) => (Number.isFinite(valueOf(key, row)) ? (key.startsWith("share") ? valueOf(key, row).toFixed(3) : short(valueOf(key, row))) : "\u2013")));
     const name = document.createElement("th"), button = document.createElement("button");
     name.scope = "row";
     button.type = "button";

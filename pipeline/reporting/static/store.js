@@ -1,7 +1,6 @@
 // The page's data, read once, and what is marked: every figure asks here and is told from here.
 "use strict";
 
-const page = JSON.parse(document.getElementById("data").textContent);
 const quantities = new Map();
 for (const one of page.quantities ?? []) {
   quantities.set(one.key, {...one, values: column(one.values), refused: new Map(one.refused ?? [])});
@@ -32,11 +31,11 @@ function nameOf(row) {
   return words.join(", ");
 }
 
-/** Say what a sample is made of: shares that are not zero, the largest first. */
+/** Say what a sample is made of: shares that do not round to zero, the largest first. */
 function sharesOf(row) {
   return page.sources
     .map((source) => [source.code, valueOf(`share:${source.code}`, row), valueOf(`share_uncertainty:${source.code}`, row)])
-    .filter(([, share]) => share > 0)
+    .filter(([, share]) => share >= 0.005)
     .sort((a, b) => b[1] - a[1])
     .map(([code, share, spread]) => `${code} ${share.toFixed(2)}${Number.isFinite(spread) ? ` \u00b1 ${spread.toFixed(2)}` : ""}`)
     .join(", ");
@@ -86,21 +85,3 @@ const marks = {
     this.tell(from);
   },
 };
-
-const dark = matchMedia("(prefers-color-scheme: dark)");
-const onPaper = matchMedia("print");
-
-/** Return the page's colours as the style sheet has them now. */
-function theme() {
-  const style = getComputedStyle(document.documentElement);
-  const names = ["paper", "ink", "quiet", "rule", "link", "floor", "grid", "water"];
-  return Object.fromEntries(names.map((name) => [name, style.getPropertyValue(`--${name}`).trim()]));
-}
-
-/** Call ``paint`` with the colours now and whenever they change. */
-function painted(paint) {
-  const again = () => paint(theme());
-  dark.addEventListener("change", again);
-  onPaper.addEventListener("change", again);
-  again();
-}
