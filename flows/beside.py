@@ -106,4 +106,6 @@ def _notes(said: CruiseFile, shown: str, names: Collection[str], absent: Iterabl
 
 
 def _quoted(names: tuple[str, ...]) -> str:
-    return ", ".join(f"'{name}'" for name in names[:_MOST_NAMED]) + (" and others" if len(names) > _MOST_NAMED else "")
+    return ", ".join(f"'{name}'" for name in names[:_MOST_NAMED]) + (
+        " and others" if len(names) > _MOST_NAMED else ""
+    )

@@ -44,7 +44,7 @@ def blocks_of(found: RevisionChanges) -> list[Block]:
     blocks.append(Grid([("rows of", f"revision {before}", f"revision {after}"), *counts]))
     for table in found.tables:
         if table.rows_before or table.rows_after:
-            blocks += _table(table)
+            blocks += _table(table, before, after)
     return blocks
 
 
@@ -114,7 +114,7 @@ def _titled(title: str) -> str:
     return f"'{title}'" if title else "none"
 
 
-def _table(table: TableChanges) -> list[Block]:
+def _table(table: TableChanges, before: int, after: int) -> list[Block]:
     more = _WORDS[table.table]
     pairing = table.pairing
     blocks: list[Block] = [
@@ -124,8 +124,8 @@ def _table(table: TableChanges) -> list[Block]:
         return [*blocks, Paragraph("Nothing differs.")]
     listed = table.listing
     told = [f"{len(pairing.gone)} gone, {len(pairing.added)} added, {len(pairing.after)} in both."]
-    told += _row_sentences(listed, Change.GONE, table.table)
-    told += _row_sentences(listed, Change.ADDED, table.table)
+    told += _row_sentences(listed, Change.GONE, table.table, before)
+    told += _row_sentences(listed, Change.ADDED, table.table, after)
     told += [f"the column {name} is gone (it had {_values(n)})." for name, n in table.columns_gone.items()]
     told += [f"the column {name} is new ({_values(n)})." for name, n in table.columns_added.items()]
     if pairing.repeated_keys:
@@ -162,12 +162,15 @@ def _counted(count: int, one: str, more: str) -> str:
     return f"{count} {one if count == 1 else more}"
 
 
-def _row_sentences(listed: pa.Table, change: Change, table: str) -> list[str]:
-    """Return which rows came or went: each by itself where they are few, else by cast."""
+def _row_sentences(listed: pa.Table, change: Change, table: str, revision: int) -> list[str]:
+    """Return which rows, of a revision, came or went: each by itself where they are few, else by cast."""
     rows = _of(listed, {change})
     names = ["file", "line", "station", "cast", "sample", "pressure", "occurrence"]
     if table == "samples" and rows.num_rows <= _MOST_ROWS:
-        return [f"{change}: {where(row)}{_again(row)}{_line(row)}." for row in rows.select(names).to_pylist()]
+        return [
+            f"{change}: {where(row)}{_again(row)}{_line(row, revision)}."
+            for row in rows.select(names).to_pylist()
+        ]
     casts = rows.group_by(["station", "cast"], use_threads=False).aggregate(
         [("sample", "first"), ("pressure", "first"), ([], "count_all")]
     )
@@ -206,8 +209,9 @@ def _again(row: Mapping[str, Any]) -> str:
     return f", row {row['occurrence']} of that name" if (row["occurrence"] or 1) > 1 else ""
 
 
-def _line(row: Mapping[str, Any]) -> str:
-    return f" ({at(row['file'], row['line'])})" if row["file"] and row["line"] else ""
+def _line(row: Mapping[str, Any], revision: int) -> str:
+    """Return where a row stands: an edition may have the name of another."""
+    return f" ({at(row['file'], row['line'])} of revision {revision})" if row["file"] and row["line"] else ""
 
 
 def _columns(differences: Sequence[ColumnDifference]) -> list[tuple[str, ...]]:

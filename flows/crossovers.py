@@ -11,6 +11,7 @@ from flows.records import ExitStatus
 from pipeline.archive import open_archive, read_contents, read_table
 from pipeline.archive.writing import write_table
 from pipeline.crossovers import (
+    as_delivered,
     columns_used,
     compare_cruises,
     gather_stations,
@@ -19,6 +20,7 @@ from pipeline.crossovers import (
     proposals_table,
     propose,
     short_form,
+    where_corrected,
 )
 from pipeline.problems import ArchiveProblem, SettingsProblem, UsageProblem
 from pipeline.settings import read_settings
@@ -26,7 +28,7 @@ from pipeline.version import VERSION
 
 if TYPE_CHECKING:
     import argparse
-    from collections.abc import Iterator, Mapping
+    from collections.abc import Mapping
     from pathlib import Path
 
     import pyarrow as pa
@@ -55,25 +57,27 @@ def crossovers(chosen: argparse.Namespace) -> int:
     _refuse_unknown_references(settings, contents)
     troubles = [trouble for cruise in contents.values() for trouble in cruise.troubles]
     whole = {expocode: cruise for expocode, cruise in contents.items() if cruise.is_whole}
-    cruises = list(_stations(store, whole, settings, troubles))
-    found = compare_cruises(cruises, settings.crossovers)
-    proposals = propose(found, settings.crossovers)
     applied = {
         cruise.expocode: made.corrections
         for cruise in whole.values()
         if (made := cruise.provenance) and made.corrections
     }
-    text = page(cruises, found, proposals, settings.crossovers, applied)
+    cruises, corrected = _stations(store, whole, settings, troubles)
+    found = compare_cruises(cruises, settings.crossovers)
+    remaining = None if corrected is None else compare_cruises(corrected, settings.crossovers)
+    left = where_corrected(remaining or [], applied)
+    proposals = propose(found, settings.crossovers, applied, remaining)
+    text = page(cruises, found, proposals, settings.crossovers, applied, left)
     metadata = _made_from(whole, settings)
     _write(
         chosen.out,
         {
-            OFFSETS: _parquet(offsets_table(found), {**metadata, "seawhence.table": "offsets"}),
+            OFFSETS: _parquet(offsets_table(found, left), {**metadata, "seawhence.table": "offsets"}),
             PROPOSALS: _parquet(proposals_table(proposals), {**metadata, "seawhence.table": "proposals"}),
             PAGE: text.encode(),
         },
     )
-    for line in short_form(found, proposals, settings.crossovers):
+    for line in short_form(found, proposals, settings.crossovers, left):
         print(line)
     for trouble in troubles:
         print(f"left out  {trouble}")
@@ -99,16 +103,28 @@ def _refuse_unknown_references(settings: Settings, cruises: Mapping[str, CruiseC
 
 def _stations(
     store: Store, cruises: Mapping[str, CruiseContents], settings: Settings, troubles: list[str]
-) -> Iterator[CruiseStations]:
-    """Yield the deep stations of one cruise after the other; one that cannot be read is told in ``troubles``."""
-    columns = columns_used(settings.crossovers.values)
+) -> tuple[list[CruiseStations], list[CruiseStations] | None]:
+    """Return the deep stations of all cruises, and again with the corrections in force where these are not in them.
+
+    One that cannot be read is told in ``troubles``. The second is None where it would be the same.
+    """
+    columns = columns_used()
+    compared, corrected = [], []
+    differ = False
     for expocode in cruises:
         try:
             table = read_table(store, expocode, "samples", columns=columns)
         except ArchiveProblem as problem:
             troubles.append(str(problem))
             continue
-        yield gather_stations(expocode, table, settings)
+        mine = gather_stations(expocode, table, settings)
+        corrected.append(mine)
+        delivered = as_delivered(table)
+        if settings.crossovers.values == "delivered" and delivered.num_columns < table.num_columns:
+            mine = gather_stations(expocode, delivered, settings)
+            differ = True
+        compared.append(mine)
+    return compared, corrected if differ else None
 
 
 def _made_from(cruises: Mapping[str, CruiseContents], settings: Settings) -> dict[str, str]:

@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING
 from flows.apart import Apart
 from flows.places import place
 from flows.plan import list_inbox, plan_run
+from flows.putting_back import put_back
 from flows.records import CruiseRecord, Refusal, RunSummary, State, merged
 from flows.remembered import with_remembered_sources
 from flows.retrying import make_with_retries
@@ -52,11 +53,13 @@ def bring_archive_up_to_date(inbox: Place, config: RunConfig, make_all: MakeAll)
     """
     files = list_inbox(inbox, place(config.archive))
     store = open_archive(config.archive, create=True)
-    summary = None
+    summary: RunSummary | None = None
+    returned: tuple[str, ...] = ()
     try:
         with locked(store, config.settings.run.lock_seconds):
             clean_staging(store)
             contents = read_contents(store)
+            returned = put_back(files, contents, config, store)
             config = with_remembered_sources(config, contents, store)
             plan = plan_run(files, contents, config.settings, config.catalogue)
             summary = summarise(plan, make_all(plan.jobs, config), contents, config, store)
@@ -64,7 +67,7 @@ def bring_archive_up_to_date(inbox: Place, config: RunConfig, make_all: MakeAll)
         if summary is None:
             raise
         summary = replace(summary, trouble=str(problem))  # what was done is told all the same
-    notes = dict.fromkeys(note for file in files for note in file.beside.notes)
+    notes = dict.fromkeys([*(note for file in files for note in file.beside.notes), *returned])
     return replace(summary, delivered=len(files), notes=tuple(notes))
 
 
@@ -147,6 +150,7 @@ def _as_it_is(cruise: CruiseContents, store: Store) -> CruiseRecord:
         rows=sum(file.rows for file in deliveries),
         kept=sum(file.kept for file in deliveries),
         rejected=sum(file.rejected for file in deliveries),
+        set_aside=sum(file.set_aside for file in deliveries),
         findings=cruise.rows.get("findings", 0),
         samples=cruise.rows.get("samples", 0),
         tagged=_tagged(cruise, store),

@@ -13,9 +13,10 @@ from flows.note import note, refused_note
 from flows.pages import as_markdown
 from flows.plan import shown_name
 from flows.records import ExitStatus, Refusal
-from pipeline.checking import check as check_table
+from flows.to_group import as_delivered
 from pipeline.findings import Finding, Severity
 from pipeline.problems import DeliveryProblem
+from pipeline.process import describe_cruise
 from pipeline.reading import CRUISE_FILE, read_delivery
 from pipeline.settings import read_settings
 from pipeline.variables import MEASURED, REGISTRY
@@ -26,7 +27,7 @@ if TYPE_CHECKING:
     from pathlib import Path
 
     from pipeline.findings import Reject
-    from pipeline.reading import Delivery
+    from pipeline.reading import Delivery, Description
     from pipeline.settings import Settings
 
 _ORDER = {Severity.FAULT: 0, Severity.DOUBT: 1, Severity.NOTE: 2}
@@ -39,6 +40,8 @@ class Look:
 
     delivery: Delivery
     findings: tuple[Finding, ...]
+    description: Description | None = None
+    notes: tuple[str, ...] = ()  # on what the cruise.toml beside it says of files that are not there
 
     @property
     def refused_members(self) -> tuple[Reject, ...]:
@@ -53,6 +56,7 @@ class Refused:
     refusal: Refusal
     size: int | None = None  # bytes
     sha256: str | None = None
+    notes: tuple[str, ...] = ()
 
 
 def check(chosen: argparse.Namespace) -> int:
@@ -67,6 +71,8 @@ def check(chosen: argparse.Namespace) -> int:
         case _:
             for look in looks:
                 print("\n".join(visible(line) for line in _as_text(look)))
+            for note_beside in dict.fromkeys(note for look in looks for note in look.notes):
+                print(f"note  {visible(note_beside)}")
     refused = any(isinstance(look, Refused) or look.refused_members for look in looks)
     return ExitStatus.REFUSED if refused else ExitStatus.GOOD
 
@@ -91,10 +97,18 @@ def _look(path: Path, settings: Settings) -> Look | Refused:
     try:
         delivery = read_delivery(name, data, settings.reading, beside.description)
     except DeliveryProblem as problem:
-        return Refused(Refusal(name, problem.reason, beside.explained(problem)), len(data), sha256)
+        return Refused(
+            Refusal(name, problem.reason, beside.explained(problem)), len(data), sha256, beside.notes
+        )
     delivery = replace(delivery, described_by=beside.sha256)
-    checked = check_table(delivery.table, settings, delivery.findings)
-    return Look(delivery, in_line_order([*delivery.findings, *checked.findings]))
+    noticed = as_delivered(_noticed(delivery, settings), delivery.words)
+    return Look(delivery, in_line_order([*delivery.findings, *noticed]), beside.description, beside.notes)
+
+
+def _noticed(delivery: Delivery, settings: Settings) -> list[Finding]:
+    """Return what a run notices in the rows of a file, cruise by cruise."""
+    parts = ((code, delivery.of_cruise(code)) for code in delivery.cruises)
+    return [finding for code, part in parts for finding in describe_cruise(code, [part], settings).findings]
 
 
 def _names(folder: Path) -> set[str]:
@@ -116,8 +130,10 @@ def in_line_order(findings: Sequence[Finding]) -> tuple[Finding, ...]:
 def _as_page(look: Look | Refused, settings: Settings) -> list[str]:
     if isinstance(look, Refused):
         refusal = look.refusal
-        return as_markdown(refused_note(refusal.file, refusal.message, look.size, look.sha256))
-    return as_markdown(note(look.delivery, look.findings, settings.use))
+        return as_markdown(
+            refused_note(refusal.file, refusal.reason, refusal.message, look.size, look.sha256)
+        )
+    return as_markdown(note(look.delivery, look.findings, settings.use, look.description))
 
 
 def _as_json(look: Look | Refused) -> dict[str, Any]:

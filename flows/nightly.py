@@ -17,6 +17,7 @@ from prefect.task_runners import TaskRunner, ThreadPoolTaskRunner
 
 from flows import telling
 from flows.apart import Apart
+from flows.cluster import named_cluster, runner_on
 from flows.direct import bring_archive_up_to_date
 from flows.notifying import message, notify, whom
 from flows.places import place
@@ -48,6 +49,8 @@ RETRY_SECONDS = 5.0
 
 def task_runner() -> TaskRunner[Any]:
     """Return what runs the batches: the one place where that is chosen."""
+    if address := named_cluster():
+        return runner_on(address)
     return ThreadPoolTaskRunner(max_workers=2)
 
 

@@ -205,6 +205,10 @@ def _add_what_is_run(run: argparse.ArgumentParser) -> None:
     run.add_argument(
         "--notify-command", metavar="COMMAND", help="run it after the run, the summary as JSON on its standard input"
     )
+    run.add_argument(
+        "--cluster", metavar="ADDRESS",
+        help="make the cruises on the workers of the Dask scheduler at tcp://HOST:PORT, as a Prefect flow",
+    )  # fmt: skip
     run.add_argument("--notify-url", metavar="URL", help="post the summary there as JSON after the run")
 
 

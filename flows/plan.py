@@ -83,7 +83,8 @@ def list_inbox(inbox: Place, archive: Place) -> list[InboxFile]:
     for path in paths:
         names.setdefault(path.parent, set()).add(path.name)
     said = {
-        folder: Folder(folder, _shown_path(folder / CRUISE_FILE, inbox), here) for folder, here in names.items()
+        folder: Folder(folder, _shown_path(folder / CRUISE_FILE, inbox), here)
+        for folder, here in names.items()
     }
     return [_inbox_file(path, inbox, said[path.parent].says(path.name)) for path in paths]
 

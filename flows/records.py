@@ -23,6 +23,7 @@ class State(StrEnum):
 
     NEW = "new"
     REVISED = "revised"
+    REMADE = "remade"  # what was damaged or lost, as the same revision
     UNCHANGED = "unchanged"
     REFUSED = "refused"  # none of its deliveries could be used
     FAILED = "failed"  # a fault of ours, or of the storage
@@ -57,6 +58,7 @@ class CruiseRecord:
     rows: int = 0
     kept: int = 0
     rejected: int = 0
+    set_aside: int = 0  # rows of an edition that gave way to another
     findings: int = 0
     samples: int = 0
     tagged: int = 0
@@ -75,10 +77,12 @@ class CruiseRecord:
                 return f"{self.expocode}  {self.state}: {self.message}"
             case _:
                 doubt = f"; {self.message}" if self.message else ""
-                return f"{self.expocode}  {self.state}, revision {self.revision}: {self._counts()}{doubt}"
+                state = "made anew" if self.state is State.REMADE else self.state
+                return f"{self.expocode}  {state}, revision {self.revision}: {self._counts()}{doubt}"
 
     def _rows(self) -> str:
-        return f"{_count(self.rows, 'row')} in, {self.kept} kept, {self.rejected} rejected"
+        aside = f", {self.set_aside} set aside" if self.set_aside else ""
+        return f"{_count(self.rows, 'row')} in, {self.kept} kept{aside}, {self.rejected} rejected"
 
     def _counts(self) -> str:
         words = f"{self._rows()}; {_count(self.findings, 'finding')}"
@@ -150,7 +154,7 @@ class RunSummary:
 
     def closing(self) -> str:
         """Return the sentences that end the summary."""
-        changed = [c for c in self.cruises if c.state in {State.NEW, State.REVISED}]
+        changed = [c for c in self.cruises if c.state in {State.NEW, State.REVISED, State.REMADE}]
         failed = [c for c in self.cruises if c.state is State.FAILED]
         words = []
         if changed:

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 from flows.records import ExitStatus
 from pipeline.archive import open_archive, read_contents
 from pipeline.problems import ArchiveProblem, UsageProblem
-from pipeline.reporting import archive_page, cruise_page, gather, summary, unreadable
+from pipeline.reporting import archive_page, cruise_page, file_name, gather, summary, unreadable
 from pipeline.settings import read_settings
 
 if TYPE_CHECKING:
@@ -39,12 +39,10 @@ def report(chosen: argparse.Namespace) -> int:
     unknown = [expocode for expocode in chosen.cruises if expocode not in contents.cruises]
     if unknown:
         known = ", ".join(contents.cruises) or "none"
-        raise UsageProblem(
-            f"{chosen.archive}: there is no cruise '{unknown[0]}'; its cruises are: {known}."
-        )
+        raise UsageProblem(f"{chosen.archive}: there is no cruise '{unknown[0]}'; its cruises are: {known}.")
     wanted = frozenset(chosen.cruises or contents.cruises)
     made: list[Summary] = []
-    linked: set[str] = set()
+    written = 0
     for expocode, contained in contents.cruises.items():
         try:
             cruise = gather(store, contained, use)
@@ -54,13 +52,15 @@ def report(chosen: argparse.Namespace) -> int:
         made.append(summary(cruise))
         if expocode in wanted:
             _write(chosen.out, cruise_page(cruise))
-            linked.add(expocode)
+            written += 1
     strangers = [f"{stranger}: not a table of the archive." for stranger in contents.strangers]
-    _write(chosen.out, archive_page(made, frozenset(linked), strangers))
+    # pages of an earlier call that named other cruises are linked too
+    linked = frozenset(one.expocode for one in made if (chosen.out / file_name(one.expocode)).is_file())
+    _write(chosen.out, archive_page(made, linked, strangers))
     troubles = [trouble for one in made for trouble in one.troubles]
     for trouble in troubles:
         print(f"left out  {trouble}", file=sys.stderr)
-    pages = f"{len(linked)} cruise page{'s' if len(linked) != 1 else ''}"
+    pages = f"{written} cruise page{'s' if written != 1 else ''}"
     print(f"{pages} and the page of the archive. Open {chosen.out / INDEX}.")
     return ExitStatus.REFUSED if troubles else ExitStatus.GOOD
 

@@ -6,6 +6,7 @@ import os
 import sys
 from typing import TYPE_CHECKING
 
+from flows.cluster import named_cluster, require_reachable_server, use_cluster
 from flows.direct import run_directly
 from flows.embedded import Server, prepare_environment, server_is_configured
 from flows.notifying import message, notify, whom
@@ -29,7 +30,8 @@ if TYPE_CHECKING:
 def run(chosen: argparse.Namespace) -> int:
     """Run once, directly or as a flow."""
     to = whom(chosen.notify_command, chosen.notify_url)
-    return run_once(chosen, to, as_flow=chosen.flow or server_is_configured())
+    use_cluster(chosen.cluster)
+    return run_once(chosen, to, as_flow=chosen.flow or bool(named_cluster()) or server_is_configured())
 
 
 def run_once(chosen: argparse.Namespace, to: Notify, *, as_flow: bool, brief: bool = False) -> int:
@@ -88,6 +90,7 @@ def _run_as_flow(chosen: argparse.Namespace) -> RunSummary:
     """Run as a flow, against the server that is named or one of the run's own, which loads while Prefect does."""
     # What the user is told, the command tells; the server keeps the rest.
     os.environ.setdefault("PREFECT_LOGGING_HANDLERS_CONSOLE_LEVEL", "WARNING")
+    require_reachable_server(server_is_configured())
     places = (chosen.inbox, chosen.archive, chosen.sources, chosen.settings)
     if server_is_configured():
         prepare_environment()

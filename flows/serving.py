@@ -12,6 +12,7 @@ from typing import TYPE_CHECKING, Any
 from zoneinfo import ZoneInfo, ZoneInfoNotFoundError
 
 from flows import notifying
+from flows.cluster import ADDRESS, require_reachable_server, use_cluster
 from flows.embedded import Server, prepare_environment, server_is_configured
 from flows.records import ExitStatus
 from flows.running import run_once
@@ -35,6 +36,8 @@ _TIME = re.compile(r"([01]?\d|2[0-3]):([0-5]\d)")
 def nightly(chosen: argparse.Namespace) -> int:
     """Run once, serve the flow on its schedule until stopped, or deploy it and return."""
     to = notifying.whom(chosen.notify_command, chosen.notify_url)
+    use_cluster(chosen.cluster)
+    require_reachable_server(server_is_configured())
     if chosen.once:
         return run_once(chosen, to, as_flow=True, brief=True)
     cron = cron_of(chosen.at)
@@ -109,7 +112,7 @@ def _deployment(chosen: argparse.Namespace, cron: str) -> RunnerDeployment:
     places = {name: getattr(chosen, name) for name in ("inbox", "archive", "sources", "settings", "summary")}
     pool: dict[str, Any] = {}
     if chosen.pool:
-        environment = {name: os.environ[name] for name in _FOR_EVERY_RUN}
+        environment = {name: os.environ[name] for name in (*_FOR_EVERY_RUN, ADDRESS) if name in os.environ}
         pool = {"work_pool_name": chosen.pool, "job_variables": {"env": environment}}
     try:
         return RunnerDeployment.from_flow(

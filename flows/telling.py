@@ -18,7 +18,7 @@ if TYPE_CHECKING:
 _MOST_ROWS = 1000  # of a table that a Prefect server keeps
 _MOST_LINES = 200  # of a list in a page
 _MOST_CHARACTERS = 300
-_ORDER = (State.FAILED, State.REFUSED, State.NEW, State.REVISED, State.UNCHANGED)
+_ORDER = (State.FAILED, State.REFUSED, State.NEW, State.REVISED, State.REMADE, State.UNCHANGED)
 
 
 def brief_lines(summary: RunSummary) -> list[str]:
@@ -40,6 +40,7 @@ def rows(summary: RunSummary) -> list[dict[str, Any]]:
             "revision": cruise.revision,
             "rows in": cruise.rows,
             "kept": cruise.kept,
+            "set aside": cruise.set_aside,
             "rejected": cruise.rejected,
             "findings": cruise.findings,
             "samples": cruise.samples,
@@ -66,6 +67,7 @@ def page(summary: RunSummary) -> str:
     lines += _section("Notes", summary.notes)
     lines += _section("New", map(_with_seconds, by_state[State.NEW]))
     lines += _section("Revised", map(_with_seconds, by_state[State.REVISED]))
+    lines += _section("Made anew", map(_with_seconds, by_state[State.REMADE]))
     lines += _section("Slow", summary.slow_lines())
     return "\n".join(lines)
 

@@ -9,7 +9,7 @@ import logging
 import time
 from dataclasses import dataclass, replace
 from pathlib import PurePosixPath
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import pyarrow.compute as pc
 
@@ -23,7 +23,7 @@ from pipeline.process import settle_editions, shared_rows
 from pipeline.reading import read_cruise_file, read_delivery
 
 if TYPE_CHECKING:
-    from collections.abc import Mapping, Sequence
+    from collections.abc import Iterator, Mapping, Sequence
 
     import pyarrow as pa
 
@@ -127,35 +127,62 @@ def _make_in(way: Way, job: Job, config: RunConfig, store: Store, refusals: list
     files = _delivered_files(way, deliveries, processed.accounts)
     made_from = _provenance(job.expocode, files, config)
     revision = publish(store, made_from, processed.tables)
-    known = before.provenance is not None or revision > 1
     samples = processed.tables["samples"]
     return CruiseRecord(
         job.expocode,
-        State.REVISED if known else State.NEW,
+        _state(before, revision),
         revision,
         files=tuple(delivery.name for delivery in deliveries),
         rows=sum(file.rows for file in files),
         kept=sum(file.kept for file in files),
         rejected=sum(file.rejected for file in files),
+        set_aside=sum(file.set_aside for file in files),
         findings=len(processed.findings),
         samples=samples.num_rows,
         tagged=tagged_samples(samples),
         resolved=config.catalogue is not None,
         refusals=tuple(refusals),
-        message=_losses(before, processed.tables),
+        message="; ".join([*_losses(before, processed.tables), *_other_settings(before, made_from)]),
     )
 
 
-def _losses(before: CruiseContents, tables: Mapping[str, pa.Table]) -> str:
-    """Return what a reissue has less of than the revision before; a file may have been cut short."""
+def _state(before: CruiseContents, revision: int) -> State:
+    earlier = before.provenance
+    if earlier is not None and earlier.revision == revision and not before.is_whole:
+        return State.REMADE
+    # A batch that is made again, because a worker was lost, finds its cruises published: they are no less new.
+    known = revision > 1 or (earlier is not None and earlier.revision != revision)
+    return State.REVISED if known else State.NEW
+
+
+def _losses(before: CruiseContents, tables: Mapping[str, pa.Table]) -> Iterator[str]:
+    """Yield what a reissue has less of than the revision before; a file may have been cut short."""
     if before.provenance is None:
-        return ""
+        return
     number = before.provenance.revision
-    return "; ".join(
-        f"doubt: revision {number} had {before.rows[name]} {words}, this one has {tables[name].num_rows}"
-        for name, words in (("samples", "samples"), ("casts", "CTD levels"))
-        if before.rows.get(name, 0) > tables[name].num_rows
-    )
+    for name, words in (("samples", "samples"), ("casts", "CTD levels")):
+        if before.rows.get(name, 0) > tables[name].num_rows:
+            yield f"doubt: revision {number} had {before.rows[name]} {words}, this one has {tables[name].num_rows}"
+
+
+def _other_settings(before: CruiseContents, made_from: Provenance) -> Iterator[str]:
+    """Yield what settings of the revision before no longer hold: an archive does not remember them for a run."""
+    earlier = before.provenance
+    if earlier is None or earlier.settings_sha256 == made_from.settings_sha256:
+        return
+    gone = [name for name in earlier.corrections if name not in made_from.corrections]
+    for name in gone:
+        yield (
+            f"doubt: revision {earlier.revision} had {name} corrected {_how(earlier.corrections[name])}, this one has"
+            " not; give the settings again to keep it"
+        )
+    if not gone:
+        yield f"note: made with other settings than revision {earlier.revision}: `seawhence changes` tells which"
+
+
+def _how(correction: Mapping[str, Any]) -> str:
+    factor = correction.get("factor")
+    return f"by {correction.get('add')}" if factor is None else f"by a factor of {factor}"
 
 
 def _keep_choices(config: RunConfig, store: Store) -> None:

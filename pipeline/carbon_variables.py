@@ -14,27 +14,41 @@ _SOURCE = (
     " GMD 15:15"
 )
 _PROPAGATED = (
-    "first order, from the uncertainties of the measured pair; which others are in it: see 'uncertainty'"
+    "first order, from the uncertainties of the measured pair; their sizes, and which others are in it: see"
+    " 'uncertainty'"
 )
 
 
 def _with_uncertainty(
-    name: str, long_name: str, unit: str, standard_name: str | None = None, source: str = _SOURCE
+    name: str,
+    long_name: str,
+    unit: str,
+    standard_name: str | None = None,
+    source: str = _SOURCE,
+    propagated: str = _PROPAGATED,
 ) -> Iterator[Variable]:
     """Yield a computed quantity and the column of its standard uncertainty."""
     yield Variable(name, long_name, unit, standard_name, source=source)
-    yield Variable(f"{name}_uncertainty", f"{long_name}: standard uncertainty", unit, source=_PROPAGATED)
+    yield Variable(f"{name}_uncertainty", f"{long_name}: standard uncertainty", unit, source=propagated)
 
 
 _HORIZON = "deepest crossing of one from above, linear in depth between two bottles of a station"
-_EXTREME = "the sample of the station's profile, where there is more of it or less above and below"
+_HORIZON_PROPAGATED = (
+    "half the distance between the horizons of the profile with saturation lower and higher by its uncertainty at all"
+    " bottles, which are taken to be off alike; missing where one of the two has none"
+)
+_EXTREME = (
+    "the sample with the least (most) of the station's profile, where it rises (falls) on both sides by more than"
+    " 'form' says"
+)
+_GAS = f"{_SOURCE}; the acids at the pressure in situ, the solubility of the gas at that of the surface"
 
 CARBONATE_STATE: tuple[Variable, ...] = (
     *_with_uncertainty("ph_in_situ", "pH on the total scale, in situ", "1", "sea_water_ph_reported_on_total_scale"),
     *_with_uncertainty("fco2_in_situ", "Fugacity of carbon dioxide at the temperature in situ", "uatm",
-                       "fugacity_of_carbon_dioxide_in_sea_water"),
+                       "fugacity_of_carbon_dioxide_in_sea_water", source=_GAS),
     *_with_uncertainty("pco2_in_situ", "Partial pressure of carbon dioxide at the temperature in situ", "uatm",
-                       "partial_pressure_of_carbon_dioxide_in_sea_water"),
+                       "partial_pressure_of_carbon_dioxide_in_sea_water", source=_GAS),
     *_with_uncertainty("aqueous_co2", "Aqueous carbon dioxide, with carbonic acid", "umol kg-1"),
     *_with_uncertainty("bicarbonate", "Bicarbonate ion", "umol kg-1"),
     *_with_uncertainty("carbonate", "Carbonate ion", "umol kg-1"),
@@ -56,17 +70,19 @@ CARBONATE_RESIDUALS: tuple[Variable, ...] = (
 CARBONATE: tuple[Variable, ...] = (
     Variable("carbonate_pair", "Which two measured quantities the carbonate system was solved from", "", None,
              Kind.TEXT),
-    Variable("carbonate_nutrients", "Which nutrients the alkalinity was freed of; the others were taken as none", "",
+    Variable("carbonate_nutrients", "Which nutrients alkalinity was corrected for; the others were taken as none", "",
              None, Kind.TEXT),
+    *_with_uncertainty("dic_computed", "Dissolved inorganic carbon, from a pair that does not hold it", "umol kg-1"),
+    *_with_uncertainty("alkalinity_computed", "Total alkalinity, from a pair that does not hold it", "umol kg-1"),
     *CARBONATE_STATE,
     *CARBONATE_RESIDUALS,
 )  # fmt: skip
 
 HORIZONS: tuple[Variable, ...] = (
     *_with_uncertainty("calcite_saturation_depth", "Depth of the calcite saturation horizon of the station", "m",
-                       source=_HORIZON),
+                       source=_HORIZON, propagated=_HORIZON_PROPAGATED),
     *_with_uncertainty("aragonite_saturation_depth", "Depth of the aragonite saturation horizon of the station", "m",
-                       source=_HORIZON),
+                       source=_HORIZON, propagated=_HORIZON_PROPAGATED),
 )  # fmt: skip
 
 EXTREMES: tuple[Variable, ...] = (

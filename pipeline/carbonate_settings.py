@@ -2,14 +2,17 @@
 
 from __future__ import annotations
 
-from typing import Literal
+from typing import Annotated, Literal
 
 from pydantic import Field
 
-from pipeline.limits import Finite, Fraction, Positive, Section
+from pipeline.limits import Fraction, Positive, Section
 
 Measured = Literal["dic", "alkalinity", "ph_total", "ph_seawater", "pco2", "fco2"]
 AtTemperature = Literal["ph_total", "ph_seawater", "pco2", "fco2"]
+# degC between which constants are evaluated at all: wider than the sea.
+COLDEST, WARMEST = -4.0, 45.0
+Degrees = Annotated[float, Field(ge=COLDEST, le=WARMEST)]
 
 
 class CarbonateSettings(Section):
@@ -47,7 +50,7 @@ class CarbonateSettings(Section):
         " none, for all samples share them, or those of Orr et al. 2018 (pK0 0.002, pK1 0.0075, pK2 0.015, pKB and"
         " pKW 0.01, solubilities 0.02, boron 2 %)",
     )
-    assumed_temperature: dict[AtTemperature, Finite] = Field(
+    assumed_temperature: dict[AtTemperature, Degrees] = Field(
         {},
         description="degC at which a quantity was measured, where no column says; without it such values are not used",
     )
@@ -55,6 +58,18 @@ class CarbonateSettings(Section):
         3.0,
         description="combined standard uncertainties by which a third measured quantity may differ from what the pair"
         " gives (our choice, no source)",
+    )
+
+
+class Repeatability(Section):
+    """Standard deviation of one bottle against the next of a cast, without what all bottles have in common."""
+
+    oxygen: Positive = Field(
+        0.4, description="umol/kg (a titration repeats to 0.1 to 0.5 %, from memory; 0.2 % of 200)"
+    )
+    phosphate: Positive = Field(0.015, description="umol/kg (0.4 % of full scale, from memory)")
+    delta_carbon_13: Positive = Field(
+        0.03, description="per mil (Quay 2003, as reported in Becker et al. 2016)"
     )
 
 
@@ -73,8 +88,17 @@ class ProfileSettings(Section):
         60.0,
         description="umol/kg below which water counts to the oxygen minimum layer (common practice, no source)",
     )
-    extreme_uncertainties: Positive = Field(
-        2.0,
-        description="standard uncertainties of a measurement by which a profile must rise (or fall) on both sides of"
-        " an extreme (our choice, no source)",
+    extreme_rise: Positive = Field(
+        4.0,
+        description="repeatabilities by which a profile must rise (or fall) on both sides of an extreme, as two"
+        " neighbouring levels see it: of ten level bottles, noise alone makes one in a hundred times (computed)",
+    )
+    repeatability: Repeatability = Field(
+        Repeatability(),
+        description="of one bottle against the next: what is off in a whole cast makes no extreme",
+    )
+    horizon_uncertainty: Positive = Field(
+        800.0,
+        description="m of standard uncertainty above which a saturation horizon is told to be hardly known (our choice,"
+        " no source)",
     )

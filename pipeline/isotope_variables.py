@@ -33,22 +33,45 @@ def _components() -> tuple[Variable, ...]:
 
 ISOTOPES: tuple[Variable, ...] = _components()
 
-ANOMALIES: tuple[Variable, ...] = (
-    Variable("dic_normalised", "DIC normalised to a salinity", "umol kg-1", source=_FRIIS),
-    Variable("alkalinity_normalised", "Alkalinity normalised to a salinity", "umol kg-1", source=_FRIIS),
-    Variable("potential_alkalinity", "Alkalinity as if its nitrate were not there, normalised to a salinity",
-             "umol kg-1", source="Brewer et al. 1975, or Carter et al. 2014, BG 11:7349: see 'form'"),
-    Variable("c_star", "C*: DIC less what respiration and calcium carbonate change, up to a constant", "umol kg-1",
-             source=_GRUBER),
-    Variable("dic_soft_tissue", "DIC that respiration freed since the water left the surface", "umol kg-1",
-             source=_GRUBER),
-    Variable("preformed_alkalinity", "Alkalinity that the water left the surface with", "umol kg-1",
-             source="a relation of the settings: see 'form'"),
-    Variable("dic_calcium_carbonate", "DIC that dissolving calcium carbonate added since the water left the surface",
-             "umol kg-1", source=_GRUBER),
-    Variable("preformed_dic", "DIC that the water left the surface with, by the preformed alkalinity taken",
-             "umol kg-1", source=_GRUBER),
-)  # fmt: skip
+
+def _anomalies() -> tuple[Variable, ...]:
+    rows = (
+        ("dic_normalised", "DIC normalised to a salinity", _FRIIS),
+        ("alkalinity_normalised", "Alkalinity normalised to a salinity", _FRIIS),
+        (
+            "potential_alkalinity",
+            "Alkalinity as if its nitrate were not there, normalised to a salinity",
+            "Brewer et al. 1975, or Carter et al. 2014, BG 11:7349: see 'form'",
+        ),
+        ("c_star", "C*: DIC less what respiration and calcium carbonate change, up to a constant", _GRUBER),
+        ("dic_soft_tissue", "DIC that respiration freed since the water left the surface", _GRUBER),
+        (
+            "preformed_alkalinity",
+            "Alkalinity that the water left the surface with",
+            "a relation of the settings: see 'form'",
+        ),
+        (
+            "dic_calcium_carbonate",
+            "DIC that dissolving calcium carbonate added since the water left the surface",
+            _GRUBER,
+        ),
+        (
+            "preformed_dic",
+            "DIC that the water left the surface with, by the preformed alkalinity taken",
+            _GRUBER,
+        ),
+    )
+    return tuple(
+        variable
+        for name, words, source in rows
+        for variable in (
+            Variable(name, words, "umol kg-1", source=source),
+            Variable(f"{name}_uncertainty", f"{words}: standard uncertainty", "umol kg-1", source=_FIRST_ORDER),
+        )
+    )  # fmt: skip
+
+
+ANOMALIES: tuple[Variable, ...] = _anomalies()
 
 SAMPLE_CARBON: tuple[Variable, ...] = (*ISOTOPES, *ANOMALIES)
 

@@ -130,7 +130,7 @@ class MisfitFloor(Section):
 
 
 class CastOffset(Section):
-    """By how much a quantity of one cast may differ from the deep water of the casts around it (our choice, no source)."""
+    """By how much a quantity of a cast may differ from the deep water of casts around it (our choice, no source)."""
 
     nitrate: float = floor(0.03, "part of it (accuracy is 1 %, from memory)")
     nitrate_plus_nitrite: float = floor(0.03, "part of it (as nitrate)")

@@ -65,6 +65,33 @@ class Casts:
     accounts: tuple[Account, ...]  # of each CTD delivery, in their order
 
 
+@dataclass(frozen=True, slots=True)
+class DescribedCruise:
+    """The rows of one cruise before their sources are asked for, and all that was noticed in them."""
+
+    samples: pa.Table
+    casts: Casts
+    findings: tuple[Finding, ...]  # beside those of reading
+
+
+def describe_cruise(
+    expocode: str, deliveries: Sequence[Delivery], settings: Settings, casts: Casts | None = None
+) -> DescribedCruise:
+    """Check the rows of one cruise and compute every quantity, for a run and for a look at a file alike.
+
+    Parameters
+    ----------
+    expocode, deliveries, settings, casts
+        As of `process_cruise`.
+
+    """
+    corrections = settings.corrections.get(expocode, {})
+    samples, noticed = _described(deliveries, DeliveryKind.BOTTLE, settings, corrections)
+    casts = casts or _casts(deliveries, settings, corrections)
+    told = correction_findings(expocode, {"sample": samples, "CTD level": casts.table}, corrections)
+    return DescribedCruise(samples, casts, (*noticed, *casts.findings, *told))
+
+
 def process_cruise(
     expocode: str,
     deliveries: Sequence[Delivery],
@@ -88,9 +115,8 @@ def process_cruise(
         The CTD levels, where they were described before; else they are here.
 
     """
-    corrections = settings.corrections.get(expocode, {})
-    samples, sample_findings = _described(deliveries, DeliveryKind.BOTTLE, settings, corrections)
-    casts = casts or _casts(deliveries, settings, corrections)
+    cruise = describe_cruise(expocode, deliveries, settings, casts)
+    samples, casts = cruise.samples, cruise.casts
     mixtures = empty(MIXTURES)
     mixing_findings: tuple[Finding, ...] = ()
     if catalogue is not None:
@@ -102,8 +128,7 @@ def process_cruise(
     else:
         samples = with_columns(samples, {name: [None] * samples.num_rows for name in MIXING})
     delivered = [finding for delivery in deliveries for finding in delivery.findings]
-    corrected_findings = correction_findings(expocode, {"sample": samples, "CTD level": casts.table}, corrections)
-    findings = (*delivered, *sample_findings, *casts.findings, *corrected_findings, *mixing_findings)
+    findings = (*delivered, *cruise.findings, *mixing_findings)
     return ProcessedCruise(
         tables={
             "samples": arranged(samples),
@@ -245,7 +270,9 @@ def _what_to_do(both: bool, absent: Sequence[str]) -> str:
     if absent:
         named = ", ".join(f"'{name}'" for name in absent)
         return f"cruise.toml names {named} as the one that stands, and there is no such file; name one of these two there"
-    return "remove the one that does not stand, or name the one that does in a cruise.toml beside them (stands)"
+    return (
+        "remove the one that does not stand, or name the one that does in a cruise.toml beside them (stands)"
+    )
 
 
 def _two_editions(one: Delivery, other: Delivery, shared: int, to_do: str) -> DeliveryProblem:

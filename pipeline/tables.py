@@ -51,13 +51,15 @@ CHANGES = (
 )  # fmt: skip
 # How cruises compare, and what would make them agree: made when it is asked for, no tables of the archive.
 OFFSETS = (
-    "expocode", "other_expocode", "variable", "kind", "offset", "offset_uncertainty", "between_places",
-    "depth_contrast", "depth_contrast_uncertainty",
+    "expocode", "other_expocode", "variable", "kind", "offset", "offset_uncertainty",
+    "offset_remaining", "offset_remaining_uncertainty", "between_places", "depth_contrast",
+    "depth_contrast_uncertainty",
     "mean_difference", "mean_difference_uncertainty", "difference_unit", "surface", "stations", "other_stations",
     "station_pairs", "places", "levels", "years_apart",
 )  # fmt: skip
 PROPOSALS = (
     "expocode", "variable", "kind", "correction", "correction_uncertainty", "correction_limit", "difference_unit",
+    "correction_in_force", "correction_remaining", "correction_remaining_uncertainty",
     "crossovers", "group", "proposed", "why_not",
 )  # fmt: skip
 # How much of a section each source makes up: made when it is asked for, no table of the archive.
@@ -148,7 +150,9 @@ def with_columns(table: pa.Table, columns: Mapping[str, Any]) -> pa.Table:
 def with_metadata(table: pa.Table, metadata: Mapping[str, Mapping[str, str]]) -> pa.Table:
     """Return ``table`` with entries added to the metadata of some of its columns."""
     fields = [
-        field.with_metadata({**(field.metadata or {}), **metadata[field.name]})
+        field.with_metadata(
+            {**(field.metadata or {}), **{key.encode(): text.encode() for key, text in metadata[field.name].items()}}
+        )
         if field.name in metadata
         else field
         for field in table.schema

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from concurrent.futures import ThreadPoolExecutor
+from contextlib import contextmanager
 from dataclasses import dataclass, field
 from functools import partial
 from typing import TYPE_CHECKING, Any
@@ -17,10 +18,12 @@ from pipeline.problems import ArchiveProblem
 from pipeline.tables import TABLE_NAMES
 
 if TYPE_CHECKING:
-    from collections.abc import Mapping, Sequence
+    from collections.abc import Iterator, Mapping, Sequence
 
     from pipeline.archive.provenance import Provenance
     from pipeline.archive.storage import Store
+
+_ROWS = 65_536  # of a table that are read at a time where it need not be held
 
 
 @dataclass(frozen=True, slots=True)
@@ -156,6 +159,26 @@ def read_table(
         If it is not there or is damaged; pages are compared with their checksums.
 
     """
+    with _opened(store, expocode, table, revision) as file:
+        return file.read(columns=None if columns is None else list(columns))
+
+
+def read_through(store: Store, expocode: str, table: str, *, revision: int | None = None) -> None:
+    """Read one table of a cruise to its end, a few rows at a time, to see that it can be.
+
+    Raises
+    ------
+    ArchiveProblem
+        As ``read_table``.
+
+    """
+    with _opened(store, expocode, table, revision) as file:
+        for _ in file.iter_batches(_ROWS):
+            pass
+
+
+@contextmanager
+def _opened(store: Store, expocode: str, table: str, revision: int | None) -> Iterator[pq.ParquetFile]:
     key = _key(store, expocode, table, revision)
     place = store.where(key)
     with refused(place, "read"):
@@ -164,7 +187,7 @@ def read_table(
             # What a disk reads in many small steps would be as many requests elsewhere.
             ahead = not isinstance(source, str)
             with pq.ParquetFile(source, page_checksum_verification=True, pre_buffer=ahead) as file:
-                return file.read(columns=None if columns is None else list(columns))
+                yield file
         except FileNotFoundError as error:
             raise ArchiveProblem(
                 f"{place}: the archive has no {table} of {expocode}"

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 from pipeline.archive import layout, vault
-from pipeline.archive.contents import read_table
+from pipeline.archive.contents import read_through
 from pipeline.archive.footers import Footer, read_footer
 from pipeline.problems import ArchiveProblem
 from pipeline.tables import TABLE_NAMES
@@ -54,7 +54,7 @@ def verify(store: Store, contents: Contents, cruise: str | None = None) -> Verif
                 if isinstance(footer, Footer):
                     made.append(footer.provenance)
                     troubles += _differing(store.where(key), footer, revision, table, expocode)
-                    read_table(store, expocode, table, revision=revision)
+                    read_through(store, expocode, table, revision=revision)
                     tables += 1
                 elif footer is not None and revision is not None:
                     troubles.append(

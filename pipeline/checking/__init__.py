@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 import pyarrow as pa
 
+from pipeline.checking.carbon import alkalinity_less_dic
 from pipeline.checking.cast_offsets import cast_offset
 from pipeline.checking.causes import leaking_bottle, one_cause, with_the_bottle
 from pipeline.checking.depths import bottom_depth
@@ -134,6 +135,9 @@ CHECKS: Mapping[str, CheckEntry] = {
             (DOUBT,),
             ("delta_carbon_13", "deep_delta_carbon_13", "delta_departure"),
         ),
+        CheckEntry(
+            "alkalinity-less-dic", alkalinity_less_dic, (DOUBT,), ("alkalinity_less_dic", "spike_bottle")
+        ),
         CheckEntry("regional-range", regional_range, (DOUBT,), ("regions",)),
         CheckEntry(
             "cruise-offset",
@@ -221,7 +225,7 @@ def check(
 def _marks(data: Rows, settings: Settings, entries: Iterable[CheckEntry]) -> list[Mark]:
     """Return what the checks say; those of values do not look at columns that are wrong as a whole."""
     found = {entry.name: entry.run(data, settings) for entry in entries if entry.name == _WHOLE}
-    wrong = {mark.variable for mark in found.get(_WHOLE, ())}
+    wrong = {name for mark in found.get(_WHOLE, ()) for name in mark.variables}
     fault = np.full(len(data), CHECK_FAULT)
     table = with_columns(data.table, {check_name(name): fault for name in wrong}) if wrong else data.table
     sound = Rows(table, settings.use) if wrong else data
@@ -231,7 +235,9 @@ def _marks(data: Rows, settings: Settings, entries: Iterable[CheckEntry]) -> lis
     return [mark for entry in entries for mark in found[entry.name]]
 
 
-def _without_cells(data: Rows, marks: Iterable[Mark], cells: set[tuple[str | None, int | None, str | None]]) -> list[Mark]:
+def _without_cells(
+    data: Rows, marks: Iterable[Mark], cells: set[tuple[str | None, int | None, str | None]]
+) -> list[Mark]:
     """Return marks without missing values in cells, by file, line and variable, of which something was told."""
     news = []
     for mark in marks:

@@ -1,4 +1,4 @@
-"""One cause, one sentence: of all that the checks say of a value or a cast, what says most is told, and the rest left."""
+"""One cause, one sentence: of all that the checks say of a value or a cast, what says most is told."""
 
 from __future__ import annotations
 

@@ -20,6 +20,11 @@ def plain(value: float, digits: int = 3) -> str:
     return f"{float(short):.0f}" if "e+" in short and abs(value) < _WRITTEN_OUT else short
 
 
+def signed(value: float, digits: int = 3) -> str:
+    """Return a difference with its sign and so many significant digits."""
+    return f"{'-' if value < 0 else '+'}{plain(abs(value), digits)}"
+
+
 def beyond(value: float, limit: float, digits: int = 2) -> tuple[str, str]:
     """Return a size and the limit that it exceeds, in as many digits as show that it does."""
     for enough in range(digits, _MOST_DIGITS + 1):

@@ -46,7 +46,11 @@ def unknown_flag(data: Rows, settings: Settings) -> list[Mark]:
         rows = np.flatnonzero(~np.isnan(flags) & ~one_of(flags, SCHEMES[scheme]))
         if len(rows):
             limit = f"a WHP {_NAMES[scheme]} flag, {SCHEMES[scheme][0]} to {SCHEMES[scheme][-1]}"
-            outcome = "what was drawn from the bottle is used all the same" if name == "bottle" else _unused(settings, "values under it are")
+            outcome = (
+                "what was drawn from the bottle is used all the same"
+                if name == "bottle"
+                else _unused(settings, "values under it are")
+            )
             marks.append(
                 Mark("unknown-flag", Severity.DOUBT, name, rows, flags[rows].tolist(), "has flag {value}", limit,
                      outcome=outcome)
@@ -132,7 +136,7 @@ def all_flagged_bad(data: Rows, settings: Settings) -> list[Mark]:
 
 
 def _as_delivered(data: Rows, name: str) -> tuple[NDArray[np.float64], str]:
-    """Return the flags of a quantity as the file has them, (n_row,), and in which column, where we read them as others."""
+    """Return a quantity's flags as the file has them, (n_row,), and in which column, where we read them as others."""
     field = data.table.schema.field(flag_name(name))
     column = (field.metadata or {}).get(b"delivered_name", b"").decode()
     if column not in data.names or not pa.types.is_floating(data.table.schema.field(column).type):

@@ -77,7 +77,8 @@ def _marks(name: str, levels: Ladder, slope: FloatArray, most: FloatArray, steep
         step = np.where(above[at], at - 1, at)  # the step told of is the one above, if it is steep
         figures = [beyond(abs(float(slope[i])), float(most[i])) for i in step]
         values = [
-            f"by {'-' if slope[i] < 0 else '+'}{by} {unit}per dbar from {levels.values[i]:g} to {levels.values[i + 1]:g}"
+            f"by {'-' if slope[i] < 0 else '+'}{by} {unit}per dbar"
+            f" from {levels.values[i]:g} to {levels.values[i + 1]:g}"
             for i, (by, _) in zip(step, figures, strict=True)
         ]
         limits = [

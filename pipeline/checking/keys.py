@@ -58,8 +58,10 @@ def _against_the_first(table: pa.Table, rows: IntArray, firsts: IntArray) -> lis
         where = other if this["file"] != that["file"] else other.removeprefix(f"{that['file']}, ")
         differ = [label(name) for name in compared if this[name] != that[name]]
         more = f" and {len(differ) - _MOST_NAMED} more" if len(differ) > _MOST_NAMED else ""
-        how = f"differ in {named(differ) if not more else ', '.join(differ[:_MOST_NAMED])}{more}" if differ else (
-            "are the same in all columns"
+        how = (
+            f"differ in {named(differ) if not more else ', '.join(differ[:_MOST_NAMED])}{more}"
+            if differ
+            else ("are the same in all columns")
         )
         texts.append(f"{this['sample']} stands already on {where} of this cast, and the two rows {how}")
     return texts

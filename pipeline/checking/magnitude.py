@@ -14,11 +14,11 @@ import numpy as np
 from pipeline.checking.figures import label, plain, unit_of
 from pipeline.checking.hydrography import hydrography
 from pipeline.checking.marks import Mark
-from pipeline.checking.relations import DEEP, Misplaced, misplaced
+from pipeline.checking.relations import MOLAR_MASS, Misplaced, misplaced
 from pipeline.checking.saturation import solubility
 from pipeline.findings import Severity
 from pipeline.units import OXYGEN_UMOL_PER_MG, OXYGEN_UMOL_PER_ML
-from pipeline.variables import REGISTRY
+from pipeline.variables import MEASURED, REGISTRY
 
 if TYPE_CHECKING:
     from collections.abc import Iterator
@@ -67,6 +67,7 @@ class _Whole:
     given: str
     own: str
     possible: tuple[float, float] | None = None
+    exchanged: str = ""  # the column that stands in its place
 
 
 def _amounts(name: str, deep: tuple[float, float], molar_mass: float) -> tuple[_Suspicion, ...]:
@@ -81,7 +82,7 @@ def _amounts(name: str, deep: tuple[float, float], molar_mass: float) -> tuple[_
     )
 
 
-# Ranges: common practice, no source. Molar masses of N, P, Si and C, g/mol (from memory).
+# Ranges: common practice, no source. The molar mass of C, 12.011 g/mol (from memory).
 _CARBON = (1700.0, 2600.0)
 _SUSPICIONS = (
     _Suspicion("temperature", "sea water has in kelvin", 1.0, -273.15, (-2.5, 36.0), (-2.5, 40.0)),
@@ -99,10 +100,6 @@ _SUSPICIONS = (
         for name in ("bottle_salinity", "ctd_salinity")
         for unit, factor in (("kg/kg", 1e3), ("parts per million", 1e-3))
     ),
-    *_amounts("nitrate", (3.0, 47.0), 14.007),
-    *_amounts("nitrate_plus_nitrite", (3.0, 47.0), 14.007),
-    *_amounts("phosphate", (0.1, 3.8), 30.974),
-    *_amounts("silicate", (3.0, 250.0), 28.085),
     *(
         _Suspicion(name, f"sea water has in {unit}", factor, 0.0, _CARBON, (100.0, 3500.0))
         for name in ("dic", "alkalinity")
@@ -123,6 +120,12 @@ _SUSPICIONS = (
     ),
     _Suspicion("delta_carbon_13", "the carbon of organic matter has", 1.0, 0.0, (-40.0, -12.0), (-5.0, 5.0)),
 )
+_NUTRIENTS = (
+    *_amounts("nitrate", (3.0, 47.0), MOLAR_MASS["nitrate"]),
+    *_amounts("nitrate_plus_nitrite", (3.0, 47.0), MOLAR_MASS["nitrate"]),
+    *_amounts("phosphate", (0.1, 3.8), MOLAR_MASS["phosphate"]),
+    *_amounts("silicate", (3.0, 250.0), MOLAR_MASS["silicate"]),
+)
 # Columns that may stand in each other's place: what each has, in the deep for nutrients.
 _EXCHANGED = (
     (("silicate", (3.0, 250.0)), ("phosphate", (0.1, 3.8)), 500.0),
@@ -140,22 +143,27 @@ def wrong_unit(data: Rows, settings: Settings) -> list[Mark]:
             for whole in look(data, share, fewest):
                 wrong.setdefault(whole.variable, whole)  # the first suspicion of a column is told
         for off in misplaced(data, wrong, share, fewest):
-            wrong[off.name] = _powers(data, off)
+            wrong[off.name] = _times(data, off)
+        for whole in _units(data, share, fewest, _NUTRIENTS):  # what the other columns do not tell
+            wrong.setdefault(whole.variable, whole)
     outcome = "" if settings.use.doubtful else "the column is not used"
-    return [mark for whole in wrong.values() for mark in _marks(whole, outcome)]
+    return [mark for whole in wrong.values() for mark in _marks(whole, wrong.get(whole.exchanged), outcome)]
 
 
-def _powers(data: Rows, off: Misplaced) -> _Whole:
-    """Return the suspicion of a column that is a power of ten off."""
-    given = f"{off.times} what {off.by} of the same samples leave room for below {DEEP:g} dbar"
+def _times(data: Rows, off: Misplaced) -> _Whole:
+    """Return the suspicion of a column that is some times too large or small."""
     own = f"about {plain(off.fits[0])} to {plain(off.fits[1])} {unit_of(off.name)} there"
     low, high = _plausible(off.name)
-    return _Whole(data.usable(off.name), off.name, given, own, (off.factor * low, off.factor * high))
+    return _Whole(data.usable(off.name), off.name, off.words, own, (off.factor * low, off.factor * high))
 
 
-def _units(data: Rows, share: float, fewest: int) -> Iterator[_Whole]:
+def _others(data: Rows, share: float, fewest: int) -> Iterator[_Whole]:
+    yield from _units(data, share, fewest, _SUSPICIONS)
+
+
+def _units(data: Rows, share: float, fewest: int, suspicions: tuple[_Suspicion, ...]) -> Iterator[_Whole]:
     pressure = hydrography(data).pressure
-    for suspicion in _SUSPICIONS:
+    for suspicion in suspicions:
         if suspicion.variable not in data.names:
             continue
         values = data.usable(suspicion.variable)
@@ -193,7 +201,7 @@ def _exchanged(data: Rows, share: float, fewest: int) -> Iterator[_Whole]:
             ):
                 own = f"about {low:g} to {high:g} {unit_of(name)} from {below:g} dbar down"
                 given = f"as {label(wrong)} has; the two columns may be exchanged"
-                yield _Whole(values, name, given, own, _plausible(wrong))
+                yield _Whole(values, name, given, own, _plausible(wrong), wrong)
     yield from _carbon_exchanged(data, share, fewest)
 
 
@@ -205,9 +213,11 @@ def _carbon_exchanged(data: Rows, share: float, fewest: int) -> Iterator[_Whole]
         return
     fits = (carbon[rows] - alkalinity[rows] > 20.0) & (np.abs(carbon[rows] - alkalinity[rows]) < 500.0)
     if fits.mean() >= share:
-        own = "TCARBN below ALKALI, as in all oceans"
+        own = "below ALKALI, as in all oceans"
         for values, name, wrong in ((carbon, "dic", "alkalinity"), (alkalinity, "alkalinity", "dic")):
-            yield _Whole(values, name, f"as {label(wrong)} has; the two columns may be exchanged", own)
+            yield _Whole(
+                values, name, f"as {label(wrong)} has; the two columns may be exchanged", own, None, wrong
+            )
 
 
 def _oxygen(data: Rows, share: float, fewest: int) -> Iterator[_Whole]:
@@ -300,13 +310,35 @@ def _pressure(data: Rows, share: float, fewest: int) -> Iterator[_Whole]:
             return
 
 
-def _marks(whole: _Whole, outcome: str) -> Iterator[Mark]:
-    """Yield the doubt of a whole column, and the faults of values that are none in the other unit either."""
+def _marks(whole: _Whole, other: _Whole | None, outcome: str) -> Iterator[Mark]:
+    """Yield the doubt of a whole column, and the faults of values that are none in the other unit either.
+
+    Two columns that are exchanged are told of together, at the first of them.
+    """
     values, name = whole.values, whole.variable
     rows = np.flatnonzero(~np.isnan(values))
-    low, high = (f"{v:.4g}" for v in np.quantile(values[rows], [0.05, 0.95]))
-    words = f"has {len(rows)} values, nine tenths of them from {{value}}, {whole.given}"
-    yield Mark(_NAME, Severity.DOUBT, name, rows, [f"{low} to {high}"], words, whole.own, together=True, outcome=outcome)
+    if other is not None and other.exchanged == name:
+        if MEASURED.index(name) < MEASURED.index(other.variable):
+            both = np.flatnonzero(~np.isnan(values) | ~np.isnan(other.values))
+            words = f"seem to be exchanged: nine tenths of {label(name)} lie from {{value}}"
+            value = f"{_range(values)}, and of {label(other.variable)} from {_range(other.values)}"
+            yield Mark(
+                _NAME, Severity.DOUBT, name, both, [value], words, f"{label(name)} {whole.own}", together=True,
+                also=(other.variable,), outcome=outcome.replace("column is", "columns are"),
+            )  # fmt: skip
+    else:
+        words = f"has {len(rows)} values, nine tenths of them from {{value}}, {whole.given}"
+        yield Mark(
+            _NAME,
+            Severity.DOUBT,
+            name,
+            rows,
+            [_range(values)],
+            words,
+            whole.own,
+            together=True,
+            outcome=outcome,
+        )
     if whole.possible is not None:
         least, most = whole.possible
         span = most - least
@@ -314,11 +346,23 @@ def _marks(whole: _Whole, outcome: str) -> Iterator[Mark]:
         limit = f"{least:.4g} to {most:.4g} in a column like that"
         if len(odd):
             yield Mark(
-                _NAME, Severity.FAULT, name, odd, values[odd].tolist(), "is {value}, which is none of these either", limit
+                _NAME,
+                Severity.FAULT,
+                name,
+                odd,
+                values[odd].tolist(),
+                "is {value}, which is none of these either",
+                limit,
             )
 
 
-_LOOKS = (_exchanged, _conductivity, _units, _oxygen, _pressure)
+def _range(values: FloatArray) -> str:
+    """Return what the middle nine tenths of values, (n,), span, in words."""
+    low, high = np.nanquantile(values, [0.05, 0.95])
+    return f"{low:.4g} to {high:.4g}"
+
+
+_LOOKS = (_exchanged, _conductivity, _others, _oxygen, _pressure)
 
 
 def _plausible(name: str) -> tuple[float, float]:
@@ -335,4 +379,3 @@ def _spread(values: FloatArray) -> float:
     """Return what the middle nine tenths of values, (n,), span; infinite where one is missing."""
     low, high = np.quantile(values, [0.05, 0.95])
     return float(high - low) if np.isfinite(high - low) else float("inf")
-

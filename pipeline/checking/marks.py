@@ -101,11 +101,10 @@ def check_flags(data: Rows, measured: Iterable[str], marks: Iterable[Mark]) -> d
 
 def raised(data: Rows, marks: Iterable[Mark]) -> dict[str, IntArray]:
     """Return the check columns that marks made after the checks make graver, (n_row,) each."""
-    doubted = [
-        mark for mark in marks if mark.severity in _FLAG_OF and check_name(mark.variable) in data.names
-    ]
+    doubted = [mark for mark in marks if mark.doubts]
+    names = {name for mark in doubted for name in mark.variables if check_name(name) in data.names}
     columns = {}
-    for name, flags in check_flags(data, {mark.variable for mark in doubted}, doubted).items():
+    for name, flags in check_flags(data, names, doubted).items():
         before = data.floats(name).astype(np.int64)
         columns[name] = np.where(before == CHECK_MISSING, before, np.maximum(before, flags))
     return columns
@@ -123,7 +122,7 @@ def findings_of(data: Rows, marks: Iterable[Mark]) -> list[Finding]:
         findings += [_finding(data, mark, members, _more(mark, members)) for members in told]
         if len(groups) > len(told):
             rest = np.concatenate(groups[len(told) :])
-            findings.append(_finding(data, mark, rest, f" (and {len(rest) - 1} more {mark.of})"))
+            findings.append(_finding(data, mark, rest, _besides(mark, len(rest) - 1)))
     return findings
 
 
@@ -141,7 +140,9 @@ def _keys(data: Rows, mark: Mark) -> IntArray:
     # A text that stands in more than a few rows (casts) gets a number of its own, beyond those of rows.
     often = [text for text, count in Counter(texts).items() if count > FEW]
     if not data.is_bottle:
-        often = [text for text in often if len({c for c, t in zip(casts, texts, strict=True) if t == text}) > FEW]
+        often = [
+            text for text in often if len({c for c, t in zip(casts, texts, strict=True) if t == text}) > FEW
+        ]
     beyond = int(own.max()) + 1
     number = {text: beyond + i for i, text in enumerate(often)}
     return np.array([number.get(text, key) for text, key in zip(texts, own.tolist(), strict=True)])
@@ -159,7 +160,11 @@ def _more(mark: Mark, members: IntArray) -> str:
     same = len({_written(mark.values[i]) for i in members.tolist()}) == 1
     if same or mark.alike:
         return "" if mark.groups is not None else f" in {len(members)} {mark.of}"
-    return f" (and {len(members) - 1} more {mark.of})"
+    return _besides(mark, len(members) - 1)
+
+
+def _besides(mark: Mark, count: int) -> str:
+    return f" (and {count} more {mark.of if count > 1 else mark.of.removesuffix('s')})"
 
 
 def _groups(keys: IntArray) -> list[IntArray]:
@@ -192,7 +197,11 @@ def _finding(data: Rows, mark: Mark, members: IntArray, more: str) -> Finding:
 
 
 def _name(table: pa.Table, variable: str, row: int) -> str:
-    return f"{label(variable)} {table.column('station')[row].as_py()}" if variable == "station" else label(variable)
+    return (
+        f"{label(variable)} {table.column('station')[row].as_py()}"
+        if variable == "station"
+        else label(variable)
+    )
 
 
 def _place(table: pa.Table, rows: IntArray) -> tuple[str, str]:

@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from pipeline.checking.covariance import SIGMA, conditional_residuals, robust_shape
+from pipeline.checking.figures import plain
 from pipeline.checking.hydrography import hydrography
 from pipeline.checking.marks import Mark
 from pipeline.checking.neighbours import AFTER, BEFORE, BETWEEN, neighbours, plausible, unlike
@@ -150,7 +151,7 @@ def _told(
     if not len(rows):
         return []
     values = [
-        f"{value:g}, {abs(by):.2g} umol/kg {'more' if by > 0 else 'less'}"
+        f"{value:g}, {plain(abs(by), 2)} umol/kg {'more' if by > 0 else 'less'}"
         for value, by in zip(data.floats(name)[rows], residual[rows], strict=True)
     ]
     words = "is {value} than the sample's other properties imply in this cruise"

@@ -22,10 +22,26 @@ if TYPE_CHECKING:
     BoolArray = NDArray[np.bool_]
 
 DEEP = 1000.0  # dbar
-_FACTORS = {10.0: "ten times", 0.1: "a tenth of", 100.0: "a hundred times", 0.01: "a hundredth of"}
+# How much too large a column may be, and what that is called.
+_FACTORS = {
+    10.0: ("ten times", ""), 0.1: ("a tenth of", ""), 100.0: ("a hundred times", ""), 0.01: ("a hundredth of", ""),
+    1e3: ("a thousand times", "nmol/kg"), 1e-3: ("a thousandth of", "mmol/kg or mmol/l"),
+    1e-6: ("a millionth of", "mol/kg or mol/l"),
+}  # fmt: skip
+_MICROGRAMS = "micrograms per litre"
+# g/mol, of N, P and Si (from memory), and litres of sea water in a kg: enough for a magnitude.
+MOLAR_MASS = {"nitrate": 14.007, "phosphate": 30.974, "silicate": 28.085}
+_LITRES_PER_KG = 1.0 / 1.0256
+# How well the middle of what the others leave room for is known, as a factor (our choice, no source): where two
+# suspicions are equally near to it, both are told.
+_KNOWN_WITHIN = {"nitrate": 1.1, "phosphate": 1.1, "silicate": 3.0}
 _NITRATES = ("nitrate", "nitrate_plus_nitrite")
 # What deep water of all oceans and of the Mediterranean has, umol/kg (common practice, no source).
-_OWN: Mapping[str, tuple[float, float]] = {"nitrate": (3.0, 48.0), "phosphate": (0.12, 3.8), "silicate": (3.0, 260.0)}
+_OWN: Mapping[str, tuple[float, float]] = {
+    "nitrate": (3.0, 48.0),
+    "phosphate": (0.12, 3.8),
+    "silicate": (3.0, 260.0),
+}
 # Where a quantity lies for given others below DEEP: for each value of the other one, the least and the most (umol/kg;
 # from memory of the oceans' extremes: N loss, the Mediterranean, the Nordic and the Weddell Sea, the Bering Sea,
 # Baffin Bay; common practice, no source). Far apart, but by less than a factor of ten.
@@ -42,25 +58,26 @@ _GIVEN: Mapping[tuple[str, str], tuple[tuple[float, float, float], ...]] = {
         (150.0, 10.0, 200.0), (200.0, 16.0, 230.0), (350.0, 25.0, 260.0),
     ),
 }  # fmt: skip
+# Part of the values that may lie inside all the same: of the silicate of young water ten times is not yet impossible.
+_SOME = 0.5
 _N_PER_P = 14.5  # of deep water, to look silicate up by phosphate
 
 
 class Misplaced(NamedTuple):
-    """A column that is a power of ten too large or too small."""
+    """A column that is too large or too small by the factor of another unit, or a power of ten."""
 
     name: str
-    times: str  # in words, what it is of what it should be
+    words: str  # what it is of what it should be, by what
     factor: float
-    by: str  # what says so
     fits: tuple[float, float]  # what it would then be in the deep, the middle nine tenths
     deep: BoolArray  # (n_row,)
 
 
 def misplaced(data: Rows, wrong: Collection[str], share: float, fewest: int) -> Iterator[Misplaced]:
-    """Yield the nutrients that a power of ten brings to where the cruise's other deep values say they are.
+    """Yield the nutrients that another unit or a power of ten brings to where the other deep values say they are.
 
-    Nearly all values have to lie outside what one or more of the others leave room for, and nearly all inside
-    what every one of them does when multiplied: where one of the others is wrong, or the sea is unusual,
+    Most values have to lie outside what one or more of the others leave room for, and nearly all inside what
+    every one of them does when multiplied: where one of the others is wrong, or the sea is unusual,
     nothing is said.
 
     Parameters
@@ -75,6 +92,8 @@ def misplaced(data: Rows, wrong: Collection[str], share: float, fewest: int) -> 
         Fewest deep samples.
 
     """
+    if "pressure" in wrong:
+        return
     nitrate = next((name for name in _NITRATES if name in data.names and name not in wrong), "nitrate")
     columns = {"nitrate": nitrate, "phosphate": "phosphate", "silicate": "silicate"}
     with np.errstate(invalid="ignore"):
@@ -90,29 +109,46 @@ def misplaced(data: Rows, wrong: Collection[str], share: float, fewest: int) -> 
     used, oxygen = _oxygen_used(data, wrong)
     known["oxygen used"] = used[rows]
     names = {**columns, "oxygen used": oxygen}
-    for short in columns:
+    for short, name in columns.items():
         values = known.get(short)
         if values is None:
             continue
-        judges = [judge for judge in _judges(short, known) if (~np.isnan(values * known[judge])).sum() >= fewest]
+        judges = [
+            judge for judge in _judges(short, known) if (~np.isnan(values * known[judge])).sum() >= fewest
+        ]
         if not any(judge != "oxygen used" for judge in judges):
             continue
-        for factor, times in _FACTORS.items():
-            inside = _inside(short, values, judges, known)
-            if np.nanmean(inside) > 1.0 - share:
-                break
-            right = values / factor
-            if np.nanmean(_inside(short, right, judges, known)) >= share:
-                low, high = np.nanquantile(right, [0.05, 0.95])
-                by = named([label(names[judge]) for judge in judges])
-                yield Misplaced(columns[short], times, factor, by, (float(low), float(high)), deep)
-                break
+        if np.nanmean(_inside(short, values, judges, known)) > _SOME:
+            continue
+        micrograms = MOLAR_MASS[short] / _LITRES_PER_KG
+        units = {**_FACTORS, micrograms: (f"{micrograms:.0f} times", _MICROGRAMS)}
+        fits: list[tuple[float, float]] = []
+        for factor in units:
+            if np.nanmean(_inside(short, values / factor, judges, known)) >= share:
+                fits.append((_from_the_middle(short, values / factor, judges, known), factor))
+        if fits:
+            fits.sort()
+            near, factor = fits[0]
+            by = named([label(names[judge]) for judge in judges])
+            words = f"{units[factor][0]} what {by} of the same samples lead to expect below {DEEP:g} dbar"
+            words += _as_in(units[factor][1])
+            for far, another in fits[1:]:
+                if far - near <= np.log(_KNOWN_WITHIN[short]):
+                    words += f", or {units[another][0]} that{_as_in(units[another][1])}"
+            low, high = np.nanquantile(values / factor, [0.05, 0.95])
+            yield Misplaced(name, words, factor, (float(low), float(high)), deep)
+
+
+def _as_in(unit: str) -> str:
+    return f", as in {unit}" if unit else ""
 
 
 def _judges(short: str, known: Mapping[str, FloatArray]) -> list[str]:
     """Return what may say where a nutrient lies, of what is known."""
     return [
-        other for other in known if other != short and ((short, other) in _GIVEN or _turned(short, other) is not None)
+        other
+        for other in known
+        if other != short and ((short, other) in _GIVEN or _turned(short, other) is not None)
     ]
 
 
@@ -150,9 +186,27 @@ def _allowed(short: str, other: str, values: FloatArray, given: FloatArray) -> B
     return np.asarray((values >= np.interp(given, at, least)) & (values <= np.interp(given, at, most)))
 
 
+def _from_the_middle(
+    short: str, values: FloatArray, judges: list[str], known: Mapping[str, FloatArray]
+) -> float:
+    """Return how far values are, as the logarithm of a factor, from the middle of what another lets them be."""
+    (judge,) = judges[:1]
+    given = known[judge]
+    if (short, judge) in _GIVEN:
+        at, least, most = np.array(_GIVEN[short, judge]).T
+        middle = np.sqrt(np.maximum(np.interp(given, at, least), 0.1) * np.interp(given, at, most))
+    elif short == "phosphate" and judge == "nitrate":
+        middle = given / _N_PER_P
+    else:
+        return 0.0
+    with np.errstate(invalid="ignore", divide="ignore"):
+        return abs(float(np.nanmedian(np.log(values / middle))))
+
+
 def _oxygen_used(data: Rows, wrong: Collection[str]) -> tuple[FloatArray, str]:
     """Return solubility less oxygen, umol/kg, (n_row,), and the oxygen that was taken."""
+    unknown = not {"temperature", "bottle_salinity", "ctd_salinity"}.isdisjoint(wrong)
     for name in ("bottle_oxygen", "ctd_oxygen"):
-        if name in data.names and name not in wrong:
+        if name in data.names and name not in wrong and not unknown:
             return solubility(data) - plausible(data, name), name
     return np.full(len(data), np.nan), "bottle_oxygen"

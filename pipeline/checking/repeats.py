@@ -73,7 +73,9 @@ def stuck_values(data: Rows, settings: Settings) -> list[Mark]:
             limit = "values that change as the water does"
             rows = np.concatenate(found)
             run = np.repeat(np.arange(len(found)), [len(one) for one in found])
-            marks.append(Mark("stuck-values", Severity.DOUBT, name, rows, values, "is {value}", limit, groups=run))
+            marks.append(
+                Mark("stuck-values", Severity.DOUBT, name, rows, values, "is {value}", limit, groups=run)
+            )
     return marks
 
 

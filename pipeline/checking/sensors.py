@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from pipeline.checking.figures import beyond, label, plain, unit_of
+from pipeline.checking.figures import beyond, label, plain, signed, unit_of
 from pipeline.checking.hydrography import hydrography
 from pipeline.checking.marks import Mark
 from pipeline.checking.neighbours import AFTER, BEFORE, BETWEEN, above_and_below, neighbours, plausible
@@ -211,7 +211,9 @@ def _by_cast(data: Rows, marks: list[Mark]) -> list[Mark]:
         for cast in casts[count >= _MANY_OF_CAST].tolist():
             whole.setdefault(cast, {})[name] = np.sort(rows[data.casts[rows] == cast]).tolist()
     for mark in doubts:
-        single = np.array([mark.variable not in whole.get(cast, ()) for cast in data.casts[mark.rows].tolist()])
+        single = np.array(
+            [mark.variable not in whole.get(cast, ()) for cast in data.casts[mark.rows].tolist()]
+        )
         if single.any():
             told.append(mark if single.all() else mark.kept(single))
     return [*told, *(_of_cast(data, off) for _, off in sorted(whole.items()))]
@@ -224,15 +226,18 @@ def _of_cast(data: Rows, off: dict[str, list[int]]) -> Mark:
     station, cast = (data.table.column(column)[int(rows[0])].as_py() for column in ("station", "cast"))
     sizes = []
     for name in names:
-        by = np.abs(plausible(data, name) - plausible(data, _BESIDE[name]))[off[name]]
-        low, high = (plain(float(np.quantile(by, part)), 2) for part in (0.1, 0.9))
-        size = low if low == high else f"{low} to {high}"
-        sizes.append(f"by {size} {unit_of(name)}".rstrip() + f" from {label(_BESIDE[name])}")
+        by = (plausible(data, name) - plausible(data, _BESIDE[name]))[off[name]]
+        low, high = (plain(float(np.quantile(np.abs(by), part)), 2) for part in (0.1, 0.9))
+        size = f"{low if low == high else f'{low} to {high}'} {unit_of(name)}".rstrip()
+        side = "above" if (by > 0).all() else "below" if (by < 0).all() else "off"
+        sizes.append(f"{size} {side} {label(_BESIDE[name])}")
     ctd = all(name.startswith("ctd") for name in names)
     cause = "the CTD was off there" if ctd else "bottles may have been numbered or closed out of order"
-    words = f"of station {station} cast {cast} {'differ' if len(names) > 1 else 'differs'} {{value}} in {len(rows)} samples"
+    count = np.count_nonzero(data.casts[~np.isnan(plausible(data, names[0]))] == data.casts[rows[0]])
+    words = f"of station {station} cast {cast} {'lie' if len(names) > 1 else 'lies'} {{value}}"
+    words += f" in {len(rows)} of {count} samples: {cause}"
     return Mark(
-        _NAME, Severity.DOUBT, names[0], rows, [" and ".join(sizes)], f"{words}: {cause}",
+        _NAME, Severity.DOUBT, names[0], rows, [" and ".join(sizes)], words,
         "differences as in the cruise's other casts", together=True, also=names[1:],
     )  # fmt: skip
 
@@ -244,17 +249,17 @@ def _casts(data: Rows, pairs: _Pairs, known: NDArray[np.int64], offsets: FloatAr
     rows = [known[data.casts[known] == cast] for cast in casts]
     by = [float(np.median(pairs.difference[members])) for members in rows]
     stations = [str(data.table.column("station")[int(members[0])].as_py()) for members in rows]
-    expected = f"within {limit:.2g}{pairs.unit} of the cruise's other casts"
+    expected = f"within {plain(limit, 2)}{pairs.unit} of the cruise's other casts"
     differs = f"differs from {label(pairs.ctd)} by {{value}}{pairs.unit} throughout"
     if len(casts) <= _MOST_CASTS_TOLD:
         sentences = [
-            (members, f"{size:+.3g}", f"{differs} the {len(members)} samples of station {station}")
+            (members, signed(size), f"{differs} the {len(members)} samples of station {station}")
             for members, size, station in zip(rows, by, stations, strict=True)
         ]
     else:
         named = ", ".join(stations[:_MOST_CASTS_TOLD])
         words = f"{differs} {len(casts)} casts (stations {named} and {len(casts) - _MOST_CASTS_TOLD} more)"
-        sentences = [(np.concatenate(rows), f"{min(by):+.3g} to {max(by):+.3g}", words)]
+        sentences = [(np.concatenate(rows), f"{signed(min(by))} to {signed(max(by))}", words)]
     return [
         Mark(
             _NAME, Severity.NOTE, pairs.bottle, members, [size],
@@ -272,6 +277,5 @@ def _whole(pairs: _Pairs, known: NDArray[np.int64], by: float) -> Mark:
     if pairs.bottle == "bottle_salinity" and low <= abs(by) <= high:
         larger = pairs.bottle if by > 0 else pairs.ctd
         words += f", as it would if {label(larger)} were Absolute Salinity"
-    limit = f"less than {float(np.min(pairs.limit[known])) / 2:.2g}{pairs.unit}"
-    return Mark(_NAME, Severity.NOTE, pairs.bottle, known, [f"{by:+.3g}"], words, limit, together=True)
-
+    limit = f"less than {plain(float(np.min(pairs.limit[known])) / 2, 2)}{pairs.unit}"
+    return Mark(_NAME, Severity.NOTE, pairs.bottle, known, [signed(by)], words, limit, together=True)

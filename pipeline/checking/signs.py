@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from pipeline.checking.exchanged import exchanged_throughout
 from pipeline.checking.marks import Mark
 from pipeline.checking.track import nautical_miles
 from pipeline.findings import Severity
@@ -32,6 +33,16 @@ def position_sign(data: Rows, settings: Settings) -> list[Mark]:
         first = first[(np.abs(latitude[first]) <= 180.0) & (np.abs(longitude[first]) <= 360.0)]
     if len(first) < 3:
         return []
+    if count := exchanged_throughout(data, first):
+        words = (
+            "and LONGITUDE seem to be exchanged: at {value} casts they name land, or a sea that is never as warm or as"
+            " cold as here, and the other way about hardly anywhere"
+        )
+        limit = "latitude in the column of latitude"
+        return [
+            Mark("position-sign", Severity.DOUBT, "latitude", first, [f"{count} of {len(first)}"], words, limit,
+                 together=True, of="casts")
+        ]  # fmt: skip
     lat, lon = latitude[first], longitude[first]
     after = np.minimum(np.arange(len(first)) + 1, len(first) - 1)
     before = np.maximum(np.arange(len(first)) - 1, 0)

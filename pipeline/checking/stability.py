@@ -29,7 +29,8 @@ if TYPE_CHECKING:
     BoolArray = NDArray[np.bool_]
     IntArray = NDArray[np.int64]
 
-# Inversions of a cast, and part of its pairs that go the wrong way, where its pressures may stand in reverse (our choice, no source).
+# Inversions of a cast, and part of its pairs that go the wrong way, where its pressures may stand in reverse (our
+# choice, no source).
 _FEWEST_TURNED, _MOSTLY = 5, 0.8
 
 
@@ -125,7 +126,7 @@ def _turned(data: Rows, water: Hydrography, levels: IntArray, found: IntArray) -
         rows = levels[data.casts[levels] == cast]
         reference = np.full(len(rows), float(np.median(water.pressure[rows])))
         density = _density(water.absolute_salinity[rows], water.conservative_temperature[rows], reference)
-        lighter = np.count_nonzero(np.diff(density) < 0)
+        lighter = int(np.count_nonzero(np.diff(density) < 0))
         if lighter > _MOSTLY * (len(rows) - 1):
             turned.append((cast, lighter, len(rows) - 1))
     return turned
@@ -138,8 +139,8 @@ def _upside_down(data: Rows, levels: IntArray, turned: Sequence[tuple[int, int, 
         rows = np.sort(levels[data.casts[levels] == cast])
         station, number = (data.table.column(name)[int(rows[0])].as_py() for name in ("station", "cast"))
         words = (
-            f"of station {station} cast {number} seems to stand in reverse order: in {{value}} pairs of levels the upper"
-            " water is the heavier"
+            f"of station {station} cast {number} seems to stand in reverse order: in {{value}} pairs of levels"
+            " the upper water is the heavier"
         )
         limit = "density that increases downwards, as it does with the pressures the other way round"
         marks.append(

@@ -127,9 +127,20 @@ def clock_order(data: Rows, settings: Settings) -> list[Mark]:
     rows = first[~kept]
     # What the ship could not have sailed either is more than a list in another order.
     fast = np.isin(rows, [row for mark in station_speed(data, settings) for row in mark.rows.tolist()])
-    words, limit = "does not fit the order of the list: {value}", "casts in the order of time, as the others are"
+    words, limit = (
+        "does not fit the order of the list: {value}",
+        "casts in the order of time, as the others are",
+    )
     return [
-        Mark("clock-order", severity, "time", rows[chosen], [values[i] for i in np.flatnonzero(chosen)], words, limit)
+        Mark(
+            "clock-order",
+            severity,
+            "time",
+            rows[chosen],
+            [values[i] for i in np.flatnonzero(chosen)],
+            words,
+            limit,
+        )
         for severity, chosen in ((Severity.DOUBT, fast), (Severity.NOTE, ~fast))
         if chosen.any()
     ]
@@ -150,7 +161,9 @@ def departure_date(data: Rows, settings: Settings) -> list[Mark]:
     values = [f"{abs(days):.0f} days {'after' if days > 0 else 'before'}" for days in after[rows]]
     limit = f"{checks.before_departure:g} days before to {checks.after_departure:g} days after it"
     words = "lies {value} the departure that the expocode names"
-    return [Mark("departure-date", Severity.DOUBT, "time", rows, values, words, limit, alike=True, of="casts")]
+    return [
+        Mark("departure-date", Severity.DOUBT, "time", rows, values, words, limit, alike=True, of="casts")
+    ]
 
 
 def _departure(expocode: str) -> float:

@@ -6,16 +6,17 @@ at once. Nothing is corrected here.
 
 from __future__ import annotations
 
-from pipeline.crossovers.comparing import Crossover, compare_cruises
+from pipeline.crossovers.comparing import Crossover, compare_cruises, where_corrected
 from pipeline.crossovers.page import page, short_form
 from pipeline.crossovers.proposing import Proposal, propose
-from pipeline.crossovers.stations import CruiseStations, columns_used, gather_stations
+from pipeline.crossovers.stations import CruiseStations, as_delivered, columns_used, gather_stations
 from pipeline.crossovers.writing import offsets_table, proposals_table
 
 __all__ = [
     "Crossover",
     "CruiseStations",
     "Proposal",
+    "as_delivered",
     "columns_used",
     "compare_cruises",
     "gather_stations",
@@ -24,4 +25,5 @@ __all__ = [
     "proposals_table",
     "propose",
     "short_form",
+    "where_corrected",
 ]

@@ -13,7 +13,7 @@ from pipeline.crossovers.profiles import compare
 from pipeline.crossovers.quantities import QUANTITIES, CorrectionKind, Surface
 
 if TYPE_CHECKING:
-    from collections.abc import Iterator, Sequence
+    from collections.abc import Collection, Iterable, Iterator, Mapping, Sequence
 
     from numpy.typing import NDArray
 
@@ -27,6 +27,7 @@ if TYPE_CHECKING:
 
 
 CONTRAST = 2.0  # standard uncertainties from which on an offset differs with depth
+NEAR_MOST = 2.0  # standard uncertainties within which cruises are said to agree
 
 
 @dataclass(frozen=True, slots=True)
@@ -57,9 +58,19 @@ class Crossover:
     years_apart: float
 
     @property
+    def key(self) -> tuple[str, str, str]:
+        """What tells it from others: both cruises and the quantity."""
+        return self.expocode, self.other, self.quantity.name
+
+    @property
     def differs_with_depth(self) -> bool:
         """Whether the offset is another above than below, which a calibration's is not."""
         return abs(self.contrast) > CONTRAST * self.contrast_uncertainty
+
+    @property
+    def agrees(self) -> bool:
+        """Whether the cruises agree within the uncertainty."""
+        return abs(self.offset) <= NEAR_MOST * self.uncertainty
 
     @property
     def relative(self) -> bool:
@@ -82,6 +93,26 @@ def compare_cruises(cruises: Sequence[CruiseStations], settings: CrossoverSettin
             if apart - radii[first] - radii[second] <= chord(settings.distance) + 1e-9:
                 found += list(_crossovers(one, cruises[second], settings))
     return found
+
+
+def where_corrected(
+    crossovers: Iterable[Crossover], applied: Mapping[str, Collection[str]]
+) -> dict[tuple[str, str, str], Crossover]:
+    """Return, by their keys, the crossovers of which either cruise has a correction of the quantity in force.
+
+    Parameters
+    ----------
+    crossovers
+        With the corrections made.
+    applied
+        The corrected quantities by cruise.
+
+    """
+    return {
+        c.key: c
+        for c in crossovers
+        if any(c.quantity.name in applied.get(expocode, ()) for expocode in (c.expocode, c.other))
+    }
 
 
 def _crossovers(

@@ -7,6 +7,7 @@ import math
 import re
 from typing import TYPE_CHECKING
 
+from pipeline.crossovers.proposing import IN_FORCE
 from pipeline.crossovers.quantities import CorrectionKind, Surface
 from pipeline.crossovers.writing import as_part, in_unit
 
@@ -25,7 +26,6 @@ _SURFACES = {
     Surface.TEMPERATURE: "potential temperature",
     Surface.PRESSURE: "pressure",
 }
-NEAR_MOST = 2.0  # standard uncertainties within which cruises are said to agree
 
 LIMITS = """\
 ## What this can tell, and what not
@@ -52,6 +52,7 @@ def page(
     proposals: Sequence[Proposal],
     settings: CrossoverSettings,
     applied: Mapping[str, Mapping[str, object]],
+    left: Mapping[tuple[str, str, str], Crossover],
 ) -> str:
     """Return the page.
 
@@ -65,6 +66,8 @@ def page(
         What it was found with.
     applied
         The corrections that the archive was made with, by cruise and quantity.
+    left
+        The crossovers with these corrections made, by key, where ``crossovers`` are without them.
 
     """
     lines = [
@@ -77,11 +80,13 @@ def page(
     ]
     wanted = [proposal for proposal in proposals if proposal.proposed]
     lines += [f"- {proposal_sentence(p)}" for p in wanted] or ["None."]
-    held = [p for p in proposals if not p.proposed and p.size > p.quantity.limit]
+    held = [p for p in proposals if not p.proposed and p.size > p.quantity.limit and p.why_not != IN_FORCE]
     lines += [f"- Not proposed: {proposal_sentence(p)[:-1]}; {p.why_not}." for p in held]
     lines += _block(wanted, crossovers, settings, applied)
+    if standing := [p for p in proposals if p.in_force]:
+        lines += ["", "## Corrections in force", "", *(f"- {in_force_sentence(p)}" for p in standing)]
     lines += ["", "## Offsets", ""]
-    lines += [f"- {offset_sentence(c, settings)}" for c in crossovers] or [
+    lines += [f"- {offset_sentence(c, settings, left.get(c.key))}" for c in crossovers] or [
         "No two cruises could be compared."
     ]
     lines += ["", *_all_corrections(proposals)]
@@ -89,31 +94,30 @@ def page(
 
 
 def short_form(
-    crossovers: Sequence[Crossover], proposals: Sequence[Proposal], settings: CrossoverSettings
+    crossovers: Sequence[Crossover],
+    proposals: Sequence[Proposal],
+    settings: CrossoverSettings,
+    left: Mapping[tuple[str, str, str], Crossover],
 ) -> list[str]:
-    """Return the lines for a terminal: offsets larger than their limit and uncertainty, and what is proposed."""
-    large = [c for c in crossovers if abs(c.offset) > c.quantity.limit and not _agrees(c)]
-    lines = [f"offset   {offset_sentence(c, settings)}" for c in large]
+    """Return the lines for a terminal: large offsets, what is in force, and what is proposed."""
+    large = [c for c in crossovers if abs(c.offset) > c.quantity.limit and not c.agrees]
+    lines = [f"offset   {offset_sentence(c, settings, left.get(c.key))}" for c in large]
+    lines += [f"in force {in_force_sentence(p)}" for p in proposals if p.in_force]
     lines += [f"propose  {proposal_sentence(p)}" for p in proposals if p.proposed]
     return lines
 
 
-def offset_sentence(crossover: Crossover, settings: CrossoverSettings) -> str:
-    """Return one crossover in one sentence, or two."""
+def offset_sentence(crossover: Crossover, settings: CrossoverSettings, left: Crossover | None = None) -> str:
+    """Return one crossover in one sentence or a few, and what is left of it with the corrections in force."""
     c, words = crossover, crossover.quantity.words
-    difference, uncertainty = in_unit(c)
-    how_much = f"{rounded(abs(difference), uncertainty)}{_unit(c.quantity.unit)}"
-    if c.relative:
-        part, its = as_part(c.offset), math.exp(c.offset) * c.uncertainty
-        how_much += f" ({rounded(100 * abs(part), 100 * its)} %)"
-    direction = "higher" if difference > 0 else "lower"
+    how_much = _how_much(c)
     apart = "" if math.isnan(c.years_apart) else f", {abs(c.years_apart):.1f} years apart"
     where = f"below {settings.pressure:g} dbar, at equal {' or '.join(_SURFACES[s] for s in c.surfaces)}"
     pairs = f"{_many(c.station_pairs, 'station pair')} in {_many(c.places, 'place')}, {_many(c.levels, 'level')}{apart}"
-    if _agrees(c):
-        said = f"{c.expocode} {words} agrees with {c.other}: {how_much} {direction}, {where} ({pairs})."
+    if c.agrees:
+        said = f"{c.expocode} {words} agrees with {c.other}: {how_much}, {where} ({pairs})."
     else:
-        said = f"{c.expocode} {words} is {how_much} {direction} than {c.other}, {where} ({pairs})."
+        said = f"{c.expocode} {words} is {how_much} than {c.other}, {where} ({pairs})."
     scale, unit = (100, " %") if c.relative else (1, _unit(c.quantity.unit))
     if c.between_places > 1.001 * settings.between_places * c.quantity.limit:
         spread = scale * c.between_places
@@ -128,17 +132,49 @@ def offset_sentence(crossover: Crossover, settings: CrossoverSettings) -> str:
             f" {'factor' if c.relative else 'constant'} explains: the ocean may have changed, or the error is"
             f" {'a constant' if c.relative else 'a factor'}."
         )
+    if left is not None:
+        said += f" With the corrections in force it {'agrees' if left.agrees else 'is off still'}: {_how_much(left)}."
     return said
+
+
+def _how_much(crossover: Crossover) -> str:
+    """Return an offset in words: '3.1 +- 0.4 umol kg-1 (1.5 +- 0.2 %) higher'."""
+    c = crossover
+    difference, uncertainty = in_unit(c)
+    words = f"{rounded(abs(difference), uncertainty)}{_unit(c.quantity.unit)}"
+    if c.relative:
+        part, its = as_part(c.offset), math.exp(c.offset) * c.uncertainty
+        words += f" ({rounded(100 * abs(part), 100 * its)} %)"
+    return f"{words} {'higher' if difference > 0 else 'lower'}"
+
+
+def in_force_sentence(proposal: Proposal) -> str:
+    """Return which correction is in force, and what remains."""
+    p = proposal
+    said = f"{p.expocode} {p.quantity.words} {p.in_force};"
+    if p.remains is None or p.remains_uncertainty is None:
+        return f"{said} values are compared with it."
+    if p.why_not == IN_FORCE:
+        worth = ", not worth another correction"
+    else:
+        worth = "; another is proposed in its place" if p.proposed else ""
+    return f"{said} what remains: {_correction(p, p.remains, p.remains_uncertainty)}{worth}."
+
+
+def _correction(proposal: Proposal, value: float, uncertainty: float) -> str:
+    """Return a correction in words: 'times 0.973 +- 0.004'."""
+    if proposal.quantity.kind is CorrectionKind.MULTIPLICATIVE:
+        return f"times {rounded(value, uncertainty)}"
+    return f"plus {rounded(value, uncertainty)}{_unit(proposal.quantity.unit)}"
 
 
 def proposal_sentence(proposal: Proposal) -> str:
     """Return one correction in one sentence."""
     p = proposal
+    how = _correction(p, p.correction, p.uncertainty)
     if p.quantity.kind is CorrectionKind.MULTIPLICATIVE:
-        how = f"times {rounded(p.correction, p.uncertainty)}"
         limit = f"{100 * p.quantity.limit:g} %"
     else:
-        how = f"plus {rounded(p.correction, p.uncertainty)}{_unit(p.quantity.unit)}"
         limit = f"{p.quantity.limit:g}{_unit(p.quantity.unit)}"
     return (
         f"{p.expocode} {p.quantity.words} {how} would agree with the others ({_many(p.crossovers, 'crossover')};"
@@ -172,7 +208,10 @@ def _opening(
         yield f"Taken as right: {', '.join(settings.reference)}."
     standing = [f"{expocode} {name}" for expocode, mine in sorted(applied.items()) for name in sorted(mine)]
     if standing:
-        yield f"The archive has corrections of {', '.join(standing)}."
+        both = (
+            " Where they matter, it is told what remains with them." if settings.values == "delivered" else ""
+        )
+        yield f"The archive has corrections of {', '.join(standing)}.{both}"
     for cruise in cruises:
         for name, count in cruise.left_out.items():
             yield f"{cruise.expocode}: {count} of {name} measured at another temperature than others take no part."
@@ -227,21 +266,23 @@ def _all_corrections(proposals: Sequence[Proposal]) -> Iterator[str]:
         return
     yield "## Least-squares corrections of all cruises"
     yield ""
-    yield "| cruise | quantity | correction | limit | crossovers | group | proposed | why not |"
-    yield "|---|---|---|---|---|---|---|---|"
+    yield (
+        "| cruise | quantity | correction | in force | what remains | limit | crossovers | group | proposed |"
+        " why not |"
+    )
+    yield "|---|---|---|---|---|---|---|---|---|---|"
     for p in proposals:
         relative = p.quantity.kind is CorrectionKind.MULTIPLICATIVE
         mark, unit = ("times ", "") if relative else ("", _unit(p.quantity.unit))
         value = "none" if p.uncertainty == 0 else f"{mark}{rounded(p.correction, p.uncertainty)}{unit}"
+        remains = (
+            f"{mark}{rounded(p.remains, p.remains_uncertainty or 0.0)}{unit}" if p.remains is not None else ""
+        )
         yield (
-            f"| {p.expocode} | {p.quantity.words} | {value} | {p.quantity.limit:g}{unit} | {p.crossovers} |"
-            f" {p.group} | {'yes' if p.proposed else 'no'} | {p.why_not} |"
+            f"| {p.expocode} | {p.quantity.words} | {value} | {p.in_force} | {remains} | {p.quantity.limit:g}{unit} |"
+            f" {p.crossovers} | {p.group} | {'yes' if p.proposed else 'no'} | {p.why_not} |"
         )
     yield ""
-
-
-def _agrees(crossover: Crossover) -> bool:
-    return abs(crossover.offset) <= NEAR_MOST * crossover.uncertainty
 
 
 def _unit(unit: str) -> str:

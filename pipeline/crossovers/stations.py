@@ -68,22 +68,20 @@ class CruiseStations:
         return quantity.name in self.columns
 
 
-def columns_used(values: str) -> list[str]:
-    """Return the columns of samples that a comparison needs, with their flags and checks.
-
-    Parameters
-    ----------
-    values
-        ``delivered`` or ``corrected``.
-
-    """
+def columns_used() -> list[str]:
+    """Return the columns of samples that a comparison needs, with their flags, checks and corrections."""
     named = {q.name for q in QUANTITIES} | {*Surface} | {"latitude", "longitude"}
     named |= {q.measured_at[0] for q in QUANTITIES if q.measured_at}
     beside = {of(name) for name in named for of in (flag_name, check_name)}
-    if values == "corrected":
-        beside |= {corrected_name(q.name) for q in QUANTITIES}
+    beside |= {corrected_name(q.name) for q in QUANTITIES}
     wanted = {*named, *beside, "expocode", "station", "cast", "sample", "date", "bottle_flag"}
     return [name for name in REGISTRY if name in wanted]
+
+
+def as_delivered(table: pa.Table) -> pa.Table:
+    """Return samples without the corrections that were made, so that what was delivered is compared."""
+    corrected = [name for q in QUANTITIES if (name := corrected_name(q.name)) in table.column_names]
+    return table.drop_columns(corrected)
 
 
 def gather_stations(expocode: str, table: pa.Table, settings: Settings) -> CruiseStations:
@@ -97,7 +95,7 @@ def gather_stations(expocode: str, table: pa.Table, settings: Settings) -> Cruis
     expocode
         The cruise.
     table
-        Its samples, with the columns of ``columns_used``.
+        Its samples, with the columns of ``columns_used``; corrected values stand for delivered ones, where there are.
     settings
         Which values may be used, and from which pressure on.
 

@@ -9,7 +9,7 @@ import numpy as np
 from pipeline.tables import OFFSETS, PROPOSALS, empty, with_columns
 
 if TYPE_CHECKING:
-    from collections.abc import Sequence
+    from collections.abc import Mapping, Sequence
 
     import pyarrow as pa
 
@@ -17,17 +17,30 @@ if TYPE_CHECKING:
     from pipeline.crossovers.proposing import Proposal
 
 
-def offsets_table(crossovers: Sequence[Crossover]) -> pa.Table:
-    """Return a row per crossover and quantity."""
+def offsets_table(
+    crossovers: Sequence[Crossover], left: Mapping[tuple[str, str, str], Crossover]
+) -> pa.Table:
+    """Return a row per crossover and quantity.
+
+    Parameters
+    ----------
+    crossovers
+        What was found.
+    left
+        The same with the corrections in force, by key, where there are any.
+
+    """
     rows: list[dict[str, Any]] = []
     for c in crossovers:
         difference, uncertainty = in_unit(c)
         part = float(np.exp(c.offset)) if c.relative else 1.0
+        remaining = _offset(left[c.key]) if c.key in left else (None, None)
         rows.append(
             {
                 "expocode": c.expocode, "other_expocode": c.other, "variable": c.quantity.name,
-                "kind": c.quantity.kind.value, "offset": as_part(c.offset) if c.relative else c.offset,
-                "offset_uncertainty": part * c.uncertainty, "between_places": part * c.between_places,
+                "kind": c.quantity.kind.value, "offset": _offset(c)[0], "offset_uncertainty": _offset(c)[1],
+                "offset_remaining": remaining[0], "offset_remaining_uncertainty": remaining[1],
+                "between_places": part * c.between_places,
                 "depth_contrast": part * c.contrast,
                 "depth_contrast_uncertainty": part * c.contrast_uncertainty,
                 "mean_difference": difference, "mean_difference_uncertainty": uncertainty,
@@ -45,12 +58,21 @@ def proposals_table(proposals: Sequence[Proposal]) -> pa.Table:
         {
             "expocode": p.expocode, "variable": p.quantity.name, "kind": p.quantity.kind.value,
             "correction": p.correction, "correction_uncertainty": p.uncertainty,
-            "correction_limit": p.quantity.limit, "difference_unit": p.quantity.unit, "crossovers": p.crossovers,
+            "correction_limit": p.quantity.limit, "correction_in_force": p.in_force or None,
+            "correction_remaining": p.remains, "correction_remaining_uncertainty": p.remains_uncertainty,
+            "difference_unit": p.quantity.unit, "crossovers": p.crossovers,
             "group": p.group, "proposed": "yes" if p.proposed else "no", "why_not": p.why_not or None,
         }
         for p in proposals
     ]  # fmt: skip
     return _table(PROPOSALS, rows)
+
+
+def _offset(crossover: Crossover) -> tuple[float, float]:
+    """Return an offset and its standard uncertainty: in the unit, or as parts of the value."""
+    if not crossover.relative:
+        return crossover.offset, crossover.uncertainty
+    return as_part(crossover.offset), float(np.exp(crossover.offset)) * crossover.uncertainty
 
 
 def as_part(logarithm: float) -> float:

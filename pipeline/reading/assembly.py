@@ -111,7 +111,7 @@ def assemble(
     return ReadRows(
         table, len(cells.lines) + len(cells.misfits), tuple(rejects), flat(told),
         tuple(one for one in told if isinstance(one, Spread)),
-        {column.name: column.delivered for column in columns if column.use in {Use.IDENTITY, Use.VALUE}} | dict(grid.words),
+        {c.name: c.delivered for c in columns if c.use in {Use.IDENTITY, Use.VALUE}} | dict(grid.words),
     )  # fmt: skip
 
 

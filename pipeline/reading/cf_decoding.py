@@ -48,10 +48,10 @@ _YEARS = (np.datetime64("1800-01-01", "s"), np.datetime64("2200-01-01", "s"))
 
 @dataclass(frozen=True, slots=True)
 class Decoded:
-    """Numbers of a variable in its unit, NaN where missing, and how many lay outside its valid range."""
+    """Numbers of a variable in its unit, NaN where missing, and which of them lay outside its valid range."""
 
     values: FloatArray
-    outside: int = 0
+    invalid: NDArray[np.bool_]
     problem: str = ""  # why the attributes cannot be followed, in words
 
 
@@ -104,7 +104,7 @@ def decode_numbers(variable: StoredVariable) -> Decoded:
     if not problem and (scale is not None or offset is not None):
         numbers = _unpacked(stored, scale, offset)
     values = np.where(missing | invalid | ~np.isfinite(numbers), np.nan, numbers)
-    return Decoded(values, int(np.count_nonzero(invalid)), problem)
+    return Decoded(values, invalid, problem)
 
 
 def _number(attributes: Any, name: str) -> Any:

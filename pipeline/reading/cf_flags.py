@@ -202,8 +202,8 @@ def _unread(name: str, title: str, found: FlagColumn) -> Finding:
     choice = "" if scheme else f", with one of {', '.join(Scheme)} in place of the dots"
     return Finding(
         "unknown-flag-scheme", Severity.DOUBT,
-        f'{fact}; say in cruise.toml what they are: "{title}" = {{ quantity = "{found.quantity}", flag = "{flag}", flags'
-        f' = "{scheme or "..."}" }}{choice}, or leave flag and flags out to use the values without flags.',
+        f'{fact}; say in cruise.toml what they are: "{title}" = {{ quantity = "{found.quantity}", flag = "{flag}",'
+        f' flags = "{scheme or "..."}" }}{choice}, or leave flag and flags out to use the values without flags.',
         variable=found.quantity, value=meanings[:200] or flag, limit=", ".join(Scheme), file=name,
         to_group=f"{fact}; what do its values mean?",
     )  # fmt: skip

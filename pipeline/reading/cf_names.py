@@ -84,7 +84,9 @@ class Recognised:
     kind: DeliveryKind
     values: dict[str, Variable] = field(default_factory=dict)
     units: dict[str, str] = field(default_factory=dict)  # in which they are read
-    written: dict[str, str] = field(default_factory=dict)  # as they stand in the file, where no description says one
+    written: dict[str, str] = field(
+        default_factory=dict
+    )  # as they stand in the file, where no description says one
     flags: dict[str, str] = field(
         default_factory=dict
     )  # flag variable, by the exchange name, to what it speaks of
@@ -142,9 +144,12 @@ def recognise(name: str, file: StoredFile, description: Description | None) -> R
             recognised.units[entry.column] = entry.unit
             recognised.written.pop(entry.column)
             units = (file.variables[entry.column].text("units"), entry.unit)
-            means, place = recognised.values[entry.column], description.place(entry.line) if description else ""
-            found = contradicting_unit(name, None, entry.column, means, units, place)
-            findings += [found] if found is not None else []
+            means, place = (
+                recognised.values[entry.column],
+                description.place(entry.line) if description else "",
+            )
+            doubt = contradicting_unit(name, None, entry.column, means, units, place)
+            findings += [doubt] if doubt is not None else []
     recognised.upward = frozenset(
         title for title, quantity in recognised.values.items()
         if quantity.name == "depth" and file.variables[title].text("positive").lower() == "up"

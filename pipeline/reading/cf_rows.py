@@ -12,6 +12,7 @@ from pipeline.findings import Finding, Severity
 from pipeline.reading.cf_decoding import decode_numbers, decode_texts, decode_times, is_text
 from pipeline.reading.cf_flags import flag_numbers, read_flags
 from pipeline.reading.cf_profiles import tells_layout
+from pipeline.reading.spread import Spread
 from pipeline.variables import REGISTRY, Kind, Variable
 
 if TYPE_CHECKING:
@@ -21,7 +22,6 @@ if TYPE_CHECKING:
     from pipeline.reading.cf_names import Recognised
     from pipeline.reading.cf_profiles import Layout
     from pipeline.reading.netcdf_bytes import StoredFile, StoredVariable
-    from pipeline.reading.spread import Spread
 
 # What a cast has one of, and files may give of its start, bottom and end.
 _OF_A_CAST = frozenset({"latitude", "longitude", "time", "bottom_depth"})
@@ -105,21 +105,35 @@ def _lay_numbers(
             )
         )  # fmt: skip
         means = None
-    if decoded.outside:
-        columns.findings.append(
-            Finding(
-                "outside-valid-range", Severity.DOUBT,
-                f"{name}: {decoded.outside} values of {variable.name} are outside the valid range that the file gives"
-                " for it; they count as missing.",
-                variable=means.name if means else None, value=variable.name, file=name, count=decoded.outside,
-            )
-        )  # fmt: skip
+    if decoded.invalid.any():
+        columns.findings.append(_outside(name, layout, variable, decoded.invalid, means))
     values: NDArray[Any] = decoded.values
     if means is not None and means.kind is not Kind.NUMBER:
         values = np.array([_whole_text(number) for number in values.ravel()], dtype=object).reshape(
             values.shape
         )
     return _lay(name, columns, layout, variable, values, means, recognised.units.get(variable.name))
+
+
+def _outside(
+    name: str, layout: Layout, variable: StoredVariable, invalid: NDArray[np.bool_], means: Variable | None
+) -> Finding | Spread:
+    """Tell how many values are outside the range that the file gives for them."""
+    quantity, title = means.name if means else None, variable.name
+
+    def tell(count: int) -> Finding:
+        values = "1 value" if count == 1 else f"{count} values"
+        return Finding(
+            "outside-valid-range", Severity.DOUBT,
+            f"{name}: {values} of {title} {'is' if count == 1 else 'are'} outside the valid range that the file gives"
+            f" for it; {'it counts' if count == 1 else 'they count'} as missing.",
+            variable=quantity, value=title, file=name, count=count,
+        )  # fmt: skip
+
+    rows = layout.rows(variable.dimensions, invalid) if layout.spanned(variable) else None
+    if rows is None:
+        return tell(int(np.count_nonzero(invalid)))
+    return Spread(np.flatnonzero(rows).astype(np.int64) + 1, lambda lines: tell(len(lines)))
 
 
 def _whole_text(number: float) -> str:

@@ -113,9 +113,7 @@ def _twice(what: str, line: str) -> str:
     key = re.match(r"""\s*(?:"([^"]*)"|'([^']*)'|([^=\s]+))\s*=""", line)
     if what.startswith("Cannot overwrite") and key:
         name = next(part for part in key.groups() if part is not None)
-        return (
-            f"found '{name[:80]}' a second time in the same table; expected each name once; remove one of the two."
-        )
+        return f"found '{name[:80]}' a second time in the same table; expected each name once; remove one of the two."
     if inline := re.match(r"Duplicate inline table key (.*)", what):
         return f"found the key {inline[1][:80]} twice in one line; expected it once; remove one of the two."
     return ""

@@ -125,8 +125,8 @@ def stack(tables: list[pa.Table]) -> pa.Table:
     """
     kinds: dict[str, set[pa.DataType]] = {}
     for table in tables:
-        for field in table.schema:
-            kinds.setdefault(field.name, set()).add(field.type)
+        for one in table.schema:
+            kinds.setdefault(one.name, set()).add(one.type)
     mixed = {name for name, types in kinds.items() if len(types) > 1}
     if mixed:
         tables = [_as_text(table, mixed) for table in tables]
@@ -134,8 +134,8 @@ def stack(tables: list[pa.Table]) -> pa.Table:
 
 
 def _as_text(table: pa.Table, names: set[str]) -> pa.Table:
-    for position, field in enumerate(table.schema):
-        if field.name in names and not pa.types.is_string(field.type):
+    for position, one in enumerate(table.schema):
+        if one.name in names and not pa.types.is_string(one.type):
             column = table.column(position).cast(pa.string())
-            table = table.set_column(position, field.with_type(pa.string()), column)
+            table = table.set_column(position, one.with_type(pa.string()), column)
     return table

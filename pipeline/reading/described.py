@@ -93,5 +93,6 @@ def _units_assumed(described: Described, description: Description) -> list[Findi
             f"{at(grid.name, grid.names_line)}: no unit is given, neither in the file nor in {description.source};"
             f" assumed: {', '.join(columns)}.",
             value=", ".join(columns)[:400], file=grid.name, line=grid.names_line,
+            to_group=f"{at(grid.name, grid.names_line)}: no unit is given; assumed: {', '.join(columns)}.",
         )
     ]  # fmt: skip

@@ -14,6 +14,8 @@ from pipeline.reading.schemes import Scheme, doubted_scheme, mapping_words, odd_
 from pipeline.variables import REGISTRY, FlagScheme, flag_name
 
 if TYPE_CHECKING:
+    from collections.abc import Sequence
+
     from numpy.typing import NDArray
 
     from pipeline.reading.description import ColumnEntry
@@ -28,12 +30,10 @@ def give_flags(work: Workbench, entry: ColumnEntry) -> None:
     table = variable.flags or FlagScheme.WATER
     if entry.flag_scheme is Scheme.WHP and entry.flag not in work.flags:
         work.flags[entry.flag] = variable
-        _doubt_scheme(work, entry, to_flags(work.column(entry.flag))[0], table)
         return
     delivered = work.column(entry.flag)
     numbers, unreadable = to_flags(delivered)
     mapped = to_whp(entry.flag_scheme, numbers, table, unreadable)
-    _doubt_scheme(work, entry, numbers, table)
     work.add(variable.name, pa.array(mapped.whp, from_pandas=True), [entry.flag], flag=True)
     if entry.flag_scheme is Scheme.WHP:
         return
@@ -51,19 +51,39 @@ def give_flags(work: Workbench, entry: ColumnEntry) -> None:
         )  # fmt: skip
 
 
-def _doubt_scheme(work: Workbench, entry: ColumnEntry, flags: NDArray[np.float64], table: FlagScheme) -> None:
-    """Tell where the flags speak for another scheme than the description says."""
-    words = doubted_scheme(entry.flag_scheme, flags, table)
-    if not words:
-        return
-    grid = work.grid
-    fact = f"{at(grid.name, grid.names_line)}: the flags {entry.flag} are read as {entry.flag_scheme.upper()} flags and "
-    seen, _, remedy = words.rpartition("; ")
-    work.findings.append(
-        Finding(
-            "flag-scheme", Severity.DOUBT,
-            f"{fact}{seen}; {remedy} in {work.description.place(entry.line)}.",
-            variable=entry.quantity, value=entry.flag_scheme.value, limit=seen, file=grid.name, line=grid.names_line,
-            to_group=f"{fact}{seen}; whose flags are they?",
+def doubt_schemes(work: Workbench) -> None:
+    """Tell where flags speak for another scheme than the description says: once for all columns of which it holds."""
+    doubted: dict[tuple[Scheme, FlagScheme], list[tuple[ColumnEntry, NDArray[np.float64]]]] = {}
+    for entry in work.description.columns:
+        variable = REGISTRY.get(entry.quantity)
+        if entry.flag is None or variable is None or flag_name(variable.name) not in REGISTRY:
+            continue
+        table, flags = variable.flags or FlagScheme.WATER, to_flags(work.column(entry.flag))[0]
+        if doubted_scheme(entry.flag_scheme, flags, table):
+            doubted.setdefault((entry.flag_scheme, table), []).append((entry, flags))
+    work.findings += [
+        _doubt(
+            work, scheme, table, [entry for entry, _ in found], np.concatenate([flags for _, flags in found])
         )
+        for (scheme, table), found in doubted.items()
+    ]
+
+
+def _doubt(
+    work: Workbench,
+    scheme: Scheme,
+    table: FlagScheme,
+    entries: Sequence[ColumnEntry],
+    flags: NDArray[np.float64],
+) -> Finding:
+    grid = work.grid
+    *others, last = [str(entry.flag) for entry in entries]
+    columns = f"{', '.join(others)} and {last}" if others else last
+    fact = f"{at(grid.name, grid.names_line)}: the flags {columns} are read as {scheme.upper()} flags and "
+    seen, _, remedy = doubted_scheme(scheme, flags, table).rpartition("; ")
+    return Finding(
+        "flag-scheme", Severity.DOUBT,
+        f"{fact}{seen}; {remedy} in {work.description.place(entries[0].line)}{' and below' if others else ''}.",
+        variable=None if others else entries[0].quantity, value=scheme.value, limit=seen, file=grid.name,
+        line=grid.names_line, to_group=f"{fact}{seen}; whose flags are they?",
     )  # fmt: skip

@@ -17,7 +17,7 @@ from pipeline.reading.cells import Cells
 from pipeline.reading.columns import Heading, Meanings, contradicting_unit, plan_columns
 from pipeline.reading.composing import compose_dates, compose_positions, join
 from pipeline.reading.delivery import DeliveryKind
-from pipeline.reading.described_flags import give_flags
+from pipeline.reading.described_flags import doubt_schemes, give_flags
 from pipeline.reading.description import PARTS
 from pipeline.reading.spellings import name_and_unit
 from pipeline.reading.workbench import Workbench
@@ -82,6 +82,7 @@ def describe(grid: Grid, meanings: Meanings, description: Description) -> Descri
     for entry in description.columns:
         if entry.flag is not None:
             give_flags(work, entry)
+    doubt_schemes(work)
     return _planned(work)
 
 
@@ -148,6 +149,8 @@ def _given_instead(work: Workbench, column: str, variable: Variable) -> Finding:
         f"{at(grid.name, grid.names_line)}: {variable.name} is '{said}' for all rows, as {work.description.source}"
         f" says, in place of {found} in the column {column}.",
         variable=variable.name, value=said, limit=found, file=grid.name, line=grid.names_line,
+        to_group=f"{at(grid.name, grid.names_line)}: we took '{said}' as {variable.name} of all rows, in place of"
+        f" {found} in the column {column}.",
     )  # fmt: skip
 
 
@@ -235,7 +238,7 @@ def _planned(work: Workbench) -> Described:
         units=tuple(work.units),
         cells=Cells(tuple(work.cells), grid.cells.lines, grid.cells.misfits),
         constants=work.constants,
-        words={**grid.words, **words},
+        words={**grid.words, **work.words, **words},
         n_delivered=len(grid.names),
         minutes_ahead=description.time_zone,
         dates_in=work.dates_in,

@@ -190,16 +190,18 @@ def _guess_missing(guess: ColumnGuess, quantity: str, seen: _Seen) -> None:
 def _guess_date(guess: ColumnGuess, seen: _Seen) -> None:
     """Decide by the cells whether a column holds the date, the time of day or both."""
     both = all(_BOTH.search(text) for text in seen.texts)
-    clock, day = (any(pattern.search(text) for text in seen.texts) for pattern in (_CLOCK, _DAY))
+    has_clock, has_day = (any(pattern.search(text) for text in seen.texts) for pattern in (_CLOCK, _DAY))
     if guess.quantity != "date_and_time" and both:
         held = "time of day" if guess.quantity == "date" else "date"
         guess.quantity = "date_and_time"
-        guess.remarks[0] = guess.remarks[0].partition(":")[0] + f": {in_words('date_and_time')}; {_told(seen)}"
+        guess.remarks[0] = (
+            guess.remarks[0].partition(":")[0] + f": {in_words('date_and_time')}; {_told(seen)}"
+        )
         guess.remarks.append(f"its cells hold the {held} too")
-    elif guess.quantity != "date" and day and not clock and not both:
+    elif guess.quantity != "date" and has_day and not has_clock and not both:
         guess.quantity = "date"
         guess.remarks.append("its cells hold no time of day")
-    elif guess.quantity == "date_and_time" and clock and not day:
+    elif guess.quantity == "date_and_time" and has_clock and not has_day:
         guess.quantity = "time"
         guess.remarks.append("its cells hold no date")
     slashed = [match for text in seen.texts if (match := _SLASHED.match(text))]

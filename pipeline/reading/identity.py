@@ -66,10 +66,9 @@ def usable_expocode(written: str) -> str | None:
 def departures(expocode: pa.Array) -> NDArray[np.datetime64]:
     """Return the day of departure that ends an expocode, NaT where it ends with none, (n_row,)."""
     codes = expocode.dictionary_encode()
-    days = np.array(
-        [_departure(code or "") for code in codes.dictionary.to_pylist()] or ["NaT"], dtype="datetime64[D]"
-    )
-    return days[np.asarray(codes.indices.fill_null(0).to_numpy(zero_copy_only=False), dtype=np.int64)]
+    known = [_departure(code or "") for code in codes.dictionary.to_pylist()]
+    days = np.array([*known, np.datetime64("NaT", "D")], dtype="datetime64[D]")
+    return days[np.asarray(codes.indices.fill_null(-1).to_numpy(zero_copy_only=False), dtype=np.int64)]
 
 
 def _departure(expocode: str) -> np.datetime64:

@@ -141,8 +141,13 @@ def _grid(
         raw=_row_text(columns.names, columns.cells),
         constants=constants,
         holders="variables and global attributes",
-        words={means.name: title for title, means in columns.values.items()},
+        words={means.name: _source_of(title) for title, means in columns.values.items()},
     )  # fmt: skip
+
+
+def _source_of(title: str) -> str:
+    """Return the variable that a column was made of, such as time where it is called ``date (of time)``."""
+    return title.partition(" (of ")[2].removesuffix(")") or title
 
 
 def _row_text(names: Sequence[str], cells: Sequence[NDArray[Any]]) -> Any:
@@ -158,6 +163,7 @@ def _planned(
     """Return the grid under its description, if it has one, with its columns planned, and metadata for some of them."""
     meanings = Meanings(columns.values, columns.flags)
     metadata: dict[str, dict[str, str]] = {}
+    findings: tuple[Finding | Spread, ...]
     if description is None:
         plan, findings = plan_columns(Heading(grid.name, grid.names, grid.units), meanings)
     else:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+from functools import partial
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -13,6 +14,7 @@ from pipeline.findings import Finding, Severity, at
 from pipeline.reading.columns import Use
 from pipeline.reading.instants import date_format
 from pipeline.reading.spread import Spread
+from pipeline.reading.values import delivered_column
 from pipeline.variables import REGISTRY
 
 if TYPE_CHECKING:
@@ -66,65 +68,60 @@ def unreadable(grid: Grid, cells: Unreadable, where: Where) -> list[Finding | Sp
         Station, cast and sample of each row.
 
     """
-    column = cells.column
+    column, name = cells.column, grid.name
+    variable = column.variable.name if column.variable else column.name
     lines = grid.cells.lines[cells.rows]
-    commas = np.array([has_comma(text) for text in cells.texts], dtype=bool)
-    if column.use is not Use.FLAG and commas.any():
-        others = [
-            (row, text) for row, text, comma in zip(cells.rows, cells.texts, commas, strict=True) if not comma
-        ]
-        text = cells.texts[int(np.argmax(commas))]
-        told: list[Finding | Spread] = [
-            Spread(lines[commas], lambda mine: _commas(grid, column.delivered, _variable(cells), text, mine))
-        ]
-    else:
-        others, told = list(zip(cells.rows, cells.texts, strict=True)), []
     is_flag = column.use is Use.FLAG
+    commas = np.array([not is_flag and has_comma(text) for text in cells.texts], dtype=bool)
+    told: list[Finding | Spread] = []
+    if commas.any():
+        text = cells.texts[int(np.argmax(commas))]
+        told.append(
+            Spread(
+                lines[commas], partial(_commas, name, comma_remedy(grid), column.delivered, variable, text)
+            )
+        )
     check, wanted = ("unknown-flag", "a flag of one digit") if is_flag else ("not-a-number", "a number")
-    for row, text in others[:_MOST_CELLS_TOLD]:
-        station, cast, sample = where[row]
-        line = int(grid.cells.lines[row])
+    others = np.flatnonzero(~commas)
+    for one in others[:_MOST_CELLS_TOLD].tolist():
+        station, cast, sample = where[int(cells.rows[one])]
+        line, text = int(lines[one]), cells.texts[one]
         told.append(
             Finding(
                 check, Severity.FAULT,
-                f"{at(grid.name, line)}: {column.delivered} is '{text[:40]}'; expected {wanted}; it counts as missing.",
-                variable=_variable(cells), value=text[:200], limit=wanted, file=grid.name, line=line,
+                f"{at(name, line)}: {column.delivered} is '{text[:40]}'; expected {wanted}; it counts as missing.",
+                variable=variable, value=text[:200], limit=wanted, file=name, line=line,
                 station=station, cast=cast, sample=sample,
             )
         )  # fmt: skip
-    if rest := others[_MOST_CELLS_TOLD:]:
-        rows = np.array([row for row, _ in rest], dtype=np.int64)
-        variable = _variable(cells)
-
-        def more(mine: LineArray) -> Finding:
-            what = "cell" if len(mine) == 1 else "cells"
-            return Finding(
-                check, Severity.FAULT,
-                f"{at(grid.name, int(mine[0]))} and below: {len(mine)} more {what} of {column.delivered} without"
-                f" {wanted}; they count as missing.",
-                variable=variable, limit=wanted, file=grid.name, line=int(mine[0]), count=len(mine),
-            )  # fmt: skip
-
-        told.append(Spread(grid.cells.lines[rows], more))
+    if len(others) > _MOST_CELLS_TOLD:
+        rest = lines[others[_MOST_CELLS_TOLD:]]
+        told.append(Spread(rest, partial(_more_unreadable, name, check, wanted, column.delivered, variable)))
     return told
 
 
-def _variable(cells: Unreadable) -> str:
-    return cells.column.variable.name if cells.column.variable else cells.column.name
+def _more_unreadable(
+    name: str, check: str, wanted: str, column: str, variable: str, lines: LineArray
+) -> Finding:
+    what = "cell" if len(lines) == 1 else "cells"
+    return Finding(
+        check, Severity.FAULT,
+        f"{at(name, int(lines[0]))} and below: {len(lines)} more {what} of {column} hold no {wanted.partition(' ')[2]};"
+        " they count as missing.",
+        variable=variable, limit=wanted, file=name, line=int(lines[0]), count=len(lines),
+    )  # fmt: skip
 
 
-def _commas(grid: Grid, column: str, variable: str, text: str, lines: LineArray) -> Finding:
+def _commas(name: str, remedy: str, column: str, variable: str, text: str, lines: LineArray) -> Finding:
     rest = len(lines) - 1
     fact = (
-        f"{at(grid.name, int(lines[0]))}: {column} is '{text[:40]}'{more_rows(rest, ' a number with a comma')}; expected"
-        f" a number; {'they count' if rest else 'it counts'} as missing"
+        f"{at(name, int(lines[0]))}: {column} is '{text[:40]}'{more_rows(rest, ' a number with a comma')};"
+        f" expected a number; {'they count' if rest else 'it counts'} as missing"
     )
-    remedy = comma_remedy(grid)
-    asked = "is the comma the decimal sign?"
     return Finding(
         "decimal-comma", Severity.FAULT, f"{fact}; {remedy or 'ask for decimal points'}.",
-        variable=variable, value=text[:200], limit="a number", file=grid.name, line=int(lines[0]), count=len(lines),
-        to_group=f"{fact}; {asked}",
+        variable=variable, value=text[:200], limit="a number", file=name, line=int(lines[0]), count=len(lines),
+        to_group=f"{fact}; is the comma the decimal sign?",
     )  # fmt: skip
 
 
@@ -227,19 +224,20 @@ def without_dates(
 
 
 def _dateless(grid: Grid, lines: LineArray, cruise: str) -> Spread:
+    """Tell it of the rows of one cruise, which is named where the file has several."""
+    name, word, what = grid.name, grid.rows_word, "sample" if grid.kind == "bottle" else "cast"
+
     def tell(mine: LineArray) -> Finding:
         of = f" of {cruise}" if cruise else ""
         rows = (
-            "its one row"
-            if len(mine) == 1 and not cruise
-            else f"none of the {len(mine)} {grid.rows_word}{of}"
+            f"none of the {len(mine)} {word}{of} has a date"
+            if len(mine) > 1
+            else f"the one {word[:-1]}{of} has no date"
         )
-        has = "has no date" if rows.startswith("its") else "has a date"
-        what = "every sample" if grid.kind == "bottle" else "every cast"
-        fact = f"{grid.name}: {rows} {has}; expected the date of {what}"
+        fact = f"{name}: {rows}; expected the date of every {what}"
         return Finding(
             "no-date", Severity.DOUBT, f"{fact}; ask for the dates and deliver the file again.",
-            variable="date", limit=f"the date of {what}", file=grid.name, count=len(mine),
+            variable="date", limit=f"the date of every {what}", file=name, count=len(mine),
             to_group=f"{fact}; please send us the dates.",
         )  # fmt: skip
 
@@ -248,14 +246,15 @@ def _dateless(grid: Grid, lines: LineArray, cruise: str) -> Spread:
 
 def shifted_longitudes(grid: Grid, rows: BoolArray) -> Spread:
     """Tell that longitudes of 180 to 360 were read."""
+    name = grid.name
 
     def tell(mine: LineArray) -> Finding:
-        were = "longitude above 180 was" if len(mine) == 1 else "longitudes above 180 were"
+        one = len(mine) == 1
+        were = "longitude above 180 was" if one else "longitudes above 180 were"
         return Finding(
             "longitude-range", Severity.NOTE,
-            f"{grid.name}: {len(mine)} {were} read as degrees east and {'is' if len(mine) == 1 else 'are'} kept as"
-            " -180..180.",
-            variable="longitude", limit="-180..180", file=grid.name, count=len(mine),
+            f"{name}: {len(mine)} {were} read as degrees east and {'is' if one else 'are'} kept as -180..180.",
+            variable="longitude", limit="-180..180", file=name, count=len(mine),
         )  # fmt: skip
 
     return Spread(grid.cells.lines[rows], tell)
@@ -265,13 +264,14 @@ def written_positions(
     grid: Grid, axis: Axis, column: str, rows: NDArray[np.int64], text: str, degrees: float
 ) -> Spread:
     """Tell that positions with a letter, or in degrees and minutes, were read in a column of decimal degrees."""
+    name = grid.name
 
     def tell(mine: LineArray) -> Finding:
         more = more_rows(len(mine) - 1, " written so")
         return Finding(
             "position-written", Severity.NOTE,
-            f"{at(grid.name, int(mine[0]))}: {column} is '{text[:40]}'{more}; it was read as {degrees:.6g} degrees.",
-            variable=axis.value, value=text[:200], limit="decimal degrees", file=grid.name, line=int(mine[0]),
+            f"{at(name, int(mine[0]))}: {column} is '{text[:40]}'{more}; it was read as {degrees:.6g} degrees.",
+            variable=axis.value, value=text[:200], limit="decimal degrees", file=name, line=int(mine[0]),
             count=len(mine),
         )  # fmt: skip
 
@@ -288,35 +288,41 @@ def pressure_from_depth(grid: Grid, column: str) -> Finding:
 
 
 def unconverted(grid: Grid, lost: Unconverted, expocode: pa.Array, keep: BoolArray) -> Spread:
-    """Tell which values have no density for their conversion, of every cruise out of how many."""
-    lines = grid.cells.lines
-    given = lines[lost.given & keep]
-    codes = np.asarray(expocode.dictionary_encode().indices.fill_null(-1).to_numpy(zero_copy_only=False))
-    code_of = dict(zip(lines.tolist(), codes.tolist(), strict=True))
-    given_codes = np.array([code_of[line] for line in given.tolist()], dtype=np.int64)
+    """Tell which values have no density for their conversion, and of how many of their cruises.
 
-    unit = REGISTRY[lost.column.name].unit.replace(" kg-1", "/kg")
+    Parameters
+    ----------
+    grid
+        The file.
+    lost
+        The column and the values.
+    expocode
+        Of every row, (n_row,).
+    keep
+        Which rows are used, (n_row,).
+
+    """
+    lines, name, column = grid.cells.lines, grid.name, lost.column
+    codes = np.asarray(expocode.dictionary_encode().indices.fill_null(-1).to_numpy(zero_copy_only=False))
+    given = codes[lost.given & keep]
+    kept, unit = delivered_column(column), REGISTRY[column.name].unit.replace(" kg-1", "/kg")
 
     def tell(mine: LineArray) -> Finding:
-        mine_codes = np.unique([code_of[line] for line in mine.tolist()])
-        total = int(np.isin(given_codes, mine_codes).sum())
+        total = int(np.isin(given, codes[np.searchsorted(lines, mine)]).sum())
+        alone = len(mine) == 1
         some = "none" if len(mine) == total else str(len(mine))
         values = f"the {total} values" if total > 1 else "the one value"
-        alone = len(mine) == 1
         fact = (
-            f"{grid.name}: {some} of {values} of {lost.column.delivered} could"
-            f" {'be' if some == 'none' else 'not be'} converted from {lost.column.unit} to"
-            f" {unit}, because the {'row has' if alone else 'rows have'} no salinity or"
+            f"{name}: {some} of {values} of {column.delivered} could {'be' if some == 'none' else 'not be'} converted"
+            f" from {column.unit} to {unit}, because the {'row has' if alone else 'rows have'} no salinity or"
             f" temperature for {'its' if alone else 'their'} density; {'it counts' if alone else 'they count'} as"
-            f" missing, and {'stands' if alone else 'stand'} as delivered beside it"
+            f" missing, and as delivered {'it stands' if alone else 'they stand'} in {kept}"
         )
+        them = "it" if alone else "them"
         return Finding(
-            "not-converted", Severity.DOUBT,
-            f"{fact}; deliver salinity and temperature with {'it' if alone else 'them'}.",
-            variable=lost.column.name, value=lost.column.unit, limit=unit, file=grid.name,
-            count=len(mine),
-            to_group=f"{fact}; please send us salinity and temperature with {'it' if alone else 'them'}, or the values"
-            f" in {unit}.",
+            "not-converted", Severity.DOUBT, f"{fact}; deliver salinity and temperature with {them}.",
+            variable=column.name, value=column.unit, limit=unit, file=name, count=len(mine),
+            to_group=f"{fact}; please send us salinity and temperature with {them}, or the values in {unit}.",
         )  # fmt: skip
 
     return Spread(lines[lost.rows & keep], tell)

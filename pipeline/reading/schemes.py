@@ -259,8 +259,8 @@ def odd_flag_findings(
         more = f" (and in {len(mine) - 1} more rows)" if len(mine) > 1 else ""
         return Finding(
             "unknown-flag", Severity.FAULT,
-            f"{at(file, int(mine[0]))}: the flag {column} is '{text[:30]}'{more}; expected one of {wanted} ({scheme}); it"
-            " counts as not good.",
+            f"{at(file, int(mine[0]))}: the flag {column} is '{text[:30]}'{more}; expected one of {wanted} ({scheme});"
+            " it counts as not good.",
             variable=variable, value=text[:200], limit=wanted, file=file, line=int(mine[0]), count=len(mine),
         )  # fmt: skip
 

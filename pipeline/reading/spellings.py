@@ -66,7 +66,10 @@ _SPELLINGS = {
 }  # fmt: skip
 
 # What a column can be that makes a quantity with others: the quantity's own words speak of what is made.
-_IN_WORDS = {"date": "date alone", "time": "time of day alone; with the date in the same column it is date_and_time"}
+_IN_WORDS = {
+    "date": "date alone",
+    "time": "time of day alone; with the date in the same column it is date_and_time",
+}
 
 # Words in a heading that change nothing of what it means.
 _EMPTY_WORDS = re.compile(

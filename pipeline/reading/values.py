@@ -157,8 +157,13 @@ def _set(values: Values, column: Column, converted: FloatArray, words: str) -> N
         values.metadata[column.name] |= {"conversion": words}
 
 
+def delivered_column(column: Column) -> str:
+    """Return the name under which the delivered numbers of a converted column stay."""
+    return column.delivered if column.delivered not in REGISTRY else f"{column.delivered}_delivered"
+
+
 def _keep_delivered(values: Values, column: Column, delivered: FloatArray) -> None:
-    kept = column.delivered if column.delivered not in REGISTRY else f"{column.delivered}_delivered"
+    kept = delivered_column(column)
     values.extras[kept] = pa.array(delivered, from_pandas=True)
     values.metadata[kept] = _as_delivered(column)
 

@@ -32,14 +32,17 @@ class Workbench:
     constants: dict[str, str]
     findings: list[Finding | Spread] = field(default_factory=list)
     metadata: dict[str, dict[str, str]] = field(default_factory=dict)
+    words: dict[str, str] = field(default_factory=dict)  # quantity to the columns of which it was made
     dates_in: tuple[str, str, str] | None = None  # as of a Grid
 
     @property
     def n_row(self) -> int:
+        """Number of rows."""
         return len(self.grid.cells.lines)
 
     @property
     def decimal_comma(self) -> bool:
+        """Whether a comma in a number is the decimal sign."""
         return self.grid.decimal_comma
 
     def column(self, name: str) -> pa.Array:
@@ -72,3 +75,5 @@ class Workbench:
         self.units.append("")
         self.cells.append(column)
         (self.flags if flag else self.values)[name] = REGISTRY[quantity]
+        if not flag and made_of[0] in self.grid.names:
+            self.words[quantity] = ", ".join(made_of)

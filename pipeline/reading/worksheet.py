@@ -85,7 +85,7 @@ def _chosen(name: str, workbook: Workbook, description: Description) -> SheetPar
     if wanted is None:
         raise DeliveryProblem(
             "which-sheet",
-            f"{name}: found the sheets {there or 'none'}; expected one sheet; name it as sheet = \"...\" in"
+            f'{name}: found the sheets {there or "none"}; expected one sheet; name it as sheet = "..." in'
             f" {description.source}.",
         )
     close = difflib.get_close_matches(wanted.lower(), [sheet.name.lower() for sheet in workbook.sheets], n=1)

@@ -9,7 +9,17 @@ from __future__ import annotations
 
 from pipeline.reporting.archive_page import archive_page
 from pipeline.reporting.cruise_page import cruise_page
+from pipeline.reporting.files import file_name
 from pipeline.reporting.gathered import Gathered, gather
 from pipeline.reporting.summary import Summary, summary, unreadable
 
-__all__ = ["Gathered", "Summary", "archive_page", "cruise_page", "gather", "summary", "unreadable"]
+__all__ = [
+    "Gathered",
+    "Summary",
+    "archive_page",
+    "cruise_page",
+    "file_name",
+    "gather",
+    "summary",
+    "unreadable",
+]

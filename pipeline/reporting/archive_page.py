@@ -26,7 +26,9 @@ if TYPE_CHECKING:
 SCRIPTS = ("numbers.js", "theme.js", "figures.js", "archive.js")
 
 
-def archive_page(cruises: Sequence[Summary], linked: frozenset[str], troubles: Sequence[str] = ()) -> dict[str, bytes]:
+def archive_page(
+    cruises: Sequence[Summary], linked: frozenset[str], troubles: Sequence[str] = ()
+) -> dict[str, bytes]:
     """Return the page of the archive and its CSV files by their paths.
 
     Parameters
@@ -47,7 +49,9 @@ def archive_page(cruises: Sequence[Summary], linked: frozenset[str], troubles: S
         _data(cruises, found),
         SCRIPTS,
         cruises=cruises,
-        pages={cruise.expocode: file_name(cruise.expocode) for cruise in cruises if cruise.expocode in linked},
+        pages={
+            cruise.expocode: file_name(cruise.expocode) for cruise in cruises if cruise.expocode in linked
+        },
         comparisons=found,
         severities=[severity.value for severity in (Severity.FAULT, Severity.DOUBT, Severity.NOTE)],
         between=BETWEEN,
@@ -121,14 +125,26 @@ def _map_words(cruises: Sequence[Summary]) -> str:
     if not latitudes:
         return "No cruise has a position."
     every = np.concatenate(latitudes)
-    south, north = (f"{abs(x):.0f}° {'N' if x >= 0 else 'S'}" for x in (float(every.min()), float(every.max())))
+    south, north = (
+        f"{abs(x):.0f}° {'N' if x >= 0 else 'S'}" for x in (float(every.min()), float(every.max()))
+    )
     days = sorted(day for cruise in cruises for day in (cruise.first_day, cruise.last_day) if day)
     when = f", {days[0][:4]} to {days[-1][:4]}" if days else ""
     return f"{sum(bool(c.tracks) for c in cruises)} cruises between {south} and {north}{when}."
 
 
 def _cruises_table(cruises: Sequence[Summary]) -> pa.Table:
-    columns = ("expocode", "revision", "first_day", "last_day", "stations", "samples", "levels", "rejected", "tagged")
+    columns = (
+        "expocode",
+        "revision",
+        "first_day",
+        "last_day",
+        "stations",
+        "samples",
+        "levels",
+        "rejected",
+        "tagged",
+    )
     return pa.table(
         {
             **{name: [getattr(cruise, name) for cruise in cruises] for name in columns},

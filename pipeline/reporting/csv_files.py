@@ -9,15 +9,15 @@ import numpy as np
 import pyarrow as pa
 import pyarrow.csv as pa_csv
 
-from pipeline.reporting.quantities import SHARE, SHARE_UNCERTAINTY
+from pipeline.reporting.quantities import PROFILED, SHARE, SHARE_UNCERTAINTY
 from pipeline.variables import REGISTRY, RESIDUAL_PREFIX
 
 if TYPE_CHECKING:
     from collections.abc import Iterable, Mapping, Sequence
 
     from pipeline.reporting.gathered import Gathered
-    from pipeline.reporting.visits import Section, Visits
     from pipeline.reporting.quantities import Quantity
+    from pipeline.reporting.visits import Section, Visits
 
 _KEY = ("expocode", "section", "station", "cast", "sample", "latitude", "longitude", "pressure", "depth")
 _WATERS = (
@@ -46,7 +46,7 @@ def cruise_files(
         "respiration": as_csv(
             _picked(cruise.samples, [*_KEY, "respiration", "respiration_uncertainty", *split])
         ),
-        "ctd": as_csv(levels.drop_columns([n for n in ("file", "line") if n in levels.column_names])),
+        "ctd": as_csv(_picked(levels, [*_KEY, *PROFILED])),
         "findings": as_csv(cruise.findings),
         "rejects": as_csv(cruise.rejects),
     }

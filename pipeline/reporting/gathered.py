@@ -23,6 +23,7 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from pipeline.archive import Store
+    from pipeline.mixing.entries import Source
     from pipeline.reporting.colours import SourceLook
     from pipeline.settings import UseSettings
 
@@ -87,7 +88,9 @@ class Gathered:
             zip(_keys(self.mixtures, keys), texts(self.mixtures, "source"), strict=True)
         ):
             if key not in rows or code not in codes:
-                raise BrokenPromise(f"{self.expocode}: the share {place} of '{code}' is of no sample, or no source")
+                raise BrokenPromise(
+                    f"{self.expocode}: the share {place} of '{code}' is of no sample, or no source"
+                )
             share[rows[key], codes[code]] = values[place]
             uncertainty[rows[key], codes[code]] = spreads[place]
         return Shares(share, uncertainty)
@@ -141,16 +144,16 @@ def _catalogue_sources(
         catalogue = Catalogue.model_validate(json.loads(vault.read(store, made.catalogue_sha256)))
     except (ArchiveProblem, ValidationError, ValueError):
         return list(unknown.values())
-    salt_and_heat = ("preformed_salinity", "conservative_temperature")
-    known = {
-        source.code: (
-            source.code,
-            source.name,
-            *(source.properties[name].value if name in source.properties else np.nan for name in salt_and_heat),
-        )
-        for source in catalogue.source
-    }
-    return list({**unknown, **known}[code] for code in dict.fromkeys([*known, *unknown]))
+    known = {source.code: _with_place(source) for source in catalogue.source}
+    return [{**unknown, **known}[code] for code in dict.fromkeys([*known, *unknown])]
+
+
+def _with_place(source: Source) -> tuple[str, str, float, float]:
+    salinity, temperature = (
+        source.properties[name].value if name in source.properties else np.nan
+        for name in ("preformed_salinity", "conservative_temperature")
+    )
+    return source.code, source.name, salinity, temperature
 
 
 def _keys(table: pa.Table, names: tuple[str, ...]) -> list[tuple[object, ...]]:

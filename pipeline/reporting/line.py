@@ -33,7 +33,8 @@ def along_line(latitude: FloatArray, longitude: FloatArray, time: FloatArray) ->
     """Return casts in the order of time or along their main direction, whichever makes the shorter line.
 
     A single wrong time or position must not tear the line: of two orders the shorter one is taken, and a cast
-    without which the line is much shorter is left out.
+    without which the line is much shorter is left out. The line begins at its western end, or at its southern one
+    where it goes farther north than east, so that two visits to a section can be laid beside each other.
 
     Parameters
     ----------
@@ -50,6 +51,8 @@ def along_line(latitude: FloatArray, longitude: FloatArray, time: FloatArray) ->
     orders = [by_time, by_time[np.argsort(_main_direction(places)[by_time], kind="stable")]]
     lines = [_without_strays(places, order) for order in orders]
     order, off = min(lines, key=lambda line: (len(line[1]), round(_length(places[line[0]]), 3)))
+    if _runs_west_or_south(latitude[order], longitude[order]):
+        order = order[::-1]
     steps = great_circle(places[order][:-1], places[order][1:])
     steps[steps < SAME_PLACE] = 0.0
     return Line(order, np.concatenate([[0.0], np.cumsum(steps)]), off)
@@ -67,6 +70,14 @@ def great_circle(one: FloatArray, other: FloatArray) -> FloatArray:
     return np.asarray(2 * EARTH_RADIUS * np.arcsin(np.clip(chord / 2, 0.0, 1.0)))
 
 
+def _runs_west_or_south(latitude: FloatArray, longitude: FloatArray) -> bool:
+    """Return whether a line ends west of where it begins; where it goes more north than east, whether south of it."""
+    north = float(latitude[-1] - latitude[0])
+    east = float((longitude[-1] - longitude[0] + 180.0) % 360.0 - 180.0)
+    east *= np.cos(np.radians((latitude[-1] + latitude[0]) / 2))
+    return east < 0 if abs(east) >= abs(north) else north < 0
+
+
 def _length(places: FloatArray) -> float:
     return float(great_circle(places[:-1], places[1:]).sum())
 
@@ -74,7 +85,7 @@ def _length(places: FloatArray) -> float:
 def _main_direction(places: FloatArray) -> FloatArray:
     """Return coordinates along the direction in which the places spread most, (n,), the first place not last."""
     centred = places - np.median(places, axis=0)
-    along = centred @ np.linalg.svd(centred, full_matrices=False)[2][0]
+    along: FloatArray = centred @ np.linalg.svd(centred, full_matrices=False)[2][0]
     return along if along[0] <= np.median(along) else -along
 
 

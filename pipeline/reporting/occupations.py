@@ -43,7 +43,9 @@ class Occupation:
     catalogue: str  # hash of the catalogue: only shares of one catalogue can be compared
     sources: tuple[SourceLook, ...]
     places: FloatArray  # unit vectors, (n_cast, 3)
-    shares: FloatArray  # mean of the samples of a layer, (n_cast, n_layer, n_source), NaN where there are none
+    shares: (
+        FloatArray  # mean of the samples of a layer, (n_cast, n_layer, n_source), NaN where there are none
+    )
 
 
 @dataclass(frozen=True, slots=True)
@@ -77,7 +79,9 @@ class Comparison:
     @property
     def name(self) -> str:
         """Section, and the two visits."""
-        visits = " and ".join(f"{one.expocode} ({one.day[:4] or 'no date'})" for one in (self.earlier, self.later))
+        visits = " and ".join(
+            f"{one.expocode} ({one.day[:4] or 'no date'})" for one in (self.earlier, self.later)
+        )
         return f"{self.earlier.section}: {visits}"
 
     def sentence(self) -> str:
@@ -202,9 +206,9 @@ def interpolated(at: FloatArray, along: FloatArray, values: FloatArray) -> Float
 
 
 def _coordinates(one: FloatArray, other: FloatArray) -> tuple[FloatArray, FloatArray]:
-    """Return kilometres along the main direction of both, (n_one,) and (n_other,), NaN for casts far from the other line.
+    """Return kilometres along the main direction of both, (n_one,) and (n_other,).
 
-    Along a line that bends, distances come out too short, in both alike.
+    NaN for casts far from the other line. Along a line that bends, distances come out too short, in both alike.
     """
     both = np.concatenate([one, other])
     centred = both - np.median(both, axis=0)

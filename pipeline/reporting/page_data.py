@@ -10,7 +10,7 @@ import numpy as np
 from pipeline.reporting.colours import NO_SOURCE, scales
 from pipeline.reporting.density_lines import density_lines
 from pipeline.reporting.embedding import numbers
-from pipeline.reporting.quantities import SPLIT, SURE
+from pipeline.reporting.quantities import PROFILED, SPLIT, SURE
 from pipeline.reporting.visits import visits
 from pipeline.reporting.wording import quantity_words, unit_words, visible
 from pipeline.tables import floats, texts
@@ -28,8 +28,6 @@ if TYPE_CHECKING:
     from pipeline.reporting.visits import Section, Visits
 
 VIEWS = (0, 500, 1000, 2000)  # dbar from which on samples are in a view of the waters
-# What a CTD profile shows, where the CTD has it.
-PROFILED = ("conservative_temperature", "absolute_salinity", "oxygen", "sigma0", "fluorescence", "transmission")
 
 
 def page_data(
@@ -76,7 +74,8 @@ def page_data(
         ],
         "ctd": _profiles(levels, found, cruise),
         "profiled": {
-            name: {"words": quantity_words(name), "unit": unit_words(REGISTRY[name].unit)} for name in PROFILED
+            name: {"words": quantity_words(name), "unit": unit_words(REGISTRY[name].unit)}
+            for name in PROFILED
         },
         "split": [name for name in SPLIT if f"{name}_from_sources" in by_key],
         "views": _densities(by_key, cruise.sources),
@@ -112,7 +111,9 @@ def _quantity(quantity: Quantity) -> dict[str, Any]:
     }
     if quantity.refused is not None:
         rows = np.flatnonzero(np.isfinite(quantity.refused))
-        told["refused"] = [[int(row), value] for row, value in zip(rows, numbers(quantity.refused[rows]), strict=True)]
+        told["refused"] = [
+            [int(row), value] for row, value in zip(rows, numbers(quantity.refused[rows]), strict=True)
+        ]
     return told
 
 
@@ -166,7 +167,11 @@ def _profiles(levels: pa.Table, found: Visits, cruise: Gathered) -> list[dict[st
     for number, name in enumerate(ctd.names):
         rows = np.flatnonzero(ctd.of_row == number)
         rows = rows[np.argsort(columns["pressure"][rows], kind="stable")]
-        values = {key: numbers(column[rows], 6) for key, column in columns.items() if np.isfinite(column[rows]).any()}
+        values = {
+            key: numbers(column[rows], 6)
+            for key, column in columns.items()
+            if np.isfinite(column[rows]).any()
+        }
         cast = known.get((ctd.station[number], ctd.cast[number]))
         profiles.append({"name": name, "cast": -1 if cast is None else cast, "values": values})
     return profiles

@@ -33,6 +33,15 @@ _MIXING = (
     "leading_share", "leading_probability", "respiration", "reduced_chi_square", "hull_distance", "condition_number",
 )  # fmt: skip
 AXES = ("pressure", "depth", "sigma0", "sigma2")  # what a section's vertical may be, and always there
+# What a CTD profile shows, where the CTD has it.
+PROFILED = (
+    "conservative_temperature",
+    "absolute_salinity",
+    "oxygen",
+    "sigma0",
+    "fluorescence",
+    "transmission",
+)
 SPLIT = ("oxygen", "phosphate", "nitrate", "silicate", "dic", "alkalinity")  # between sources and respiration
 SURE = 0.9  # part of the ensemble from which on a leader is called sure (our choice, no source)
 PRESENT = 0.05  # share from which on a source counts as present (our choice, no source)

@@ -43,7 +43,9 @@ class Summary:
     findings: Mapping[str, int] = field(default_factory=dict)  # rows spoken for, by severity
     tagged: int | None = None  # samples with a source as their tag, None without sources
     catalogue: str = ""
-    tracks: tuple[tuple[NDArray[np.float64], NDArray[np.float64]], ...] = ()  # latitude and longitude of each line
+    tracks: tuple[
+        tuple[NDArray[np.float64], NDArray[np.float64]], ...
+    ] = ()  # latitude and longitude of each line
     occupations: tuple[Occupation, ...] = ()
 
     @property

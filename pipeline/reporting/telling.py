@@ -59,7 +59,9 @@ def of_sources(cruise: Gathered, found: Visits, sections: Sequence[Section]) -> 
     for number, look in enumerate(cruise.sources):
         share = cruise.shares.share[:, number]
         if np.isnan(share).all():
-            said.append(f"{look.code} ({look.name}) is in no sample: it takes part in no set that solved one.")
+            said.append(
+                f"{look.code} ({look.name}) is in no sample: it takes part in no set that solved one."
+            )
             continue
         row = int(np.nanargmax(share))
         words = (
@@ -132,7 +134,9 @@ def of_split(cruise: Gathered, found: Visits) -> list[str]:
     said = []
     pressure, names = floats(cruise.samples, "pressure"), found.names
     for name in SPLIT:
-        changed, brought = (floats(cruise.samples, f"{name}_from_{part}") for part in ("respiration", "sources"))
+        changed, brought = (
+            floats(cruise.samples, f"{name}_from_{part}") for part in ("respiration", "sources")
+        )
         both = np.isfinite(changed) & np.isfinite(brought)
         if not both.any():
             continue

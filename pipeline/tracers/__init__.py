@@ -73,7 +73,7 @@ def columns(usable: Callable[[str], FloatArray], settings: TracerSettings) -> di
 def forms(settings: TracerSettings) -> dict[str, dict[str, str]]:
     """Return, by tracer, which of several published forms the settings chose: metadata of its column."""
     solubility = {"form": f"fit {settings.oxygen_solubility}"}
-    preformed = {"form": f"ratios {settings.stoichiometry}, fit {settings.oxygen_solubility}"}
+    preformed = {"form": f"{stoichiometry(settings.stoichiometry).words}; fit {settings.oxygen_solubility}"}
     return {
         "oxygen_solubility": solubility,
         "aou": solubility,

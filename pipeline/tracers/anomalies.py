@@ -12,15 +12,18 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from pipeline.findings import Finding, Severity
 from pipeline.seawater import Domain
+from pipeline.tracers.anomaly_uncertainties import Uncertain, anomaly_uncertainties
 from pipeline.tracers.carbonate_inputs import POSSIBLE
 from pipeline.tracers.choices import chosen
 from pipeline.tracers.stoichiometry import stoichiometry
-from pipeline.variables import ANOMALIES
+from pipeline.tracers.uncertainties import carbon_uncertainty, carbon_words, usual_uncertainty, usual_words
 
 if TYPE_CHECKING:
-    from collections.abc import Mapping
+    from collections.abc import Iterator, Mapping
 
+    from pipeline.carbonate_settings import CarbonateSettings
     from pipeline.settings import TracerSettings
     from pipeline.tables import FloatArray
     from pipeline.tracers.stoichiometry import Stoichiometry
@@ -50,6 +53,15 @@ _OXYGEN, _NITRATE, _PHOSPHATE, _AOU = (
     Domain(-500.0, 1000.0),
 )
 _TEMPERATURE = Domain(-6.0, 50.0)
+# What is normalised, and what it is like: no more or less of it than any sea water has.
+_NORMALISED = {
+    "dic_normalised": "dic",
+    "alkalinity_normalised": "alkalinity",
+    "potential_alkalinity": "alkalinity",
+}
+_MOST_DILUTED = (
+    2.0  # times; beyond it the water that dilutes counts more than the sea's (our choice, no source)
+)
 
 
 def normalised_friis_2003(
@@ -118,11 +130,12 @@ def calcium_carbonate(
     return (alkalinity - preformed + put_back) / ALKALINITY_PER_CALCIUM_CARBONATE
 
 
-def anomalies(data: Rows, settings: TracerSettings) -> dict[str, FloatArray]:
-    """Return the carbon anomalies of a table of samples, by registry name, (n_row,) each.
+def anomalies(data: Rows, settings: TracerSettings, carbonate: CarbonateSettings) -> dict[str, FloatArray]:
+    """Return the carbon anomalies of a table of samples and their standard uncertainties, by registry name, (n_row,).
 
-    Preformed alkalinity is the linear relation of the settings, and missing without one: with it go the calcium
-    carbonate part and preformed DIC.
+    They are made of measured values alone: what the carbonate system computes has an error of its own. Preformed
+    alkalinity is the linear relation of the settings, and missing without one: with it go the calcium carbonate part
+    and preformed DIC. What is normalised to more or less than any sea water has is missing.
 
     Parameters
     ----------
@@ -130,6 +143,8 @@ def anomalies(data: Rows, settings: TracerSettings) -> dict[str, FloatArray]:
         n_row samples with their TEOS-10 columns and tracers.
     settings
         Forms, ratios and relations.
+    carbonate
+        How uncertain DIC and alkalinity are.
 
     Raises
     ------
@@ -147,12 +162,12 @@ def anomalies(data: Rows, settings: TracerSettings) -> dict[str, FloatArray]:
     dic, alkalinity = (usable(name, POSSIBLE[name]) for name in ("dic", "alkalinity"))
     salinity, aou = usable("practical_salinity", _SALINITY), usable("aou", _AOU)
     oxygen, nitrate = usable("oxygen", _OXYGEN), usable("nitrate", _NITRATE)
-    preformed = np.full(len(data), np.nan)
+    preformed, phosphate = np.full(len(data), np.nan), usable("phosphate", _PHOSPHATE)
     if (relation := settings.preformed_alkalinity) is not None:
         terms = (
             (relation.per_salinity, salinity),
             (relation.per_potential_temperature, usable("potential_temperature", _TEMPERATURE)),
-            (relation.per_po, oxygen + ratios.oxygen.value * usable("phosphate", _PHOSPHATE)),
+            (relation.per_po, oxygen + ratios.oxygen.value * phosphate),
         )
         preformed = np.where(np.isnan(alkalinity), np.nan, relation.intercept)
         for slope, values in terms:
@@ -162,7 +177,7 @@ def anomalies(data: Rows, settings: TracerSettings) -> dict[str, FloatArray]:
     respired = np.where(np.isnan(dic), np.nan, soft_tissue(aou, ratios))
     dissolved = calcium_carbonate(alkalinity, preformed, aou, ratios, per_nitrate)
     reference = settings.reference_salinity
-    return {
+    found = {
         "dic_normalised": normalised_friis_2003(dic, salinity, reference, settings.dic_without_salt),
         "alkalinity_normalised": normalised_friis_2003(
             alkalinity, salinity, reference, settings.alkalinity_without_salt
@@ -174,11 +189,49 @@ def anomalies(data: Rows, settings: TracerSettings) -> dict[str, FloatArray]:
         "dic_calcium_carbonate": dissolved,
         "preformed_dic": dic - respired - dissolved,
     }
+    for name, like in _NORMALISED.items():
+        found[name] = np.where(POSSIBLE[like].holds(found[name]), found[name], np.nan)
+    uncertain = Uncertain(
+        dic=carbon_uncertainty("dic", dic, carbonate),
+        alkalinity=carbon_uncertainty("alkalinity", alkalinity, carbonate),
+        oxygen=usual_uncertainty("oxygen", oxygen),
+        nitrate=usual_uncertainty("nitrate", nitrate),
+        phosphate=usual_uncertainty("phosphate", phosphate),
+        relation=0.0 if relation is None else relation.uncertainty,
+    )
+    per_po = 0.0 if relation is None else relation.per_po
+    of_each = anomaly_uncertainties(uncertain, reference / salinity, aou, ratios, per_nitrate, per_po)
+    return found | {
+        f"{name}_uncertainty": np.where(np.isnan(values), np.nan, of_each[name])
+        for name, values in found.items()
+    }
 
 
-def anomaly_forms(settings: TracerSettings) -> dict[str, dict[str, str]]:
-    """Return, by column, which forms, ratios and relations were taken: metadata of the columns."""
-    ratios = f"ratios {settings.stoichiometry}"
+def dilution_findings(data: Rows, settings: TracerSettings) -> Iterator[Finding]:
+    """Yield a note for samples so fresh that the water that dilutes makes most of what they are normalised to."""
+    salinity, carbon = data.usable("practical_salinity"), data.usable("dic")
+    carbon = np.where(np.isnan(carbon), data.usable("alkalinity"), carbon)
+    least = settings.reference_salinity / _MOST_DILUTED
+    with np.errstate(invalid="ignore"):
+        count = int((~np.isnan(carbon) & (salinity < least)).sum())
+    if count:
+        low, high = POSSIBLE["dic"].low, POSSIBLE["dic"].high
+        yield Finding(
+            "carbon-dilution", Severity.NOTE,
+            f"{count} samples with TCARBN or ALKALI have a salinity below {least:g}, from which dic_normalised,"
+            " alkalinity_normalised and potential_alkalinity are made more than twice as large; expected water that"
+            f" was diluted by less; they hold what the settings take for the water that dilutes"
+            f" (tracers.dic_without_salt {settings.dic_without_salt:g}, tracers.alkalinity_without_salt"
+            f" {settings.alkalinity_without_salt:g} umol/kg), and are missing beyond {low:g} to {high:g} umol/kg.",
+            variable="practical_salinity", limit=f"{least:g}", count=count,
+        )  # fmt: skip
+
+
+def anomaly_forms(settings: TracerSettings, carbonate: CarbonateSettings) -> dict[str, dict[str, str]]:
+    """Return, by column, which forms, ratios and relations were taken, and what its uncertainty holds."""
+    whole = stoichiometry(settings.stoichiometry)
+    ratios, of_ratios = whole.words, whole.uncertainty_words
+    carbon, nitrogen, oxygen = (f"{r.value:g}" for r in (whole.carbon, whole.nitrogen, whole.oxygen))
     reference = f"salinity {settings.reference_salinity:g}"
     taken = alkalinity_per_nitrate(settings.potential_alkalinity)
     per_nitrate = f"{settings.potential_alkalinity}, {taken:g} per nitrate"
@@ -193,10 +246,32 @@ def anomaly_forms(settings: TracerSettings) -> dict[str, dict[str, str]]:
         "dic_normalised": f"{reference}, {settings.dic_without_salt:g} umol kg-1 without salt",
         "alkalinity_normalised": f"{reference}, {settings.alkalinity_without_salt:g} umol kg-1 without salt",
         "potential_alkalinity": f"{per_nitrate}, {reference}",
-        "c_star": ratios,
-        "dic_soft_tissue": ratios,
+        "c_star": f"DIC + {carbon}/{oxygen} O2 - 1/2 (TA - {nitrogen}/{oxygen} O2); {ratios}",
+        "dic_soft_tissue": f"{carbon}/{oxygen} AOU; {ratios}",
         "preformed_alkalinity": preformed,
-        "dic_calcium_carbonate": f"{ratios}, {per_nitrate}, preformed alkalinity {preformed}",
-        "preformed_dic": f"{ratios}, {per_nitrate}, preformed alkalinity {preformed}",
+        "dic_calcium_carbonate": f"{ratios}; {per_nitrate}; preformed alkalinity {preformed}",
+        "preformed_dic": f"{ratios}; {per_nitrate}; preformed alkalinity {preformed}",
     }
-    return {variable.name: {"form": told[variable.name]} for variable in ANOMALIES}
+    dic, alkalinity = (carbon_words((name,), carbonate) for name in ("dic", "alkalinity"))
+    of_oxygen, nitrate, phosphate = (
+        f"{name} {usual_words(name)}" for name in ("oxygen", "nitrate", "phosphate")
+    )
+    relative = "no relation" if relation is None else f"relation {relation.uncertainty:g} umol/kg"
+    of_relation = (
+        f"{relative}, {of_oxygen}, {phosphate}" if relation is not None and relation.per_po else relative
+    )
+    held = {
+        "dic_normalised": f"{dic}; water that dilutes and salinity taken as exact",
+        "alkalinity_normalised": f"{alkalinity}; water that dilutes and salinity taken as exact",
+        "potential_alkalinity": f"{alkalinity}, {nitrate}",
+        "c_star": f"{dic}, {alkalinity}, {of_oxygen}; ratios exact, as C* is defined by them",
+        "dic_soft_tissue": f"{of_oxygen}, {of_ratios}; solubility taken as exact",
+        "preformed_alkalinity": of_relation,
+        "dic_calcium_carbonate": f"{alkalinity}, {of_oxygen}, {of_ratios}, {of_relation}",
+        "preformed_dic": f"{dic}, {alkalinity}, {of_oxygen}, {of_ratios}, {of_relation}",
+    }
+    return {
+        f"{name}{suffix}": {"form": form} | ({"uncertainty": held[name]} if suffix else {})
+        for name, form in told.items()
+        for suffix in ("", "_uncertainty")
+    }

@@ -11,10 +11,11 @@ from pipeline.tracers.carbonate_inputs import NUTRIENTS, SOURCES, Inputs, inputs
 from pipeline.tracers.carbonate_pairs import NO_PAIR, PAIRS, QUANTITIES, Conditions, Measured, pairs_of
 from pipeline.tracers.carbonate_state import carbonate_system
 from pipeline.tracers.equilibria import equilibria
+from pipeline.tracers.uncertainties import carbon_words
 from pipeline.variables import CARBONATE, HORIZONS, Kind
 
 if TYPE_CHECKING:
-    from collections.abc import Mapping
+    from collections.abc import Collection, Mapping
 
     from numpy.typing import NDArray
 
@@ -58,17 +59,74 @@ def system(data: Rows, settings: CarbonateSettings, chunk: int = CHUNK) -> Carbo
         Samples solved at a time, which bounds the memory; the result does not depend on it.
 
     """
+    inputs, pair = _paired(data, settings)
+    columns: dict[str, Any] = {name: np.full(len(data), np.nan) for name in _NUMBERS}
+    _solve(columns, inputs, pair, np.flatnonzero(pair != NO_PAIR), settings, chunk)
+    return _whole(columns, inputs, pair)
+
+
+def solved_again(
+    before: CarbonateSystem, data: Rows, settings: CarbonateSettings, chunk: int = CHUNK
+) -> CarbonateSystem:
+    """Return a carbonate system in which samples are solved anew whose pair may no longer be used.
+
+    Of all others everything stays, also how far a third quantity differs that is not used any more.
+
+    Parameters
+    ----------
+    before
+        The system as it was found.
+    data
+        The same samples with the check flags of now.
+    settings, chunk
+        As of `system`.
+
+    """
+    inputs, pair = _paired(data, settings)
+    rows = np.flatnonzero(pair != before.pair)
+    if not len(rows):
+        return before
+    columns = {name: before.columns[name].copy() for name in _NUMBERS}
+    for values in columns.values():
+        values[rows] = np.nan
+    _solve(columns, inputs, pair, rows[pair[rows] != NO_PAIR], settings, chunk)
+    found = _whole(columns, inputs, pair)
+    unchanged = pair == before.pair
+    for name in ("carbonate_pair", "carbonate_nutrients"):
+        found.columns[name][unchanged] = before.columns[name][unchanged]
+    return found
+
+
+def _paired(data: Rows, settings: CarbonateSettings) -> tuple[Inputs, IntArray]:
+    """Return what may be used of a table, and which pair each sample is solved from."""
     inputs = inputs_of(data, settings)
     pair = pairs_of(*(inputs.quantities[name].values for name in QUANTITIES))
     pair[~inputs.known()] = NO_PAIR
-    columns: dict[str, Any] = {name: np.full(len(data), np.nan) for name in _NUMBERS}
-    rows = np.flatnonzero(pair != NO_PAIR)
-    needed = {name: bool((~np.isnan(inputs.quantities[name].values[rows])).any()) for name in ("ph", "fco2")}
+    return inputs, pair
+
+
+def _whole(columns: dict[str, Any], inputs: Inputs, pair: IntArray) -> CarbonateSystem:
+    """Return the system with its columns of text."""
+    solved = ~np.isnan(columns["ph_in_situ"])
+    columns["carbonate_pair"] = _pair_words(inputs, pair, solved)
+    columns["carbonate_nutrients"] = _nutrient_words(inputs, solved)
+    return CarbonateSystem(columns, inputs, pair)
+
+
+def _solve(
+    columns: dict[str, Any],
+    inputs: Inputs,
+    pair: IntArray,
+    rows: IntArray,
+    settings: CarbonateSettings,
+    chunk: int,
+) -> None:
+    """Write what is found of some rows into the columns."""
     for start in range(0, len(rows), chunk):
         some = rows[start : start + chunk]
-        conditions = _conditions(inputs, some, needed, settings)
+        conditions = conditions_of(inputs, some, settings)
         values, uncertainty = carbonate_system(
-            _measured(inputs, some, conditions),
+            measured_of(inputs, some, conditions),
             pair[some],
             conditions,
             constants_too=settings.constants_uncertainty != "none",
@@ -76,24 +134,31 @@ def system(data: Rows, settings: CarbonateSettings, chunk: int = CHUNK) -> Carbo
         for name, found in values.items():
             columns[name][some] = found
             columns[f"{name}_uncertainty"][some] = uncertainty[name]
-    solved = ~np.isnan(columns["ph_in_situ"])
-    columns["carbonate_pair"] = _pair_words(inputs, pair, solved)
-    columns["carbonate_nutrients"] = _nutrient_words(inputs, solved)
-    return CarbonateSystem(columns, inputs, pair)
 
 
-def carbonate_forms(settings: CarbonateSettings) -> dict[str, dict[str, str]]:
-    """Return, by column, which constants were chosen, and what its uncertainty holds: metadata of the columns."""
+def carbonate_forms(names: Collection[str], settings: CarbonateSettings) -> dict[str, dict[str, str]]:
+    """Return, by column, which constants were chosen, and what its uncertainty holds: metadata of the columns.
+
+    Parameters
+    ----------
+    names
+        Columns of the table, of which the measured quantities are told with their uncertainty.
+    settings
+        Which constants, and how uncertain the measurements are.
+
+    """
     constants = (
         f"constants {settings.carbonic}, boron {settings.borate}, fluoride {settings.fluoride},"
         f" bisulfate {settings.bisulfate}, total scale"
     )
-    held = (
-        "measurements"
+    columns = [column for of_one in SOURCES.values() for column in of_one if column in names]
+    held = f"measurements, one standard uncertainty each: {carbon_words(columns, settings)}; " + (
+        "without the constants, which all samples share"
         if settings.constants_uncertainty == "none"
-        else (f"measurements and constants ({settings.constants_uncertainty})")
+        else f"constants: {settings.constants_uncertainty}"
     )
-    return {
+    order = ", ".join(f"{QUANTITIES[one]}+{QUANTITIES[other]}" for one, other in PAIRS)
+    return {"carbonate_pair": {"form": f"the first that may be used of {order}"}} | {
         v.name: {"form": constants, "uncertainty": held}
         if v.name.endswith("_uncertainty")
         else {"form": constants}
@@ -102,10 +167,9 @@ def carbonate_forms(settings: CarbonateSettings) -> dict[str, dict[str, str]]:
     }
 
 
-def _conditions(
-    inputs: Inputs, rows: IntArray, needed: Mapping[str, bool], settings: CarbonateSettings
-) -> Conditions:
-    """Return constants in situ, and at the temperatures of pH and gas where any sample has them."""
+def conditions_of(inputs: Inputs, rows: IntArray, settings: CarbonateSettings) -> Conditions:
+    """Return constants in situ, and at the temperatures of pH and gas where any sample of the table has them."""
+    needed = {name: bool((~np.isnan(inputs.quantities[name].values)).any()) for name in ("ph", "fco2")}
     salinity, temperature = inputs.salinity[rows], inputs.temperature[rows]
     nutrients = {name: np.nan_to_num(inputs.nutrients[name][rows], nan=0.0) for name in NUTRIENTS}
 
@@ -121,7 +185,7 @@ def _conditions(
     return Conditions(in_situ, of_ph, of_gas)
 
 
-def _measured(inputs: Inputs, rows: IntArray, at: Conditions) -> Measured:
+def measured_of(inputs: Inputs, rows: IntArray, at: Conditions) -> Measured:
     """Return what was measured of some rows, pH on the total scale and the gas as fugacity."""
     found = {name: inputs.quantities[name].values[rows] for name in QUANTITIES}
     uncertainty = {name: inputs.quantities[name].uncertainty[rows] for name in QUANTITIES}

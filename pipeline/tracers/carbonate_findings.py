@@ -1,4 +1,4 @@
-"""What the carbonate system of a cruise has to tell: values it could not use, and values that contradict each other."""
+"""What the carbonate system of a cruise has to tell as a whole: samples it left out, and how far all agree."""
 
 from __future__ import annotations
 
@@ -6,157 +6,106 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from pipeline.checking.marks import Mark, findings_of
+from pipeline.carbonate_settings import CarbonateSettings
+from pipeline.checking.figures import label, named, plain, signed
 from pipeline.findings import Finding, Severity
-from pipeline.tracers.alkalinity import HIGHEST_PH, LOWEST_PH
-from pipeline.tracers.carbonate_inputs import NUTRIENTS, POSSIBLE, SOURCES, TEMPERATURES
-from pipeline.tracers.carbonate_pairs import NO_PAIR, PAIRS, QUANTITIES
-from pipeline.tracers.equilibria import TEMPERATURE, validity
+from pipeline.tracers.carbonate_consistency import RESIDUALS
+from pipeline.tracers.carbonate_inputs import NUTRIENTS, SOURCES
+from pipeline.tracers.carbonate_pairs import NO_PAIR, QUANTITIES, pairs_of
+from pipeline.tracers.equilibria import CARBONIC_NAMES, PRESSURE, SALINITY, TEMPERATURE, VALIDITY, validity
 from pipeline.variables import REGISTRY
 
 if TYPE_CHECKING:
-    from collections.abc import Iterator, Sequence
+    from collections.abc import Iterator
 
-    from pipeline.carbonate_settings import CarbonateSettings
-    from pipeline.tables import FloatArray
+    from numpy.typing import NDArray
+
     from pipeline.tracers.carbonate import CarbonateSystem
     from pipeline.usable import Rows
 
-_RESIDUALS = (("ph_residual", "ph"), ("fco2_residual", "fco2"))
+    BoolArray = NDArray[np.bool_]
 
-
-def carbonate_marks(data: Rows, system: CarbonateSystem, settings: CarbonateSettings) -> tuple[Mark, ...]:
-    """Return what is to be told of single values, as the checks do."""
-    return (
-        *_without_temperature(data, settings),
-        *_impossible(data),
-        *_unsolvable(data, system),
-        *_inconsistent(system, settings),
-    )
+# What constants are computed from, between which limits, and what it is called.
+_CONDITIONS = (
+    ("practical_salinity", SALINITY, "practical salinity", "", "SALNTY or CTDSAL"),
+    ("temperature", TEMPERATURE, "temperature", " degC", "CTDTMP"),
+    ("pressure", PRESSURE, "pressure", " dbar", "CTDPRS"),
+)
+# Below this a difference is written as none, by residual: no measurement shows it.
+_NOTHING = {"ph_residual": 5e-4, "fco2_residual": 0.05}
+_ENOUGH = 20  # samples from which percentiles are told, not the least and the largest
 
 
 def carbonate_findings(
-    data: Rows, marks: Sequence[Mark], system: CarbonateSystem, settings: CarbonateSettings
+    data: Rows, system: CarbonateSystem, settings: CarbonateSettings
 ) -> tuple[Finding, ...]:
     """Return in words what is to be told of the carbonate system of a cruise's samples."""
     return (
-        *findings_of(data, marks),
+        *_left_out(data, system),
         *_agreement(system),
         *_outside_validity(system, settings),
         *_without_nutrients(system),
     )
 
 
-def _without_temperature(data: Rows, settings: CarbonateSettings) -> Iterator[Mark]:
-    """Yield a note for a column whose values do not say at which temperature they were measured."""
-    for column, temperature in TEMPERATURES.items():
-        if column not in data.names:
-            continue
-        assumed = column in settings.assumed_temperature
-        rows = np.flatnonzero(~np.isnan(data.usable(column)) & np.isnan(data.usable(temperature)))
-        if len(rows) and not assumed:
-            words = (
-                "has {value} values without the temperature they were measured at, and they are not used for the"
-                " carbonate system"
-            )
-            limit = f"{_label(temperature)} beside it, or [carbonate.assumed_temperature] in the settings"
-            yield Mark(
-                "carbon-temperature", Severity.NOTE, column, rows, [len(rows)], words, limit, together=True
-            )
-
-
-def _impossible(data: Rows) -> Iterator[Mark]:
-    """Yield a doubt for values and temperatures of measurement that the range check has no limits for."""
-    for column, domain in POSSIBLE.items():
-        if column in data.names and REGISTRY[column].plausible is None:
-            values = data.usable(column)
-            rows = np.flatnonzero(~np.isnan(values) & ~domain.holds(values))
-            if len(rows):
-                limit = f"{domain.low:g} to {domain.high:g} {_unit(column)}".rstrip()
-                yield Mark(
-                    "carbon-range", Severity.DOUBT, column, rows, values[rows].tolist(), "is {value}", limit
-                )
-    for temperature in dict.fromkeys(TEMPERATURES.values()):
-        if temperature in data.names:
-            values = data.usable(temperature)
-            rows = np.flatnonzero(~np.isnan(values) & ~TEMPERATURE.holds(values))
-            if len(rows):
-                limit = f"{TEMPERATURE.low:g} to {TEMPERATURE.high:g} degC"
-                yield Mark(
-                    "carbon-range",
-                    Severity.DOUBT,
-                    temperature,
-                    rows,
-                    values[rows].tolist(),
-                    "is {value}",
-                    limit,
-                )
-
-
-def _unsolvable(data: Rows, system: CarbonateSystem) -> Iterator[Mark]:
-    """Yield a doubt for pairs that no sea water has."""
-    lost = (system.pair != NO_PAIR) & ~system.solved
-    for number, (first, second) in enumerate((QUANTITIES[i], QUANTITIES[j]) for i, j in PAIRS):
-        for column_number, column in enumerate(SOURCES[first]):
-            rows = np.flatnonzero(
-                lost & (system.pair == number) & (system.inputs.quantities[first].column == column_number)
-            )
-            if len(rows):
-                other = system.inputs.quantities[second]
-                beside = [
-                    f"{_written(data.usable(column)[row])} with"
-                    f" {_label(SOURCES[second][other.column[row]])} {_written(other.values[row])}"
-                    for row in rows
-                ]
-                limit = f"two values that sea water of a pH between {LOWEST_PH:g} and {HIGHEST_PH:g} can have"
-                yield Mark("carbon-unsolvable", Severity.DOUBT, column, rows, beside, "is {value}", limit)
-
-
-def _inconsistent(system: CarbonateSystem, settings: CarbonateSettings) -> Iterator[Mark]:
-    """Yield a doubt for values that differ from what the pair gives by more than their uncertainties explain."""
-    for residual, quantity in _RESIDUALS:
-        away, uncertainty = system.columns[residual], system.columns[f"{residual}_uncertainty"]
-        with np.errstate(invalid="ignore"):
-            doubtful = np.abs(away) > settings.consistency * uncertainty
-        for column_number, column in enumerate(SOURCES[quantity]):
-            rows = np.flatnonzero(doubtful & (system.inputs.quantities[quantity].column == column_number))
-            if len(rows):
-                words = "is {value}"
-                values = [
-                    _against(away[row], uncertainty[row], system.columns["carbonate_pair"][row])
-                    for row in rows
-                ]
-                limit = f"at most {settings.consistency:g} combined standard uncertainties"
-                yield Mark("carbon-consistency", Severity.DOUBT, column, rows, values, words, limit)
-
-
-def _against(away: float, uncertainty: float, pair: str) -> str:
-    side = "above" if away > 0 else "below"
-    return (
-        f"{abs(away):.3g} {side} what {' and '.join(_label(name) for name in pair.split('+'))} give,"
-        f" {abs(away) / uncertainty:.1f} combined standard uncertainties of {uncertainty:.2g}"
-    )
+def _left_out(data: Rows, system: CarbonateSystem) -> Iterator[Finding]:
+    """Yield a note for samples that have two quantities and nothing to compute constants from."""
+    paired = pairs_of(*(system.inputs.quantities[name].values for name in QUANTITIES)) != NO_PAIR
+    for name, domain, words, unit, wanted in _CONDITIONS:
+        values = data.usable(name)
+        lost, limits = paired & ~domain.holds(values), f"{domain.low:g} to {domain.high:g}{unit}"
+        missing, outside = int((lost & np.isnan(values)).sum()), int((lost & ~np.isnan(values)).sum())
+        for count, why, expected in (
+            (
+                missing,
+                f"no {words} that may be used",
+                f"{wanted} beside them, there and not flagged or doubted",
+            ),
+            (outside, f"a {words} for which constants are not computed", limits),
+        ):
+            if count:
+                yield Finding(
+                    "carbon-inputs", Severity.NOTE,
+                    f"{count} sample{'s' if count > 1 else ''} with two measured quantities of the carbonate system {'have' if count > 1 else 'has'} {why}; expected"
+                    f" {expected}; their carbonate system was left out.",
+                    variable=name, limit=limits, count=count,
+                )  # fmt: skip
 
 
 def _agreement(system: CarbonateSystem) -> Iterator[Finding]:
     """Yield a note that says how far a third quantity and the pairs agree over the whole cruise."""
-    for residual, quantity in _RESIDUALS:
+    for quantity, residual in RESIDUALS.items():
         away = system.columns[residual]
         rows = np.flatnonzero(~np.isnan(away))
         if not len(rows):
             continue
-        low, middle, high = np.quantile(away[rows], (0.05, 0.5, 0.95))
-        expected = float(np.median(system.columns[f"{residual}_uncertainty"][rows]))
+        enough = len(rows) >= _ENOUGH
+        low, middle, high = (
+            _difference(float(value), residual)
+            for value in np.quantile(away[rows], (0.05, 0.5, 0.95) if enough else (0.0, 0.5, 1.0))
+        )
+        span = "nine of ten lie within" if enough else "they lie within"
+        expected = plain(float(np.median(system.columns[f"{residual}_uncertainty"][rows])), 2)
         unit = "" if quantity == "ph" else " uatm"
-        of_what = "pH" if quantity == "ph" else "fCO2"
+        columns = (
+            SOURCES[quantity][number] for number in np.unique(system.inputs.quantities[quantity].column[rows])
+        )
+        of_what = named([label(column) for column in columns])
         yield Finding(
             "carbon-consistency", Severity.NOTE,
             f"measured {of_what} less what the other measured carbon gives, in {len(rows)} samples that have both:"
-            f" {middle:+.3g}{unit} in the median, from {low:+.3g} to {high:+.3g} in nine of ten; expected a median near"
-            f" zero and a scatter of about {expected:.2g}; an offset of all samples points to a standard, a constant or"
-            " an organic base, not to single bottles.",
-            variable=residual, value=f"{middle:+.3g}", limit=f"{expected:.2g}", count=len(rows),
+            f" {middle}{unit} in the median, and {span} {low} to {high}{unit}; expected a median near zero and a scatter"
+            f" of about {expected}{unit}; an offset of all samples points to a standard, a constant or an organic base,"
+            " not to single bottles.",
+            variable=residual, value=middle, limit=expected, count=len(rows),
         )  # fmt: skip
+
+
+def _difference(value: float, residual: str) -> str:
+    """Return a difference with its sign, in as many digits as a measurement has."""
+    if abs(value) < _NOTHING[residual]:
+        return "0.000" if residual == "ph_residual" else "0.0"
+    return signed(round(value, 4 if residual == "ph_residual" else 1))
 
 
 def _outside_validity(system: CarbonateSystem, settings: CarbonateSettings) -> Iterator[Finding]:
@@ -171,7 +120,7 @@ def _outside_validity(system: CarbonateSystem, settings: CarbonateSettings) -> I
                 f"{count} of {int(solved.sum())} samples lie outside what the constants of {fit.citation} were measured"
                 f" for; expected a salinity of {fit.salinity.low:g} to {fit.salinity.high:g} and"
                 f" {fit.temperature.low:g} to {fit.temperature.high:g} degC; they were computed all the same, by the"
-                " fit as it goes on there; other constants can be chosen in [carbonate] of the settings.",
+                f" fit as it goes on there; {_instead(fit.citation, system, settings)}.",
                 variable="temperature", count=count,
             )  # fmt: skip
 
@@ -191,14 +140,22 @@ def _without_nutrients(system: CarbonateSystem) -> Iterator[Finding]:
             )  # fmt: skip
 
 
-def _label(name: str) -> str:
-    return REGISTRY[name].exchange[0] if REGISTRY[name].exchange else name
-
-
-def _unit(name: str) -> str:
-    unit = REGISTRY[name].unit
-    return "" if unit == "1" else unit
-
-
-def _written(value: FloatArray | float) -> str:
-    return f"{float(value):g}"
+def _instead(citation: str, system: CarbonateSystem, settings: CarbonateSettings) -> str:
+    """Return which other constants were measured for the samples of a cruise, in words."""
+    if citation != VALIDITY[settings.carbonic].citation:
+        hardly = settings.fluoride in VALIDITY and citation == VALIDITY[settings.fluoride].citation
+        return (
+            "that moves a computed pH by at most 0.0004" if hardly else "there is no other choice of it here"
+        )
+    salinity, temperature = system.inputs.salinity[system.solved], system.inputs.temperature[system.solved]
+    part = {
+        name: float(
+            (VALIDITY[name].salinity.holds(salinity) & VALIDITY[name].temperature.holds(temperature)).mean()
+        )
+        for name in CARBONIC_NAMES
+    }
+    best = max(part, key=lambda name: part[name])
+    if part[best] <= part[settings.carbonic]:
+        return "no other constants of carbonic acid here were measured for more of them"
+    whole = "all" if part[best] == 1.0 else f"{part[best]:.0%}"
+    return f'carbonate.carbonic = "{best}" in the settings was measured for {whole} of them'

@@ -11,7 +11,7 @@ import numpy as np
 from pipeline.seawater import Domain
 from pipeline.tracers.alkalinity import HIGHEST_PH, LOWEST_PH
 from pipeline.tracers.equilibria import PRESSURE, SALINITY, TEMPERATURE
-from pipeline.variables import REGISTRY
+from pipeline.tracers.uncertainties import carbon_uncertainty
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
@@ -114,21 +114,10 @@ def _chosen(data: Rows, columns: tuple[str, ...], settings: CarbonateSettings) -
         measured_at = temperature_of(data, column, settings) if column in TEMPERATURES else np.zeros(n_row)
         take = np.isnan(values) & ~np.isnan(own) & ~np.isnan(measured_at)
         values[take], from_column[take] = own[take], number
-        uncertainty[take] = _uncertainty(column, own[take], settings)
+        uncertainty[take] = carbon_uncertainty(column, own[take], settings)
         if column in TEMPERATURES:
             temperature[take] = measured_at[take]
     return Chosen(values, from_column, temperature, uncertainty)
-
-
-def _uncertainty(column: str, values: FloatArray, settings: CarbonateSettings) -> FloatArray:
-    """Return the standard uncertainty of the values of a column, in its unit: the settings', else the registry's."""
-    chosen = cast("Mapping[str, float]", settings.uncertainty)
-    if column in chosen:
-        return np.full(len(values), chosen[column])
-    usual = REGISTRY["ph_total" if column == "ph_seawater" else column].uncertainty
-    if usual is None:
-        return settings.gas_uncertainty * values
-    return np.hypot(usual.absolute, usual.relative * values)
 
 
 def _inside(values: FloatArray, domain: Domain) -> FloatArray:

@@ -11,7 +11,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from pipeline.tracers.alkalinity import LN10, dissociation
-from pipeline.tracers.carbonate_pairs import PAIRS, covariance, propagated, solved, state
+from pipeline.tracers.carbonate_pairs import PAIRS, QUANTITIES, covariance, propagated, solved, state
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
@@ -53,9 +53,17 @@ def carbonate_system(
         dic, alkalinity = solved(measured, pair, conditions)
         in_situ, of_ph, of_gas = _states(dic, alkalinity, conditions)
         spread = covariance(measured, pair, of_ph, of_gas)
-        values = {**_quantities(in_situ), **_residuals(measured, pair, of_ph, of_gas)}
+        values = {
+            **_computed(dic, alkalinity, pair),
+            **_quantities(in_situ),
+            **_residuals(measured, pair, of_ph, of_gas),
+        }
         gradients = _gradients(in_situ, values)
         uncertainty = {name: propagated(gradients[name], spread) for name in gradients}
+        uncertainty["dic_computed"], uncertainty["alkalinity_computed"] = (
+            np.sqrt(spread[0]),
+            np.sqrt(spread[2]),
+        )
         uncertainty["ph_residual"] = np.hypot(
             propagated(of_ph.ln_h_gradient / LN10, spread), measured.uncertainty["ph"]
         )
@@ -70,6 +78,19 @@ def carbonate_system(
     return values, {
         name: np.where(~np.isnan(values[name]) & np.isfinite(u), u, np.nan) for name, u in uncertainty.items()
     }
+
+
+def _computed(dic: FloatArray, alkalinity: FloatArray, pair: IntArray) -> dict[str, FloatArray]:
+    """Return DIC and alkalinity where they are not of the pair themselves, else NaN, (n,)."""
+    return {
+        f"{QUANTITIES[number]}_computed": np.where(_holds(pair, number), np.nan, values)
+        for number, values in enumerate((dic, alkalinity))
+    }
+
+
+def _holds(pair: IntArray, quantity: int) -> NDArray[np.bool_]:
+    """Return where a pair has one of the quantities, by its number, (n,)."""
+    return np.isin(pair, [number for number, members in enumerate(PAIRS) if quantity in members])
 
 
 def _quantities(s: State) -> dict[str, FloatArray]:
@@ -134,9 +155,8 @@ def _residuals(measured: Measured, pair: IntArray, of_ph: State, of_gas: State) 
     """Return measured less computed pH and fCO2 where they were measured beside the pair, else NaN, (n,)."""
     found = {}
     for quantity, of_measured, of_state in ((2, measured.ph, of_ph.ph), (3, measured.fco2, of_gas.fco2)):
-        in_pair = np.isin(pair, [number for number, members in enumerate(PAIRS) if quantity in members])
         found[("ph_residual", "fco2_residual")[quantity - 2]] = np.where(
-            in_pair, np.nan, of_measured - of_state
+            _holds(pair, quantity), np.nan, of_measured - of_state
         )
     return found
 
@@ -158,7 +178,11 @@ def _by_constants(measured: Measured, pair: IntArray, conditions: Conditions) ->
 def _moved(measured: Measured, pair: IntArray, conditions: Conditions) -> dict[str, FloatArray]:
     dic, alkalinity = solved(measured, pair, conditions)
     in_situ, of_ph, of_gas = _states(dic, alkalinity, conditions)
-    return {**_quantities(in_situ), **_residuals(measured, pair, of_ph, of_gas)}
+    return {
+        **_computed(dic, alkalinity, pair),
+        **_quantities(in_situ),
+        **_residuals(measured, pair, of_ph, of_gas),
+    }
 
 
 def _states(dic: FloatArray, alkalinity: FloatArray, conditions: Conditions) -> tuple[State, State, State]:

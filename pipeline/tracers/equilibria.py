@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from pipeline.carbonate_settings import COLDEST, WARMEST
 from pipeline.seawater import Domain
 
 if TYPE_CHECKING:
@@ -24,7 +25,7 @@ if TYPE_CHECKING:
 # Where constants are evaluated at all: wider than the sea. Whether a published fit reaches that far is another
 # matter, and is told by `validity`.
 SALINITY = Domain(1.0, 50.0)
-TEMPERATURE = Domain(-4.0, 45.0)  # degC
+TEMPERATURE = Domain(COLDEST, WARMEST)  # degC
 PRESSURE = Domain(-10.0, 12_000.0)  # dbar
 
 # What PyCO2SYS calls the published constants (its manual, Table 1).
@@ -32,6 +33,7 @@ _CARBONIC = MappingProxyType({"lueker_2000": 10, "sulpis_2020": 16, "roy_1993": 
 _BORATE = MappingProxyType({"uppstrom_1974": 1, "lee_2010": 2})
 _FLUORIDE = MappingProxyType({"dickson_riley_1979": 1, "perez_fraga_1987": 2})
 _BISULFATE = MappingProxyType({"dickson_1990": 1})
+CARBONIC_NAMES = tuple(_CARBONIC)
 _TOTAL_SCALE, _GAS_CONSTANT_CODATA_2018, _NO_BUFFERS, _NO_PRESSURE_ON_GAS = 1, 3, 0, 0
 _ATMOSPHERE = 1.0  # atm
 
@@ -136,7 +138,7 @@ def equilibria(
     ----------
     PyCO2SYS: Humphreys et al. 2022, GMD 15:15. CO2 solubility Weiss 1974; boric acid Dickson 1990; water, phosphoric
     and silicic acid Millero 1995 after Yao and Millero 1995; calcite and aragonite Mucci 1983; pressure Millero 1995.
-    The hydrostatic pressure is in no gas: fCO2 and pCO2 are those of water brought up without warming.
+    The hydrostatic pressure is in no gas: the solubility is that at the surface, under whichever pressure the acids are.
 
     """
     import PyCO2SYS  # noqa: PLC0415 - 70 ms that only a cruise with carbon needs

@@ -7,8 +7,8 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from pipeline.checking.figures import unit_of
 from pipeline.tracers.profiles import crossing, per_station, profiles
-from pipeline.variables import REGISTRY
 
 if TYPE_CHECKING:
     from collections.abc import Callable
@@ -23,6 +23,12 @@ if TYPE_CHECKING:
 
 _FEWEST = 3  # levels: one above, one below
 _ABSURD = 1e6  # of anything, in its unit
+# Of which quantity, the column, and the sign with which it is a minimum.
+_EXTREMES = (
+    ("oxygen", "oxygen_minimum", 1.0),
+    ("phosphate", "phosphate_maximum", -1.0),
+    ("delta_carbon_13", "delta_carbon_13_minimum", 1.0),
+)
 
 
 @dataclass(frozen=True, slots=True)
@@ -34,20 +40,25 @@ class Extreme:
     value: float
 
 
-def minimum(profile: Profile, uncertainties: float) -> Extreme | None:
+def minimum(profile: Profile, rise: float) -> Extreme | None:
     """Return the minimum of a profile, the upper of equal ones; None where the profile does not bracket it.
 
-    It is bracketed where values both above and below exceed it by more than ``uncertainties`` standard
-    uncertainties: a profile that only falls, or one that is level as far as can be measured, has none.
+    It is bracketed where values both above and below exceed it by more than ``rise``, as two neighbouring levels see
+    it: a profile that only falls, or one that is level but for the noise of single bottles, has none. What all bottles
+    of a station have in common, such as an error of the standard, makes no minimum and hides none.
     """
     i = int(np.argmin(profile.value))
     if i in {0, len(profile.value) - 1}:
         return None
     least = float(profile.value[i])
-    rise = min(float(profile.value[:i].max()), float(profile.value[i + 1 :].max())) - least
-    if not rise > uncertainties * float(profile.uncertainty[i]):
+    if not min(_seen_by_two(profile.value[:i]), _seen_by_two(profile.value[i + 1 :])) - least > rise:
         return None
     return Extreme(i, float(profile.depth[i]), least)
+
+
+def _seen_by_two(values: FloatArray) -> float:
+    """Return the most that two neighbouring levels both have; of one level alone what it has."""
+    return float(values[0] if len(values) == 1 else np.minimum(values[:-1], values[1:]).max())
 
 
 def thickness(profile: Profile, at: Extreme, limit: float) -> float:
@@ -90,11 +101,7 @@ def extremes(
 
     """
     columns = {}
-    for name, column, sign in (
-        ("oxygen", "oxygen_minimum", 1.0),
-        ("phosphate", "phosphate_maximum", -1.0),
-        ("delta_carbon_13", "delta_carbon_13_minimum", 1.0),
-    ):
+    for name, column, sign in _EXTREMES:
         found = _of_stations(station, depth, sign * usable(name), name, settings)
         columns[column] = per_station(station, {n: sign * one.value for n, (_, one) in found.items()})
         columns[f"{column}_depth"] = per_station(station, {n: one.depth for n, (_, one) in found.items()})
@@ -106,19 +113,31 @@ def extremes(
     return columns
 
 
+def extreme_forms(settings: ProfileSettings) -> dict[str, dict[str, str]]:
+    """Return, by column, by how much a profile has to rise or fall beside its extreme: metadata of the columns."""
+    told: dict[str, dict[str, str]] = {}
+    for name, column, _ in _EXTREMES:
+        repeats = float(getattr(settings.repeatability, name))
+        words = (
+            f"more than {settings.extreme_rise:g} times {repeats:g} {unit_of(name)}, what one bottle repeats to against"
+            " the next, as two neighbouring levels of the side see it"
+        )
+        told |= {column: {"form": words}, f"{column}_depth": {"form": words}}
+    told["oxygen_minimum_thickness"] = {"form": f"limit {settings.oxygen_minimum:g} umol/kg"}
+    return told
+
+
 def _of_stations(
     station: IntArray, depth: FloatArray, values: FloatArray, name: str, settings: ProfileSettings
 ) -> dict[int, tuple[Profile, Extreme]]:
     """Return profile and minimum of every station that has one."""
     values = np.where(np.abs(values) < _ABSURD, values, np.nan)
-    usual = REGISTRY[name].uncertainty
-    absolute, relative = (usual.absolute, usual.relative) if usual else (0.0, 0.0)
-    uncertainty = np.hypot(absolute, relative * values)
+    rise = settings.extreme_rise * float(getattr(settings.repeatability, name))
     found = {}
     for number, profile in profiles(
-        station, depth, values, uncertainty, same_depth=settings.same_depth, fewest=_FEWEST
+        station, depth, values, np.zeros(len(values)), same_depth=settings.same_depth, fewest=_FEWEST
     ):
-        one = minimum(profile, settings.extreme_uncertainties)
+        one = minimum(profile, rise)
         if one is not None:
             found[number] = (profile, one)
     return found

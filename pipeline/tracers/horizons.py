@@ -32,7 +32,7 @@ class Horizon:
     """Where the saturation state of one profile crosses one from above, the deepest time it does."""
 
     depth: float  # m; NaN where it does not, or between bottles too far apart
-    uncertainty: float
+    uncertainty: float  # m; NaN where saturation, off by its own, crosses one nowhere
     crossings: int  # from above
     gap: float  # m between the two bottles
 
@@ -42,22 +42,33 @@ def horizon(profile: Profile, widest_gap: float) -> Horizon | None:
 
     Linear in depth between the two levels; a level that is at one exactly is the horizon. Where there are several,
     the deepest counts: below it the water stays undersaturated as far as was sampled, or is told by `crossings`.
-    The uncertainty is that of saturation at the horizon over its gradient.
+    What makes saturation uncertain, standards and constants, is much the same in all bottles of a station. The
+    uncertainty is therefore half the distance between the horizons of the whole profile moved down and up by its own.
     """
-    above, below = profile.value[:-1], profile.value[1:]
-    down = np.flatnonzero((above >= SATURATED) & (below < SATURATED))
+    down = _falls(profile.value)
     if not len(down):
         return None
     i = int(down[-1])
     gap = float(profile.depth[i + 1] - profile.depth[i])
     if gap > widest_gap:
         return Horizon(np.nan, np.nan, len(down), gap)
-    ends = tuple((float(profile.depth[j]), float(profile.value[j])) for j in (i, i + 1))
-    depth = crossing(ends[0], ends[1], SATURATED)
-    part = (depth - ends[0][0]) / gap
-    uncertainty = (1.0 - part) * profile.uncertainty[i] + part * profile.uncertainty[i + 1]
-    gradient = (ends[0][1] - ends[1][1]) / gap
-    return Horizon(depth, float(uncertainty / gradient), len(down), gap)
+    upper, lower = (_deepest(profile, profile.value + sign * profile.uncertainty) for sign in (-1.0, 1.0))
+    return Horizon(_deepest(profile, profile.value), 0.5 * abs(lower - upper), len(down), gap)
+
+
+def _falls(saturation: FloatArray) -> IntArray:
+    """Return the levels below which saturation falls below one, (n_crossing,)."""
+    return np.flatnonzero((saturation[:-1] >= SATURATED) & (saturation[1:] < SATURATED))
+
+
+def _deepest(profile: Profile, saturation: FloatArray) -> float:
+    """Return the depth, m, at which saturation falls below one the deepest time; NaN where it does not."""
+    down = _falls(saturation)
+    if not len(down):
+        return float("nan")
+    i = int(down[-1])
+    upper, lower = ((float(profile.depth[j]), float(saturation[j])) for j in (i, i + 1))
+    return crossing(upper, lower, SATURATED)
 
 
 @dataclass(frozen=True, slots=True)
@@ -94,8 +105,13 @@ def horizons(
 def horizon_findings(
     data: Rows, station: IntArray, mineral: str, found: Horizons, settings: ProfileSettings
 ) -> tuple[Finding, ...]:
-    """Return a note of stations whose horizon lies in too wide a gap, and of those that have several."""
+    """Return a note of stations whose horizon lies in too wide a gap, is hardly known, or is one of several."""
     in_gap = [n for n, one in found.of_station.items() if np.isnan(one.depth)]
+    vague = [
+        n
+        for n, one in found.of_station.items()
+        if not np.isnan(one.depth) and not one.uncertainty <= settings.horizon_uncertainty
+    ]
     several = [n for n, one in found.of_station.items() if one.crossings > 1]
     findings = []
     if in_gap:
@@ -108,6 +124,18 @@ def horizon_findings(
                 " was left out.",
                 variable=f"{mineral}_saturation_depth", value=f"{widest:.0f}", limit=f"{settings.gap:g}",
                 count=len(in_gap),
+            )
+        )  # fmt: skip
+    if vague:
+        findings.append(
+            Finding(
+                "saturation-horizon", Severity.NOTE,
+                f"the {mineral} saturation horizon of {_named(data, station, vague)} is hardly known: saturation is so"
+                " near one over so much of the water that its own uncertainty moves the horizon by more than"
+                f" {settings.horizon_uncertainty:g} m, or beyond the bottles; expected less"
+                " (profiles.horizon_uncertainty of the settings); its depth is told all the same, its uncertainty"
+                " where there is one.",
+                variable=f"{mineral}_saturation_depth", limit=f"{settings.horizon_uncertainty:g}", count=len(vague),
             )
         )  # fmt: skip
     if several:

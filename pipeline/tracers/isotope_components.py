@@ -20,8 +20,10 @@ from pipeline.tracers.isotopes import (
     atmosphere_at,
     biological_line,
     enriched,
+    equilibrium_words,
 )
 from pipeline.tracers.oxygen import FIT_TEMPERATURE
+from pipeline.tracers.uncertainties import usual_uncertainty, usual_words
 from pipeline.variables import REGISTRY
 
 if TYPE_CHECKING:
@@ -120,8 +122,7 @@ def _measured_uncertainty(data: Rows, name: str, values: FloatArray) -> FloatArr
 
     An error that is delivered often holds the mass spectrometer's part alone (common practice, no source).
     """
-    usual = REGISTRY[name].uncertainty
-    expected = np.zeros(len(values)) if usual is None else np.hypot(usual.absolute, usual.relative * values)
+    expected = usual_uncertainty(name, values)
     told = data.usable(f"{name}_error") if f"{name}_error" in data.names else np.full(len(values), np.nan)
     return np.where(_ERROR.holds(told), np.maximum(told, expected), expected)
 
@@ -141,18 +142,22 @@ def _inside(values: FloatArray, domain: Domain) -> FloatArray:
 def _forms(settings: TracerSettings) -> dict[str, dict[str, str]]:
     """Return, by column, which forms and constants were taken and what its uncertainty holds."""
     line = biological_line(settings)
-    air = ", ".join(
-        f"{year} {value:g}" for year, value in sorted(settings.atmosphere_delta_carbon_13.items())
-    )
-    if len(settings.atmosphere_delta_carbon_13) == 1:
-        air = air.split()[1]
-    equilibrium = f"{settings.equilibrium_carbon_13}; atmosphere {air} per mil, of the year of the sample"
+    of_air = settings.atmosphere_delta_carbon_13
+    if isinstance(of_air, dict):
+        by_year = ", ".join(f"{year} {value:g}" for year, value in sorted(of_air.items()))
+        air = f"{by_year} per mil, linear between, at the year of the sample"
+    else:
+        air = f"{of_air:g} per mil in all years"
+    equilibrium = f"{equilibrium_words(settings.equilibrium_carbon_13)}; atmosphere {air}"
     of_equilibrium = "constants of the fit, carbonate system, temperature; the atmosphere is taken as exact"
+    carbon, phosphate = (usual_words(name) for name in (MEASURED, "phosphate"))
+    of_carbon = f"carbon-13 {carbon}, or its delivered error where that is larger"
+    holds = line.holds.replace("phosphate", f"phosphate {phosphate}", 1)
     told = {
         "equilibrium": (equilibrium, of_equilibrium),
-        "biological": (line.words, line.holds),
-        "air_sea": (line.words, f"carbon-13, {line.holds}"),
-        "disequilibrium": (equilibrium, f"carbon-13, {of_equilibrium}"),
+        "biological": (line.words, holds),
+        "air_sea": (line.words, f"{of_carbon}; {holds}"),
+        "disequilibrium": (equilibrium, f"{of_carbon}; {of_equilibrium}"),
     }
     return {
         f"{MEASURED}_{part}{suffix}": {"form": form} if not suffix else {"form": form, "uncertainty": holds}
@@ -180,14 +185,16 @@ def _told(
             )  # fmt: skip
     by_year = settings.atmosphere_delta_carbon_13
     solved = ~np.isnan(columns[f"{MEASURED}_equilibrium"])
-    if len(by_year) > 1 and solved.any():
+    if isinstance(by_year, dict) and solved.any():
         beyond = solved & ((years < min(by_year)) | (years > max(by_year)))
         if beyond.any():
             yield Finding(
                 "isotope-atmosphere", Severity.NOTE,
                 f"{int(beyond.sum())} of {n_delta} samples with a DELC13 are of {_span(years[beyond])}, beyond the"
                 f" years that the settings have an atmosphere for; expected {min(by_year)} to {max(by_year)}; the"
-                " nearest year stands for them; add theirs to tracers.atmosphere_delta_carbon_13.",
+                " nearest year stands for them; give theirs in the settings, as in [tracers]"
+                f" atmosphere_delta_carbon_13 = {{{int(cast('float', years[beyond].min()))} = ...}}, which is added to"
+                " those.",
                 variable=f"{MEASURED}_equilibrium", count=int(beyond.sum()),
             )  # fmt: skip
 
@@ -200,7 +207,7 @@ def _validity(temperature: FloatArray, columns: Mapping[str, FloatArray]) -> Ite
         yield Finding(
             "isotope-validity", Severity.NOTE,
             f"{int(outside.sum())} of {int(solved.sum())} samples have a {MEASURED}_equilibrium outside the"
-            f" temperatures of Zhang et al. 1995; expected {MEASURED_FROM:g} to {MEASURED_TO:g} degC (from memory);"
+            f" temperatures of Zhang et al. 1995; expected {MEASURED_FROM:g} to {MEASURED_TO:g} degC;"
             " the fit was taken to go on there.",
             variable=f"{MEASURED}_equilibrium", count=int(outside.sum()),
         )  # fmt: skip

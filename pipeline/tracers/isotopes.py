@@ -6,6 +6,7 @@ NaN out.
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 from enum import StrEnum
 from types import MappingProxyType
@@ -17,7 +18,7 @@ from pipeline.tracers.choices import chosen
 from pipeline.tracers.stoichiometry import stoichiometry
 
 if TYPE_CHECKING:
-    from collections.abc import Callable, Mapping
+    from collections.abc import Callable
 
     from pipeline.settings import TracerSettings
     from pipeline.tables import FloatArray
@@ -182,11 +183,11 @@ def enriched(delta: FloatArray, enrichment: FloatArray) -> FloatArray:
     return delta + enrichment + delta * enrichment / 1000.0
 
 
-def atmosphere_at(years: FloatArray, by_year: Mapping[int, float]) -> FloatArray:
+def atmosphere_at(years: FloatArray, air: float | Mapping[int, float]) -> FloatArray:
     """Return carbon-13 of the carbon dioxide of the air, per mil, linear between years and constant beyond them."""
-    known = sorted(by_year)
-    if len(known) == 1:
-        return np.full(np.shape(years), by_year[known[0]])
+    if not isinstance(air, Mapping):
+        return np.full(np.shape(years), air)
+    by_year, known = air, sorted(air)
     found: FloatArray = np.interp(years, known, [by_year[year] for year in known])
     return found
 
@@ -253,10 +254,28 @@ def biological_line(settings: TracerSettings) -> BiologicalLine:
     at_mean = constant + SLOPE_LYNCH_STIEGLITZ_1995 * settings.mean_phosphate
     intercept = at_mean - slope * settings.mean_phosphate
     words = (
-        f"{intercept:.4g} {slope:+.5g} PO4 per mil; {words}; constant {constant:g} ({settings.biological_constant}) for"
-        f" {SLOPE_LYNCH_STIEGLITZ_1995:g}, turned about PO4 {settings.mean_phosphate:g} umol kg-1"
+        f"{intercept:.4g} {slope:+.5g} PO4 per mil; {words}; {constant:g} {SLOPE_LYNCH_STIEGLITZ_1995:+g} PO4"
+        f" ({settings.biological_constant})"
     )
+    if slope != SLOPE_LYNCH_STIEGLITZ_1995:
+        words += f", re-sloped so that it keeps its value at PO4 {settings.mean_phosphate:g} umol kg-1"
     return BiologicalLine(intercept, slope, uncertainty, settings.mean_phosphate, words, holds)
+
+
+def equilibrium_words(name: str) -> str:
+    """Return a form of equilibrium with its coefficients, as they stand in metadata: T in degC, f parts of DIC."""
+    match EquilibriumForm(name):
+        case EquilibriumForm.ZHANG_1995_SPECIES:
+            terms = (("f(CO2)", AQUEOUS_CO2), ("f(HCO3)", BICARBONATE), ("f(CO3)", CARBONATE))
+            words = " + ".join(f"{part} ({_written(line)})" for part, line in terms)
+        case form:
+            fit = DIC_ZHANG_1995 if form is EquilibriumForm.ZHANG_1995 else DIC_ZHANG_1995_ABSTRACT
+            words = f"{fit.carbonate:g} T f(CO3) {_written(fit.line)}"
+    return f"{name}: enrichment {words} per mil"
+
+
+def _written(line: Line) -> str:
+    return f"{line.slope:+g} T {line.intercept:+g}"
 
 
 def organic_delta(settings: TracerSettings) -> float:

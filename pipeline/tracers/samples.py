@@ -5,13 +5,15 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
-from pipeline.checking.marks import raised
+from pipeline.checking.marks import findings_of, raised
 from pipeline.tables import with_columns
-from pipeline.tracers.anomalies import anomalies, anomaly_forms
-from pipeline.tracers.carbonate import carbonate_forms, system
-from pipeline.tracers.carbonate_findings import carbonate_findings, carbonate_marks
+from pipeline.tracers.anomalies import anomalies, anomaly_forms, dilution_findings
+from pipeline.tracers.carbonate import carbonate_forms, solved_again, system
+from pipeline.tracers.carbonate_consistency import disagreements
+from pipeline.tracers.carbonate_findings import carbonate_findings
 from pipeline.tracers.carbonate_inputs import measured_here
-from pipeline.tracers.extremes import extremes
+from pipeline.tracers.carbonate_marks import input_marks, system_marks
+from pipeline.tracers.extremes import extreme_forms, extremes
 from pipeline.tracers.horizons import MINERALS, horizon_findings, horizons
 from pipeline.tracers.isotope_components import MEASURED as CARBON_13
 from pipeline.tracers.isotope_components import components
@@ -52,27 +54,33 @@ def sample_tracers(data: Rows, settings: Settings) -> SampleTracers:
     """
     station, depth = station_groups(data.table), data.usable("depth")
     columns: dict[str, Any] = dict(extremes(station, depth, data.usable, settings.profiles))
-    forms: dict[str, Mapping[str, str]] = {
-        "oxygen_minimum_thickness": {"form": f"limit {settings.profiles.oxygen_minimum:g} umol kg-1"}
-    }
-    findings: tuple[Finding, ...] = ()
+    forms: dict[str, Mapping[str, str]] = dict(extreme_forms(settings.profiles))
+    marks = input_marks(data, settings.carbonate)
+    findings = tuple(findings_of(data, marks))
+    columns |= raised(data, marks)
     if measured_here(data.names):
-        carbon = system(data, settings.carbonate)
-        columns |= carbon.columns
-        marks = carbonate_marks(data, carbon, settings.carbonate)
-        findings = carbonate_findings(data, marks, carbon, settings.carbonate)
-        doubted = raised(data, marks)
-        columns |= doubted
+        first = system(data, settings.carbonate)
+        disagreeing = disagreements(data, first, settings.carbonate)
+        contradicting = system_marks(data, first, disagreeing, settings.carbonate)
+        findings += (
+            *findings_of(data, contradicting),
+            *carbonate_findings(data, first, settings.carbonate),
+        )
+        columns |= raised(data, [*marks, *contradicting])
+        doubted = {name: columns[name] for name in columns if name in data.names}
         data = Rows(with_columns(data.table, doubted), settings.use)
+        carbon = solved_again(first, data, settings.carbonate)
+        columns |= carbon.columns
         for mineral in MINERALS:
             of_mineral = horizons(station, depth, *_saturation(carbon, mineral), settings.profiles)
             columns[f"{mineral}_saturation_depth"] = of_mineral.depth
             columns[f"{mineral}_saturation_depth_uncertainty"] = of_mineral.uncertainty
             findings += horizon_findings(data, station, mineral, of_mineral, settings.profiles)
-        forms |= carbonate_forms(settings.carbonate)
+        forms |= carbonate_forms(data.names, settings.carbonate)
     if {"dic", "alkalinity"} & data.names:
-        columns |= anomalies(data, settings.tracers)
-        forms |= anomaly_forms(settings.tracers)
+        columns |= anomalies(data, settings.tracers, settings.carbonate)
+        forms |= anomaly_forms(settings.tracers, settings.carbonate)
+        findings += tuple(dilution_findings(data, settings.tracers))
     if CARBON_13 in data.names:
         of_carbon_13 = components(data, columns, settings.tracers)
         columns |= of_carbon_13.columns

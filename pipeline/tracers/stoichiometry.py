@@ -61,6 +61,19 @@ class Stoichiometry:
         """Moles of nitrate freed per mole of oxygen taken up."""
         return self.nitrogen.value / self.oxygen.value
 
+    @property
+    def words(self) -> str:
+        """The set and its ratios, as they stand in metadata."""
+        whole = ":".join(f"{ratio.value:g}" for ratio in (self.nitrogen, self.carbon, self.oxygen))
+        return f"ratios {self.name}, P:N:C:-O2 1:{whole}"
+
+    @property
+    def uncertainty_words(self) -> str:
+        """The published uncertainties of the ratios, as they stand in metadata."""
+        ratios = (("N", self.nitrogen), ("C", self.carbon), ("-O2", self.oxygen))
+        told = ", ".join(f"{name} {r.uncertainty:g}" for name, r in ratios if r.uncertainty is not None)
+        return f"ratios ({told})" if told else "ratios taken as exact"
+
 
 _READ, _MEMORY = Status.VERIFIED, Status.FROM_MEMORY
 

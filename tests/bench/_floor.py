@@ -2,8 +2,8 @@
 
 pyarrow reads each delivered table; gsw makes the TEOS-10 columns that ``samples`` holds; five Parquet tables are
 written with the archive's columns, codec and options. What a column holds that needs more than that (checks, tracers,
-mixing) is taken from a cruise of an archive made before. Nothing is checked, no cell is questioned, no row is counted,
-no byte is kept or hashed, and nothing reaches the disk before the next file is begun.
+mixing) is taken from a cruise of the same columns in an archive made before. Nothing is checked, no cell is questioned,
+no row is counted, no byte is kept or hashed, and nothing waits for the disk.
 """
 
 from __future__ import annotations
@@ -45,12 +45,17 @@ def main(arguments: list[str]) -> None:
         data = file.read_bytes()
         names = tuple(data.split(b"\n", _ABOVE)[2].decode().split(","))
         if names not in made:
-            made[names] = _tables(archive, file.name.removesuffix("_hy1.csv"))
+            made[names] = _tables(archive, names)
         _one(file.stem, names, data, made[names], out)
 
 
-def _tables(archive: Path, expocode: str) -> dict[str, pa.Table]:
-    return {name: pq.read_table(archive / name / f"{expocode}.parquet") for name in TABLE_NAMES}
+def _tables(archive: Path, names: tuple[str, ...]) -> dict[str, pa.Table]:
+    """Return the tables of a cruise that was delivered with these columns."""
+    own = {_ours(name) for name in names}
+    for path in sorted((archive / "samples").iterdir()):
+        if own <= set(pq.read_schema(path).names):
+            return {table: pq.read_table(archive / table / path.name) for table in TABLE_NAMES}
+    raise SystemExit(f"{archive}: no cruise in it has the columns {', '.join(sorted(own))}")
 
 
 def _one(name: str, names: tuple[str, ...], data: bytes, made: dict[str, pa.Table], out: Path) -> None:

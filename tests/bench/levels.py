@@ -46,7 +46,7 @@ def cast_text(cruise: str, station: int, levels: int, seed: int) -> bytes:
     csv.write_csv(table, body, csv.WriteOptions(include_header=False))
     header = [
         "CTD,20260101INVENTED", "NUMBER_HEADERS = 10", f"EXPOCODE = {cruise}", "SECT_ID = V01",
-        f"STNNBR = {station}", "CASTNO = 1", f"DATE = 2009{1 + station // 700:02d}{1 + station // 25 % 28:02d}",
+        f"STNNBR = {station}", "CASTNO = 1", f"DATE = 2009{1 + station // 672:02d}{1 + station // 24 % 28:02d}",
         f"TIME = {station % 24:02d}00", f"LATITUDE = {-35 + station * 0.005:.4f}", "LONGITUDE = -12.2500",
         f"DEPTH = {2 * levels + 100}",
         "CTDPRS,CTDPRS_FLAG_W,CTDTMP,CTDTMP_FLAG_W,CTDSAL,CTDSAL_FLAG_W,CTDOXY,CTDOXY_FLAG_W",
@@ -78,6 +78,7 @@ def measure(cruises: int, zips: int, casts: int, levels: int) -> None:
         size = sum(deliver(inbox, f"ZZV{c}20090101", zips, casts, levels) for c in range(1, cruises + 1))
         made = time.monotonic() - began
         total = cruises * zips * casts * levels
+        before = resource.getrusage(resource.RUSAGE_CHILDREN)
         began = time.monotonic()
         code = "import sys; from flows.cli import main; sys.exit(main(sys.argv[1:]))"
         subprocess.run(
@@ -91,10 +92,14 @@ def measure(cruises: int, zips: int, casts: int, levels: int) -> None:
             f"{cruises} cruises x {zips} zips x {casts} casts x {levels} levels = {total / 1e6:g} million levels,"
             f" {size / MEGABYTE:.0f} MB delivered (made in {made:.0f} s): {seconds:.1f} s,"
             f" {total / seconds:,.0f} levels/s,"
-            f" {usage.ru_utime + usage.ru_stime:.1f} s CPU, peak {usage.ru_maxrss / 1024:.0f} MB,"
+            f" {_cpu(usage) - _cpu(before):.1f} s CPU, peak {usage.ru_maxrss / 1024:.0f} MB,"
             f" tables {kept / MEGABYTE:.0f} MB",
             flush=True,
         )
+
+
+def _cpu(usage: resource.struct_rusage) -> float:
+    return usage.ru_utime + usage.ru_stime
 
 
 def main(arguments: list[str]) -> None:

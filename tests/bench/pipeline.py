@@ -1,7 +1,8 @@
 """A whole run over many invented cruises: CPU beside the floor, peak memory, the night after, two workers.
 
 Each run is ``seawhence run`` in a process of its own. The floor (``_floor.py``) does the bare work of the same files
-with the same tables written, right after the run that it is compared with.
+with the same tables written, before and after the run that it is compared with: how much CPU a process takes depends
+on what else the machine does.
 """
 
 from __future__ import annotations
@@ -72,19 +73,23 @@ def _measure(place: Path, cruises: int, carbon_every: int) -> None:
         f"{made.cruises} cruises, {made.rows} bottle rows of {made.columns} columns, {made.size / 1e6:.0f} MB as"
         f" exchange files; every {carbon_every}th cruise has carbon. Load average {_load()}"
     )
-    write_inbox(few, 2, 2)
-    _run(few, place / "compiling")  # kernels that no run before this one has compiled
-
     settings = place / "settings.toml"
     settings.write_text("[mixing]\nmembers = 0\n", encoding="utf-8")
-    plain = _run(inbox, place / "plain", "--settings", str(settings))
-    floor = _floor(inbox, place / "plain", place / "floor")
-    _tell("without ensembles", plain, floor, cruises)
+    write_inbox(few, 2, 2)  # one with carbon, one without: the floor's pattern; and kernels are compiled
+    without = ("--settings", str(settings))
+    _run(few, place / "pattern of plain", *without)
+    _run(few, place / "pattern of whole")
+
+    floors = [_floor(inbox, place / "pattern of plain", place / "floor")]
+    plain = _run(inbox, place / "plain", *without)
+    floors.append(_floor(inbox, place / "pattern of plain", place / "floor"))
+    of_plain = _tell("without ensembles", plain, floors, cruises)
+    floors = [_floor(inbox, place / "pattern of whole", place / "floor")]
     whole = _run(inbox, place / "whole")
-    floor_of_whole = _floor(inbox, place / "whole", place / "floor")
-    _tell("with 100-member ensembles", whole, floor_of_whole, cruises)
-    print(f"floor ratio: {plain.cpu / floor.cpu:.2f}")
-    print(f"floor ratio with ensembles: {whole.cpu / floor_of_whole.cpu:.2f}")
+    floors.append(_floor(inbox, place / "pattern of whole", place / "floor"))
+    of_whole = _tell("with 100-member ensembles", whole, floors, cruises)
+    print(f"floor ratio: {of_plain:.2f}")
+    print(f"floor ratio with ensembles: {of_whole:.2f}")
     print(f"peak memory MB: {max(plain.memory, whole.memory):.0f}")
 
     again = _run(inbox, place / "whole", code=COUNTED)
@@ -155,12 +160,15 @@ def _spent(command: list[str]) -> Spent:
     return Spent(used.ru_utime + used.ru_stime, wall, used.ru_maxrss / 1024, words)
 
 
-def _tell(what: str, run: Spent, floor: Spent, cruises: int) -> None:
+def _tell(what: str, run: Spent, floors: list[Spent], cruises: int) -> float:
+    """Print what a run and the floors before and after it took, and return the run's CPU over their mean."""
+    mean = sum(floor.cpu for floor in floors) / len(floors)
     print(
-        f"{what}: {run.cpu:.1f} s of CPU, {1e3 * run.cpu / cruises:.1f} ms a cruise, {run.wall:.0f} s; the floor"
-        f" {floor.cpu:.1f} s, {1e3 * floor.cpu / cruises:.1f} ms a cruise; peak memory {run.memory:.0f} MB; load"
-        f" average {_load()}"
+        f"{what}: {run.cpu:.1f} s of CPU, {1e3 * run.cpu / cruises:.1f} ms a cruise, {run.wall:.0f} s; the floor before"
+        f" and after {' and '.join(f'{1e3 * floor.cpu / cruises:.1f}' for floor in floors)} ms a cruise; peak memory"
+        f" {run.memory:.0f} MB; load average {_load()}"
     )
+    return run.cpu / mean
 
 
 def _hashes(archive: Path) -> dict[str, str]:

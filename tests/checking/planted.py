@@ -19,6 +19,7 @@ from tests.checking.cases import (
     restless_casts,
     restless_samples,
 )
+from tests.checking.planted_casts import offset_sensitivity
 from tests.checking.planted_profiles import end_sensitivity, sensitivity
 from tests.checking.planted_repeats import stuck_sensitivity
 
@@ -27,7 +28,7 @@ if TYPE_CHECKING:
 
     import pyarrow as pa
 
-MODULES = ("planted_delivery", "planted_profiles", "planted_repeats", "planted_chemistry")
+MODULES = ("planted_delivery", "planted_profiles", "planted_repeats", "planted_chemistry", "planted_casts")
 HEADINGS = (
     "check",
     "planted",
@@ -90,6 +91,7 @@ def report() -> list[str]:
             "Deepest bottles 10, 30 and 100 spike limits off, found by gradient",
             end_sensitivity((10.0, 30.0, 100.0)),
         ),
+        ("Casts of which a nutrient is 3, 5 and 10 % too high, found", offset_sensitivity((0.03, 0.05, 0.1))),
         ("Values repeated in 4, 6 and 10 bottles anywhere in a cast, found", stuck_sensitivity((4, 6, 10))),
     ):
         lines.append(f"{title}:")

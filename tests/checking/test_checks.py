@@ -37,11 +37,12 @@ def test_a_clean_cruise_raises_nothing() -> None:
 SPEAKING = [
     (
         {"SALNTY": "12623", "SALNTY_FLAG_W": "2"}, "gross-range", "bottle_salinity", 4,
-        "cruise_hy1.csv, line 5: SALNTY is 12623; expected 0 to 42.",
+        "cruise_hy1.csv, line 5: SALNTY is 12623, off by more than the whole range of sea water; expected 0 to 42.",
     ),
     (
         {"OXYGEN": "-7934", "OXYGEN_FLAG_W": "2"}, "gross-range", "bottle_oxygen", 4,
-        "cruise_hy1.csv, line 5: OXYGEN is -7934; expected 0 to 500 umol kg-1.",
+        "cruise_hy1.csv, line 5: OXYGEN is -7934, off by more than the whole range of sea water; expected 0 to 500"
+        " umol/kg.",
     ),
     (
         {"NITRAT": "-999", "NITRAT_FLAG_W": "2"}, "flag-without-value", "nitrate", 9,
@@ -51,15 +52,18 @@ SPEAKING = [
     (
         {"NITRAT_FLAG_W": "9"}, "value-under-missing-flag", "nitrate", 3,
         "cruise_hy1.csv, line 5: NITRAT is 30 under a flag that says there is no value; expected no value, or another"
-        " flag.",
+        " flag; it is not used.",
     ),
     (
         {"NITRAT_FLAG_W": "65"}, "unknown-flag", "nitrate", 3,
-        "cruise_hy1.csv, line 5: NITRAT has flag 65; expected a WHP water-sample flag, 1 to 9.",
+        "cruise_hy1.csv, line 5: NITRAT has flag 65; expected a WHP water-sample flag, 1 to 9; values under it are"
+        " not used.",
     ),
     (
         {"SAMPNO": "1"}, "duplicate-sample", "sample", None,
-        "cruise_hy1.csv, line 5: SAMPNO 1 stands already in this cast; expected each sample number once in a cast.",
+        "cruise_hy1.csv, line 5: SAMPNO 1 stands already on line 4 of this cast, and the two rows differ in BTLNBR;"
+        " expected each sample number once in a cast; both rows are kept and used: take one out, or give it the number"
+        " that it has.",
     ),
 ]  # fmt: skip
 
@@ -110,14 +114,79 @@ def test_flag_eight_is_a_water_flag_and_no_ctd_flag() -> None:
 def test_a_whole_parameter_flagged_bad_is_told_once() -> None:
     finding = only(checked(*[{"NITRAT_FLAG_W": "4"}] * 12))
     assert (finding.check, finding.severity) == ("all-flagged-bad", Severity.NOTE)
+    assert "has 12 values and none under a good flag (all have flag 4)" in finding.message
+
+
+def test_a_part_of_a_parameter_under_another_flag_is_most_of_it() -> None:
+    finding = only(checked(*[{"NITRAT_FLAG_W": "4"}] * 11, {"NITRAT_FLAG_W": "3"}))
     assert "has 12 values and none under a good flag (most have flag 4)" in finding.message
 
 
+def test_what_is_said_of_many_rows_is_said_once() -> None:
+    finding = only(checked({}, *[{"NITRAT_FLAG_W": "0"}] * 70))
+    assert (finding.count, finding.line, finding.sample) == (70, 5, None)
+    assert finding.message == (
+        "cruise_hy1.csv, lines 5 to 74: NITRAT has flag 0 in 70 rows; expected a WHP water-sample flag, 1 to 9; values"
+        " under it are not used."
+    )
+
+
+def test_flags_that_make_a_whole_parameter_useless_are_told_once() -> None:
+    assert only(checked(*[{"NITRAT_FLAG_W": "0"}] * 12)).check == "unknown-flag"
+
+
 def test_many_findings_of_one_kind_end_in_one_sentence() -> None:
-    findings = checked({}, *[{"NITRAT_FLAG_W": "65"}] * 70).findings
+    findings = checked({}, *[{"OXYGEN": f"{600 + i}"} for i in range(70)]).findings
     assert len(findings) == 51
     assert sum(finding.count for finding in findings) == 70
-    assert "(and 19 more rows)" in findings[-1].message
+    assert "lines 55 to 74: OXYGEN is 650 (and 19 more rows)" in findings[-1].message
+
+
+@pytest.mark.parametrize("code", ["-9", "-99.0", "99.99", "9999"])
+def test_a_code_for_missing_is_called_that(code: str) -> None:
+    finding = only(checked({}, {"NITRAT": code}))
+    assert (finding.check, finding.severity) == ("gross-range", Severity.FAULT)
+    assert finding.message == (
+        f"cruise_hy1.csv, line 5: NITRAT is {float(code):g}, which looks like a code for a missing value; expected -0.1"
+        " to 47 umol/kg, or a missing value under flag 9."
+    )
+
+
+def test_a_pressure_that_no_sea_has_is_told_with_the_sea_floor() -> None:
+    finding = only(checked({}, {"CTDPRS": "15964"}))
+    assert "CTDPRS is 15964 where the sea floor is at 4100 m; expected 0 to 10000 dbar." in finding.message
+
+
+def test_rows_that_are_the_same_are_called_that() -> None:
+    finding = only(checked({}, {"SAMPNO": "1", "BTLNBR": "1"}))
+    assert (
+        "stands already on line 4 of this cast, and the two rows are the same in all columns"
+        in finding.message
+    )
+
+
+def test_a_wrong_year_is_told_once() -> None:
+    rows = [
+        {"STNNBR": str(i), "LATITUDE": f"{-35 - i / 60:.4f}", "DATE": f"201902{10 + i}"} for i in range(9)
+    ]
+    finding = only(checked(*rows))
+    assert (finding.check, finding.count) == ("departure-date", 9)
+    assert finding.message.startswith("cruise_hy1.csv, lines 4 to 12: TIME lies 3648 days after")
+    assert "in 9 casts; expected" in finding.message
+
+
+def test_a_wrong_time_of_a_cast_is_told_once() -> None:
+    near = [{"STNNBR": str(i), "LATITUDE": f"{-35.5 - i}", "DATE": f"2009021{i}"} for i in range(4, 9)]
+    late = {**near[2], "DATE": "20090219"}
+    findings = checked(*near[:3], late, *near[3:]).findings
+    assert [(f.check, f.severity, f.line) for f in findings] == [("cast-time", Severity.DOUBT, 6)]
+
+
+def test_a_time_that_fits_neither_the_list_nor_the_ship_is_a_doubt_told_once() -> None:
+    rows = [{"STNNBR": str(i), "LATITUDE": f"{-30.0 - i}", "DATE": f"200902{14 + i}"} for i in range(8)]
+    rows[5] = {**rows[5], "DATE": "20090215", "TIME": "1000"}
+    (finding,) = checked(*rows).findings
+    assert (finding.check, finding.severity, finding.station) == ("clock-order", Severity.DOUBT, "5")
 
 
 def test_a_station_name_used_at_two_places() -> None:
@@ -171,10 +240,12 @@ def test_a_cast_that_goes_one_way_is_in_order(order: tuple[int, ...]) -> None:
 
 
 def test_ctd_findings_of_one_cast_are_told_together() -> None:
-    levels = [f"{p:.1f},2,99.0,2,35.5,2" for p in range(0, 400, 10)]
+    levels = [f"{p:.1f},2,{100 + p / 100},2,35.5,2" for p in range(0, 400, 10)]
     finding = only(check(read(cast_file(levels), "cast_ct1.csv").table, SETTINGS))
     assert (finding.check, finding.count) == ("gross-range", 40)
-    assert "(and 39 more rows)" in finding.message
+    assert finding.message.startswith(
+        "cast_ct1.csv, lines 14 to 53: CTDTMP is 100, off by more than the whole range of sea water (and 39 more rows);"
+    )
 
 
 def test_a_station_out_of_the_way_is_told_and_not_the_one_after_it() -> None:
@@ -199,7 +270,7 @@ def test_the_sentence_of_a_sea_floor_above_a_sample() -> None:
     finding = only(checked({}, {"CTDPRS": "4300.0"}, {"CTDPRS": "4100.0"}))
     assert (finding.check, finding.line) == ("bottom-depth", 5)
     assert (
-        "DEPTH is 4100 m, and a sample of the cast lies at 4226 m; expected a sea floor below"
+        "DEPTH is 4100 m, and the sample at CTDPRS 4300 of the cast would lie at 4226 m; expected a sea floor below"
         in finding.message
     )
 

@@ -7,15 +7,16 @@ import sys
 
 import pytest
 
-import pipeline.checking
-from pipeline.checking import CHECKS
-from pipeline.checking.table import CheckEntry, described_limit, markdown
+from pipeline.checking import CHECKS, CONCLUSIONS
+from pipeline.checking.table import CheckEntry, ConclusionEntry, described_limit, markdown
 from pipeline.settings import CheckSettings
 
+EVERY: dict[str, CheckEntry | ConclusionEntry] = {**CHECKS, **CONCLUSIONS}
 
-@pytest.mark.parametrize("entry", CHECKS.values(), ids=lambda entry: entry.name)
-def test_each_check_is_listed_with_what_it_takes(entry: CheckEntry) -> None:
-    assert CHECKS[entry.name] is entry
+
+@pytest.mark.parametrize("entry", EVERY.values(), ids=lambda entry: entry.name)
+def test_each_check_is_listed_with_what_it_takes(entry: CheckEntry | ConclusionEntry) -> None:
+    assert EVERY[entry.name] is entry
     assert entry.name == entry.name.lower().replace("_", "-")
     assert entry.looks_for
     assert entry.severities
@@ -34,9 +35,9 @@ def test_every_limit_is_described_with_its_source() -> None:
 
 
 def test_the_table_holds_every_check() -> None:
-    lines = markdown(CHECKS.values()).splitlines()
-    assert len(lines) == 2 + len(CHECKS)
-    assert [line.split("`")[1] for line in lines[2:]] == sorted(CHECKS)
+    lines = markdown(EVERY.values()).splitlines()
+    assert len(lines) == 2 + len(CHECKS) + len(CONCLUSIONS)
+    assert [line.split("`")[1] for line in lines[2:]] == sorted(EVERY)
     assert all(line.count(" | ") == 3 for line in lines)
 
 
@@ -50,4 +51,4 @@ def test_a_limit_stands_there_with_its_default() -> None:
 def test_the_command_prints_the_table() -> None:
     command = [sys.executable, "-m", "pipeline.checking"]
     printed = subprocess.run(command, check=True, capture_output=True, text=True).stdout
-    assert printed == markdown(pipeline.checking.CHECKS.values()) + "\n"
+    assert printed == markdown(EVERY.values()) + "\n"

@@ -1,12 +1,13 @@
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import pytest
 
 from pipeline import seawater
-from pipeline.crossovers import Crossover, compare_cruises, gather_stations, propose
+from pipeline.crossovers import Crossover, compare_cruises, gather_stations, propose, where_corrected
 from pipeline.crossovers.comparing import compare_cruises as compared
 from pipeline.crossovers.quantities import QUANTITIES, CorrectionKind, Surface
 from pipeline.settings import Settings
@@ -14,7 +15,7 @@ from pipeline.tables import with_columns
 from tests.crossovers.invented import NOISE, SECTION, SETTINGS, cruise, ocean, samples
 
 if TYPE_CHECKING:
-    from pipeline.crossovers import CruiseStations
+    from pipeline.crossovers import CruiseStations, Proposal
     from tests.crossovers.invented import FloatArray
 
 ONE, OTHER = "ZZV120090306", "ZZV220210218"
@@ -131,6 +132,48 @@ def test_the_one_of_four_that_is_off_is_the_one_that_is_blamed() -> None:
     (blamed,) = [p for p in proposals if p.proposed]
     assert (blamed.expocode, blamed.quantity.name, blamed.crossovers) == ("ZZV3", "nitrate", 3)
     assert blamed.correction == pytest.approx(1 / 1.08, abs=2 * blamed.uncertainty)
+
+
+def test_nothing_is_proposed_where_every_crossover_agrees() -> None:
+    # Silicates that are off, but within twice the uncertainty of every crossover; all together would say more.
+    found = compare_cruises([cruise(f"ZZV{k}", k) for k in range(4)], SETTINGS.crossovers)
+    silicate = [c for c in found if c.quantity.name == "silicate"]
+    off = [
+        replace(c, offset=0.06, uncertainty=0.031)
+        if c.other == "ZZV3"
+        else replace(c, offset=0.0, uncertainty=0.005)
+        for c in silicate
+    ]
+    assert all(c.agrees for c in off)
+    ready = Settings.model_validate({"crossovers": {"certainty": 1.5}}).crossovers
+    (last,) = [p for p in propose(off, ready) if p.expocode == "ZZV3"]
+    assert last.size > max(last.quantity.limit, 1.5 * last.uncertainty)
+    assert last.why_not == "all its crossovers agree within their uncertainty"
+    disagree = [replace(c, uncertainty=0.029) if c.other == "ZZV3" else c for c in off]
+    (blamed,) = [p for p in propose(disagree, ready) if p.proposed]
+    assert blamed.expocode == "ZZV3"
+
+
+def test_a_correction_in_force_is_not_proposed_again_where_it_works() -> None:
+    cruises = [cruise(f"ZZV{k}", k, factor={"nitrate": 1.08} if k == 3 else {}) for k in range(4)]
+    found = compare_cruises(cruises, SETTINGS.crossovers)
+
+    def with_factor(factor: float) -> list[Proposal]:
+        applied = {"ZZV3": {"nitrate": {"factor": factor, "reason": "invented"}}}
+        last = cruise("ZZV3", 3, factor={"nitrate": 1.08 * factor})
+        remaining = compare_cruises([*cruises[:3], last], SETTINGS.crossovers)
+        assert {name for *_, name in where_corrected(remaining, applied)} == {"nitrate"}
+        return propose(found, SETTINGS.crossovers, applied, remaining)
+
+    right = with_factor(1 / 1.08)
+    assert not any(p.proposed for p in right)
+    (standing,) = [p for p in right if p.in_force]
+    assert (standing.expocode, standing.quantity.name) == ("ZZV3", "nitrate")
+    assert standing.why_not == "a correction is in force, and what remains is not worth another"
+    assert standing.remains == pytest.approx(1.0, abs=2 * (standing.remains_uncertainty or 0.0))
+    (blamed,) = [p for p in with_factor(0.97) if p.proposed]
+    assert (blamed.expocode, blamed.in_force) == ("ZZV3", "times 0.97")
+    assert blamed.remains == pytest.approx(blamed.correction / 0.97, rel=0.01)
 
 
 def test_a_wrong_salinity_is_seen_in_full_and_shifts_what_is_compared_at_equal_density() -> None:

@@ -145,7 +145,7 @@ def kill_direct_runs(scene: Scene, count: int, seed: int) -> int:
     moments = random.Random(seed)  # noqa: S311 - moments, not secrets
     killed = 0
     with forker() as runs:
-        longest = 1.05 * min(_seconds(runs, scene) for _ in range(2))
+        longest = 1.05 * min(_seconds(runs, scene) for _ in range(3))
         for number in range(count):
             archive = scene.copy()
             for _ in range(1 + (number % 5 == 0)):

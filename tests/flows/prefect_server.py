@@ -94,7 +94,7 @@ class Server:
         """Return a flow run."""
         return dict(self.ask(f"/flow_runs/{number}", post=False))
 
-    def end_of(self, number: str, seconds: float = 90.0) -> dict[str, Any]:
+    def end_of(self, number: str, seconds: float = 240.0) -> dict[str, Any]:
         """Wait for the end of a flow run."""
         ended: dict[str, Any] = wait_for(
             lambda: run if (run := self.run(number))["state_type"] in ENDS else None, seconds
@@ -107,7 +107,7 @@ class Server:
         return {artifact["key"]: artifact["data"] for artifact in found}
 
 
-def wait_for(look: Callable[[], Any], seconds: float = 60.0) -> Any:
+def wait_for(look: Callable[[], Any], seconds: float = 120.0) -> Any:
     """Return what ``look`` finds, as soon as it finds anything."""
     until = time.monotonic() + seconds
     while not (found := look()):

@@ -142,15 +142,18 @@ def test_a_standing_edition_that_is_not_there_is_named(inbox: Path, tmp_path: Pa
     two_editions(inbox, '[cruise]\nstands = ["third_hy1.csv"]\n')
     out = call("run", inbox, "--archive", tmp_path / "archive").out
     assert (
-        "expected one edition of a cruise; cruise.toml names 'third_hy1.csv' as the one that stands, and there is no such"
-        " file; name one of these two there." in out
+        "expected one edition of a cruise; cruise.toml names 'third_hy1.csv' as the one that stands, and there is no"
+        " such file; name one of these two there." in out
     )
 
 
 def test_that_both_editions_are_said_to_stand_is_told(inbox: Path, tmp_path: Path) -> None:
     two_editions(inbox, '[cruise]\nstands = ["first_hy1.csv", "second_hy1.csv"]\n')
     out = call("run", inbox, "--archive", tmp_path / "archive").out
-    assert "expected one edition of a cruise; cruise.toml says of both that they stand; leave one of them there." in out
+    assert (
+        "expected one edition of a cruise; cruise.toml says of both that they stand; leave one of them there."
+        in out
+    )
 
 
 def test_a_pattern_that_fits_no_file_is_told(inbox: Path, tmp_path: Path) -> None:
@@ -167,14 +170,21 @@ def test_a_pattern_that_fits_no_file_is_told(inbox: Path, tmp_path: Path) -> Non
     assert "The cruise.toml beside it describes 'nutriens*.csv' and not this file." in checked.out
 
 
-def test_a_description_of_no_file_is_told_where_all_files_can_be_read_without_it(inbox: Path, tmp_path: Path) -> None:
+def test_a_description_of_no_file_is_told_where_all_files_can_be_read_without_it(
+    inbox: Path, tmp_path: Path
+) -> None:
     (inbox / "first_hy1.csv").write_bytes(bottle_file({}, {}))
     (inbox / "cruise.toml").write_text(
         '[cruise]\nstands = ["gone_hy1.csv"]\n[[file]]\nfiles = "fisrt_hy1.csv"\n[file.constants]\nsection = "V2"\n',
         encoding="utf-8",
     )
+    checked = call("check", inbox / "first_hy1.csv").out
+    assert "\nnote  cruise.toml, line 4: describes 'fisrt_hy1.csv', and no file" in checked
     outcome = call("run", inbox, "--archive", tmp_path / "archive", "--summary", tmp_path / "summary.json")
     assert outcome.status == 0
     assert "note  cruise.toml, line 4: describes 'fisrt_hy1.csv', and no file" in outcome.out
-    assert "note  cruise.toml, line 2: says that 'gone_hy1.csv' stands, and no file beside it is called so" in outcome.out
+    assert (
+        "note  cruise.toml, line 2: says that 'gone_hy1.csv' stands, and no file beside it is called so"
+        in (outcome.out)
+    )
     assert len(json.loads((tmp_path / "summary.json").read_text(encoding="utf-8"))["notes"]) == 2

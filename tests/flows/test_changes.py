@@ -93,8 +93,8 @@ def test_a_reissue_in_words(reissued: Path) -> None:
     text = "\n".join(lines)
     assert "a_hy1.csv is another edition: 21 rows" in text
     assert "samples: 20 before, 21 now\n  1 gone, 2 added, 19 in both.\n" in text
-    assert "  gone: station 2, cast 1, sample 6 (a_hy1.csv, line 19).\n" in text
-    assert "  added: station 3, cast 1, sample 1 (a_hy1.csv, line 24).\n" in text
+    assert "  gone: station 2, cast 1, sample 6 (a_hy1.csv, line 19 of revision 1).\n" in text
+    assert "  added: station 3, cast 1, sample 1 (a_hy1.csv, line 24 of revision 2).\n" in text
     assert "CTD levels: 2 before, 2 now\n  Nothing differs." in text
     (oxygen,) = [line for line in lines if line.startswith("  bottle_oxygen ")]
     assert oxygen.split()[1:5] == ["1", "0", "0", "-10"]

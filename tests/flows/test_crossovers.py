@@ -97,8 +97,58 @@ def test_from_the_offset_to_the_corrected_archive_and_back(inbox: Path, tmp_path
     again = call("crossovers", archive, "--out", out, "--settings", settings)
     assert "0 corrections proposed" in again.out
     assert f"{OTHER} bottle_oxygen, {OTHER} silicate" in (out / "crossovers.md").read_text(encoding="utf-8")
-    # Values as delivered are compared unless the settings say otherwise: the whole correction stays the answer.
-    assert "2 corrections proposed" in call("crossovers", archive, "--out", out).out
+    # Values as delivered are compared unless the settings say otherwise, and what remains is told beside them.
+    told = call("crossovers", archive, "--out", out).out
+    assert "0 corrections proposed" in told
+    assert re.search(
+        rf"^in force {OTHER} oxygen times {factor}; what remains: times (1\.00|0\.99)\d* \+- 0\.\d+, not"
+        r" worth another correction\.$",
+        told,
+        re.MULTILINE,
+    )
+    offsets = [line for line in told.splitlines() if line.startswith("offset ") and OTHER in line]
+    assert len(offsets) == 4  # oxygen and silicate, against two cruises
+    assert all(" With the corrections in force it agrees: " in line for line in offsets)
+    page = (out / "crossovers.md").read_text(encoding="utf-8")
+    assert f"- {OTHER} oxygen times {factor}; what remains: times" in page
+    rows = pq.read_table(out / "offsets.parquet").to_pylist()
+    for row in rows:
+        touched = OTHER in {row["expocode"], row["other_expocode"]}
+        if touched and row["variable"] in {"bottle_oxygen", "silicate"}:
+            assert abs(row["offset"]) > 2 * row["offset_uncertainty"]
+            assert abs(row["offset_remaining"]) < 2 * row["offset_remaining_uncertainty"]
+            assert abs(row["offset_remaining"]) < 0.4 * abs(row["offset"])
+        else:
+            assert row["offset_remaining"] is None
+    standing = {
+        (p["expocode"], p["variable"]): p
+        for p in pq.read_table(out / "proposals.parquet").to_pylist()
+        if p["correction_in_force"]
+    }
+    assert set(standing) == {(OTHER, "bottle_oxygen"), (OTHER, "silicate")}
+    one = standing[OTHER, "bottle_oxygen"]
+    assert one["correction_in_force"] == f"times {factor}"
+    assert one["correction_remaining"] == pytest.approx(1.0, abs=one["correction_remaining_uncertainty"])
+    assert one["why_not"] == "a correction is in force, and what remains is not worth another"
+
+
+def test_a_correction_in_force_that_is_too_small_is_proposed_in_full(inbox: Path, tmp_path: Path) -> None:
+    settings = tmp_path / "settings.toml"
+    settings.write_text(
+        f'[corrections.{OTHER}.bottle_oxygen]\nadd = -2.0\nreason = "invented"\n', encoding="utf-8"
+    )
+    archive = run(inbox, "--settings", settings)
+    told = call("crossovers", archive, "--out", tmp_path / "out").out
+    assert re.search(rf"^propose  {OTHER} oxygen times 0\.97\d* ", told, re.MULTILINE)
+    assert re.search(
+        rf"^in force {OTHER} oxygen plus -2\.0 umol kg-1; what remains: times 0\.98\d* \+- 0\.\d+;"
+        r" another is proposed in its place\.$",
+        told,
+        re.MULTILINE,
+    )
+    assert "With the corrections in force it is off still" in told
+    page = (tmp_path / "out" / "crossovers.md").read_text(encoding="utf-8")
+    assert "in place of earlier ones of the same cruise and quantity" in page
 
 
 def test_the_tables_and_the_page_are_the_same_bytes_every_time(inbox: Path, tmp_path: Path) -> None:

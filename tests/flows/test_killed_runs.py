@@ -13,4 +13,4 @@ if TYPE_CHECKING:
 def test_a_killed_run_leaves_the_archive_whole_and_the_next_ends_as_if_it_had_not_been(
     tmp_path: Path,
 ) -> None:
-    assert kill_direct_runs(make_scene(tmp_path), 10, seed=6) >= 5
+    assert kill_direct_runs(make_scene(tmp_path), 10, seed=6) >= 2

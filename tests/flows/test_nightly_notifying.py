@@ -74,7 +74,7 @@ def test_a_run_is_posted_and_given_to_a_command(inbox: Path, tmp_path: Path) -> 
         said["headline"] == f"1 cruise written, 1 delivery refused. The tables are in {tmp_path / 'archive'}."
     )
     assert said["counts"] == {
-        "new": 1, "revised": 0, "unchanged": 0, "refused": 0, "failed": 0, "refusals": 1,
+        "new": 1, "revised": 0, "remade": 0, "unchanged": 0, "refused": 0, "failed": 0, "refusals": 1,
     }  # fmt: skip
     assert (said["exit_status"], said["problem"]) == (1, None)
     assert said["cruises"][0]["expocode"] == EXPOCODE

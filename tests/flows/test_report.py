@@ -49,6 +49,11 @@ def test_one_cruise_alone_and_one_that_is_damaged(tmp_path: Path) -> None:
     assert outcome.status == 1
     assert outcome.err.startswith("left out  ")
     assert outcome.out.startswith("1 cruise page and")
+    more = call("report", archive, "ZZV519960914", "--out", tmp_path / "out")
+    assert more.out.startswith("1 cruise page and")
+    index = (tmp_path / "out" / "index.html").read_text(encoding="utf-8")
+    assert index.count('href="cruise_ZZV420110203.html"') == 1
+    assert index.count('href="cruise_ZZV519960914.html"') == 1
     assert f"{CRUISE}.parquet" in (tmp_path / "out" / "index.html").read_text(encoding="utf-8")
     assert not (tmp_path / "out" / f"cruise_{CRUISE}.html").exists()
     (tmp_path / "file").write_text("", encoding="utf-8")

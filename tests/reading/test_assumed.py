@@ -76,7 +76,8 @@ def test_a_workbook_with_decimal_commas_as_text_is_told_the_same() -> None:
     assert sheet is not None
     sheet.append(COLUMNS)
     for row in CRUISE:
-        sheet.append([str(c).replace(".", ",") if isinstance(c, float) and i > 9 else c for i, c in enumerate(row.cells)])
+        cells = enumerate(row.cells)
+        sheet.append([str(c).replace(".", ",") if isinstance(c, float) and i > 9 else c for i, c in cells])
     delivery = read_delivery("cruise.xlsx", saved(book), LIMITS, description())
     commas = [f for f in delivery.findings if f.check == "decimal-comma"]
     assert {f.variable for f in commas} >= {"temperature", "bottle_salinity", "bottle_oxygen"}

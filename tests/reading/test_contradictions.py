@@ -73,7 +73,8 @@ FLAGGED = 'NO3 = { quantity = "nitrate", unit = "umol/kg", flag = "Q" }\n'
 
 def flagged(scheme: str, *flags: int) -> Delivery:
     head = HEAD.replace('kind = "bottle"', f'kind = "bottle"\nflags = "{scheme}"')
-    return table(FLAGGED, "p,NO3,Q\ndbar,umol/kg,\n" + "".join(f"{i},20,{flag}\n" for i, flag in enumerate(flags)), head)
+    cells = "".join(f"{i},20,{flag}\n" for i, flag in enumerate(flags))
+    return table(FLAGGED, f"p,NO3,Q\ndbar,umol/kg,\n{cells}", head)
 
 
 def test_whp_flags_that_are_said_to_be_iode_are_doubted() -> None:
@@ -96,7 +97,18 @@ def test_iode_flags_that_are_said_to_be_whp_are_doubted() -> None:
 
 
 @pytest.mark.parametrize(
-    ("scheme", "flags"), [("iode", (1, 1, 2, 4)), ("whp", (2, 2, 1, 9)), ("argo", (2, 2, 1)), ("qartod", (9, 9))]
+    ("scheme", "flags"),
+    [("iode", (1, 1, 2, 4)), ("whp", (2, 2, 1, 9)), ("argo", (2, 2, 1)), ("qartod", (9, 9))],
 )
 def test_flags_that_speak_for_their_scheme_are_not_doubted(scheme: str, flags: tuple[int, ...]) -> None:
     assert "flag-scheme" not in checks(flagged(scheme, *flags))
+
+
+def test_columns_of_the_same_doubt_share_a_sentence() -> None:
+    head = HEAD.replace('kind = "bottle"', 'kind = "bottle"\nflags = "iode"')
+    columns = FLAGGED + 'PO4 = { quantity = "phosphate", unit = "umol/kg", flag = "Q2" }\n'
+    delivery = table(columns, "p,NO3,Q,PO4,Q2\ndbar,umol/kg,,umol/kg,\n10,20,2,1,2\n20,20,3,1,2\n", head)
+    finding = the(delivery, "flag-scheme")
+    assert "the flags Q and Q2 are read as IODE flags and most often are 2 (3 of 4)" in finding.message
+    assert 'write flags = "whp" in cruise.toml, line 14 and below.' in finding.message
+    assert finding.variable is None

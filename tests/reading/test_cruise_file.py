@@ -4,6 +4,8 @@ from __future__ import annotations
 
 import contextlib
 import pickle
+import re
+from pathlib import Path
 
 import pytest
 from hypothesis import given, settings
@@ -11,9 +13,11 @@ from hypothesis import strategies as st
 
 from pipeline.problems import DeliveryProblem
 from pipeline.reading import CruiseFile, DeliveryKind, read_cruise_file
-from pipeline.reading.description import ColumnEntry, Layout
+from pipeline.reading.cruise_form import COLUMN_KEYS, CRUISE_KEYS, DELIMITERS, FILE_KEYS, FILE_TABLES
+from pipeline.reading.description import DATE_PARTS, ColumnEntry, Layout
 from pipeline.reading.schemes import Scheme
 
+ROOT = Path(__file__).parent.parent.parent
 FULL = """\
 [cruise]
 stands = ["edition2_hy1.csv"]
@@ -151,7 +155,7 @@ FILE = '[[file]]\nfiles = "a.csv"\n'
             "line 4: found the format 'hh:mm' for date",
         ),
         (FILE + "[file.constants]\nexpocode = '3E+11'\n", "line 4: found expocode = '3E+11'; expected a cruise code"),
-        (FILE + "[file.constants]\nstation = 'FILL IN'\n", "line 4: station is still 'FILL IN', as the draft has it; expected the name"),
+        (FILE + "[file.constants]\nstation = 'FILL IN'\n", "line 4: station is still 'FILL IN', as the draft has it;"),
         (FILE + "[file.constants]\nlatitude = 95.0\n", "line 4: found latitude = '95.0'; expected a number from -90"),
         (FILE + "[file.constants]\ndate = '20090230'\n", "line 4: found date = '20090230'; expected a date YYYY-MM-DD"),
         (FILE + "[file.constants]\ncast = 1.5\n", "line 4: found cast = '1.5'; expected a number from 0 to 1e+06"),
@@ -216,9 +220,19 @@ def test_what_stands_twice_is_told_as_such(text: str, words: str) -> None:
 def test_a_blank_of_a_draft_that_was_left_is_told_with_an_example() -> None:
     head = '[[file]]\nfiles = "x"\n[file.constants]\n'
     assert fault(f'{head}expocode = "FILL IN"\n') == (
-        "cruise.toml, line 4: expocode is still 'FILL IN', as the draft has it; expected the code of the cruise, such as"
-        " ZZV120090214; write it there, or give it by a column."
+        "cruise.toml, line 4: expocode is still 'FILL IN', as the draft has it; expected the code of the cruise, such"
+        " as ZZV120090214; write it there, or give it by a column."
     )
-    assert "latitude is still 'FILL IN', as the draft has it; expected degrees north, such as -35.5;" in fault(
-        f'{head}latitude = "FILL IN"\n'
+    assert (
+        "latitude is still 'FILL IN', as the draft has it; expected degrees north, such as -35.5;"
+        in fault(f'{head}latitude = "FILL IN"\n')
     )
+
+
+def test_the_readme_tells_of_every_key() -> None:
+    readme = (ROOT / "README.md").read_text(encoding="utf-8")
+    section = readme.partition("### Tables of your own")[2].partition("\n## ")[0]
+    keys = [*CRUISE_KEYS, *FILE_KEYS, *FILE_TABLES, *COLUMN_KEYS, *DELIMITERS, *DATE_PARTS]
+    letters = ["YYYY", "YY", "MMM", "MM", "DDD", "DD", "hh", "mm", "ss"]
+    assert [key for key in keys if not re.search(rf"\b{key}\b", section)] == []
+    assert [letter for letter in letters if f"`{letter}`" not in section] == []

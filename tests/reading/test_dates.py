@@ -65,8 +65,8 @@ def test_a_date_before_the_time_of_day_stands_back_behind_the_column_of_dates() 
 def test_a_file_without_any_date_says_so() -> None:
     nothing = {"DATE": "", "TIME": ""}
     assert told(read(bottle_file(nothing, nothing)), "no-date") == (
-        "cruise_hy1.csv: none of the 2 rows has a date; expected the date of every sample; ask for the dates and deliver"
-        " the file again."
+        "cruise_hy1.csv: none of the 2 rows has a date; expected the date of every sample; ask for the dates and"
+        " deliver the file again."
     )
     assert not [c for c in checks(read(bottle_file(nothing, {}))) if c == "no-date"]
     assert "no-date" in checks(read(cast_file(header={"DATE": ""}), "a_ct1.csv"))
@@ -75,7 +75,9 @@ def test_a_file_without_any_date_says_so() -> None:
     other = {"EXPOCODE": "ZZV220100301"}
     of_two = read(bottle_file({}, {**nothing, **other}, {**nothing, **other}))
     assert "no-date" not in checks(of_two.of_cruise(EXPOCODE))
-    assert "none of the 2 rows of ZZV220100301 has a date" in told(of_two.of_cruise("ZZV220100301"), "no-date")
+    assert "none of the 2 rows of ZZV220100301 has a date" in told(
+        of_two.of_cruise("ZZV220100301"), "no-date"
+    )
 
 
 def test_a_netcdf_file_without_any_date_says_so_once() -> None:
@@ -113,9 +115,9 @@ def test_where_nothing_decides_the_doubt_says_what_to_do() -> None:
     delivery = read(bottle_file({"DATE": "03/04/2009"}, {"DATE": "02/02/2009"}))
     assert one(delivery, "date") == dt.date(2009, 3, 4)
     assert told(delivery, "ambiguous-date") == (
-        "cruise_hy1.csv: nothing in the file tells whether '03/04/2009' is written month first or day first; month first"
-        ' was taken; expected YYYYMMDD; write "DATE" = { quantity = "date", format = "DD/MM/YYYY" } under [file.columns]'
-        " of a cruise.toml where it is day first."
+        "cruise_hy1.csv: nothing in the file tells whether '03/04/2009' is written month first or day first; month"
+        ' first was taken; expected YYYYMMDD; write "DATE" = { quantity = "date", format = "DD/MM/YYYY" } under'
+        " [file.columns] of a cruise.toml where it is day first."
     )
     toml = '[[file]]\nfiles = "*"\n[file.columns]\n"DATE" = { quantity = "date", format = "DD/MM/YYYY" }\n'
     description = read_cruise_file("cruise.toml", toml.encode()).of("x")
@@ -150,9 +152,7 @@ def test_a_latitude_that_is_written_with_its_side_is_told() -> None:
     data = b"p,lat\n10,-30.5\n20,30.5 S\n30,30 30 S\n"
     delivery = read_delivery("x.csv", data, LIMITS, description)
     assert delivery.table.column("latitude").to_pylist() == [-30.5, -30.5, -30.5]
-    message = (
-        "x.csv, line 3: lat is '30.5 S' (and in 1 more row written so); it was read as -30.5 degrees."
-    )
+    message = "x.csv, line 3: lat is '30.5 S' (and in 1 more row written so); it was read as -30.5 degrees."
     assert told(delivery, "position-written") == message
     exchange = read(bottle_file({"LATITUDE": "35.5S"}, {}))
     assert told(exchange, "position-written") == (

@@ -48,7 +48,7 @@ def test_what_is_outside_the_valid_range_is_missing_and_counted() -> None:
         variable([1, 5, 9, -1], valid_range=np.array([0.0, 8.0]), _FillValue=np.float64(-1))
     )
     assert np.isnan(found.values).tolist() == [False, False, True, True]
-    assert found.outside == 1
+    assert np.count_nonzero(found.invalid) == 1
     assert decoded([1, 5, 9], valid_min=np.float64(2), valid_max=np.float64(8)) == [None, 5.0, None]
 
 

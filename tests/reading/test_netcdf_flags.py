@@ -164,7 +164,10 @@ NOT_CALIBRATED = "not_calibrated acceptable questionable bad not_reported not_sa
     [
         ([1, 2, 3, 4, 5, 9], NOT_CALIBRATED),
         ([1, 2, 3, 4, 5, 9], NOT_CALIBRATED.title()),
-        ([2, 3, 4, 5, 9], "acceptable_measurement questionable_measurement bad_measurement not_reported not_sampled"),
+        (
+            [2, 3, 4, 5, 9],
+            "acceptable_measurement questionable_measurement bad_measurement not_reported not_sampled",
+        ),
         (
             [1, 2, 3, 4, 5, 6, 9],
             "sample_drawn_but_analysis_not_received acceptable questionable bad not_reported"
@@ -198,7 +201,11 @@ def test_a_long_name_may_name_the_scheme() -> None:
         ({1: "good", 2: "odd"}, 1, 'flags = "iode" }'),
         ({0: "odd", 1: "good", 8: "odd"}, 1, 'flags = "argo" }'),
         ({2: "green", 4: "red"}, 2, 'flags = "whp" }'),
-        ({0: "green", 70: "red"}, 70, 'flags = "..." }, with one of whp, iode, qartod, argo in place of the dots,'),
+        (
+            {0: "green", 70: "red"},
+            70,
+            'flags = "..." }, with one of whp, iode, qartod, argo in place of the dots,',
+        ),
     ],
 )
 def test_the_advice_names_the_scheme_that_fits(meanings: dict[int, str], delivered: int, advice: str) -> None:
@@ -213,5 +220,6 @@ def test_the_flags_of_a_page_and_of_a_check_are_those_that_were_delivered() -> N
     data = netcdf_bytes(rows(), Plan(meanings={0: "green", 1: "red"}, flag=lambda _: 0))
     table = read_delivery("x.nc", data, LIMITS).table
     assert table.schema.field("nitrate_flag").metadata[b"delivered_name"] == b"nitrate_qc"
-    (told,) = [f for f in check(pa.concat_tables([table] * 3), Settings()).findings if f.check == "all-flagged-bad" and f.variable == "nitrate"]
+    found = check(pa.concat_tables([table] * 3), Settings()).findings
+    (told,) = [f for f in found if f.check == "all-flagged-bad" and f.variable == "nitrate"]
     assert "none under a good flag (all have flag 0 in nitrate_qc)" in told.message

@@ -29,7 +29,9 @@ _CEN = np.array([14.0, 35.28, 230.0, 0.62, 8.8, 4.0])
 def water(pressure: float, overflow: float) -> list[float]:
     """Return a mixture that goes from central water above to overflow or deep water below."""
     deep = overflow * _OVF + (1 - overflow) * _DEP
-    mixed = [np.interp(pressure, [0.0, 900.0, 3400.0], values) for values in zip(_CEN, _MID, deep, strict=True)]
+    mixed = [
+        np.interp(pressure, [0.0, 900.0, 3400.0], values) for values in zip(_CEN, _MID, deep, strict=True)
+    ]
     return [float(value) for value in mixed]
 
 
@@ -58,9 +60,16 @@ def bottles(expocode: str = EXPOCODE, date: str = "20090306", overflow: float = 
 def profile(expocode: str = EXPOCODE) -> bytes:
     """Return a zip with the CTD profile of the first station."""
     levels = [
-        f"{p:.1f},2,{water(p, 0.8)[0] + 1e-4 * p:.4f},2,{water(p, 0.8)[1]:.4f},2" for p in np.arange(0.0, 3400.0, 10.0)
+        f"{p:.1f},2,{water(p, 0.8)[0] + 1e-4 * p:.4f},2,{water(p, 0.8)[1]:.4f},2"
+        for p in np.arange(0.0, 3400.0, 10.0)
     ]
-    header = {"EXPOCODE": expocode, "SECT_ID": "V<1>", "DATE": "20090306", "LATITUDE": "-35.0", "LONGITUDE": "-12.0"}
+    header = {
+        "EXPOCODE": expocode,
+        "SECT_ID": "V<1>",
+        "DATE": "20090306",
+        "LATITUDE": "-35.0",
+        "LONGITUDE": "-12.0",
+    }
     return zipped({"one_ct1.csv": cast_file(levels, header=header)})
 
 

@@ -27,17 +27,27 @@ def test_list_of_cruises_is_the_archives(archive: Path, pages: Path) -> None:
 
 def test_changes_between_visits_are_told_with_their_scatter(pages: Path) -> None:
     page = Page(pages / "index.html")
-    assert f"V<1>: {EXPOCODE} (2009) and {LATER} (2021), at 9 places: the largest changes are those of" in page.words
+    assert (
+        f"V<1>: {EXPOCODE} (2009) and {LATER} (2021), at 9 places: the largest changes are those of"
+        in page.words
+    )
     (comparison,) = page.data["comparisons"]
     fallen = {c["code"]: c for c in comparison["changes"] if c["top"] == 3000.0}
     assert fallen["OVF"]["difference"] < -5 * fallen["OVF"]["error"]
-    assert fallen["OVF"]["later"] - fallen["OVF"]["earlier"] == pytest.approx(fallen["OVF"]["difference"], abs=2e-5)
-    assert f"OVF by \u2212{-fallen['OVF']['difference']:.2f} ± {fallen['OVF']['error']:.2f} between 3000" in page.words
+    assert fallen["OVF"]["later"] - fallen["OVF"]["earlier"] == pytest.approx(
+        fallen["OVF"]["difference"], abs=2e-5
+    )
+    assert (
+        f"OVF by \u2212{-fallen['OVF']['difference']:.2f} ± {fallen['OVF']['error']:.2f} between 3000"
+        in page.words
+    )
 
 
 def test_a_cruise_that_cannot_be_read_is_told_and_has_no_link(tmp_path: Path) -> None:
     broken = Summary("ZZX1", troubles=("ZZX1: no table of casts is published.",))
-    (tmp_path / "index.html").write_bytes(archive_page([broken], frozenset(), ["samples/<b>: not ours."])["index.html"])
+    (tmp_path / "index.html").write_bytes(
+        archive_page([broken], frozenset(), ["samples/<b>: not ours."])["index.html"]
+    )
     page = Page(tmp_path / "index.html")
     assert page.rows("cruises") == [["ZZX1", "ZZX1: no table of casts is published."]]
     assert "samples/<b>: not ours." in page.words

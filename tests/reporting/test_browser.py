@@ -23,7 +23,7 @@ from tests.reporting.invented import EXPOCODE, FORMULA, SCRIPT
 if TYPE_CHECKING:
     from collections.abc import Iterator
 
-    from playwright.sync_api import Browser
+    from playwright.sync_api import Browser, Dialog
     from playwright.sync_api import Page as Tab
 
 REQUIRED = os.environ.get("SEAWHENCE_BROWSER_REQUIRED") == "1"
@@ -58,9 +58,11 @@ def opened(browser: Browser, path: Path, width: int = 1200, scheme: Any = "light
     """Open a page, wait until it is drawn, and afterwards assert that nothing went wrong in it."""
     tab = browser.new_page(viewport={"width": width, "height": 900}, color_scheme=scheme)
     said: list[str] = []
-    tab.on("console", lambda message: said.append(message.text) if message.type in {"error", "warning"} else None)
+    tab.on(
+        "console", lambda message: said.append(message.text) if message.type in {"error", "warning"} else None
+    )
     tab.on("pageerror", lambda error: said.append(str(error)))
-    tab.on("dialog", lambda dialog: (said.append(f"dialog {dialog.message}"), dialog.dismiss()))
+    tab.on("dialog", lambda dialog: _refuse(dialog, said))
     asked: list[str] = []
     tab.on("request", lambda request: asked.append(request.url))
     tab.goto(path.as_uri())
@@ -70,6 +72,11 @@ def opened(browser: Browser, path: Path, width: int = 1200, scheme: Any = "light
     # what a page draws into itself is no request
     assert [url for url in asked if not url.startswith(("data:", "blob:"))] == [path.as_uri()]
     tab.close()
+
+
+def _refuse(dialog: Dialog, said: list[str]) -> None:
+    said.append(f"a dialog opened: {dialog.message}")
+    dialog.dismiss()
 
 
 @pytest.fixture
@@ -89,7 +96,9 @@ def test_nothing_is_cut_or_lies_over_another(
     browser: Browser, pages: Path, name: str, width: int, scheme: str
 ) -> None:
     with opened(browser, pages / name, width, scheme) as tab:
-        wide, room = tab.evaluate("[document.documentElement.scrollWidth, document.documentElement.clientWidth]")
+        wide, room = tab.evaluate(
+            "[document.documentElement.scrollWidth, document.documentElement.clientWidth]"
+        )
         assert wide <= room
         boxes = [box for box in (place.bounding_box() for place in tab.locator(".plot").all()) if box]
         assert len(boxes) >= 2
@@ -156,6 +165,11 @@ def test_what_is_clicked_in_one_figure_is_marked_in_all(tab: Tab) -> None:
     assert len(chosen) == 3
     assert all(row in rows for rows in chosen)
     assert "Marked: " in (tab.locator("#marked-count").text_content() or "")
+    # a marked sample's station is the one that is shown
+    name = tab.evaluate(f"page.casts.name[page.samples.cast[{row}]]")
+    assert len({tab.evaluate(f"page.samples.cast[{one}]") for one in marked(tab)}) > 1 or (
+        tab.locator("#choose-station option:checked").text_content() == name
+    )
 
 
 def test_a_box_marks_what_lies_in_it(tab: Tab) -> None:
@@ -185,7 +199,9 @@ def test_figures_by_keyboard(tab: Tab, archive: Path) -> None:
     samples = pq.read_table(archive / "samples" / f"{EXPOCODE}.parquet").to_pandas()
     assert samples["station"][row] == SCRIPT
     said = tab.locator("#pointed").text_content() or ""
-    assert said.startswith(f"Station {SCRIPT}, sample {samples['sample'][row]}, {samples['pressure'][row]:g} dbar: ")
+    assert said.startswith(
+        f"Station {SCRIPT}, sample {samples['sample'][row]}, {samples['pressure'][row]:g} dbar: "
+    )
     mixtures = pq.read_table(archive / "mixtures" / f"{EXPOCODE}.parquet").to_pandas()
     mine = mixtures[(mixtures["station"] == SCRIPT) & (mixtures["sample"] == samples["sample"][row])]
     most = mine.nlargest(1, "share").iloc[0]
@@ -198,7 +214,7 @@ def test_figures_by_keyboard(tab: Tab, archive: Path) -> None:
 
 def test_every_choice_of_the_section_is_drawn_and_told(tab: Tab, archive: Path) -> None:
     samples = pq.read_table(archive / "samples" / f"{EXPOCODE}.parquet").to_pandas()
-    for vertical in ("depth", "upper", "sigma0", "sigma2"):
+    for vertical in ("depth", "upper", "sigma0", "sigma2", "deep"):
         tab.select_option("#choose-vertical", vertical)
         for key in tab.evaluate("[...quantities.keys()].filter((_, k) => k % 6 === 0)"):
             tab.select_option("#choose-quantity", key)
@@ -230,7 +246,11 @@ def test_grid_is_straight_between_data_and_empty_elsewhere(tab: Tab) -> None:
     assert np.isnan(grid[:, 40:100]).all()  # between casts that are 80 km apart, where 10 are usual
     assert np.isnan(grid[:, :10]).all()  # outside the section
     assert np.isfinite(grid[15, 20:25]).all()  # beside a cast up to half of the usual distance
-    assert np.isnan(grid[15, 26:]).all() or np.isnan(grid[15, 30])
+    assert np.isnan(grid[15, 30])
+    # against density, too, it is the depth that tells whether two samples are near each other
+    between = "(z) => atLevels(profilesAt([0, 0], [36, 37], [1, 2], z)[0], [36.5], depthGap)[0]"
+    assert tab.evaluate(between, [1000, 1300]) == pytest.approx(1.5)
+    assert np.isnan(tab.evaluate(between, [1000, 1900]))
 
 
 @pytest.mark.parametrize("name", PAGES)

@@ -45,6 +45,15 @@ def test_no_cast_of_a_short_line_is_left_out() -> None:
     assert len(line.off) == 0
 
 
+def test_two_visits_in_opposite_directions_are_laid_beside_each_other() -> None:
+    east, west = np.arange(170.0, 190.0) % 360.0, np.arange(189.0, 169.0, -1.0) % 360.0
+    for longitude in (east, west):
+        line = along_line(np.full(20, -30.0), longitude, np.arange(20.0))
+        assert longitude[line.order].tolist() == east.tolist()
+    north = along_line(np.arange(5.0)[::-1], np.zeros(5), np.arange(5.0))
+    assert north.order.tolist() == [4, 3, 2, 1, 0]
+
+
 def test_casts_of_one_place_stand_in_one_column() -> None:
     line = along_line(np.zeros(3), np.array([0.0, 0.005, 1.0]), np.arange(3.0))
     assert line.distance[1] == 0.0
@@ -58,9 +67,7 @@ def test_a_line_crosses_the_date_line_the_short_way() -> None:
 @settings(max_examples=60, deadline=None)
 @given(
     st.lists(
-        st.tuples(
-            st.floats(-90, 90), st.floats(-180, 180), st.one_of(st.just(np.nan), st.floats(0, 1e9))
-        ),
+        st.tuples(st.floats(-90, 90), st.floats(-180, 180), st.one_of(st.just(np.nan), st.floats(0, 1e9))),
         max_size=25,
     )
 )

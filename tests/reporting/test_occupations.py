@@ -10,9 +10,11 @@ from pipeline.reporting.occupations import LAYERS, Occupation, compare, interpol
 LOOKS = source_looks([("OVF", "Overflow", np.nan, np.nan), ("DEP", "Deep", np.nan, np.nan)])
 
 
-def visit(expocode: str, time: float, shift: float, overflow: float, *, catalogue: str = "c", n: int = 12) -> Occupation:
+def visit(
+    expocode: str, time: float, shift: float, overflow: float, *, catalogue: str = "c", n: int = 12
+) -> Occupation:
     """Return a visit whose shares go evenly along the line, in the layers below 2000 dbar."""
-    longitude = np.arange(n) * 0.7 + shift
+    longitude = np.arange(n, dtype=np.float64) * 0.7 + shift
     shares = np.full((n, len(LAYERS) - 1, 2), np.nan)
     shares[:, 5:7, 0] = (overflow - 0.02 * longitude)[:, None]
     shares[:, 5:7, 1] = 1 - shares[:, 5:7, 0]
@@ -39,7 +41,11 @@ def test_no_change_is_told_as_none() -> None:
 
 @pytest.mark.parametrize(
     "other",
-    [visit("B", 2.0, 0.0, 0.6, catalogue="other"), visit("B", 2.0, 40.0, 0.6), visit("B", 2.0, 0.0, 0.6, n=2)],
+    [
+        visit("B", 2.0, 0.0, 0.6, catalogue="other"),
+        visit("B", 2.0, 40.0, 0.6),
+        visit("B", 2.0, 0.0, 0.6, n=2),
+    ],
     ids=["other sources", "other place", "too few"],
 )
 def test_what_cannot_be_compared_is_not(other: Occupation) -> None:

@@ -47,7 +47,12 @@ def test_thinning_keeps_ends_and_spreads_evenly() -> None:
     pressure = np.concatenate([np.arange(1000.0)[::-1], [5.0, 1.0]])
     casts = with_columns(
         empty([]),
-        {"expocode": ["Z"] * 1002, "station": ["1"] * 1000 + ["2"] * 2, "cast": [1] * 1002, "pressure": pressure},
+        {
+            "expocode": ["Z"] * 1002,
+            "station": ["1"] * 1000 + ["2"] * 2,
+            "cast": [1] * 1002,
+            "pressure": pressure,
+        },
     )
     few = thinned(casts, most_of_cast=50).column("pressure").to_numpy()
     assert len(few) == 52

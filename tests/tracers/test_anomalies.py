@@ -9,6 +9,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
+from pipeline.carbonate_settings import CarbonateSettings
 from pipeline.process import process_cruise
 from pipeline.settings import Settings, TracerSettings
 from pipeline.tracers.anomalies import (
@@ -36,9 +37,15 @@ ANYTHING = st.floats(allow_nan=True, allow_infinity=True)
 
 
 def columns(*samples: dict[str, float], **chosen: Any) -> dict[str, Any]:
-    return anomalies(
-        rows(samples), TracerSettings.model_validate({"preformed_alkalinity": RELATION, **chosen})
-    )
+    return everything(*samples, **chosen)[0]
+
+
+def everything(*samples: dict[str, float], **chosen: Any) -> tuple[dict[str, Any], dict[str, Any]]:
+    """Return the anomalies and, by the same names, their standard uncertainties."""
+    choice = TracerSettings.model_validate({"preformed_alkalinity": RELATION, **chosen})
+    found = anomalies(rows(samples), choice, CarbonateSettings())
+    names = [name for name in found if not name.endswith("_uncertainty")]
+    return {n: found[n] for n in names}, {n: found[f"{n}_uncertainty"] for n in names}
 
 
 def respired(
@@ -154,10 +161,11 @@ def test_without_a_relation_there_is_no_preformed_alkalinity_and_nothing_made_of
     found = columns(WATER, preformed_alkalinity=None)
     without = {name for name, values in found.items() if np.isnan(values).all()}
     assert without == {"preformed_alkalinity", "dic_calcium_carbonate", "preformed_dic"}
-    told = anomaly_forms(TracerSettings())
+    told = anomaly_forms(TracerSettings(), CarbonateSettings())
     assert told["preformed_dic"]["form"].endswith("preformed alkalinity no relation in the settings")
     with_one = TracerSettings.model_validate({"preformed_alkalinity": RELATION})
-    assert "300 +56 S +0 theta +0.08 PO: made up" in anomaly_forms(with_one)["preformed_dic"]["form"]
+    forms = anomaly_forms(with_one, CarbonateSettings())
+    assert "300 +56 S +0 theta +0.08 PO: made up" in forms["preformed_dic"]["form"]
 
 
 def test_a_constant_is_a_relation() -> None:

@@ -20,7 +20,10 @@ from pipeline.findings import Severity
 from pipeline.process import process_cruise
 from pipeline.settings import Settings
 from pipeline.tracers.carbonate import system
-from pipeline.tracers.carbonate_findings import carbonate_findings, carbonate_marks
+from pipeline.checking.marks import findings_of
+from pipeline.tracers.carbonate_consistency import disagreements
+from pipeline.tracers.carbonate_findings import carbonate_findings
+from pipeline.tracers.carbonate_marks import input_marks, system_marks
 from pipeline.tracers.samples import sample_tracers
 from pipeline.variables import CARBONATE, EXTREMES, HORIZONS
 from tests.invented import EXPOCODE, bottle_file, read
@@ -45,7 +48,8 @@ def told(samples: list[dict[str, Any]], **chosen: Any) -> list[Finding]:
     choice = CarbonateSettings.model_validate(chosen)
     data = rows(samples)
     found = system(data, choice)
-    return list(carbonate_findings(data, carbonate_marks(data, found, choice), found, choice))
+    marks = (*input_marks(data, choice), *system_marks(data, found, disagreements(data, found, choice), choice))
+    return [*findings_of(data, marks), *carbonate_findings(data, found, choice)]
 
 
 def of(findings: list[Finding], check: str) -> list[Finding]:

@@ -47,7 +47,7 @@ async function drawMap() {
   const data = Object.fromEntries(["x", "y", "name", "days", "colour"].map((key) => [key, points.map((p) => p[key])]));
   const dots = figure.scatter({field: "x"}, {field: "y"}, {source: new Bokeh.ColumnDataSource({data}), size: 6, marker: "circle",
     fill_color: {field: "colour"}, line_width: 0.6});
-  const first = namesOf(cruises, xs[1], (xs[1] - xs[0]) / place.clientWidth, (ys[1] - ys[0]) / place.clientHeight);
+  const first = namesOf(cruises, points, xs[1], (xs[1] - xs[0]) / place.clientWidth, (ys[1] - ys[0]) / place.clientHeight);
   const names = figure.text({field: "x"}, {field: "y"}, {field: "t"}, {text_font: FONT, text_font_size: "13px", text_baseline: "bottom",
     source: new Bokeh.ColumnDataSource({data: {x: first.map((p) => p.x), y: first.map((p) => p.y), t: first.map((p) => p.t)}})});
   painted((colours) => {
@@ -58,17 +58,18 @@ async function drawMap() {
   await mount("map");
 }
 
-/** Return where names of cruises stand: at an end or in the middle of a track, above or below, where nothing else stands. */
-function namesOf(cruises, east, perX, perY) {
+/** Return where names of cruises stand: near a track, not over another name and over as few stations as can be. */
+function namesOf(cruises, points, east, perX, perY) {
   const placed = [];
   for (const cruise of cruises) {
     const {longitude, latitude} = cruise.tracks[0], last = longitude.length - 1;
     const wide = cruise.name.length * 8 * perX, high = 17 * perY;
     const spots = [0, last, last >> 1, last >> 2].flatMap((k) => [10, -24, 30, -44].map((up) => ({
       x: Math.min(near(longitude[k]), east - wide - 20 * perX), y: latitude[k] + up * perY, t: cruise.name, wide})));
-    const free = spots.find((one) => placed.every((other) => Math.abs(one.y - other.y) > high
+    const free = spots.filter((one) => placed.every((other) => Math.abs(one.y - other.y) > high
       || one.x > other.x + other.wide || other.x > one.x + wide));
-    if (free) placed.push(free);
+    const over = (one) => points.filter((p) => p.x > one.x - 5 * perX && p.x < one.x + wide && p.y > one.y - 4 * perY && p.y < one.y + high).length;
+    if (free.length) placed.push(free.map((one) => [over(one), one]).reduce((a, b) => (b[0] < a[0] ? b : a))[1]);
   }
   return placed;
 }

@@ -2,41 +2,43 @@
 "use strict";
 
 const DEPTH_GAP = {metres: 100, part: 0.25, most: 800}; // interpolated over along a cast: metres, and part of the depth
-const DENSITY_GAP = 0.08; // the same against density, part of the range
 const CAST_GAP = 3; // usual distances between casts that may be interpolated over
 
 /**
- * Return one profile per place: [{x, y: sorted, v}], of samples with x, y and v; of equal y the mean.
+ * Return one profile per place: [{x, y: sorted, v, z}], of samples with x, y, v and z; of equal y the mean.
+ *
+ * z is what tells whether two samples are near each other, the depth, also where y is something else.
  */
-function profilesAt(x, y, v) {
+function profilesAt(x, y, v, z = y) {
   const places = new Map();
   for (let k = 0; k < x.length; k++) {
-    if (!Number.isFinite(x[k]) || !Number.isFinite(y[k]) || !Number.isFinite(v[k])) continue;
+    if (!Number.isFinite(x[k]) || !Number.isFinite(y[k]) || !Number.isFinite(v[k]) || !Number.isFinite(z[k])) continue;
     if (!places.has(x[k])) places.set(x[k], []);
-    places.get(x[k]).push([y[k], v[k]]);
+    places.get(x[k]).push([y[k], v[k], z[k]]);
   }
   return [...places.keys()].sort((a, b) => a - b).map((at) => {
-    const pairs = places.get(at).sort((a, b) => a[0] - b[0]), profile = {x: at, y: [], v: []};
+    const pairs = places.get(at).sort((a, b) => a[0] - b[0]), profile = {x: at, y: [], v: [], z: []};
     for (let k = 0, n; k < pairs.length; k += n) {
       let sum = 0;
       for (n = 0; k + n < pairs.length && pairs[k + n][0] === pairs[k][0]; n++) sum += pairs[k + n][1];
       profile.y.push(pairs[k][0]);
       profile.v.push(sum / n);
+      profile.z.push(pairs[k][2]);
     }
     return profile;
   });
 }
 
-/** Return a profile at the levels, NaN outside its data and where they are farther apart than gap(middle) allows. */
+/** Return a profile at the levels, NaN outside its data and where their z are farther apart than gap(middle) allows. */
 function atLevels(profile, levels, gap) {
-  const {y, v} = profile, values = new Float64Array(levels.length).fill(NaN);
+  const {y, v, z} = profile, values = new Float64Array(levels.length).fill(NaN);
   let k = 0;
   for (let j = 0; j < levels.length; j++) {
     const level = levels[j];
     while (k + 1 < y.length && y[k + 1] < level) k++;
     if (!(level >= y[k]) || k + 1 >= y.length || level > y[k + 1]) continue;
-    const span = y[k + 1] - y[k];
-    if (span <= gap((y[k] + y[k + 1]) / 2)) values[j] = v[k] + ((level - y[k]) / span) * (v[k + 1] - v[k]);
+    const near = Math.abs(z[k + 1] - z[k]) <= gap((z[k] + z[k + 1]) / 2);
+    if (near) values[j] = v[k] + ((level - y[k]) / (y[k + 1] - y[k])) * (v[k + 1] - v[k]);
   }
   return values;
 }

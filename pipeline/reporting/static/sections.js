@@ -5,17 +5,23 @@ const GRID = {nx: 420, ny: 260};
 const FLOOR = 20000; // metres, below any sea floor
 const section = {}; // the figure's parts, set when it is drawn
 
-/** Return what a choice of the vertical means: the quantity, its range and how far apart data may be. */
+/** Return what a choice of the vertical means: the quantity, and its range. */
 function verticalOf(choice, rows, casts) {
-  const key = choice === "upper" ? "depth" : choice;
+  const key = {upper: "depth", deep: "sigma2"}[choice] ?? choice;
   const values = rows.map((row) => valueOf(key, row)).filter(Number.isFinite);
   if (key === "depth") {
     const bottom = Math.max(...values, ...casts.map((cast) => page.casts.bottom[cast] ?? 0), 1);
     const deepest = choice === "upper" ? Math.min(1000, bottom) : bottom;
-    return {key, low: 0, high: deepest * 1.03, gap: depthGap, isDepth: true};
+    return {key, low: 0, high: deepest * 1.03, isDepth: true};
   }
-  const [low, high] = spanOf(values, 0.02);
-  return {key, low, high, gap: () => DENSITY_GAP * (high - low), isDepth: false};
+  const [low, high] = spanOf(choice === "deep" ? belowUpper(rows) : values, 0.02);
+  return {key, low, high, isDepth: false};
+}
+
+/** Return the densities of what lies below 1000 dbar; of all where nothing does. */
+function belowUpper(rows) {
+  const deep = rows.filter((row) => valueOf("pressure", row) >= 1000);
+  return (deep.length ? deep : rows).map((row) => valueOf("sigma2", row));
 }
 
 /** Return the edges of the bands of colour of a quantity, and its scale. */
@@ -99,8 +105,9 @@ function updateSection() {
   drawGrid(choice, length, margin);
   drawFloor(choice);
   drawNames(choice, length, vertical.low);
+  const inRange = (value) => value >= vertical.low && value <= vertical.high;
   const shown = document.getElementById("choose-bottles").checked
-    ? rows.filter((row) => Number.isFinite(valueOf(vertical.key, row)) && Number.isFinite(one.values[row])) : [];
+    ? rows.filter((row) => inRange(valueOf(vertical.key, row)) && Number.isFinite(one.values[row])) : [];
   const fill = (row) => {
     const band = Math.floor(((one.values[row] - edges[0]) / (edges.at(-1) - edges[0])) * palette.length);
     return palette[Math.min(palette.length - 1, Math.max(0, band))];
@@ -119,9 +126,9 @@ function plain(text) {
 function drawGrid({one, at, rows, vertical}, length, margin) {
   const inside = rows.filter((row) => Number.isFinite(one.values[row]));
   const profiles = profilesAt(inside.map((row) => at.get(page.samples.cast[row])),
-    inside.map((row) => valueOf(vertical.key, row)), inside.map((row) => one.values[row]));
+    inside.map((row) => valueOf(vertical.key, row)), inside.map((row) => one.values[row]), inside.map((row) => valueOf("depth", row)));
   const x0 = -margin, x1 = length + margin, {low: y0, high: y1} = vertical;
-  const grid = gridded(profiles, {x0, x1, y0, y1, ...GRID, gap: vertical.gap});
+  const grid = gridded(profiles, {x0, x1, y0, y1, ...GRID, gap: depthGap});
   section.grid = {...grid, x0, x1, y0, y1};
   const image = Bokeh.require("core/util/ndarray").ndarray(grid.values, {dtype: "float64", shape: [grid.ny, grid.nx]});
   section.image.data = {image: [image], x: [x0], y: [y0], dw: [x1 - x0], dh: [y1 - y0]};
@@ -153,7 +160,7 @@ function drawNames({chosen}, length, top) {
   const room = length / Math.max(4, Math.min(24, document.getElementById("plot-section").clientWidth / 52)), data = {x: [], y: [], t: []};
   chosen.casts.forEach((cast, k) => {
     if (data.x.length && chosen.distance[k] - data.x.at(-1) < room) return;
-    const name = page.casts.name[cast];
+    const name = page.casts.name[cast].replace(" cast ", "/");
     data.x.push(chosen.distance[k]);
     data.y.push(top);
     data.t.push(name.length > 8 ? `${name.slice(0, 7)}\u2026` : name);

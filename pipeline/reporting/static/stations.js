@@ -40,7 +40,7 @@ function profileFigure(id) {
       const [start, end] = spanOf([...known.map((row) => one.values[row]), ...ctd.x], 0.06);
       Object.assign(figure.x_range, {start, end, reset_start: start, reset_end: end});
       Object.assign(figure.y_range, {start: deepest, end: 0, reset_start: deepest, reset_end: 0});
-      figure.below[0].axis_label = wrapped(label(one), document.getElementById(`plot-${id}`).clientWidth / 8.5);
+      figure.below[0].axis_label = wrapped(known.length || ctd.x.length ? label(one) : `${one.words}: no value here`, document.getElementById(`plot-${id}`).clientWidth / 8.5);
     },
   };
 }
@@ -67,6 +67,7 @@ function sharesFigure(id) {
           colour: known.map(() => source.colour), marker: known.map(() => source.marker), alpha: known.map(() => 0.9),
         }));
       }
+      figure.below[0].axis_label = rows.some((row) => page.samples.leader[row] >= 0) ? "Share of each source" : "Sources: not resolved here";
       Object.assign(figure.y_range, {start: deepest, end: 0, reset_start: deepest, reset_end: 0});
     },
   };
@@ -88,6 +89,13 @@ async function drawStations() {
     if (cast >= 0) marks.set(rowsOfCast[cast], "button");
   });
   marks.listen(markTable);
+  marks.listen(() => {
+    const casts = new Set([...marks.rows].map((row) => page.samples.cast[row]));
+    const place = places.findIndex((one) => casts.size === 1 && casts.has(one.cast));
+    if (place < 0 || place === Number(select.value)) return;
+    select.value = String(place); // what is marked in one cast is shown here
+    update();
+  });
   for (const k of [1, 2, 3, 4]) await mount(`profile-${k}`);
   if (shares) await mount("profile-5");
 }
