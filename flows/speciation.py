@@ -13,9 +13,17 @@ import numpy as np
 
 from flows.records import ExitStatus
 from pipeline.problems import UsageProblem
+from pipeline.seawater import Domain
 from pipeline.settings import read_settings
-from pipeline.tracers.equilibria import PRESSURE, SALINITY, TEMPERATURE, validity
-from pipeline.tracers.speciation import OCEAN_PH, Speciation, speciation
+from pipeline.tracers.equilibria import PRESSURE, SALINITY, TEMPERATURE
+from pipeline.tracers.speciation import (
+    OCEAN_PH,
+    Speciation,
+    constants,
+    constants_words,
+    outside_words,
+    speciation,
+)
 
 if TYPE_CHECKING:
     import argparse
@@ -26,6 +34,14 @@ if TYPE_CHECKING:
 _TABLE_PH, _FINE_PH = np.linspace(4.0, 11.0, 29), np.linspace(4.0, 11.0, 281)
 _COLUMNS = ("ph", "aqueous_co2", "bicarbonate", "carbonate", "borate", "hydroxide")
 _HEADINGS = ("pH", "CO2", "HCO3-", "CO3--", "B(OH)4-", "OH- umol/kg")
+_UNITS = {
+    "salinity": "practical salinity", "temperature": "degC", "pressure": "dbar", "ph": "total scale",
+    "aqueous_co2": "part of DIC", "bicarbonate": "part of DIC", "carbonate": "part of DIC",
+    "borate": "part of total boron", "hydroxide": "umol/kg",
+}  # fmt: skip
+# The columns of the file, which names no units elsewhere.
+_FILE_COLUMNS = ("ph", "aqueous_co2", "bicarbonate", "carbonate", "borate_of_boron", "hydroxide_umol_kg")
+_SURFACE = Domain(0.0, PRESSURE.high)  # water lies under the surface
 _ENDINGS = (".svg", ".png", ".csv")
 
 
@@ -43,7 +59,7 @@ def print_speciation(chosen: argparse.Namespace) -> int:
     water = (chosen.salinity, chosen.temperature, chosen.pressure)
     for value, domain, name in zip(
         water,
-        (SALINITY, TEMPERATURE, PRESSURE),
+        (SALINITY, TEMPERATURE, _SURFACE),
         ("--salinity", "--temperature (degC)", "--pressure (dbar)"),
         strict=True,
     ):
@@ -61,7 +77,7 @@ def print_speciation(chosen: argparse.Namespace) -> int:
     else:
         print("\n".join([*_heading(found, water, settings), "", *_rows(found)]))
     if chosen.out is not None:
-        _write(chosen.out, speciation(_FINE_PH, *water, settings), water)
+        _write(chosen.out, speciation(_FINE_PH, *water, settings), water, settings)
         print(f"Written: {chosen.out}", file=sys.stderr)
     return ExitStatus.GOOD
 
@@ -79,27 +95,16 @@ def _heading(found: Speciation, water: tuple[float, float, float], settings: Car
     )
     equal = 0.5 * (found.pk1 + found.pk2)
     pks = (("pK1", found.pk1), ("pK2", found.pk2), ("pKB", found.pk_borate), ("pKW", found.pk_water))
-    notes = (
-        f"note  the constants of {fit.citation} were measured for a salinity of {fit.salinity.low:g} to"
-        f" {fit.salinity.high:g} and {fit.temperature.low:g} to {fit.temperature.high:g} degC; this water lies outside."
-        for fit in validity(settings)
-        if not (
-            fit.salinity.low <= water[0] <= fit.salinity.high
-            and fit.temperature.low <= water[1] <= fit.temperature.high
-        )
-    )
     return [
         f"Sea water of salinity {water[0]:g}, {water[1]:g} degC, {water[2]:g} dbar; pH on the total scale.",
-        "   ".join(f"{name} {value:.4f}" for name, value in pks) + f"   ({settings.carbonic})",
+        "   ".join(f"{name} {value:.4f}" for name, value in pks),
+        f"Constants: {constants_words(settings)}.",
         (
-            "Below pK1 most carbon is CO2, above pK2 most is carbonate; bicarbonate has its most at"
-            f" {equal:.2f}, where CO2 and carbonate are equal."
+            "CO2, HCO3- and CO3-- are parts of DIC, B(OH)4- is a part of total boron. Below pK1 most carbon is CO2, above"
+            f" pK2 most is carbonate; bicarbonate is largest at {equal:.2f}, where CO2 and carbonate are equal."
         ),
-        (
-            f"Nearly all ocean water lies between pH {OCEAN_PH[0]:g} and {OCEAN_PH[1]:g} (common practice, no source):"
-            f" {parts} of DIC."
-        ),
-        *notes,
+        f"Nearly all ocean water lies between pH {OCEAN_PH[0]:g} and {OCEAN_PH[1]:g}: {parts} of DIC.",
+        *(f"note  {note}" for note in outside_words(water, settings)),
     ]
 
 
@@ -118,29 +123,38 @@ def _as_json(
     values = asdict(found)
     return {
         "water": dict(zip(("salinity", "temperature", "pressure"), water, strict=True)),
-        "constants": settings.carbonic,
+        "constants": constants(settings),
+        "notes": outside_words(water, settings),
+        "units": _UNITS,
         **{name: values[name] for name in ("pk1", "pk2", "pk_borate", "pk_water")},
         "ocean_ph": OCEAN_PH,
         **{name: values[name].tolist() for name in _COLUMNS},
     }
 
 
-def _write(path: Path, found: Speciation, water: tuple[float, float, float]) -> None:
+def _write(
+    path: Path, found: Speciation, water: tuple[float, float, float], settings: CarbonateSettings
+) -> None:
     ending = path.suffix.lower()
     try:
         if ending == ".csv":
             text = io.StringIO()
             writer = csv.writer(text, lineterminator="\n")
-            writer.writerow(["ph", *_COLUMNS[1:5], "hydroxide_umol_kg"])
+            notes = outside_words(water, settings)
+            whole = (*(f"{value:.9g}" for value in water), constants_words(settings), " ".join(notes))
+            writer.writerow(
+                [*_FILE_COLUMNS, "salinity", "temperature_degc", "pressure_dbar", "constants", "notes"]
+            )
             writer.writerows(
-                [f"{value:.9g}" for value in row]
+                [*(f"{value:.9g}" for value in row), *whole]
                 for row in zip(*(getattr(found, name) for name in _COLUMNS), strict=True)
             )
             path.write_text(text.getvalue(), encoding="utf-8")
         else:
             from flows.speciation_figure import draw  # noqa: PLC0415 - half a second that only a figure needs
 
-            path.write_bytes(draw(found, water, ending.removeprefix(".")))
+            words = [f"constants {constants_words(settings)}", *outside_words(water, settings)]
+            path.write_bytes(draw(found, water, words, ending.removeprefix(".")))
     except OSError as error:
         raise UsageProblem(
             f"{path}: cannot be written ({error.strerror}); give another file as --out."

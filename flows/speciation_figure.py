@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import io
+import textwrap
 from typing import TYPE_CHECKING
 
 import matplotlib as mpl
@@ -11,6 +12,8 @@ from matplotlib.figure import Figure
 from pipeline.tracers.speciation import OCEAN_PH
 
 if TYPE_CHECKING:
+    from collections.abc import Sequence
+
     from pipeline.tracers.speciation import Speciation
 
 # Told apart by their dashes and by the words beside them, so that nobody depends on the colours.
@@ -22,8 +25,10 @@ _CURVES = (
     ("borate", "B(OH)$_4^-$ of boron", "#6b6b6b", ":", 10.0, "right", (-4, 6)),
 )
 
+_WIDTH = 130  # characters of a line under the figure
 
-def draw(found: Speciation, water: tuple[float, float, float], form: str) -> bytes:
+
+def draw(found: Speciation, water: tuple[float, float, float], words: Sequence[str], form: str) -> bytes:
     """Return the figure as a file.
 
     Parameters
@@ -32,6 +37,8 @@ def draw(found: Speciation, water: tuple[float, float, float], form: str) -> byt
         Forms over pH.
     water
         Salinity, temperature (degC) and pressure (dbar), for the title.
+    words
+        What stands under the figure: its constants, and where they were not measured.
     form
         ``svg`` or ``png``. The same numbers give the same bytes with the same version of matplotlib.
 
@@ -58,9 +65,14 @@ def draw(found: Speciation, water: tuple[float, float, float], form: str) -> byt
             axes.axvline(value, color="#9a9a9a", linewidth=0.8)
             axes.text(value, 0.02, f" {label} {value:.2f}", fontsize=9)
         axes.set(
-            xlim=(found.ph[0], found.ph[-1]), ylim=(0.0, 1.12), xlabel="pH, total scale", ylabel="part of DIC"
+            xlim=(found.ph[0], found.ph[-1]),
+            ylim=(0.0, 1.12),
+            xlabel="pH, total scale",
+            ylabel="part of DIC, or of boron",
         )
         axes.set_title(f"salinity {water[0]:g}, {water[1]:g} °C, {water[2]:g} dbar")
+        text = "\n".join(line for sentence in words for line in textwrap.wrap(sentence, _WIDTH))
+        figure.supxlabel(text, fontsize=7, x=0.02, ha="left")
         file = io.BytesIO()
         figure.savefig(
             file, format=form, dpi=150, metadata={"Date": None} if form == "svg" else {"Software": None}

@@ -55,9 +55,9 @@ def _relation(given: Any) -> Any:
     ):
         return given
     raise ValueError(
-        "a table: intercept and reference, and per_salinity, per_potential_temperature, per_po or uncertainty where they"
-        " are not 0, such as"
-        '  {intercept = 300.0, per_salinity = 57.2, reference = "where it comes from"}'
+        "a table: intercept and reference, and per_salinity, per_potential_temperature, per_po or uncertainty where"
+        " they are not 0, such as"
+        ' {intercept = 300.0, per_salinity = 57.2, reference = "where it comes from"}'
     )
 
 

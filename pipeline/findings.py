@@ -35,7 +35,7 @@ class Finding:
     cast: int | None = None
     sample: str | None = None
     count: int = 1
-    to_group: str = ""  # the sentence for those who made the file, where it is another than for the data manager
+    to_group: str = ""  # the sentence for those who made the file, where it is another
 
 
 @dataclass(frozen=True, slots=True)

@@ -99,5 +99,9 @@ def _of_storage(code: str, status: str | None, message: str) -> tuple[int, str, 
     if code in {"SLOW_DOWN", "SERVICE_UNAVAILABLE", "INTERNAL_FAILURE", "INTERNAL_ERROR", "THROTTLING"} or (
         status is not None and status >= "500"
     ):
-        return errno.EIO, f"the storage is overloaded or faulty ({told}), after several attempts", "run again later"
+        return (
+            errno.EIO,
+            f"the storage is overloaded or faulty ({told}), after several attempts",
+            "run again later",
+        )
     return errno.EIO, f"the storage said {told}: {message}", "mend this and run again"

@@ -70,14 +70,14 @@ def read(store: Store, sha256: str) -> bytes:
     key = layout.raw_key(sha256)
     if store.size(key) is None:
         raise ArchiveProblem(
-            f"{store.where(key)}: these bytes are not in the archive; deliver the file again."
+            f"{store.where(key)}: these bytes are not in the archive; run again with the file in the inbox."
         )
     kept = store.read(key)
     found = hashlib.sha256(kept).hexdigest()
     if found != sha256:
         raise ArchiveProblem(
             f"{store.where(key)}: damaged, its bytes hash to {found[:12]}... and not to its name; "
-            "remove it and deliver the file again."
+            "remove it and run again with the file in the inbox."
         )
     return kept
 

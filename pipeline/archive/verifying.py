@@ -150,7 +150,7 @@ def _of_bytes(store: Store, sha256: str, what: str | None) -> str | None:
     place = store.where(layout.raw_key(sha256))
     if store.size(layout.raw_key(sha256)) is None:
         gone = f"{place}: {what or 'a kept file'} is no longer there"
-        return f"{gone}; put it back from a copy, or deliver the file again."
+        return f"{gone}; put it back from a copy, or run again with the file in the inbox."
     try:
         vault.read(store, sha256)
     except ArchiveProblem as problem:

@@ -26,7 +26,7 @@ _DIC, _ALKALINITY = "dic", "alkalinity"
 
 
 def alkalinity_less_dic(data: Rows, settings: Settings) -> list[Mark]:
-    """DIC and alkalinity that do not fit together: their difference is no sea water's, nor that of any sample beside."""
+    """DIC and alkalinity that do not fit together: their difference is no sea water's, nor that of samples beside."""
     if not {_DIC, _ALKALINITY} <= data.names:
         return []
     dic, alkalinity = plausible(data, _DIC), plausible(data, _ALKALINITY)

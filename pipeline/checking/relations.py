@@ -122,12 +122,12 @@ def misplaced(data: Rows, wrong: Collection[str], share: float, fewest: int) -> 
             continue
         micrograms = MOLAR_MASS[short] / _LITRES_PER_KG
         units = {**_FACTORS, micrograms: (f"{micrograms:.0f} times", _MICROGRAMS)}
-        fits: list[tuple[float, float]] = []
-        for factor in units:
-            if np.nanmean(_inside(short, values / factor, judges, known)) >= share:
-                fits.append((_from_the_middle(short, values / factor, judges, known), factor))
+        fits = sorted(
+            (_from_the_middle(short, values / factor, judges, known), factor)
+            for factor in units
+            if np.nanmean(_inside(short, values / factor, judges, known)) >= share
+        )
         if fits:
-            fits.sort()
             near, factor = fits[0]
             by = named([label(names[judge]) for judge in judges])
             words = f"{units[factor][0]} what {by} of the same samples lead to expect below {DEEP:g} dbar"

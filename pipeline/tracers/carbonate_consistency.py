@@ -155,7 +155,7 @@ def _between(
 
 def _reconciled(told: list[Disagreement]) -> list[Disagreement]:
     """Return disagreements of pH and of the gas that blame the same sample's pair alike, or leave it undecided."""
-    if len(told) < 2:  # noqa: PLR2004 - one for pH, one for the gas
+    if len(told) < 2:
         return told
     one, other = told
     _, here, there = np.intersect1d(one.rows, other.rows, assume_unique=True, return_indices=True)

@@ -6,20 +6,19 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from pipeline.carbonate_settings import CarbonateSettings
 from pipeline.checking.figures import label, named, plain, signed
 from pipeline.findings import Finding, Severity
 from pipeline.tracers.carbonate_consistency import RESIDUALS
 from pipeline.tracers.carbonate_inputs import NUTRIENTS, SOURCES
 from pipeline.tracers.carbonate_pairs import NO_PAIR, QUANTITIES, pairs_of
 from pipeline.tracers.equilibria import CARBONIC_NAMES, PRESSURE, SALINITY, TEMPERATURE, VALIDITY, validity
-from pipeline.variables import REGISTRY
 
 if TYPE_CHECKING:
     from collections.abc import Iterator
 
     from numpy.typing import NDArray
 
+    from pipeline.carbonate_settings import CarbonateSettings
     from pipeline.tracers.carbonate import CarbonateSystem
     from pipeline.usable import Rows
 
@@ -64,10 +63,11 @@ def _left_out(data: Rows, system: CarbonateSystem) -> Iterator[Finding]:
             (outside, f"a {words} for which constants are not computed", limits),
         ):
             if count:
+                have = f"{count} samples" if count > 1 else "1 sample"
                 yield Finding(
                     "carbon-inputs", Severity.NOTE,
-                    f"{count} sample{'s' if count > 1 else ''} with two measured quantities of the carbonate system {'have' if count > 1 else 'has'} {why}; expected"
-                    f" {expected}; their carbonate system was left out.",
+                    f"{have} with two measured quantities of the carbonate system {'have' if count > 1 else 'has'}"
+                    f" {why}; expected {expected}; their carbonate system was left out.",
                     variable=name, limit=limits, count=count,
                 )  # fmt: skip
 
@@ -94,9 +94,9 @@ def _agreement(system: CarbonateSystem) -> Iterator[Finding]:
         yield Finding(
             "carbon-consistency", Severity.NOTE,
             f"measured {of_what} less what the other measured carbon gives, in {len(rows)} samples that have both:"
-            f" {middle}{unit} in the median, and {span} {low} to {high}{unit}; expected a median near zero and a scatter"
-            f" of about {expected}{unit}; an offset of all samples points to a standard, a constant or an organic base,"
-            " not to single bottles.",
+            f" {middle}{unit} in the median, and {span} {low} to {high}{unit}; expected a median near zero and a"
+            f" scatter of about {expected}{unit}; an offset of all samples points to a standard, a constant or an"
+            " organic base, not to single bottles.",
             variable=residual, value=middle, limit=expected, count=len(rows),
         )  # fmt: skip
 

@@ -138,7 +138,7 @@ def equilibria(
     ----------
     PyCO2SYS: Humphreys et al. 2022, GMD 15:15. CO2 solubility Weiss 1974; boric acid Dickson 1990; water, phosphoric
     and silicic acid Millero 1995 after Yao and Millero 1995; calcite and aragonite Mucci 1983; pressure Millero 1995.
-    The hydrostatic pressure is in no gas: the solubility is that at the surface, under whichever pressure the acids are.
+    The hydrostatic pressure is in no gas: the solubility is that at the surface, whatever the pressure on the acids.
 
     """
     import PyCO2SYS  # noqa: PLC0415 - 70 ms that only a cruise with carbon needs

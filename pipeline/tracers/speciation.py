@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from pipeline.tracers.alkalinity import LN10, dissociation
-from pipeline.tracers.equilibria import equilibria
+from pipeline.tracers.equilibria import equilibria, validity
 
 if TYPE_CHECKING:
     from pipeline.carbonate_settings import CarbonateSettings
@@ -65,6 +65,34 @@ def speciation(
         pk_borate=_pk(k.borate_k),
         pk_water=_pk(k.water_k),
     )
+
+
+def constants(settings: CarbonateSettings) -> dict[str, str]:
+    """Return which published constants these are, by what they are of; boron makes alkalinity and no part here."""
+    return {
+        "carbonic": settings.carbonic,
+        "borate": settings.borate,
+        "fluoride": settings.fluoride,
+        "bisulfate": settings.bisulfate,
+    }
+
+
+def constants_words(settings: CarbonateSettings) -> str:
+    """Return the same in words."""
+    return ", ".join(f"{name} {citation}" for name, citation in constants(settings).items())
+
+
+def outside_words(water: tuple[float, float, float], settings: CarbonateSettings) -> list[str]:
+    """Return in a sentence each which constants were not measured for a salinity and temperature, degC."""
+    return [
+        f"The constants of {fit.citation} were measured for a salinity of {fit.salinity.low:g} to"
+        f" {fit.salinity.high:g} and {fit.temperature.low:g} to {fit.temperature.high:g} degC; this water lies outside."
+        for fit in validity(settings)
+        if not (
+            fit.salinity.low <= water[0] <= fit.salinity.high
+            and fit.temperature.low <= water[1] <= fit.temperature.high
+        )
+    ]
 
 
 def _pk(constant: FloatArray) -> float:

@@ -231,8 +231,8 @@ def test_a_column_in_another_unit_is_told_in_one_sentence_and_taken_out_of_use()
     assert (finding.check, finding.severity, finding.count) == ("wrong-unit", Severity.DOUBT, 200)
     assert re.fullmatch(
         rf"{LINES}4 to 203: NITRAT has 200 values, nine tenths of them from \S+ to \S+, a thousand times"
-        r" what PHSPHT, SILCAT and OXYGEN of the same samples lead to expect below 1000 dbar, as in nmol/kg; expected about \S+ to \S+"
-        r" umol/kg there; the column is not used\.",
+        r" what PHSPHT, SILCAT and OXYGEN of the same samples lead to expect below 1000 dbar, as in nmol/kg; expected"
+        r" about \S+ to \S+ umol/kg there; the column is not used\.",
         finding.message,
     )
     assert min(result.flags["nitrate_check"]) >= 3

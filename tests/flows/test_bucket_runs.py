@@ -144,7 +144,7 @@ def start(place: str, address: str) -> subprocess.Popen[str]:
     )  # fmt: skip
 
 
-@pytest.mark.parametrize("fatal", [16, 30, 38])
+@pytest.mark.parametrize("fatal", [16, 32])
 def test_a_run_that_is_killed_is_repaired_by_the_next(
     server: str, place: str, fatal: int, monkeypatch: pytest.MonkeyPatch
 ) -> None:

@@ -24,7 +24,7 @@ if TYPE_CHECKING:
     from collections.abc import Iterator
     from pathlib import Path
 
-CRUISES = 14
+CRUISES = 8
 START_SECONDS = 60.0
 # Every cruise a batch of its own, so that there is something left to do when the worker is killed.
 CODE = """
@@ -107,9 +107,9 @@ def inbox(tmp_path: Path) -> Path:
     folder.mkdir()
     for number in range(CRUISES):
         code = f"ZZV{number:02d}090214"[:12].ljust(12, "0")
-        rows = [{"EXPOCODE": code, "CTDPRS": f"{10.0 * level:.1f}"} for level in range(1, 200)]
+        rows = [{"EXPOCODE": code, "CTDPRS": f"{10.0 * level:.1f}"} for level in range(1, 60)]
         (folder / f"{number:02d}_hy1.csv").write_bytes(bottle_file(*rows))
-        casts = {f"{n}_ct1.csv": cast_file(header={"EXPOCODE": code, "STNNBR": str(n)}) for n in range(20)}
+        casts = {f"{n}_ct1.csv": cast_file(header={"EXPOCODE": code, "STNNBR": str(n)}) for n in range(10)}
         (folder / f"{number:02d}_ct1.zip").write_bytes(zipped(casts))
     return folder
 
@@ -127,7 +127,7 @@ def test_a_worker_that_is_killed_costs_nothing_but_time(
         )  # fmt: skip
     try:
         published = archive / "rejects"
-        while not published.is_dir() or len(list(published.iterdir())) < 3:
+        while not published.is_dir() or len(list(published.iterdir())) < 2:
             assert run.poll() is None, (tmp_path / "err").read_text()
             time.sleep(0.01)
         os.kill(workers[0], signal.SIGKILL)

@@ -59,7 +59,9 @@ def test_a_lost_file_of_a_current_cruise_is_put_back(inbox: Path, archive: Path,
     path.unlink()
     if left is not None:
         path.write_bytes(left)
-    assert call("show", archive, "--verify").status != 0
+    told = call("show", archive, "--verify")
+    assert told.status != 0
+    assert "run again with the file in the inbox." in told.out + told.err
     outcome = call("run", inbox, "--archive", archive)
     assert outcome.status == 0
     assert f"{EXPOCODE}  unchanged, revision 1" in outcome.out

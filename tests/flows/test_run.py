@@ -217,10 +217,10 @@ def test_a_fault_of_ours_is_told_and_the_other_cruises_go_on(
             raise ZeroDivisionError("planted")
         return process_cruise(expocode, *arguments)  # type: ignore[arg-type]
 
-    from flows import work  # noqa: PLC0415
+    from flows.large import AtOnce  # noqa: PLC0415
     from pipeline.process import process_cruise  # noqa: PLC0415
 
-    monkeypatch.setattr(work, "process_cruise", broken)
+    monkeypatch.setattr(AtOnce, "process", staticmethod(broken))
     outcome = call("run", inbox, "--archive", tmp_path / "archive")
     assert outcome.status == 3
     assert (
