@@ -100,8 +100,8 @@ def _heading(found: Speciation, water: tuple[float, float, float], settings: Car
         "   ".join(f"{name} {value:.4f}" for name, value in pks),
         f"Constants: {constants_words(settings)}.",
         (
-            "CO2, HCO3- and CO3-- are parts of DIC, B(OH)4- is a part of total boron. Below pK1 most carbon is CO2, above"
-            f" pK2 most is carbonate; bicarbonate is largest at {equal:.2f}, where CO2 and carbonate are equal."
+            "CO2, HCO3- and CO3-- are parts of DIC, B(OH)4- is a part of total boron. Below pK1 most carbon is CO2,"
+            f" above pK2 most is carbonate; bicarbonate is largest at {equal:.2f}, where CO2 and carbonate are equal."
         ),
         f"Nearly all ocean water lies between pH {OCEAN_PH[0]:g} and {OCEAN_PH[1]:g}: {parts} of DIC.",
         *(f"note  {note}" for note in outside_words(water, settings)),

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import pytest
@@ -11,11 +11,13 @@ from hypothesis import strategies as st
 
 from pipeline.carbonate_settings import CarbonateSettings
 from pipeline.process import process_cruise
-from pipeline.settings import Settings, TracerSettings
+from pipeline.problems import SettingsProblem
+from pipeline.settings import Settings, TracerSettings, read_settings
 from pipeline.tracers.anomalies import (
     alkalinity_per_nitrate,
     anomalies,
     anomaly_forms,
+    dilution_findings,
     normalised_friis_2003,
     potential_alkalinity,
 )
@@ -24,6 +26,9 @@ from pipeline.variables import ANOMALIES
 from tests.invented import EXPOCODE, bottle_file, read
 
 from .carbon_cases import rows
+
+if TYPE_CHECKING:
+    from pathlib import Path
 
 quick = settings(deadline=None, derandomize=True, max_examples=50)
 SOLUBILITY = 330.0
@@ -199,6 +204,71 @@ def test_a_missing_value_takes_with_it_what_is_made_of_it_and_nothing_else(
         assert not any(np.isnan(values[0]) for values in found.values())
 
 
+@pytest.mark.parametrize("form", ["brewer_1975", "carter_2014"])
+def test_uncertainties_are_what_moving_every_input_by_its_own_makes(form: str) -> None:
+    """Each measurement and each ratio up and down by its uncertainty: the squares of what changes, added."""
+    ratios = STOICHIOMETRIES[next(name for name in STOICHIOMETRIES if name == "anderson_sarmiento_1994")]
+    chosen = {"potential_alkalinity": form, "preformed_alkalinity": {**RELATION, "uncertainty": 5.0}}
+    values, uncertainty = everything(WATER, **chosen)
+    sizes = {"dic": 4.0, "alkalinity": 4.0, "oxygen": 2.5, "nitrate": 0.4, "phosphate": 0.028}
+    squares = dict.fromkeys(values, 0.0)
+    for name, size in sizes.items():
+        up, down = (
+            columns(
+                {**WATER, name: WATER[name] + sign * size}
+                | ({"aou": WATER["aou"] - sign * size} if name == "oxygen" else {}),
+                **chosen,
+            )
+            for sign in (1, -1)
+        )
+        for column in squares:
+            squares[column] += float((0.5 * (up[column][0] - down[column][0])) ** 2)
+    for column in ("preformed_alkalinity", "dic_calcium_carbonate", "preformed_dic"):
+        squares[column] += (5.0 if column == "preformed_alkalinity" else 2.5) ** 2
+    carbon, per_nitrate = 117.0 / 170.0, alkalinity_per_nitrate(form)
+    back, aou = 0.5 * per_nitrate * ratios.nitrogen_per_oxygen, WATER["aou"]
+    squares["dic_soft_tissue"] += (carbon * aou * np.hypot(14 / 117, 10 / 170)) ** 2
+    squares["dic_calcium_carbonate"] += (back * aou * np.hypot(1 / 16, 10 / 170)) ** 2
+    squares["preformed_dic"] += (aou * carbon * 14 / 117) ** 2 + (aou * back / 16) ** 2
+    squares["preformed_dic"] += (aou * (carbon + back) * 10 / 170) ** 2
+    for column, square in squares.items():
+        assert uncertainty[column][0] == pytest.approx(np.sqrt(square), rel=1e-6), column
+
+
+def test_the_uncertainties_of_carbon_are_those_of_the_settings() -> None:
+    sharp = anomalies(rows([WATER]), TracerSettings(), CarbonateSettings(uncertainty={"dic": 1.0}))
+    assert sharp["dic_normalised_uncertainty"][0] == pytest.approx(35.0 / 34.9)
+    assert "dic 1 umol/kg" in anomaly_forms(TracerSettings(), CarbonateSettings(uncertainty={"dic": 1.0}))[
+        "c_star_uncertainty"
+    ]["uncertainty"]
+
+
+def test_brackish_water_is_not_normalised_to_what_no_sea_has_and_that_is_told() -> None:
+    brackish = {**WATER, "practical_salinity": 5.0, "dic": 1450.0, "alkalinity": 1500.0}
+    found = columns(brackish, {**brackish, "practical_salinity": 12.0}, WATER)
+    assert np.isnan(found["dic_normalised"][0])
+    assert np.isnan(found["potential_alkalinity"][0])
+    assert found["dic_normalised"][1] == pytest.approx(1450.0 * 35.0 / 12.0)
+    (told,) = dilution_findings(rows([brackish, WATER]), TracerSettings())
+    assert told.count == 1
+    assert told.message.startswith("1 samples with TCARBN or ALKALI have a salinity below 17.5")
+    assert not list(dilution_findings(rows([WATER]), TracerSettings()))
+
+
+@pytest.mark.parametrize(
+    "written", ["5.0", '{intercept = 5.0}', '{intercept = 5.0, slope = 2.0, reference = "x"}', '"brewer"']
+)
+def test_a_relation_that_is_none_is_refused_with_the_keys_it_has(written: str, tmp_path: Path) -> None:
+    path = tmp_path / "settings.toml"
+    path.write_text(f"[tracers]\npreformed_alkalinity = {written}\n")
+    with pytest.raises(SettingsProblem) as refused:
+        read_settings(path, {})
+    said = str(refused.value)
+    assert "line 2: 'tracers.preformed_alkalinity' is" in said
+    assert "expected a table: intercept and reference, and per_salinity, per_potential_temperature, per_po" in said
+    assert "PreformedAlkalinity" not in said
+
+
 def test_fresh_water_is_not_normalised() -> None:
     found = columns({**WATER, "practical_salinity": 0.02})
     assert np.isnan(
@@ -222,4 +292,8 @@ def test_a_cruise_that_measured_carbon_has_the_columns_and_another_has_none() ->
     assert names <= set(samples.column_names)
     assert samples.column("c_star").null_count == 0
     assert samples.column("preformed_dic").null_count == 1
-    assert samples.schema.field("c_star").metadata[b"form"] == b"ratios anderson_sarmiento_1994"
+    form = samples.schema.field("c_star").metadata[b"form"].decode()
+    assert form == "DIC + 117/170 O2 - 1/2 (TA - 16/170 O2); ratios anderson_sarmiento_1994, P:N:C:-O2 1:16:117:170"
+    held = samples.schema.field("c_star_uncertainty").metadata[b"uncertainty"].decode()
+    assert held == "dic 4 umol/kg, alkalinity 4 umol/kg, oxygen 1 %; ratios exact, as C* is defined by them"
+    assert samples.column("c_star_uncertainty").null_count == 0

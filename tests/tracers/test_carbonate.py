@@ -18,7 +18,8 @@ from hypothesis import strategies as st
 from pipeline.carbonate_settings import CarbonateSettings
 from pipeline.findings import Severity
 from pipeline.process import process_cruise
-from pipeline.settings import Settings
+from pipeline.problems import SettingsProblem
+from pipeline.settings import Settings, read_settings
 from pipeline.tracers.carbonate import system
 from pipeline.checking.marks import findings_of
 from pipeline.tracers.carbonate_consistency import disagreements
@@ -32,6 +33,7 @@ from .carbon_cases import DEEP, ocean, rows
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
+    from pathlib import Path
 
     from pipeline.findings import Finding
 
@@ -106,7 +108,13 @@ def test_a_cruise_with_carbon_has_every_column_and_a_cast_has_none() -> None:
     assert samples["carbonate_pair"].to_pylist() == ["dic+alkalinity"]
     metadata = samples.schema.field("carbonate").metadata
     assert metadata[b"form"].startswith(b"constants lueker_2000, boron lee_2010")
-    assert samples.schema.field("carbonate_uncertainty").metadata[b"uncertainty"] == b"measurements"
+    assert samples.schema.field("carbonate_uncertainty").metadata[b"uncertainty"].decode() == (
+        "measurements, one standard uncertainty each: dic 4 umol/kg, alkalinity 4 umol/kg, ph_total 0.01; without the"
+        " constants, which all samples share"
+    )
+    assert samples.schema.field("carbonate_pair").metadata[b"form"].decode() == (
+        "the first that may be used of dic+alkalinity, dic+ph, alkalinity+ph, dic+fco2, alkalinity+fco2, ph+fco2"
+    )
     assert any(f.check == "carbon-consistency" for f in made.findings)
     assert [samples[f"{name}_check"].to_pylist() for name in ("ph_total", "dic", "alkalinity")] == [
         [3],
@@ -199,10 +207,16 @@ def test_alkalinity_far_below_dic_gives_a_sentence_and_nothing_computed() -> Non
     assert columns["carbonate_pair"][1] == "dic+alkalinity"
     (finding,) = of(told([sample, DEEP]), "carbon-unsolvable")
     assert finding.message == (
-        "a_hy1.csv, line 4: TCARBN is 2175 with ALKALI 1500; expected two values that sea water of a pH between 6.5 and"
-        " 9 can have."
+        "a_hy1.csv, line 4: TCARBN and ALKALI do not fit together: 2175 and 1500; expected two values that sea water of"
+        " a pH between 6.5 and 9 can have."
     )
     assert finding.line == 4
+
+
+def test_both_of_a_pair_that_no_sea_water_has_are_doubted() -> None:
+    delivered = bottle_file({"TCARBN": "2175", "ALKALI": "1500", "PH_TOT": "-9", "PH_TMP": "-9"}, extra=CARBON)
+    samples = process_cruise(EXPOCODE, [read(delivered)], Settings()).tables["samples"]
+    assert [samples[f"{name}_check"].to_pylist() for name in ("dic", "alkalinity")] == [[3], [3]]
 
 
 def test_dic_in_another_unit_is_doubted_by_the_checks_and_not_computed_with() -> None:
@@ -221,7 +235,11 @@ def test_a_third_quantity_that_contradicts_the_pair_is_told_with_its_line() -> N
     assert columns["fco2_residual"] == pytest.approx([0.0, 0.0], abs=1e-5)
     doubts = [f for f in of(told([good, off]), "carbon-consistency") if f.severity is Severity.DOUBT]
     assert [(f.line, f.variable) for f in doubts] == [(5, "ph_total")]
-    assert "PH_TOT is 0.1 above what TCARBN and ALKALI give, " in doubts[0].message
+    assert doubts[0].message == (
+        "a_hy1.csv, line 5: PH_TOT disagrees with TCARBN and ALKALI: 7.8234 is 0.1 above what they give, with which FCO2"
+        " agrees; the three disagree by 6 times their combined uncertainty (0.017); expected at most 3 times"
+        " (carbonate.consistency of the settings)."
+    )
     (note,) = (f for f in of(told([good] * 3), "carbon-consistency") if f.variable == "ph_residual")
     assert note.severity is Severity.NOTE
     assert note.count == 3
@@ -235,6 +253,100 @@ def test_the_limit_of_consistency_is_in_combined_uncertainties() -> None:
     for limit, expected in ((0.99 * ratio, 1), (1.01 * ratio, 0)):
         found = of(told([off], consistency=limit), "carbon-consistency")
         assert sum(f.severity is Severity.DOUBT for f in found) == expected
+
+
+@pytest.mark.parametrize("few", [True, False])
+def test_the_summary_of_a_third_quantity_is_of_values_that_samples_have(few: bool) -> None:
+    n = 10 if few else 40
+    samples = [{**DEEP, **laboratory(0.1 * (i == 0) + 7e-6)} for i in range(n)]
+    (note,) = (
+        f
+        for f in of(told(samples), "carbon-consistency")
+        if f.variable == "ph_residual" and f.severity is Severity.NOTE
+    )
+    span = "they lie within 0.000 to +0.1" if few else "nine of ten lie within 0.000 to 0.000"
+    assert f"measured PH_TOT less what the other measured carbon gives, in {n} samples that have both: 0.000 in the" in (
+        note.message
+    )
+    assert span in note.message
+
+
+def test_the_summary_names_the_gas_that_was_delivered_and_its_unit() -> None:
+    gas = laboratory()
+    samples = [{**DEEP, "pco2": gas["pco2"] * 1.4, "pco2_temperature": 20.0}]
+    (note,) = (f for f in of(told(samples), "carbon-consistency") if f.severity is Severity.NOTE)
+    assert "measured PCO2 less what" in note.message
+    assert " uatm in the median" in note.message
+    (doubt,) = (f for f in of(told(samples), "carbon-consistency") if f.severity is Severity.DOUBT)
+    assert doubt.message.startswith("a_hy1.csv, line 4: PCO2 disagrees with TCARBN and ALKALI by ")
+    assert " uatm against " in doubt.message
+
+
+def test_samples_that_constants_cannot_be_had_for_are_told() -> None:
+    found = of(told([DEEP, {**DEEP, "practical_salinity": 0.5}, {**DEEP, "temperature": np.nan}]), "carbon-inputs")
+    assert [(f.variable, f.count) for f in found] == [("practical_salinity", 1), ("temperature", 1)]
+    assert found[0].message == (
+        "1 sample with two measured quantities of the carbonate system has a practical salinity for which constants are"
+        " not computed; expected 1 to 50; their carbonate system was left out."
+    )
+    assert "has no temperature that may be used; expected CTDTMP beside them" in found[1].message
+    assert not of(told([DEEP]), "carbon-inputs")
+
+
+@pytest.mark.parametrize("name", ["PH", "PH_NBS", "PH_TOT_INSITU", "pH_free", "PHTS25"])
+def test_a_ph_of_unknown_scale_is_told_even_without_another_quantity(name: str) -> None:
+    delivered = bottle_file({name: "7.6"}, extra={name: "", "ALKALI": "UMOL/KG"})
+    found = of(list(process_cruise(EXPOCODE, [read(delivered)], Settings()).findings), "carbon-unknown-scale")
+    assert [f.severity for f in found] == [Severity.NOTE]
+    assert f"{name} has the name of a pH" in found[0].message
+    assert "expected PH_TOT (total scale) or PH_SWS (seawater scale)" in found[0].message
+
+
+@pytest.mark.parametrize("name", ["PHAEO", "PHOTOSYNTHESIS", "PH_FLAG_W", "PHYTOPLANKTON", "PHI"])
+def test_what_only_begins_like_ph_is_none(name: str) -> None:
+    delivered = bottle_file({name: "7.6"}, extra={name: ""})
+    assert not of(list(process_cruise(EXPOCODE, [read(delivered)], Settings()).findings), "carbon-unknown-scale")
+
+
+def test_dic_and_alkalinity_are_given_where_the_pair_does_not_hold_them() -> None:
+    measured = laboratory()
+    samples = [DEEP, {**without("alkalinity"), **measured}, {**without("dic"), **measured}]
+    found = solved([*samples, {**without("dic", "alkalinity"), **measured}])
+    assert found["alkalinity_computed"] == pytest.approx([np.nan, 2320.0, np.nan, 2320.0], abs=1.0, nan_ok=True)
+    assert found["dic_computed"] == pytest.approx([np.nan, np.nan, 2175.0, 2175.0], abs=1.0, nan_ok=True)
+    assert found["alkalinity_computed"][1] == pytest.approx(2320.0, abs=2e-3)
+    assert found["dic_computed"][2] == pytest.approx(2175.0, abs=2e-3)
+    known = ~np.isnan(found["dic_computed"])
+    assert (found["dic_computed_uncertainty"][known] > 2.0).all()
+    whole = solved(samples, constants_uncertainty="orr_2018")
+    assert whole["dic_computed_uncertainty"][2] > found["dic_computed_uncertainty"][2]
+
+
+def test_the_uncertainty_of_computed_dic_is_what_moving_the_measurements_makes() -> None:
+    sample = {**without("dic"), **laboratory()}
+    at = solved([sample])["dic_computed_uncertainty"][0]
+    squares = 0.0
+    for name, size in (("alkalinity", 4.0), ("ph_total", 0.01)):
+        up, down = (
+            solved([{**sample, name: sample[name] + sign * size}])["dic_computed"][0] for sign in (1, -1)
+        )
+        squares += (0.5 * (up - down)) ** 2
+    assert at == pytest.approx(np.sqrt(squares), rel=1e-3)
+
+
+@pytest.mark.parametrize("degrees", [298.0, -5.0, 1e9])
+def test_an_assumed_temperature_that_is_none_is_refused(degrees: float, tmp_path: Path) -> None:
+    path = tmp_path / "settings.toml"
+    path.write_text(f"[carbonate.assumed_temperature]\nph_total = {degrees}\n")
+    with pytest.raises(SettingsProblem, match=r"line 2: 'carbonate.assumed_temperature.ph_total' is"):
+        read_settings(path, {})
+
+
+def test_of_constants_that_do_not_reach_the_samples_the_ones_that_do_are_named() -> None:
+    (found, _) = of(told([{**DEEP, "practical_salinity": 6.0, "temperature": 10.0}] * 3), "carbon-validity")
+    assert found.message.endswith('carbonate.carbonic = "roy_1993" in the settings was measured for all of them.')
+    (found, _) = of(told([{**DEEP, "practical_salinity": 4.0, "temperature": 9.5}]), "carbon-validity")[:2]
+    assert "no other constants of carbonic acid here were measured for more of them" in found.message
 
 
 def test_missing_nutrients_are_taken_as_none_and_recorded() -> None:

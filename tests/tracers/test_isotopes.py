@@ -89,7 +89,7 @@ def test_the_air_is_that_of_the_year() -> None:
     by_year = {1990: -7.8, 2010: -8.3}
     air = atmosphere_at(np.array([1950.0, 1990.0, 2000.0, 2010.0, 2030.0, np.nan]), by_year)
     np.testing.assert_allclose(air, [-7.8, -7.8, -8.05, -8.3, -8.3, np.nan])
-    np.testing.assert_array_equal(atmosphere_at(np.array([1950.0, np.nan]), {2000: -8.5}), -8.5)
+    np.testing.assert_array_equal(atmosphere_at(np.array([1950.0, np.nan]), -8.5), -8.5)
     early = {**WATER, "date": dt.date(1990, 12, 31)}
     assert parts(WATER)["equilibrium"] - parts(early)["equilibrium"] == pytest.approx(-0.5, abs=0.01)
     assert np.isnan(parts({**WATER, "date": None})["equilibrium"])
@@ -113,11 +113,15 @@ def test_years_beyond_those_of_the_air_are_told_with_how_many() -> None:
     [
         (
             "8.5",
-            "'tracers.atmosphere_delta_carbon_13' is 8.5; expected per mil from -20 to 0, one number or some by",
+            "'tracers.atmosphere_delta_carbon_13' is 8.5; expected per mil from -20 to 0: one number for all years, or"
+            " numbers by year from 1800 to 2100, such as {1972 = -7.3}, which are added to those that stand there;",
         ),
         ('"thin"', "is 'thin'; expected per mil from -20 to 0"),
-        ("{}", "expected at least 1 in it"),
-        ("{1990 = -7.8, 2010 = 8.3}", "atmosphere_delta_carbon_13.2010' is 8.3; expected greater|less than"),
+        ("{1990 = -7.8, 2010 = 8.3}", "'2010': 8.3}; expected per mil from -20 to 0"),
+        ("{14 = -8.4}", "is {'14': -8.4}; expected .* by year from 1800 to 2100"),
+        ("{1799 = -6.5}", "expected .* by year from 1800 to 2100"),
+        ("{20140 = -8.4}", "expected .* by year from 1800 to 2100"),
+        ("{" + "9" * 5000 + " = -8.4}", "expected .* by year from 1800 to 2100"),
     ],
 )
 def test_an_atmosphere_that_is_none_is_refused_in_words(written: str, words: str, tmp_path: Path) -> None:
@@ -125,6 +129,32 @@ def test_an_atmosphere_that_is_none_is_refused_in_words(written: str, words: str
     path.write_text(f"[tracers]\natmosphere_delta_carbon_13 = {written}\n")
     with pytest.raises(SettingsProblem, match=words):
         read_settings(path, {})
+
+
+def test_a_year_that_is_given_is_added_to_those_that_stand_there(tmp_path: Path) -> None:
+    path = tmp_path / "settings.toml"
+    path.write_text("[tracers]\natmosphere_delta_carbon_13 = {1972 = -7.3}\n")
+    chosen = read_settings(path, {}).tracers
+    assert chosen.atmosphere_delta_carbon_13 == {1972: -7.3, 1990: -7.8, 2010: -8.3, 2020: -8.5}
+    by_year = {"atmosphere_delta_carbon_13": {1972: -7.3}}
+    old, recent, late = ({**WATER, "date": dt.date(year, 6, 1)} for year in (1972, 2010, 2035))
+    gone = parts(recent)["equilibrium"] - parts(old, **by_year)["equilibrium"]
+    assert gone == pytest.approx(-1.0, abs=0.02)
+    assert parts(recent, **by_year) == parts(recent)
+    (told,) = [f for f in found(old, late, **by_year).findings if f.check == "isotope-atmosphere"]
+    assert told.count == 1
+    assert "expected 1972 to 2020; the nearest year stands for them;" in told.message
+    assert told.message.endswith("atmosphere_delta_carbon_13 = {2035 = ...}, which is added to those.")
+
+
+def test_one_number_for_all_years_stays_one(tmp_path: Path) -> None:
+    path = tmp_path / "settings.toml"
+    path.write_text("[tracers]\natmosphere_delta_carbon_13 = -8.5\n")
+    chosen = read_settings(path, {})
+    assert chosen.tracers.atmosphere_delta_carbon_13 == -8.5
+    again = Settings.model_validate(chosen.model_dump())
+    assert again.sha256 == chosen.sha256
+    assert Settings.model_validate(Settings().model_dump()).sha256 == Settings().sha256
 
 
 def test_the_slope_is_computed_and_is_about_that_of_the_literature() -> None:
@@ -192,7 +222,8 @@ def test_the_uncertainty_of_the_air_sea_component_holds_measurements_and_ratio()
     printed = found(WATER, biological_slope="lynch_stieglitz_1995")
     assert column(printed, "biological_uncertainty")[0] == pytest.approx(1.1 * 0.02 * 1.4, rel=1e-12)
     assert (
-        of.forms["delta_carbon_13_air_sea_uncertainty"]["uncertainty"] == "carbon-13, phosphate and C:P +-14"
+        of.forms["delta_carbon_13_air_sea_uncertainty"]["uncertainty"]
+        == "carbon-13 0.03 per mil, or its delivered error where that is larger; phosphate 2 % and C:P +-14"
     )
 
 
@@ -266,7 +297,10 @@ def test_a_cruise_with_carbon_13_has_the_columns_with_what_they_were_made_by() -
     assert not {v.name for v in ISOTOPES} & set(made.tables["casts"].column_names)
     assert b"-1.0105 PO4" in samples.schema.field("delta_carbon_13_air_sea").metadata[b"form"]
     told = samples.schema.field("delta_carbon_13_equilibrium").metadata
-    assert told[b"form"].startswith(b"zhang_1995; atmosphere 1990 -7.8, 2010 -8.3, 2020 -8.5 per mil")
+    assert told[b"form"] == (
+        b"zhang_1995: enrichment 0.014 T f(CO3) -0.105 T +10.53 per mil; atmosphere 1990 -7.8, 2010 -8.3, 2020 -8.5 per"
+        b" mil, linear between, at the year of the sample"
+    )
     assert told[b"units"] == b"1e-3"
     temperature = samples.column("potential_temperature")[0].as_py()
     part = np.array(samples.column("carbonate_fraction")[0].as_py())
