@@ -27,14 +27,18 @@ _LEAK = "leaking-bottle"
 # Checks of a value beside others, that which says most of the cause first. Where two doubt a value, the first is told.
 _OF_VALUES = (
     "gross-range", "oxygen-saturation", _LEAK, "cast-offset", "stuck-values", "bottle-against-ctd", "spike",
-    "nitrate-to-phosphate", "property-misfit", "isotope-range", "regional-range", "density-inversion", "gradient",
+    "nitrate-to-phosphate", "alkalinity-less-dic", "property-misfit", "isotope-range", "regional-range",
+    "density-inversion", "gradient",
 )  # fmt: skip
 # Checks of a cast as a whole, in the same order. A time or a place that is wrong makes a ship too fast.
 _OF_CASTS = (
     "departure-date", "cast-time", "position-zero", "position-sign", "clock-order", "off-section", "station-speed",
 )  # fmt: skip
 # What doubts a bottle where it doubts several of its quantities, and how many these are (our choice, no source).
-_OF_BOTTLES = frozenset(_OF_VALUES) - {"gross-range", _LEAK, "cast-offset", "stuck-values"}
+# Where two do not fit together, one of them may be right.
+_OF_BOTTLES = frozenset(_OF_VALUES) - {
+    "gross-range", _LEAK, "cast-offset", "stuck-values", "nitrate-to-phosphate", "alkalinity-less-dic",
+}  # fmt: skip
 _FEWEST_OFF = 3
 _SEVERITIES = (Severity.FAULT, Severity.DOUBT, Severity.NOTE)
 

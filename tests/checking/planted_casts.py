@@ -31,6 +31,9 @@ def cases() -> Iterator[Case]:
     yield from offsets()
     yield from powers()
     yield from exchanged()
+    yield Case("alkalinity-less-dic", "an alkalinity below DIC", *shifted("alkalinity", (4, 2000, -400.0)))
+    for label, table in ALIKE.items():
+        yield Case("alkalinity-less-dic", label, table, NO_ROWS)
 
 
 def offsets() -> Iterator[Case]:

@@ -6,8 +6,13 @@ import csv
 import json
 from typing import TYPE_CHECKING
 
+import matplotlib as mpl
+import numpy as np
 import pytest
 
+from flows.speciation_figure import draw
+from pipeline.carbonate_settings import CarbonateSettings
+from pipeline.tracers.speciation import speciation
 from tests.flows.conftest import call
 
 if TYPE_CHECKING:
@@ -20,7 +25,13 @@ def test_the_table_says_which_constants_and_where_the_ocean_lies() -> None:
     outcome = call("speciation", *WATER)
     assert outcome.status == 0
     assert "pK1 5.8472   pK2 8.9660   pKB 8.5975" in outcome.out
-    assert "bicarbonate has its most at 7.41" in outcome.out
+    assert "bicarbonate is largest at 7.41" in outcome.out
+    assert "B(OH)4- is a part of total boron" in outcome.out
+    assert (
+        "Constants: carbonic lueker_2000, borate lee_2010, fluoride perez_fraga_1987, bisulfate dickson_1990."
+        in outcome.out
+    )
+    assert "no source" not in outcome.out
     rows = [line for line in outcome.out.splitlines() if line[:5].strip().replace(".", "").isdigit()]
     assert len(rows) == 29
     assert [row.split()[0] for row in rows if row.endswith("ocean")] == ["7.50", "7.75", "8.00"]
@@ -40,10 +51,37 @@ def test_the_same_as_json_with_parts_that_add_up() -> None:
 def test_water_outside_the_measurements_of_a_constant_is_told() -> None:
     out = call("speciation", "--salinity", "35", "--temperature", "1").out
     assert (
-        "note  the constants of Lueker et al. 2000 were measured for a salinity of 19 to 43 and 2 to 35 degC"
+        "note  The constants of Lueker et al. 2000 were measured for a salinity of 19 to 43 and 2 to 35 degC"
         in out
     )
     assert "note" not in call("speciation", *WATER).out
+
+
+def test_every_form_says_the_constants_the_units_and_where_nobody_measured(tmp_path: Path) -> None:
+    cold = ("--salinity", "35", "--temperature", "1")
+    told = json.loads(call("speciation", *cold, "--format", "json", "--out", tmp_path / "a.svg").out)
+    assert told["constants"]["borate"] == "lee_2010"
+    assert told["units"]["hydroxide"] == "umol/kg"
+    assert told["units"]["borate"] == "part of total boron"
+    assert [note[:33] for note in told["notes"]] == [
+        "The constants of Lueker et al. 20",
+        "The constants of Perez and Fraga ",
+    ]
+    assert json.loads(call("speciation", *WATER, "--format", "json").out)["notes"] == []
+    call("speciation", *cold, "--out", tmp_path / "a.csv")
+    row = next(csv.DictReader((tmp_path / "a.csv").read_text(encoding="utf-8").splitlines()))
+    assert (row["salinity"], row["temperature_degc"], row["pressure_dbar"]) == ("35", "1", "0")
+    assert row["constants"].startswith("carbonic lueker_2000, borate lee_2010, ")
+    assert row["notes"] == " ".join(told["notes"])
+    assert 0 < float(row["borate_of_boron"]) < 1e-4
+
+
+def test_the_figure_says_the_same() -> None:
+    with mpl.rc_context({"svg.fonttype": "none"}):
+        found = speciation(np.linspace(4.0, 11.0, 29), 35.0, 1.0, 0.0, CarbonateSettings())
+        figure = draw(found, (35.0, 1.0, 0.0), ["constants of a test", "A note on them."], "svg").decode()
+    for words in ("part of DIC, or of boron", "constants of a test", "A note on them."):
+        assert words in figure
 
 
 def test_constants_are_those_of_the_settings(tmp_path: Path) -> None:
@@ -80,7 +118,8 @@ def test_the_csv_opens_as_a_table(tmp_path: Path) -> None:
     [
         (("--salinity", "nan"), "--salinity: found nan, expected 1 to 50; correct it."),
         (("--temperature", "99"), "--temperature (degC): found 99, expected -4 to 45; correct it."),
-        (("--pressure", "1e9"), "--pressure (dbar): found 1e+09, expected -10 to 12000; correct it."),
+        (("--pressure", "1e9"), "--pressure (dbar): found 1e+09, expected 0 to 12000; correct it."),
+        (("--pressure", "-5"), "--pressure (dbar): found -5, expected 0 to 12000; correct it."),
         (
             ("--out", "a.pdf"),
             "a.pdf: found another ending, expected .svg, .png, .csv; give such a file as --out.",

@@ -11,10 +11,11 @@ from hypothesis import strategies as st
 
 from pipeline.carbonate_settings import ProfileSettings
 from pipeline.settings import Settings
-from pipeline.tracers.extremes import extremes
+from pipeline.tracers.extremes import extreme_forms, extremes
 from pipeline.tracers.horizons import horizon_findings, horizons
 from pipeline.tracers.profiles import profiles, station_groups
 from pipeline.tracers.samples import sample_tracers
+from pipeline.variables import EXTREMES
 
 from .carbon_cases import DEEP, rows
 
@@ -52,6 +53,40 @@ def test_the_horizon_is_linear_between_two_bottles_and_in_every_row_of_the_stati
     found = horizons_of(DEPTHS, (3.0, 2.0, 1.2, 0.7, 0.6))
     assert found.depth == pytest.approx([500.0 + 400.0 * 0.2 / 0.5] * 5)
     assert found.uncertainty == pytest.approx([0.03 / (0.5 / 400.0)] * 5)
+
+
+def test_the_uncertainty_follows_the_profile_and_not_its_slope_between_two_bottles() -> None:
+    """Nearly level between two bottles, steep beside them: first order would give hundreds of metres."""
+    found = horizons_of((10.0, 300.0, 500.0, 700.0, 900.0), (3.0, 1.5, 1.001, 0.999, 0.5))
+    assert found.depth[0] == pytest.approx(600.0)
+    upper = 300.0 + 200.0 * (1.47 - 1.0) / (1.47 - 0.971)
+    lower = 700.0 + 200.0 * (1.029 - 1.0) / (1.029 - 0.53)
+    assert found.uncertainty[0] == pytest.approx(0.5 * (lower - upper))
+    assert found.uncertainty[0] < 0.03 / (0.002 / 200.0) / 20
+
+
+def test_a_horizon_that_its_own_uncertainty_moves_out_of_the_bottles_has_none_and_is_told() -> None:
+    depth, saturation = (10.0, 400.0, 900.0, 1600.0), (1.01, 1.008, 1.004, 0.996)
+    found = horizons_of(depth, saturation)
+    assert found.depth[0] == pytest.approx(1250.0)
+    assert np.isnan(found.uncertainty).all()
+    data = rows([{"station": "17"}] * 4)
+    (told,) = horizon_findings(data, station_groups(data.table), "calcite", found, CHOICE)
+    assert told.message.startswith("the calcite saturation horizon of station 17 is hardly known: saturation is so near")
+    assert "by more than 800 m, or beyond the bottles; expected less (profiles.horizon_uncertainty" in told.message
+    sharp = horizons_of(DEPTHS, (3.0, 2.0, 1.2, 0.7, 0.6))
+    assert not horizon_findings(data, station_groups(data.table), "calcite", sharp, CHOICE)
+
+
+def test_a_horizon_that_is_uncertain_by_very_much_is_told() -> None:
+    depth = (10.0, 100.0, 1500.0, 3000.0, 3100.0)
+    choice = ProfileSettings(gap=2000.0)
+    found = horizons(np.zeros(5, dtype=np.int64), np.array(depth), np.array((2.0, 1.02, 1.0, 0.985, 0.5)),
+                     np.full(5, 0.03), choice)  # fmt: skip
+    assert found.uncertainty[0] > 800.0
+    data = rows([{"station": "4"}] * 5)
+    (told,) = horizon_findings(data, station_groups(data.table), "aragonite", found, choice)
+    assert "is hardly known" in told.message
 
 
 def test_a_bottle_at_one_exactly_is_the_horizon() -> None:
@@ -163,13 +198,46 @@ def test_a_layer_that_reaches_the_last_bottle_has_no_thickness() -> None:
     [
         (220.0, 200.0, 150.0, 120.0, 100.0),  # falls to the last bottle
         (100.0, 120.0, 150.0, 180.0, 200.0),  # rises from the first
-        (220.0, 201.0, 200.5, 200.0, 201.5),  # level below, as far as oxygen can be measured
+        (220.0, 201.0, 200.5, 200.0, 201.5),  # level below, as far as a bottle repeats
+        (220.0, 201.0, 200.0, 200.5, 201.5),  # the last bottle alone is higher
         (220.0, 200.0, np.nan, np.nan, np.nan),
     ],
 )
 def test_a_profile_that_brackets_no_minimum_has_none(oxygen: tuple[float, ...]) -> None:
     found = extremes_of(DEPTHS, oxygen=oxygen)
     assert all(np.isnan(values).all() for values in found.values())
+
+
+def test_a_minimum_that_a_person_sees_is_found_though_its_rise_is_within_the_accuracy_of_oxygen() -> None:
+    """Off by a standard are all bottles of a station alike: two per cent of it make no minimum and hide none."""
+    depth = (10.0, 500.0, 1000.0, 1500.0, 2000.0, 2500.0, 3000.0, 3500.0, 4000.0)
+    oxygen = np.array((230.0, 190.0, 175.0, 160.0, 153.0, 153.9, 154.8, 155.1, 155.2))
+    for standard in (0.98, 1.0, 1.02):
+        assert extremes_of(depth, oxygen=standard * oxygen)["oxygen_minimum_depth"][0] == 2000.0
+    one_bottle = np.where(np.array(depth) == 3500.0, 157.0, np.minimum(oxygen, 153.0 + (oxygen > 160) * 99))
+    assert np.isnan(extremes_of(depth, oxygen=one_bottle)["oxygen_minimum_depth"][0])
+
+
+def test_noise_makes_an_extreme_of_a_level_profile_as_seldom_as_is_said() -> None:
+    """Of ten level bottles, in one of a hundred stations: what the description of profiles.extreme_rise says."""
+    chance = np.random.default_rng(3)
+    n_station, n_level = 2000, 10
+    depth = np.tile(np.arange(2 * n_level) * 100.0, n_station)
+    station = np.repeat(np.arange(n_station), 2 * n_level)
+    falling = np.concatenate([np.linspace(230.0, 160.0, n_level), np.full(n_level, 150.0)])
+    oxygen = np.tile(falling, n_station) + CHOICE.repeatability.oxygen * chance.standard_normal(len(depth))
+    nothing = np.full(len(depth), np.nan)
+    found = extremes(station, depth, lambda name: oxygen if name == "oxygen" else nothing, CHOICE)["oxygen_minimum"]
+    part = float((~np.isnan(found)).mean())
+    assert 0.003 < part < 0.02
+
+
+def test_the_rule_of_an_extreme_is_in_its_metadata() -> None:
+    forms = extreme_forms(CHOICE)
+    assert forms["oxygen_minimum"]["form"].startswith("more than 4 times 0.4 umol/kg, what one bottle repeats to")
+    assert forms["delta_carbon_13_minimum_depth"]["form"].startswith("more than 4 times 0.03 per mil")
+    assert forms["oxygen_minimum_thickness"] == {"form": "limit 60 umol/kg"}
+    assert set(forms) == {v.name for v in EXTREMES}
 
 
 def test_phosphate_has_a_maximum_and_carbon_13_a_minimum() -> None:
