@@ -3,16 +3,19 @@
 from __future__ import annotations
 
 import re
-from typing import TYPE_CHECKING, get_args
+from typing import TYPE_CHECKING, Any, Literal, get_args, get_origin
 
 import pytest
+from pydantic import BaseModel
 
+from pipeline.carbon_tracer_settings import PreformedAlkalinity
+from pipeline.carbonate_settings import CarbonateSettings, ProfileSettings
 from pipeline.mixing import read_catalogue
 from pipeline.mixing.entries import SourceSet
 from pipeline.mixing.rules import parse_rules
 from pipeline.mixing.tags import tag_table
 from pipeline.reading import read_cruise_file
-from pipeline.settings import MixingSettings, read_settings
+from pipeline.settings import MixingSettings, TracerSettings, read_settings
 from pipeline.tables import MIXING, MIXTURES, TABLE_NAMES
 from tests.flows.conftest import FIXTURES, ROOT, call
 
@@ -91,6 +94,57 @@ def test_the_defaults_are_those_of_the_code() -> None:
     assert {name: float(value) for name, value in stated.items()} == {
         name: getattr(MixingSettings(), name) for name in stated
     }
+
+
+def _written(value: Any) -> str:
+    """Return a default as it stands in a settings file."""
+    match value:
+        case None:
+            return "none"
+        case BaseModel():
+            return _written({name: getattr(value, name) for name in type(value).model_fields})
+        case dict():
+            return "{" + ", ".join(f"{key} = {_written(own)}" for key, own in value.items()) + "}"
+        case str():
+            return f'"{value}"'
+        case _:
+            return str(value)
+
+
+def _literals(annotation: Any) -> set[str]:
+    """Return the words that a setting may be, or the keys of its table."""
+    if get_origin(annotation) is Literal:
+        return {str(choice) for choice in get_args(annotation)}
+    return {choice for part in get_args(annotation) for choice in _literals(part)}
+
+
+def test_the_keys_of_carbon_are_told_with_their_defaults_and_choices() -> None:
+    shown = re.search(
+        r"\| setting \| default \| choices, or what it is \|\n\|---\|---\|---\|\n((?:\|.*\|\n)+)", TEXT
+    )
+    assert shown
+    stated = {}
+    for line in shown[1].splitlines():
+        names, defaults, words = (cell.strip() for cell in line.strip("|").split(" | "))
+        values = re.findall(r"`([^`]+)`", defaults) or [defaults]
+        for name, value in zip(re.findall(r"`([\w.]+)`", names), values, strict=True):
+            stated[name] = (value, f"{defaults} {words}")
+    sections = {"carbonate": CarbonateSettings, "tracers": TracerSettings, "profiles": ProfileSettings}
+    fields = {
+        f"{section}.{name}": field
+        for section, own in sections.items()
+        for name, field in own.model_fields.items()
+    }
+    assert list(stated) == [name for name in stated if name in fields]
+    assert set(stated) == set(fields)
+    assert {name: value for name, (value, _) in stated.items()} == {
+        name: _written(field.default) for name, field in fields.items()
+    }
+    for name, field in fields.items():
+        for choice in _literals(field.annotation):
+            assert re.search(rf'`"?{choice}"?`', stated[name][1]), (name, choice)
+    for key in PreformedAlkalinity.model_fields:
+        assert re.search(rf"\b{key}\b", stated["tracers.preformed_alkalinity"][1]), key
 
 
 def test_every_key_of_a_set_is_told_with_its_choices() -> None:

@@ -167,6 +167,7 @@ ALIKE = {
 CHECKS = (
     "bottle-against-ctd", "oxygen-saturation", "nitrate-to-phosphate", "nitrate-and-nitrite", "negative-nutrient",
     "property-misfit", "isotope-range", "regional-range", "cruise-offset", "wrong-unit", "position-sign",
+    "alkalinity-less-dic",
 )  # fmt: skip
 # What a cruise in such waters is rightly told in a note: the check looks at the open ocean.
 TOLD = {
@@ -182,6 +183,7 @@ def cases() -> Iterator[Case]:
     yield from _nutrients()
     yield from _misfits()
     yield from _isotopes_and_regions()
+    yield from _carbon()
     yield from _offsets()
     yield from _units()
     yield from _positions()
@@ -263,6 +265,15 @@ def _isotopes_and_regions() -> Iterator[Case]:
     check = "regional-range"
     yield Case(check, "a warm deep sample", *shifted("temperature", (3, 3000, 8.0)))
     yield Case(check, "a salty deep sample", *shifted("bottle_salinity", (3, 3000, 1.5)))
+
+
+def _carbon() -> Iterator[Case]:
+    check = "alkalinity-less-dic"
+    yield Case(check, "alkalinity below DIC", *shifted("alkalinity", (4, 1000, -230.0)))
+    yield Case(check, "alkalinity far above DIC", *shifted("alkalinity", (4, 1500, 420.0)))
+    yield Case(check, "a DIC that is no sea water's", *shifted("dic", (4, 100, -400.0)))
+    old = {"dic": lambda at: Q["alkalinity"](at) - 20.0 + 200.0 * np.exp(-at.p / 300.0)}
+    yield Case(check, "old water with as much DIC as alkalinity", ocean(changes=old), set())
 
 
 def _offsets() -> Iterator[Case]:

@@ -238,9 +238,12 @@ def test_uncertainties_are_what_moving_every_input_by_its_own_makes(form: str) -
 def test_the_uncertainties_of_carbon_are_those_of_the_settings() -> None:
     sharp = anomalies(rows([WATER]), TracerSettings(), CarbonateSettings(uncertainty={"dic": 1.0}))
     assert sharp["dic_normalised_uncertainty"][0] == pytest.approx(35.0 / 34.9)
-    assert "dic 1 umol/kg" in anomaly_forms(TracerSettings(), CarbonateSettings(uncertainty={"dic": 1.0}))[
-        "c_star_uncertainty"
-    ]["uncertainty"]
+    assert (
+        "dic 1 umol/kg"
+        in anomaly_forms(TracerSettings(), CarbonateSettings(uncertainty={"dic": 1.0}))["c_star_uncertainty"][
+            "uncertainty"
+        ]
+    )
 
 
 def test_brackish_water_is_not_normalised_to_what_no_sea_has_and_that_is_told() -> None:
@@ -256,7 +259,7 @@ def test_brackish_water_is_not_normalised_to_what_no_sea_has_and_that_is_told() 
 
 
 @pytest.mark.parametrize(
-    "written", ["5.0", '{intercept = 5.0}', '{intercept = 5.0, slope = 2.0, reference = "x"}', '"brewer"']
+    "written", ["5.0", "{intercept = 5.0}", '{intercept = 5.0, slope = 2.0, reference = "x"}', '"brewer"']
 )
 def test_a_relation_that_is_none_is_refused_with_the_keys_it_has(written: str, tmp_path: Path) -> None:
     path = tmp_path / "settings.toml"
@@ -265,7 +268,10 @@ def test_a_relation_that_is_none_is_refused_with_the_keys_it_has(written: str, t
         read_settings(path, {})
     said = str(refused.value)
     assert "line 2: 'tracers.preformed_alkalinity' is" in said
-    assert "expected a table: intercept and reference, and per_salinity, per_potential_temperature, per_po" in said
+    assert (
+        "expected a table: intercept and reference, and per_salinity, per_potential_temperature, per_po"
+        in said
+    )
     assert "PreformedAlkalinity" not in said
 
 
@@ -293,7 +299,10 @@ def test_a_cruise_that_measured_carbon_has_the_columns_and_another_has_none() ->
     assert samples.column("c_star").null_count == 0
     assert samples.column("preformed_dic").null_count == 1
     form = samples.schema.field("c_star").metadata[b"form"].decode()
-    assert form == "DIC + 117/170 O2 - 1/2 (TA - 16/170 O2); ratios anderson_sarmiento_1994, P:N:C:-O2 1:16:117:170"
+    assert (
+        form
+        == "DIC + 117/170 O2 - 1/2 (TA - 16/170 O2); ratios anderson_sarmiento_1994, P:N:C:-O2 1:16:117:170"
+    )
     held = samples.schema.field("c_star_uncertainty").metadata[b"uncertainty"].decode()
     assert held == "dic 4 umol/kg, alkalinity 4 umol/kg, oxygen 1 %; ratios exact, as C* is defined by them"
     assert samples.column("c_star_uncertainty").null_count == 0

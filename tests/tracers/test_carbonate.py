@@ -50,7 +50,10 @@ def told(samples: list[dict[str, Any]], **chosen: Any) -> list[Finding]:
     choice = CarbonateSettings.model_validate(chosen)
     data = rows(samples)
     found = system(data, choice)
-    marks = (*input_marks(data, choice), *system_marks(data, found, disagreements(data, found, choice), choice))
+    marks = (
+        *input_marks(data, choice),
+        *system_marks(data, found, disagreements(data, found, choice), choice),
+    )
     return [*findings_of(data, marks), *carbonate_findings(data, found, choice)]
 
 
@@ -214,7 +217,9 @@ def test_alkalinity_far_below_dic_gives_a_sentence_and_nothing_computed() -> Non
 
 
 def test_both_of_a_pair_that_no_sea_water_has_are_doubted() -> None:
-    delivered = bottle_file({"TCARBN": "2175", "ALKALI": "1500", "PH_TOT": "-9", "PH_TMP": "-9"}, extra=CARBON)
+    delivered = bottle_file(
+        {"TCARBN": "2175", "ALKALI": "1500", "PH_TOT": "-9", "PH_TMP": "-9"}, extra=CARBON
+    )
     samples = process_cruise(EXPOCODE, [read(delivered)], Settings()).tables["samples"]
     assert [samples[f"{name}_check"].to_pylist() for name in ("dic", "alkalinity")] == [[3], [3]]
 
@@ -265,8 +270,9 @@ def test_the_summary_of_a_third_quantity_is_of_values_that_samples_have(few: boo
         if f.variable == "ph_residual" and f.severity is Severity.NOTE
     )
     span = "they lie within 0.000 to +0.1" if few else "nine of ten lie within 0.000 to 0.000"
-    assert f"measured PH_TOT less what the other measured carbon gives, in {n} samples that have both: 0.000 in the" in (
-        note.message
+    assert (
+        f"measured PH_TOT less what the other measured carbon gives, in {n} samples that have both: 0.000 in the"
+        in (note.message)
     )
     assert span in note.message
 
@@ -283,7 +289,9 @@ def test_the_summary_names_the_gas_that_was_delivered_and_its_unit() -> None:
 
 
 def test_samples_that_constants_cannot_be_had_for_are_told() -> None:
-    found = of(told([DEEP, {**DEEP, "practical_salinity": 0.5}, {**DEEP, "temperature": np.nan}]), "carbon-inputs")
+    found = of(
+        told([DEEP, {**DEEP, "practical_salinity": 0.5}, {**DEEP, "temperature": np.nan}]), "carbon-inputs"
+    )
     assert [(f.variable, f.count) for f in found] == [("practical_salinity", 1), ("temperature", 1)]
     assert found[0].message == (
         "1 sample with two measured quantities of the carbonate system has a practical salinity for which constants are"
@@ -305,14 +313,18 @@ def test_a_ph_of_unknown_scale_is_told_even_without_another_quantity(name: str) 
 @pytest.mark.parametrize("name", ["PHAEO", "PHOTOSYNTHESIS", "PH_FLAG_W", "PHYTOPLANKTON", "PHI"])
 def test_what_only_begins_like_ph_is_none(name: str) -> None:
     delivered = bottle_file({name: "7.6"}, extra={name: ""})
-    assert not of(list(process_cruise(EXPOCODE, [read(delivered)], Settings()).findings), "carbon-unknown-scale")
+    assert not of(
+        list(process_cruise(EXPOCODE, [read(delivered)], Settings()).findings), "carbon-unknown-scale"
+    )
 
 
 def test_dic_and_alkalinity_are_given_where_the_pair_does_not_hold_them() -> None:
     measured = laboratory()
     samples = [DEEP, {**without("alkalinity"), **measured}, {**without("dic"), **measured}]
     found = solved([*samples, {**without("dic", "alkalinity"), **measured}])
-    assert found["alkalinity_computed"] == pytest.approx([np.nan, 2320.0, np.nan, 2320.0], abs=1.0, nan_ok=True)
+    assert found["alkalinity_computed"] == pytest.approx(
+        [np.nan, 2320.0, np.nan, 2320.0], abs=1.0, nan_ok=True
+    )
     assert found["dic_computed"] == pytest.approx([np.nan, np.nan, 2175.0, 2175.0], abs=1.0, nan_ok=True)
     assert found["alkalinity_computed"][1] == pytest.approx(2320.0, abs=2e-3)
     assert found["dic_computed"][2] == pytest.approx(2175.0, abs=2e-3)
@@ -344,7 +356,9 @@ def test_an_assumed_temperature_that_is_none_is_refused(degrees: float, tmp_path
 
 def test_of_constants_that_do_not_reach_the_samples_the_ones_that_do_are_named() -> None:
     (found, _) = of(told([{**DEEP, "practical_salinity": 6.0, "temperature": 10.0}] * 3), "carbon-validity")
-    assert found.message.endswith('carbonate.carbonic = "roy_1993" in the settings was measured for all of them.')
+    assert found.message.endswith(
+        'carbonate.carbonic = "roy_1993" in the settings was measured for all of them.'
+    )
     (found, _) = of(told([{**DEEP, "practical_salinity": 4.0, "temperature": 9.5}]), "carbon-validity")[:2]
     assert "no other constants of carbonic acid here were measured for more of them" in found.message
 

@@ -32,7 +32,9 @@ AT = 5  # the sample that is spoiled: 1000 dbar
 MEASURED = ("dic", "alkalinity", "ph_total", "fco2")
 
 
-def cast(*spoiled: tuple[int, str, float], noise: float = 0.0, seed: int = 0, gas: bool = False) -> list[dict[str, Any]]:
+def cast(
+    *spoiled: tuple[int, str, float], noise: float = 0.0, seed: int = 0, gas: bool = False
+) -> list[dict[str, Any]]:
     """Return a cast of an invented ocean whose pH (25 degC) and gas (20 degC) agree with its DIC and alkalinity."""
     p = np.array(PRESSURES)
     salinity = 34.6 + 0.9 * np.exp(-p / 250.0) - 0.3 * np.exp(-(((p - 900.0) / 350.0) ** 2))

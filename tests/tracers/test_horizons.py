@@ -72,8 +72,13 @@ def test_a_horizon_that_its_own_uncertainty_moves_out_of_the_bottles_has_none_an
     assert np.isnan(found.uncertainty).all()
     data = rows([{"station": "17"}] * 4)
     (told,) = horizon_findings(data, station_groups(data.table), "calcite", found, CHOICE)
-    assert told.message.startswith("the calcite saturation horizon of station 17 is hardly known: saturation is so near")
-    assert "by more than 800 m, or beyond the bottles; expected less (profiles.horizon_uncertainty" in told.message
+    assert told.message.startswith(
+        "the calcite saturation horizon of station 17 is hardly known: saturation is so near"
+    )
+    assert (
+        "by more than 800 m, or beyond the bottles; expected less (profiles.horizon_uncertainty"
+        in told.message
+    )
     sharp = horizons_of(DEPTHS, (3.0, 2.0, 1.2, 0.7, 0.6))
     assert not horizon_findings(data, station_groups(data.table), "calcite", sharp, CHOICE)
 
@@ -227,14 +232,18 @@ def test_noise_makes_an_extreme_of_a_level_profile_as_seldom_as_is_said() -> Non
     falling = np.concatenate([np.linspace(230.0, 160.0, n_level), np.full(n_level, 150.0)])
     oxygen = np.tile(falling, n_station) + CHOICE.repeatability.oxygen * chance.standard_normal(len(depth))
     nothing = np.full(len(depth), np.nan)
-    found = extremes(station, depth, lambda name: oxygen if name == "oxygen" else nothing, CHOICE)["oxygen_minimum"]
+    found = extremes(station, depth, lambda name: oxygen if name == "oxygen" else nothing, CHOICE)[
+        "oxygen_minimum"
+    ]
     part = float((~np.isnan(found)).mean())
     assert 0.003 < part < 0.02
 
 
 def test_the_rule_of_an_extreme_is_in_its_metadata() -> None:
     forms = extreme_forms(CHOICE)
-    assert forms["oxygen_minimum"]["form"].startswith("more than 4 times 0.4 umol/kg, what one bottle repeats to")
+    assert forms["oxygen_minimum"]["form"].startswith(
+        "more than 4 times 0.4 umol/kg, what one bottle repeats to"
+    )
     assert forms["delta_carbon_13_minimum_depth"]["form"].startswith("more than 4 times 0.03 per mil")
     assert forms["oxygen_minimum_thickness"] == {"form": "limit 60 umol/kg"}
     assert set(forms) == {v.name for v in EXTREMES}
