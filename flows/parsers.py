@@ -203,7 +203,9 @@ def _add_what_is_run(run: argparse.ArgumentParser) -> None:
     run.add_argument("--settings", type=Path, metavar="FILE.toml", help="settings; the defaults without it")
     run.add_argument("--summary", type=Path, metavar="FILE.json", help="write the summary there as JSON too")
     run.add_argument(
-        "--notify-command", metavar="COMMAND", help="run it after the run, the summary as JSON on its standard input"
+        "--notify-command",
+        metavar="COMMAND",
+        help="run it after the run, the summary as JSON on its standard input",
     )
     run.add_argument(
         "--cluster", metavar="ADDRESS",
@@ -267,9 +269,15 @@ def _add_changes(commands: argparse._SubParsersAction[argparse.ArgumentParser]) 
     changes.add_argument("archive", type=place, metavar="ARCHIVE", help="the archive's directory")
     changes.add_argument("cruise", metavar="CRUISE", help="expocode of a cruise")
     changes.add_argument("--from", dest="earlier", type=int, metavar="N", help="the earlier revision")
-    changes.add_argument("--to", dest="later", type=int, metavar="M", help="the later one; the last without it")
-    changes.add_argument("--format", choices=("text", "json", "markdown"), default="text", help="default: text")
-    changes.add_argument("--out", type=Path, metavar="FILE.parquet", help="write every change there as a table too")
+    changes.add_argument(
+        "--to", dest="later", type=int, metavar="M", help="the later one; the last without it"
+    )
+    changes.add_argument(
+        "--format", choices=("text", "json", "markdown"), default="text", help="default: text"
+    )
+    changes.add_argument(
+        "--out", type=Path, metavar="FILE.parquet", help="write every change there as a table too"
+    )
 
 
 def _add_sources(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> None:
@@ -335,7 +343,10 @@ def _add_report(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -
     )  # fmt: skip
     report.add_argument("archive", type=Path, metavar="ARCHIVE", help="the archive's directory")
     report.add_argument(
-        "cruises", nargs="*", metavar="CRUISE", help="expocodes of the cruises that get a page; all without it"
+        "cruises",
+        nargs="*",
+        metavar="CRUISE",
+        help="expocodes of the cruises that get a page; all without it",
     )
     report.add_argument("--out", type=Path, required=True, metavar="DIR", help="where the pages are written")
     report.add_argument(
@@ -356,7 +367,9 @@ def _add_speciation(commands: argparse._SubParsersAction[argparse.ArgumentParser
     speciation.add_argument("--salinity", type=float, required=True, metavar="S", help="practical salinity")
     speciation.add_argument("--temperature", type=float, required=True, metavar="T", help="degC")
     speciation.add_argument("--pressure", type=float, default=0.0, metavar="P", help="dbar; 0 without it")
-    speciation.add_argument("--out", type=Path, metavar="FILE", help="write a figure (.svg, .png) or a table (.csv)")
+    speciation.add_argument(
+        "--out", type=Path, metavar="FILE", help="write a figure (.svg, .png) or a table (.csv)"
+    )
     speciation.add_argument("--format", choices=("text", "json"), default="text", help="default: text")
     speciation.add_argument(
         "--settings", type=Path, metavar="FILE.toml", help="settings; the defaults without it"

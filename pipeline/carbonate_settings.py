@@ -65,7 +65,7 @@ class Repeatability(Section):
     """Standard deviation of one bottle against the next of a cast, without what all bottles have in common."""
 
     oxygen: Positive = Field(
-        0.4, description="umol/kg (a titration repeats to 0.1 to 0.5 %, from memory; 0.2 % of 200)"
+        0.3, description="umol/kg (a titration repeats to 0.1 to 0.5 %, from memory; 0.15 % of 200)"
     )
     phosphate: Positive = Field(0.015, description="umol/kg (0.4 % of full scale, from memory)")
     delta_carbon_13: Positive = Field(

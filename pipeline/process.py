@@ -269,7 +269,10 @@ def _what_to_do(both: bool, absent: Sequence[str]) -> str:
         return "cruise.toml says of both that they stand; leave one of them there"
     if absent:
         named = ", ".join(f"'{name}'" for name in absent)
-        return f"cruise.toml names {named} as the one that stands, and there is no such file; name one of these two there"
+        return (
+            f"cruise.toml names {named} as the one that stands, and there is no such file;"
+            " name one of these two there"
+        )
     return (
         "remove the one that does not stand, or name the one that does in a cruise.toml beside them (stands)"
     )

@@ -151,7 +151,10 @@ def with_metadata(table: pa.Table, metadata: Mapping[str, Mapping[str, str]]) ->
     """Return ``table`` with entries added to the metadata of some of its columns."""
     fields = [
         field.with_metadata(
-            {**(field.metadata or {}), **{key.encode(): text.encode() for key, text in metadata[field.name].items()}}
+            {
+                **(field.metadata or {}),
+                **{key.encode(): text.encode() for key, text in metadata[field.name].items()},
+            }
         )
         if field.name in metadata
         else field

@@ -370,7 +370,8 @@ def _companions(variable: Variable) -> list[Variable]:
     if variable.name in CHECKED:
         beside.append(
             Variable(check_name(variable.name), f"{variable.long_name}: result of our checks", "",
-                     "quality_flag", Kind.FLAG, source="IODE primary flags, IOC MG 54, vol. 3")
+                     "quality_flag", Kind.FLAG,
+                     source="IODE primary flags, IOC MG 54, vol. 3; what came flagged as bad is not judged")
         )  # fmt: skip
     if variable.name in CORRECTABLE:
         beside.append(

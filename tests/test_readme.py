@@ -129,7 +129,11 @@ def test_the_keys_of_carbon_are_told_with_their_defaults_and_choices() -> None:
         values = re.findall(r"`([^`]+)`", defaults) or [defaults]
         for name, value in zip(re.findall(r"`([\w.]+)`", names), values, strict=True):
             stated[name] = (value, f"{defaults} {words}")
-    sections = {"carbonate": CarbonateSettings, "tracers": TracerSettings, "profiles": ProfileSettings}
+    sections: dict[str, type[BaseModel]] = {
+        "carbonate": CarbonateSettings,
+        "tracers": TracerSettings,
+        "profiles": ProfileSettings,
+    }
     fields = {
         f"{section}.{name}": field
         for section, own in sections.items()

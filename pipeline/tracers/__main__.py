@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import sys
+
 from pipeline.tracers.told import markdown
 
-print(markdown())
+sys.stdout.write(markdown() + "\n")

@@ -30,6 +30,7 @@ UNDECIDED = -1
 # What lies off the line between its neighbours by half of what is asked of it, or twice, is at fault; and the other
 # two have to lie nearer to theirs. Between that nothing is decided (our choice, no source).
 _LEAST, _MOST = 0.5, 2.0
+_CAST_WIDTH = 1e5  # further apart than any pressure of the ocean
 _SAME_TEMPERATURE = 0.1  # degC within which measurements of pH or gas can be compared with each other
 
 
@@ -129,28 +130,37 @@ def _off(
     """
     chosen = system.inputs.quantities[QUANTITIES[quantity]]
     columns = (chosen.values, np.nan_to_num(chosen.temperature), chosen.column.astype(np.float64))
-    values, temperature, column = (
-        _between(data.casts, data.usable("pressure"), array, sound, rows) for array in columns
-    )
+    place = data.casts * _CAST_WIDTH + system.inputs.pressure
+    values, temperature, column = (_between(place, data.casts, array, sound, rows) for array in columns)
     alike = np.abs(temperature - columns[1][rows]) < _SAME_TEMPERATURE
     alike &= column == columns[2][rows]
     return np.where(alike, (chosen.values[rows] - values) / asked, np.nan)
 
 
 def _between(
-    casts: IntArray, pressure: FloatArray, values: FloatArray, sound: BoolArray, rows: IntArray
+    place: FloatArray, casts: IntArray, values: FloatArray, sound: BoolArray, rows: IntArray
 ) -> FloatArray:
-    """Return what a line between the sound samples next above and below in the cast gives at some rows, (n,)."""
-    found = np.full(len(rows), np.nan)
-    for cast in np.unique(casts[rows]):
-        theirs = np.flatnonzero(sound & (casts == cast) & ~np.isnan(pressure + values))
-        theirs = theirs[np.lexsort((values[theirs], pressure[theirs]))]
-        mine = np.flatnonzero(casts[rows] == cast)
-        if len(theirs) > 1:
-            found[mine] = np.interp(
-                pressure[rows[mine]], pressure[theirs], values[theirs], left=np.nan, right=np.nan
-            )
-    return found
+    """Return what a line between the sound samples next above and below in the cast gives at some rows, (n,).
+
+    Parameters
+    ----------
+    place
+        Of every row on one axis, on which a cast lies apart from the next, (n_row,).
+    casts, values, sound
+        Of every row, (n_row,).
+    rows
+        Which are wanted, (n,).
+
+    """
+    theirs = np.flatnonzero(sound & ~np.isnan(place + values))
+    theirs = theirs[np.lexsort((values[theirs], place[theirs]))]
+    if not len(theirs):
+        return np.full(len(rows), np.nan)
+    below = np.searchsorted(place[theirs], place[rows])
+    up, down = (theirs[np.clip(at, 0, len(theirs) - 1)] for at in (below - 1, below))
+    known = (below > 0) & (below < len(theirs)) & (casts[up] == casts[rows]) & (casts[down] == casts[rows])
+    part = (place[rows] - place[up]) / np.where(place[down] > place[up], place[down] - place[up], np.nan)
+    return np.where(known, (1.0 - part) * values[up] + part * values[down], np.nan)
 
 
 def _reconciled(told: list[Disagreement]) -> list[Disagreement]:

@@ -24,8 +24,8 @@ class Told:
 
 
 TOLD: tuple[Told, ...] = (
-    Told("carbon-consistency", "A third measured quantity that contradicts the pair, and which of the three is at fault;"
-         " how far all samples agree", (DOUBT, NOTE), ("carbonate.consistency", "carbonate.uncertainty",
+    Told("carbon-consistency", "A third measured quantity that contradicts the pair, and which of the three is at"
+         " fault; how far all samples agree", (DOUBT, NOTE), ("carbonate.consistency", "carbonate.uncertainty",
                                                       "carbonate.gas_uncertainty")),
     Told("carbon-dilution", "Water so fresh that what it is normalised to says little", (NOTE,),
          ("tracers.reference_salinity", "tracers.dic_without_salt", "tracers.alkalinity_without_salt")),

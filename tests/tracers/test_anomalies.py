@@ -10,8 +10,8 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from pipeline.carbonate_settings import CarbonateSettings
-from pipeline.process import process_cruise
 from pipeline.problems import SettingsProblem
+from pipeline.process import process_cruise
 from pipeline.settings import Settings, TracerSettings, read_settings
 from pipeline.tracers.anomalies import (
     alkalinity_per_nitrate,

@@ -218,9 +218,9 @@ def test_a_minimum_that_a_person_sees_is_found_though_its_rise_is_within_the_acc
     depth = (10.0, 500.0, 1000.0, 1500.0, 2000.0, 2500.0, 3000.0, 3500.0, 4000.0)
     oxygen = np.array((230.0, 190.0, 175.0, 160.0, 153.0, 153.9, 154.8, 155.1, 155.2))
     for standard in (0.98, 1.0, 1.02):
-        assert extremes_of(depth, oxygen=standard * oxygen)["oxygen_minimum_depth"][0] == 2000.0
+        assert extremes_of(depth, oxygen=(standard * oxygen).tolist())["oxygen_minimum_depth"][0] == 2000.0
     one_bottle = np.where(np.array(depth) == 3500.0, 157.0, np.minimum(oxygen, 153.0 + (oxygen > 160) * 99))
-    assert np.isnan(extremes_of(depth, oxygen=one_bottle)["oxygen_minimum_depth"][0])
+    assert np.isnan(extremes_of(depth, oxygen=one_bottle.tolist())["oxygen_minimum_depth"][0])
 
 
 def test_noise_makes_an_extreme_of_a_level_profile_as_seldom_as_is_said() -> None:
@@ -242,7 +242,7 @@ def test_noise_makes_an_extreme_of_a_level_profile_as_seldom_as_is_said() -> Non
 def test_the_rule_of_an_extreme_is_in_its_metadata() -> None:
     forms = extreme_forms(CHOICE)
     assert forms["oxygen_minimum"]["form"].startswith(
-        "more than 4 times 0.4 umol/kg, what one bottle repeats to"
+        "more than 4 times 0.3 umol/kg, what one bottle repeats to"
     )
     assert forms["delta_carbon_13_minimum_depth"]["form"].startswith("more than 4 times 0.03 per mil")
     assert forms["oxygen_minimum_thickness"] == {"form": "limit 60 umol/kg"}

@@ -136,7 +136,7 @@ def test_a_year_that_is_given_is_added_to_those_that_stand_there(tmp_path: Path)
     path.write_text("[tracers]\natmosphere_delta_carbon_13 = {1972 = -7.3}\n")
     chosen = read_settings(path, {}).tracers
     assert chosen.atmosphere_delta_carbon_13 == {1972: -7.3, 1990: -7.8, 2010: -8.3, 2020: -8.5}
-    by_year = {"atmosphere_delta_carbon_13": {1972: -7.3}}
+    by_year: dict[str, Any] = {"atmosphere_delta_carbon_13": {1972: -7.3}}
     old, recent, late = ({**WATER, "date": dt.date(year, 6, 1)} for year in (1972, 2010, 2035))
     gone = parts(recent)["equilibrium"] - parts(old, **by_year)["equilibrium"]
     assert gone == pytest.approx(-1.0, abs=0.02)
