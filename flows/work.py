@@ -18,6 +18,7 @@ from flows.places import place
 from flows.records import CruiseRecord, Refusal, State
 from flows.retrying import may_pass
 from pipeline.archive import DeliveredFile, Provenance, open_archive, publish, read_cruise, vault
+from pipeline.mixing import prepare
 from pipeline.problems import ArchiveProblem, DeliveryProblem
 from pipeline.process import settle_editions, shared_rows
 from pipeline.reading import read_cruise_file, read_delivery
@@ -46,12 +47,18 @@ class RunConfig:
     catalogue: Catalogue | None = None
 
 
+_PREPARED: set[str] = set()  # catalogues whose kernels this process has ready
+
+
 class _InboxFault(Exception):  # noqa: N818 - it names what it is
     """A file that was there when the run was planned cannot be read now; its cruise is left as it is."""
 
 
 def run_job(job: Job, config: RunConfig) -> CruiseRecord:
     """Make one cruise and publish it. Never raises: what went wrong is in the record."""
+    if config.catalogue is not None and config.catalogue.sha256 not in _PREPARED:
+        _PREPARED.add(config.catalogue.sha256)
+        prepare(config.catalogue, config.settings)
     began = time.monotonic()
     return replace(_attempt(job, config), seconds=round(time.monotonic() - began, 3))
 

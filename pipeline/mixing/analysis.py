@@ -114,13 +114,40 @@ def _cruise(samples: pa.Table) -> str | None:
     return cruises[0] if cruises else None
 
 
+def prepare(catalogue: Catalogue, settings: Settings) -> None:
+    """Have the kernels compiled, by resolving one sample that is the first set's first source.
+
+    A fresh installation takes half a minute for it, once, which is no time of any cruise.
+    """
+    chosen = catalogue.set[0]
+    first = next(source for source in catalogue.source if source.code == chosen.sources[0])
+    listed = first.values_of(chosen.properties)[np.newaxis]
+    attempt = _solved(
+        catalogue, chosen, settings, listed, np.zeros(1, dtype=np.int64), np.zeros(1, dtype=bool)
+    )
+    kept = attempt.solution.status == MixingStatus.SOLVED
+    answer_of(catalogue, attempt, kept, np.zeros(1, dtype=np.uint64), settings.mixing)
+
+
 def _attempt(samples: pa.Table, catalogue: Catalogue, chosen: SourceSet, settings: Settings) -> Attempt:
-    ratios = respiration_ratios(settings.tracers, chosen.silicate_per_phosphate)
-    dissolution = calcium_carbonate_ratios(settings.tracers)
-    problem = mixing_problem(catalogue, chosen, ratios, settings.mixing.uncertainty, dissolution)
     inside, unknown = validity(samples, chosen.valid, settings)
     rows = np.flatnonzero(inside)
     listed = np.stack([usable(samples, name, settings.use)[rows] for name in chosen.properties], axis=1)
+    return _solved(catalogue, chosen, settings, listed, rows, unknown)
+
+
+def _solved(
+    catalogue: Catalogue,
+    chosen: SourceSet,
+    settings: Settings,
+    listed: FloatArray,
+    rows: IntArray,
+    unknown: BoolArray,
+) -> Attempt:
+    """Return what a set says of the samples ``rows``, whose properties are ``listed``, (n_row, n_property)."""
+    ratios = respiration_ratios(settings.tracers, chosen.silicate_per_phosphate)
+    dissolution = calcium_carbonate_ratios(settings.tracers)
+    problem = mixing_problem(catalogue, chosen, ratios, settings.mixing.uncertainty, dissolution)
     observed = rows_of(chosen.properties, listed)
     solution = solve(problem, observed, condition_limit=settings.mixing.condition_limit)
     return Attempt(chosen, ratios, dissolution, problem, rows, unknown, observed, solution)

@@ -6,7 +6,7 @@ import numpy as np
 import pyarrow as pa
 import pytest
 
-from pipeline.mixing import resolve
+from pipeline.mixing import prepare, resolve
 from pipeline.mixing.status import MixingStatus
 from pipeline.mixing.tags import TAG_WORDS, UNSOLVED, Tag, tags
 from pipeline.settings import MixingSettings, Settings, UseSettings
@@ -369,3 +369,8 @@ def test_the_condition_number_is_that_of_the_set_that_is_told_of() -> None:
     answer = resolved(row, of=_two_sets())
     assert list(answer.columns["mixing_set"]) == ["upper"], "only the second knows no respiration"
     assert 1 <= answer.columns["condition_number"][0] < 100
+
+
+def test_kernels_are_made_ready_without_a_cruise() -> None:
+    for members in (0, 100):
+        prepare(catalogue(), Settings(mixing=MixingSettings(members=members)))
