@@ -8,4 +8,12 @@ from pipeline.mixing.catalogue import read_catalogue
 from pipeline.mixing.entries import Catalogue
 from pipeline.mixing.notices import notices_in
 
-__all__ = ["Catalogue", "Resolution", "absent_properties", "notices_in", "prepare", "read_catalogue", "resolve"]
+__all__ = [
+    "Catalogue",
+    "Resolution",
+    "absent_properties",
+    "notices_in",
+    "prepare",
+    "read_catalogue",
+    "resolve",
+]
