@@ -7,6 +7,7 @@ from __future__ import annotations
 
 import logging
 import time
+from contextlib import suppress
 from dataclasses import dataclass, replace
 from pathlib import PurePosixPath
 from typing import TYPE_CHECKING, Any
@@ -56,11 +57,17 @@ class _InboxFault(Exception):  # noqa: N818 - it names what it is
 
 def run_job(job: Job, config: RunConfig) -> CruiseRecord:
     """Make one cruise and publish it. Never raises: what went wrong is in the record."""
+    with suppress(Exception):  # a fault here comes again in the cruise, and is told with it
+        _prepare(config)
+    began = time.monotonic()
+    return replace(_attempt(job, config), seconds=round(time.monotonic() - began, 3))
+
+
+def _prepare(config: RunConfig) -> None:
+    """Have the mixing kernels ready before a cruise's clock runs, once in a process for each catalogue."""
     if config.catalogue is not None and config.catalogue.sha256 not in _PREPARED:
         _PREPARED.add(config.catalogue.sha256)
         prepare(config.catalogue, config.settings)
-    began = time.monotonic()
-    return replace(_attempt(job, config), seconds=round(time.monotonic() - began, 3))
 
 
 def _attempt(job: Job, config: RunConfig) -> CruiseRecord:

@@ -4,7 +4,7 @@ from typing import TYPE_CHECKING
 
 import pytest
 
-from .objects import environment, served, spoiled
+from .objects import name_server, served, spoiled
 
 if TYPE_CHECKING:
     from collections.abc import Iterator
@@ -22,7 +22,7 @@ def server(tmp_path_factory: pytest.TempPathFactory) -> Iterator[str]:
 @pytest.fixture
 def storage(server: str, monkeypatch: pytest.MonkeyPatch) -> str:
     """The same, named by the environment."""
-    _name(server, monkeypatch)
+    name_server(server, monkeypatch)
     return server
 
 
@@ -30,13 +30,5 @@ def storage(server: str, monkeypatch: pytest.MonkeyPatch) -> str:
 def faults(server: str, monkeypatch: pytest.MonkeyPatch) -> Iterator[Faults]:
     """What decides the faults of a proxy before the server; the environment names the proxy."""
     with spoiled(server) as (address, decides):
-        _name(address, monkeypatch)
+        name_server(address, monkeypatch)
         yield decides
-
-
-def _name(address: str, monkeypatch: pytest.MonkeyPatch) -> None:
-    for name, value in environment(address).items():
-        if value:
-            monkeypatch.setenv(name, value)
-        else:
-            monkeypatch.delenv(name, raising=False)

@@ -21,6 +21,8 @@ if TYPE_CHECKING:
     from collections.abc import Callable, Iterator
     from pathlib import Path
 
+    import pytest
+
 START_SECONDS = 60.0
 BUCKET = "ship"
 KEYS = {"AWS_ACCESS_KEY_ID": "invented", "AWS_SECRET_ACCESS_KEY": "not-a-secret", "AWS_REGION": "us-east-1"}
@@ -185,3 +187,12 @@ def _said(status: int) -> bytes:
     return (
         f'<?xml version="1.0" encoding="UTF-8"?><Error><Code>{code}</Code><Message>{message}</Message></Error>'
     ).encode()
+
+
+def name_server(address: str, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Have the environment name a server, with its keys."""
+    for variable, value in environment(address).items():
+        if value:
+            monkeypatch.setenv(variable, value)
+        else:
+            monkeypatch.delenv(variable, raising=False)

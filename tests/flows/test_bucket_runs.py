@@ -13,7 +13,7 @@ from typing import TYPE_CHECKING
 import pytest
 
 from pipeline.archive import lease
-from tests.archive.objects import BUCKET, contents, direct, environment, served, spoiled
+from tests.archive.objects import BUCKET, contents, direct, environment, name_server, served, spoiled
 from tests.flows.conftest import FIXTURES, ROOT, call, hashes
 from tests.invented import EXPOCODE, bottle_file, cast_file, zipped
 
@@ -35,16 +35,8 @@ def server(tmp_path_factory: pytest.TempPathFactory) -> Iterator[str]:
 @pytest.fixture
 def place(server: str, monkeypatch: pytest.MonkeyPatch) -> str:
     """A place that no other test uses, on the server that the environment names."""
-    name(server, monkeypatch)
+    name_server(server, monkeypatch)
     return f"{BUCKET}/{uuid.uuid4().hex}"
-
-
-def name(address: str, monkeypatch: pytest.MonkeyPatch) -> None:
-    for variable, value in environment(address).items():
-        if value:
-            monkeypatch.setenv(variable, value)
-        else:
-            monkeypatch.delenv(variable, raising=False)
 
 
 def deliver(server: str, place: str, files: dict[str, bytes]) -> None:
@@ -210,7 +202,7 @@ def test_storage_that_fails_now_and_then_makes_the_same_archive(
     made = contents(server, f"{place}/archive")
     statuses = (500, 503, 0)
     with spoiled(server) as (address, faults):
-        name(address, monkeypatch)
+        name_server(address, monkeypatch)
         faults.answer = lambda number, _method, _path: statuses[number // 9 % 3] if number % 9 == 0 else None
         done = call("run", f"s3://{place}/inbox", "--archive", f"s3://{place}/again")
         assert sum(status is not None for _, _, _, status in faults.seen) > 10

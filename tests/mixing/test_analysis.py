@@ -1,12 +1,15 @@
 from __future__ import annotations
 
+import subprocess
+import sys
+from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import pyarrow as pa
 import pytest
 
-from pipeline.mixing import prepare, resolve
+from pipeline.mixing import resolve
 from pipeline.mixing.status import MixingStatus
 from pipeline.mixing.tags import TAG_WORDS, UNSOLVED, Tag, tags
 from pipeline.settings import MixingSettings, Settings, UseSettings
@@ -14,6 +17,8 @@ from pipeline.tables import MIXING, MIXTURES, registry_field, with_columns
 from pipeline.variables import REGISTRY
 
 from .catalogues import catalogue
+
+ROOT = Path(__file__).parent.parent.parent
 
 if TYPE_CHECKING:
     from pipeline.mixing import Resolution
@@ -372,5 +377,15 @@ def test_the_condition_number_is_that_of_the_set_that_is_told_of() -> None:
 
 
 def test_kernels_are_made_ready_without_a_cruise() -> None:
-    for members in (0, 100):
-        prepare(catalogue(), Settings(mixing=MixingSettings(members=members)))
+    code = (
+        "from pipeline.mixing import prepare, read_catalogue\n"
+        "from pipeline.mixing.kernel import solve_rows\n"
+        "from pipeline.mixing.ensemble_kernel import run_rows\n"
+        "from pipeline.settings import Settings\n"
+        "from pathlib import Path\n"
+        "assert not solve_rows.signatures and not run_rows.signatures\n"
+        "prepare(read_catalogue(Path('fixtures/sources.toml')), Settings())\n"
+        "print(len(solve_rows.signatures), len(run_rows.signatures))\n"
+    )
+    said = subprocess.run([sys.executable, "-c", code], check=True, cwd=ROOT, capture_output=True, text=True)
+    assert said.stdout.split() == ["1", "1"]
