@@ -137,21 +137,12 @@ def _change(found: Comparison) -> Iterator[Block]:
             _clear(found, row, k)
             for row in rows[1:]
             for k in range(len(one.sources))
-            if _ratio(found, row, k) >= _CLEAR
+            if found.change.ratio[row, k] >= _CLEAR
         ]:
             yield Paragraph(
                 f"More than twice the uncertainty, of {(len(rows) - 1) * len(one.sources)} changes by class (of which"
                 f" chance alone makes 5 % so large): {'; '.join(clear)}."
             )
-
-
-def _ratio(found: Comparison, row: int, k: int) -> float:
-    """Return the size of a change over its uncertainty; zero where there is none."""
-    difference = abs(float(found.change.difference[row, k]))
-    uncertainty = float(found.change.uncertainty[row, k])
-    if not difference > 0:
-        return 0.0
-    return difference / uncertainty if uncertainty > 0 else np.inf
 
 
 def _clear(found: Comparison, row: int, k: int) -> str:
@@ -181,7 +172,7 @@ def _sentence(found: Comparison, k: int) -> str:
     change, source = found.change, found.one.sources[k]
     before, after = float(change.before[0, k]), float(change.after[0, k])
     difference, uncertainty = float(change.difference[0, k]), float(change.uncertainty[0, k])
-    ratio = _ratio(found, 0, k)
+    ratio = found.change.ratio[0, k]
     if ratio >= _CLEAR:
         verdict = f"that is more than the uncertainty ({ratio:.1f} times it)"
     elif ratio >= _HINT:

@@ -52,6 +52,15 @@ class Change:
     uncertainty: FloatArray
     independent: FloatArray  # what it would be if the two had no error in common
 
+    @property
+    def ratio(self) -> FloatArray:
+        """Size of each change over its uncertainty, (1 + n_class, n_source); 0 where there is no change."""
+        size = np.nan_to_num(np.abs(self.difference), nan=0.0)
+        with np.errstate(divide="ignore", invalid="ignore"):
+            return np.where(
+                size > 0.0, np.where(self.uncertainty > 0.0, size / self.uncertainty, np.inf), 0.0
+            )
+
 
 @dataclass(frozen=True, eq=False)
 class _Leg:
